@@ -1,0 +1,1 @@
+"""Band models: material and orientation to operator coefficients, one file a model."""

@@ -1,0 +1,1 @@
+"""Curved finite elements: meshes, matrices, counted eigenpairs, error bars."""

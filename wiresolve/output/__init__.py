@@ -1,0 +1,1 @@
+"""Functions on a result that write files people and ParaView open."""

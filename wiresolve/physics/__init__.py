@@ -1,0 +1,1 @@
+"""From coefficients to subbands, and from subbands to what is measured."""

@@ -1,0 +1,109 @@
+"""The one internal system of units (nm, eV, K, V, m0) and its constants, from SciPy's CODATA set."""
+
+from __future__ import annotations
+
+import difflib
+import math
+import re
+from collections.abc import Mapping
+from decimal import Decimal
+from types import MappingProxyType
+
+from scipy import constants as _codata
+
+from wiresolve.errors import InputError
+
+HBAR2_OVER_2M0: float = _codata.hbar**2 / (2 * _codata.m_e) / _codata.e * 1e18
+"""hbar^2 / (2 m0) in eV nm^2."""
+KB: float = _codata.k / _codata.e
+"""Boltzmann's constant in eV/K."""
+CONDUCTANCE_QUANTUM_SIEMENS: float = 2 * _codata.e**2 / _codata.h
+"""G0 = 2 e^2 / h in siemens (both spins)."""
+RESISTANCE_QUANTUM_OHM: float = 1 / CONDUCTANCE_QUANTUM_SIEMENS
+"""h / (2 e^2) in ohm."""
+E2_OVER_4PI_EPS0: float = _codata.e / (4 * _codata.pi * _codata.epsilon_0) * 1e9
+"""e^2 / (4 pi eps0) in eV nm."""
+
+
+def _inverse(lengths: Mapping[str, str], power: int) -> dict[str, str]:
+    """Spellings "cm^-3" and "1/cm^3" with their factors, from those of the lengths in nm."""
+    found = {}
+    for name, factor in lengths.items():
+        value = str(1 / Decimal(factor) ** power)
+        found[f"{name}^-{power}"] = value
+        found[f"1/{name}" if power == 1 else f"1/{name}^{power}"] = value
+    return found
+
+
+_LENGTHS = {"nm": "1", "pm": "1e-3", "Angstrom": "0.1", "um": "1e3", "\u00b5m": "1e3", "\u03bcm": "1e3"}
+_LENGTHS |= {"mm": "1e6", "cm": "1e7", "m": "1e9"}
+_INVERSE_FROM = {name: _LENGTHS[name] for name in ("nm", "um", "cm", "m")}
+
+UNITS: Mapping[str, Mapping[str, str]] = MappingProxyType(
+    {
+        "length": _LENGTHS,
+        "energy": {"eV": "1", "meV": "1e-3", "ueV": "1e-6", "\u00b5eV": "1e-6", "\u03bceV": "1e-6", "neV": "1e-9"},
+        "temperature": {"K": "1", "mK": "1e-3"},
+        "angle": {"deg": "1", "rad": str(Decimal(180) / Decimal(math.pi))},
+        "electric field": {"V/nm": "1", "V/um": "1e-3", "MV/m": "1e-3", "MV/cm": "0.1", "kV/cm": "1e-4"}
+        | {"V/cm": "1e-7", "V/m": "1e-9"},
+        "voltage": {"V": "1", "mV": "1e-3"},
+        "wave number": _inverse(_INVERSE_FROM, 1),
+        "line density": _inverse(_INVERSE_FROM, 1),
+        "sheet density": _inverse(_INVERSE_FROM, 2),
+        "density": _inverse(_INVERSE_FROM, 3),
+    }
+)
+"""Spellings of the units of each dimension, with the factor to the internal unit (the first one; angles in degrees)."""
+_SAMPLES = {
+    "length": "10 nm", "energy": "0.1 meV", "temperature": "77 K", "angle": "15 deg", "electric field": "0.01 V/nm",
+    "voltage": "0.5 V", "wave number": "0.1 nm^-1", "line density": "1e6 cm^-1", "sheet density": "1e12 cm^-2",
+    "density": "1e18 cm^-3",
+}  # fmt: skip
+_QUANTITY = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d{1,4})?)\s*(\S.*)?", re.ASCII)
+
+
+def parse_quantity(text: object, dimension: str, field: str) -> float:
+    """Value of a text such as "6 nm" in the internal unit of its dimension (correctly rounded).
+
+    Raises `InputError` for a bare number, a missing or wrong unit, a number that is not finite, or no text at all;
+    the message shows the spelling that is wanted.
+    """
+    units, sample = UNITS[dimension], _SAMPLES[dimension]
+    key = re.sub(r"\[\d+\]$", "", field.rsplit(".", 1)[-1])
+    spelled = f'write e.g. {key} = "{sample}"' if not field.endswith("]") else f'write e.g. "{sample}"'
+    a = "an" if dimension[0] in "aeiou" else "a"
+    if isinstance(text, int | float) and not isinstance(text, bool):
+        number = repr(text) if abs(text) < 1e30 else sample.split()[0]
+        unit = next(iter(units))
+        wanted = f'{key} = "{number} {unit}"' if not field.endswith("]") else f'"{number} {unit}"'
+        raise InputError(field, "a number needs its unit, as a text in quotes", text, f"write e.g. {wanted}")
+    if not isinstance(text, str):
+        raise InputError(field, f"must be {a} {dimension} in quotes", text, spelled)
+    match = _QUANTITY.fullmatch(text.strip()) if len(text) <= 80 else None
+    if match is None:
+        finite = "must be a finite number with a unit" if re.match(r"\s*[+-]?(nan|inf)", text, re.I) else ""
+        raise InputError(field, finite or f"must be {a} {dimension}: a number and a unit", text, spelled)
+    number, unit = match[1], match[2]
+    if unit is None:
+        raise InputError(field, "the unit is missing", text, spelled)
+    if unit not in units:
+        other = next((name for name, known in UNITS.items() if unit in known), None)
+        if other is not None:
+            raise InputError(field, f"must be {a} {dimension}, but '{unit}' is a unit of {other}", text, spelled)
+        near = difflib.get_close_matches(unit[:20], units, n=2, cutoff=0.4)
+        known = " or ".join(near) if near else ", ".join(name for name in units if name.isascii())
+        raise InputError(field, f"'{unit[:20]}' is no known unit of {dimension}", text, f"use {known}; {spelled}")
+    value = float(Decimal(number) * Decimal(units[unit]))
+    if not math.isfinite(value):
+        raise InputError(field, "must be a finite number with a unit", text, spelled)
+    return value
+
+
+def format_quantity(value: float, dimension: str, unit: str | None = None, digits: int | None = None) -> str:
+    """A text that `parse_quantity` reads back: exactly in the internal unit, or with `digits` digits in another one."""
+    first = next(iter(UNITS[dimension]))
+    if unit is None and digits is None:
+        return f"{value!r} {first}"
+    shown = value / float(UNITS[dimension][unit or first])
+    return f"{shown:.{digits or 6}g} {unit or first}"
