@@ -1,0 +1,163 @@
+"""How singular the states are at the corners of a drawing, and how cells must be graded towards them.
+
+Near a corner a state goes like r^a; a comes from the angular part of the operator in the sectors that meet there
+(V. A. Kondrat'ev, Trans. Moscow Math. Soc. 16, 227 (1967); for interfaces R. B. Kellogg, Appl. Anal. 4, 101 (1975)).
+At degree p the cell size that spends fewest cells goes like r^(1 - a/(p + 1)).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import scipy.linalg as dense
+from numpy.typing import NDArray
+
+from wiresolve.fem.lagrange import triangle
+from wiresolve.fem.meshing import Grading, Mesh
+
+Array = NDArray[np.float64]
+
+SMOOTH_FROM = 4.0
+LEAST = 0.1
+"""Exponents from here on cost no order at degree 4 and need no grading."""
+
+
+@dataclass(frozen=True)
+class Corner:
+    """A point of the drawing at which states are singular, and the exponent a of r^a."""
+
+    x: float
+    y: float
+    exponent: float
+
+
+def singular_corners(mesh: Mesh, inverse_mass: Sequence[Array]) -> tuple[Corner, ...]:
+    """The corners of a mesh with a singular exponent.
+
+    Parameters
+    ----------
+    inverse_mass : (2, 2) in-plane inverse mass of each of the mesh's regions, in 1/m0.
+    """
+    slopes = triangle(mesh.degree).gradients(np.array([[0.0, 0.0], [1.0, 0.0], [0.0, 1.0]]))
+    corners = []
+    for point in mesh.corners:
+        cells, local = np.nonzero(mesh.cells[:, :3] == point)
+        inside = mesh.admitted[cells]
+        cells, local = cells[inside], local[inside]
+        if not len(cells):
+            continue
+        regions = mesh.region[cells]
+        stretch = _round(np.mean([inverse_mass[r] for r in regions], axis=0))
+        sectors = []
+        for cell, vertex in zip(cells, local, strict=True):
+            jacobian = np.einsum("ra,ax->xr", slopes[:, vertex], mesh.points[mesh.cells[cell]])
+            legs = [jacobian @ leg for leg in _LEGS[vertex]]
+            first, last = (np.arctan2(*(stretch @ leg)[::-1]) for leg in legs)
+            # What is left of a tensor after the common stretch counts by its geometric mean: grading needs no more.
+            weight = float(np.sqrt(np.linalg.det(stretch @ inverse_mass[mesh.region[cell]] @ stretch.T)))
+            sectors.append((float(first), float(np.mod(last - first, 2 * np.pi)), weight))
+        exponent = _lowest_singular(sectors)
+        if exponent is not None:
+            x, y = mesh.points[point]
+            corners.append(Corner(float(x), float(y), exponent))
+    return tuple(corners)
+
+
+_LEGS = (
+    (np.array([1.0, 0.0]), np.array([0.0, 1.0])),
+    (np.array([-1.0, 1.0]), np.array([-1.0, 0.0])),
+    (np.array([0.0, -1.0]), np.array([1.0, -1.0])),
+)
+"""Directions of the two edges that leave each vertex of the reference triangle, counter-clockwise."""
+
+
+def _round(inverse_mass: Array) -> Array:
+    """The map of the plane that makes this inverse mass a multiple of the identity (determinant 1)."""
+    values, axes = np.linalg.eigh(inverse_mass)
+    return np.asarray((axes / np.sqrt(values)) @ axes.T * np.sqrt(np.sqrt(values.prod())))
+
+
+def _lowest_singular(sectors: Sequence[tuple[float, float, float]]) -> float | None:
+    """The lowest exponent below `SMOOTH_FROM` that is no whole number, over the fans that meet at a point."""
+    found = [a for fan in _fans(sectors) for a in exponents(fan[0], fan[1]) if a < SMOOTH_FROM]
+    singular = [a for a in found if abs(a - round(a)) > 0.01]
+    return float(min(singular)) if singular else None
+
+
+def _fans(sectors: Sequence[tuple[float, float, float]]) -> list[tuple[list[tuple[float, float]], bool]]:
+    """Runs of neighbouring sectors as ((angle, weight) merged by weight, closed around the point)."""
+    order = sorted(sectors)
+    if abs(sum(s[1] for s in order) - 2 * np.pi) < 1e-3:
+        return [(_merged([(s[1], s[2]) for s in order]), True)]
+    fans: list[list[tuple[float, float, float]]] = []
+    for sector in order:
+        if fans and abs(np.mod(sector[0] - fans[-1][-1][0] - fans[-1][-1][1] + np.pi, 2 * np.pi) - np.pi) < 1e-3:
+            fans[-1].append(sector)
+        else:
+            fans.append([sector])
+    first, last = fans[0][0], fans[-1][-1]
+    if len(fans) > 1 and abs(np.mod(first[0] - last[0] - last[1] + np.pi, 2 * np.pi) - np.pi) < 1e-3:
+        fans[0] = fans.pop() + fans[0]
+    return [(_merged([(s[1], s[2]) for s in fan]), False) for fan in fans]
+
+
+def _merged(parts: list[tuple[float, float]]) -> list[tuple[float, float]]:
+    merged: list[tuple[float, float]] = []
+    for angle, weight in parts:
+        if merged and np.isclose(merged[-1][1], weight, rtol=1e-9):
+            merged[-1] = (merged[-1][0] + angle, weight)
+        else:
+            merged.append((angle, weight))
+    return merged
+
+
+def exponents(sectors: Sequence[tuple[float, float]], closed: bool) -> Array:
+    """Exponents a of r^a, ascending and positive, where sectors of different inverse mass meet.
+
+    Parameters
+    ----------
+    sectors : (angle in rad, inverse mass) in order around the point.
+    closed : they close around it; otherwise walls bound the fan.
+    """
+    if not closed and len(sectors) == 1:
+        return np.pi / sectors[0][0] * np.arange(1, 9)
+    degree, pieces = 8, []
+    for angle, weight in sectors:
+        parts = max(1, int(np.ceil(angle / 1.2)))
+        pieces += [(angle / parts, weight)] * parts
+    nodes = np.linspace(0, 1, degree + 1)
+    gauss, weights = np.polynomial.legendre.leggauss(degree + 1)
+    gauss, weights = (gauss + 1) / 2, weights / 2
+    basis = [np.polynomial.Polynomial.fromroots(np.delete(nodes, i)) for i in range(degree + 1)]
+    basis = [p / p(nodes[i]) for i, p in enumerate(basis)]
+    value = np.array([p(gauss) for p in basis])
+    slope = np.array([p.deriv()(gauss) for p in basis])
+    stiff, mass = (slope * weights) @ slope.T, (value * weights) @ value.T
+    size = degree * len(pieces) + 1
+    left, right = np.zeros((size, size)), np.zeros((size, size))
+    for i, (angle, weight) in enumerate(pieces):
+        part = slice(degree * i, degree * i + degree + 1)
+        left[part, part] += weight / angle * stiff
+        right[part, part] += weight * angle * mass
+    if closed:
+        for matrix in (left, right):
+            matrix[0] += matrix[-1]
+            matrix[:, 0] += matrix[:, -1]
+        left, right = left[:-1, :-1], right[:-1, :-1]
+    else:
+        left, right = left[1:-1, 1:-1], right[1:-1, 1:-1]
+    squares = dense.eigh(left, right, eigvals_only=True, subset_by_index=(0, min(8, len(left) - 1)))
+    return np.asarray(np.sqrt(squares[squares > 1e-6]))
+
+
+def gradings(corners: Sequence[Corner], largest_nm: float, reach_nm: float, degree: int = 4) -> tuple[Grading, ...]:
+    """Gradings that let cells grow from each corner to `largest_nm` at `reach_nm` away."""
+    made = []
+    for corner in corners:
+        power = 1 - min(corner.exponent, degree) / (degree + 1)
+        # The innermost cell is where the size reaches the distance itself.
+        inner = reach_nm * min(1.0, largest_nm / reach_nm) ** (1 / (1 - power))
+        made.append(Grading(corner.x, corner.y, reach_nm, largest_nm, power, max(0.5 * inner, LEAST * largest_nm)))
+    return tuple(made)

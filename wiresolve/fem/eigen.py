@@ -1,0 +1,129 @@
+"""Counted eigenpairs of a Hermitian pencil H - E M by shift-invert Lanczos with our own factor.
+
+The factor of H - s M without pivoting (minimum degree on A + A^T) serves the iteration, and the signs of its pivots
+count the states below the shift (Sylvester's law of inertia). The count is a proof for the discrete problem.
+"""
+
+from __future__ import annotations
+
+import warnings
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import scipy.linalg as dense
+import scipy.sparse as sparse
+import scipy.sparse.linalg as sparse_linalg
+from numpy.typing import NDArray
+
+from wiresolve.errors import ConvergenceError
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, eq=False)
+class Factor:
+    """A factor of H - shift M: solves with it, and how many states lie below the shift (None where pivoting spoilt it)."""
+
+    shift: float
+    solver: Any
+    below: int | None
+    kind: Any
+
+    def solve(self, right: NDArray[Any]) -> NDArray[Any]:
+        """(H - shift M)^-1 applied to one vector or to columns; complex ones by parts where the matrix is real."""
+        if np.iscomplexobj(right) and not np.issubdtype(self.kind, np.complexfloating):
+            parts = (self.solver.solve(np.ascontiguousarray(part)) for part in (right.real, right.imag))
+            return np.asarray(next(parts) + 1j * next(parts))
+        return np.asarray(self.solver.solve(np.ascontiguousarray(right, dtype=self.kind)))
+
+
+def factor(hamiltonian: Any, mass: Any, shift: float) -> Factor:
+    """Factor H - shift M symmetrically, without pivoting for size."""
+    matrix = sparse.csc_matrix(hamiltonian - shift * mass)
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", sparse_linalg.MatrixRankWarning)
+        try:
+            solver = sparse_linalg.splu(
+                matrix, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0, options={"SymmetricMode": True}
+            )
+        except RuntimeError as fault:
+            raise ConvergenceError(f"the matrix at {shift:.6g} eV is singular: {fault}") from None
+    below = None
+    if np.array_equal(solver.perm_r, solver.perm_c):
+        pivots = solver.U.diagonal()
+        below = int(np.count_nonzero(pivots.real < 0))
+    return Factor(shift, solver, below, matrix.dtype)
+
+
+def count_below(hamiltonian: Any, mass: Any, energy: float) -> int:
+    """Number of states of the pencil below an energy.
+
+    Raises
+    ------
+    ConvergenceError
+        The factor had to pivot at this energy and at ten energies beside it.
+    """
+    width = 1e-9 * max(abs(energy), 1e-6)
+    for step in range(10):
+        below = factor(hamiltonian, mass, energy + step * width).below
+        if below is not None:
+            return below
+    raise ConvergenceError(f"the states below {energy:.6g} eV could not be counted")
+
+
+def lowest(
+    hamiltonian: Any, mass: Any, count: int, shift: float, start: Any = None
+) -> tuple[Array, NDArray[Any]]:
+    """The `count` states nearest above `shift`, which must lie below the spectrum or in a gap.
+
+    Parameters
+    ----------
+    hamiltonian, mass : (n, n) sparse Hermitian matrices, `mass` positive definite.
+    start : (n,) start vector; a fixed one by default, so that the same input gives the same bytes.
+
+    Returns
+    -------
+    (count,) ascending energies and (n, count) vectors, orthonormal in the mass matrix.
+    """
+    n = hamiltonian.shape[0]
+    if count > n:
+        raise ConvergenceError(f"{count} states were asked of a mesh with {n} unknowns")
+    if n <= max(3 * count, 60):
+        values, vectors = dense.eigh(hamiltonian.toarray(), mass.toarray(), subset_by_index=(0, count - 1))
+        return values, vectors
+    solver = factor(hamiltonian, mass, shift)
+    kind = np.result_type(hamiltonian.dtype, mass.dtype)
+    inverse = sparse_linalg.LinearOperator((n, n), matvec=solver.solve, dtype=kind)
+    start = _start(n, kind) if start is None else start
+    try:
+        values, vectors = sparse_linalg.eigsh(
+            hamiltonian, k=count, M=mass, sigma=shift, OPinv=inverse, v0=start, which="LM", tol=0, ncv=min(n, 2 * count + 8)
+        )
+    except sparse_linalg.ArpackNoConvergence as fault:
+        raise ConvergenceError(
+            f"{len(fault.eigenvalues)} of {count} states converged; ask fewer states or a coarser accuracy"
+        ) from None
+    return ritz(hamiltonian, mass, vectors)
+
+
+def ritz(hamiltonian: Any, mass: Any, block: NDArray[Any]) -> tuple[Array, NDArray[Any]]:
+    """Rayleigh-Ritz in the span of `block` (n, m): ascending energies and vectors orthonormal in the mass matrix."""
+    values, turn = ritz_from(block.conj().T @ (hamiltonian @ block), block.conj().T @ (mass @ block))
+    return values, block @ turn
+
+
+def ritz_from(hamiltonian: NDArray[Any], mass: NDArray[Any]) -> tuple[Array, NDArray[Any]]:
+    """Energies (m,) and combinations (m, m) of a small dense pencil."""
+    values, turn = dense.eigh(_hermitian(hamiltonian), _hermitian(mass))
+    return values, turn
+
+
+def _hermitian(matrix: NDArray[Any]) -> NDArray[Any]:
+    return (matrix + matrix.conj().T) / 2
+
+
+def _start(n: int, kind: Any) -> NDArray[Any]:
+    # A fixed quasi-random vector: no global random state, and no symmetry that could hide a state.
+    golden = 0.6180339887498949
+    return (0.1 + np.mod(np.arange(1, n + 1) * golden, 1.0)).astype(kind)

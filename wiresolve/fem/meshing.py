@@ -1,0 +1,368 @@
+"""Curved meshes of a section: Gmsh draws, sizes and curves; nothing else imports it."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field, replace
+from types import TracebackType
+from typing import Any, Self
+
+import numpy as np
+from numpy.typing import NDArray
+
+from wiresolve.describe.curves import Arc, EllipseArc, Line, Loop, Spline
+from wiresolve.describe.section import Piece
+from wiresolve.errors import InputError, MeshError
+from wiresolve.fem.lagrange import triangle
+
+Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
+
+VOID = "void"
+
+
+@dataclass(frozen=True)
+class Region:
+    """A piece of the section that is left after painting, in one material."""
+
+    name: str
+    material: str
+    carriers: bool
+    offset_eV: float
+
+
+@dataclass(frozen=True, eq=False)
+class Mesh:
+    """Curved triangles of one degree.
+
+    Attributes
+    ----------
+    points : (n, 2) nodes in nm.
+    cells : (c, nodes per cell) in the node order of `fem.lagrange`; counter-clockwise.
+    region : (c,) index into `regions`.
+    corners : (m,) points that are corners of the drawing (ends of its curves).
+    """
+
+    degree: int
+    points: Array
+    cells: Ints
+    region: Ints
+    regions: tuple[Region, ...]
+    corners: Ints
+
+    @property
+    def admitted(self) -> NDArray[np.bool_]:
+        """(c,) cells that carriers may enter."""
+        return np.array([r.carriers for r in self.regions])[self.region]
+
+
+@dataclass(frozen=True)
+class Grading:
+    """Cell size ``outer_nm (r / reach_nm)^power``, not below `smallest_nm`, at distance r from a corner."""
+
+    x: float
+    y: float
+    reach_nm: float
+    outer_nm: float
+    power: float
+    smallest_nm: float
+
+
+@dataclass(frozen=True, eq=False)
+class SizeField:
+    """How large cells may be: the smallest of what its parts say.
+
+    Attributes
+    ----------
+    largest_nm : everywhere.
+    gradings : around corners.
+    triangles, sizes_nm : (t, 3, 2) and (t, 3): linear interpolation in a triangulation of the section.
+    """
+
+    largest_nm: float
+    gradings: tuple[Grading, ...] = ()
+    triangles: Array | None = None
+    sizes_nm: Array | None = None
+
+
+@dataclass
+class Mesher:
+    """A Gmsh session that holds one drawn section; use it as a context manager.
+
+    Raises `InputError` where the drawing leaves nothing for carriers, `MeshError` where it cannot be drawn or meshed.
+    """
+
+    pieces: Sequence[Piece]
+    _gmsh: Any = field(init=False, repr=False, default=None)
+    _owner: dict[int, int] = field(init=False, repr=False, default_factory=dict)
+
+    def __enter__(self) -> Self:
+        import gmsh
+
+        self._gmsh = gmsh
+        gmsh.initialize([], readConfigFiles=False, interruptible=False)
+        try:
+            for option, value in _OPTIONS.items():
+                gmsh.option.setNumber(option, value)
+            self._draw()
+        except InputError:
+            gmsh.finalize()
+            raise
+        except Exception as fault:
+            gmsh.finalize()
+            raise MeshError(f"the section could not be drawn: {_short(fault)}") from fault
+        except BaseException:
+            gmsh.finalize()
+            raise
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, value: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self._gmsh.finalize()
+
+    def _draw(self) -> None:
+        occ, pieces = self._gmsh.model.occ, self.pieces
+        loops = [p.loop for p in pieces]
+        if _strictly_nested(loops):
+            # Rings share their curves, which saves the Boolean operation that the general case needs.
+            curves = [self._curve_loop(loop) for loop in loops]
+            owner = {occ.addPlaneSurface(curves[i : i + 2]): i for i in range(len(curves))}
+        else:
+            surfaces = [occ.addPlaneSurface([self._curve_loop(loop)]) for loop in loops]
+            _, children = occ.fragment([(2, surfaces[0])], [(2, s) for s in surfaces[1:]])
+            owner = {tag: i for i, parts in enumerate(children) for dim, tag in parts if dim == 2}
+        holes = [tag for tag, i in owner.items() if pieces[i].material == VOID]
+        if holes:
+            occ.remove([(2, tag) for tag in holes], recursive=False)
+        occ.synchronize()
+        self._owner = {tag: i for tag, i in owner.items() if tag not in holes}
+        if not any(pieces[i].carriers for i in self._owner.values()):
+            raise InputError(
+                "section",
+                "nothing is left for carriers once the layers and patches are painted",
+                remedy="make the patches smaller, or admit carriers in one of them",
+            )
+
+    def _curve_loop(self, loop: Loop) -> int:
+        occ = self._gmsh.model.occ
+        circle = loop.is_circle
+        if circle is not None:
+            (x, y), radius = circle
+            return int(occ.addCurveLoop([occ.addCircle(x, y, 0, radius)]))
+        segments = loop.segments
+        ends = [occ.addPoint(*segment.start, 0) for segment in segments]
+        curves = [self._curve(s, ends[i], ends[(i + 1) % len(ends)]) for i, s in enumerate(segments)]
+        return int(occ.addCurveLoop(curves))
+
+    def _curve(self, segment: Line | Arc | EllipseArc | Spline, first: int, last: int) -> int:
+        occ = self._gmsh.model.occ
+        if isinstance(segment, Line):
+            return int(occ.addLine(first, last))
+        if isinstance(segment, Arc) and abs(segment.sweep) < 3.1:
+            center = occ.addPoint(*segment.center, 0)
+            curve = occ.addCircleArc(first, center, last)
+            occ.remove([(0, center)])
+            return int(curve)
+        if isinstance(segment, EllipseArc) and first == last:
+            major, minor, tilt = segment.semi_x, segment.semi_y, segment.tilt
+            if minor > major:
+                major, minor, tilt = minor, major, tilt + np.pi / 2
+            curve = occ.addEllipse(*segment.center, 0, major, minor)
+            occ.rotate([(1, curve)], *segment.center, 0, 0, 0, 1, tilt)
+            return int(curve)
+        knots = segment.points if isinstance(segment, Spline) else segment.point(np.linspace(0, 1, 257))
+        inner = [occ.addPoint(x, y, 0) for x, y in np.asarray(knots)[1:-1]]
+        curve = occ.addSpline([first, *inner, last])
+        occ.remove([(0, point) for point in inner])
+        return int(curve)
+
+    @property
+    def extent_nm(self) -> float:
+        """The larger side of the drawing's bounding box."""
+        low_x, low_y, _, high_x, high_y, _ = self._gmsh.model.getBoundingBox(-1, -1)
+        return float(max(high_x - low_x, high_y - low_y))
+
+    def mesh(self, size: SizeField) -> tuple[Mesh, Mesh]:
+        """Meshes of degree 4 and 6 over the same triangles.
+
+        Raises
+        ------
+        MeshError
+            Gmsh failed, or a curved cell stayed folded after three refinements around it.
+        """
+        for _ in range(4):
+            coarse, fine = self._generate(size)
+            folded = _folded(coarse) | _folded(fine)
+            if not folded.any():
+                return coarse, fine
+            size = _smaller_where(coarse, folded, size)
+        raise MeshError(
+            f"{int(folded.sum())} curved cells stay folded near ({_place(coarse, folded)}) nm;"
+            " a layer is too thin beside the curvature of its wall: make it thicker"
+        )
+
+    def _generate(self, size: SizeField) -> tuple[Mesh, Mesh]:
+        gmsh = self._gmsh
+        try:
+            gmsh.model.mesh.clear()
+            self._set_size(size)
+            gmsh.model.mesh.generate(2)
+            meshes = []
+            for degree in (4, 6):
+                gmsh.model.mesh.setOrder(degree)
+                meshes.append(self._read(degree))
+        except (MeshError, KeyboardInterrupt):
+            raise
+        except Exception as fault:
+            raise MeshError(f"the section could not be meshed: {_short(fault)}") from fault
+        return meshes[0], meshes[1]
+
+    def _set_size(self, size: SizeField) -> None:
+        gmsh = self._gmsh
+        fields = gmsh.model.mesh.field
+        for tag in fields.list():
+            fields.remove(tag)
+        for tag in gmsh.view.getTags():
+            gmsh.view.remove(tag)
+        gmsh.option.setNumber("Mesh.MeshSizeMax", size.largest_nm)
+        parts = []
+        alike: dict[tuple[float, float, float, float], list[int]] = {}
+        for g in size.gradings:
+            key = (g.smallest_nm, g.outer_nm, g.reach_nm, g.power)
+            alike.setdefault(key, []).append(self._point_near(g.x, g.y))
+        for (smallest, outer, reach, power), points in alike.items():
+            distance = fields.add("Distance")
+            fields.setNumbers(distance, "PointsList", points)
+            law = fields.add("MathEval")
+            # Plain decimals only: Gmsh's parser ends the process on anything that it cannot read.
+            fields.setString(law, "F", f"{smallest:.15f}+{outer:.12f}*(F{distance}/{reach:.12f})^{power:.6f}")
+            parts.append(law)
+        if size.triangles is not None and size.sizes_nm is not None:
+            view = gmsh.view.add("size")
+            corners = np.zeros((len(size.triangles), 12))
+            corners[:, 0:3], corners[:, 3:6] = size.triangles[:, :, 0], size.triangles[:, :, 1]
+            corners[:, 9:12] = size.sizes_nm
+            gmsh.view.addListData(view, "ST", len(corners), corners.ravel())
+            tag = fields.add("PostView")
+            fields.setNumber(tag, "ViewTag", view)
+            parts.append(tag)
+        if parts:
+            least = fields.add("Min")
+            fields.setNumbers(least, "FieldsList", parts)
+            fields.setAsBackgroundMesh(least)
+
+    def _point_near(self, x: float, y: float) -> int:
+        """The drawing's point nearest to a place."""
+        model = self._gmsh.model
+        places = {tag: model.getValue(0, tag, []) for _, tag in model.getEntities(0)}
+        return min(places, key=lambda tag: (places[tag][0] - x) ** 2 + (places[tag][1] - y) ** 2)
+
+    def _read(self, degree: int) -> Mesh:
+        gmsh, count = self._gmsh, (degree + 1) * (degree + 2) // 2
+        tags, xyz, _ = gmsh.model.mesh.getNodes()
+        cells, region = [], []
+        used = sorted(set(self._owner.values()))
+        for surface in sorted(self._owner):
+            kinds, _, nodes = gmsh.model.mesh.getElements(2, surface)
+            if len(kinds) != 1:
+                raise MeshError(f"a part of {self.pieces[self._owner[surface]].name!r} is too small to be meshed")
+            cells.append(np.asarray(nodes[0], dtype=np.int64).reshape(-1, count))
+            region.append(np.full(len(cells[-1]), used.index(self._owner[surface])))
+        by_tag = np.zeros(int(tags.max()) + 1, dtype=np.int64)
+        by_tag[tags.astype(np.int64)] = np.arange(len(tags))
+        old = by_tag[np.vstack(cells)]
+        kept = np.unique(old)
+        renumber = np.full(len(tags), -1)
+        renumber[kept] = np.arange(len(kept))
+        ends = [gmsh.model.mesh.getNodes(0, tag)[0] for _, tag in gmsh.model.getEntities(0)]
+        corners = renumber[by_tag[np.concatenate(ends).astype(np.int64)]] if ends else np.zeros(0, dtype=np.int64)
+        regions = tuple(
+            Region(p.name, p.material, p.carriers, p.offset_eV) for p in (self.pieces[i] for i in used)
+        )
+        points = np.ascontiguousarray(xyz.reshape(-1, 3)[kept, :2])
+        return _oriented(
+            Mesh(degree, points, renumber[old], np.concatenate(region), regions, corners[corners >= 0])
+        )
+
+
+_OPTIONS = {
+    "General.Terminal": 0,
+    "General.Verbosity": 0,
+    "General.NumThreads": 1,
+    "Geometry.OCCParallel": 0,
+    "Mesh.Algorithm": 6,
+    "Mesh.MeshSizeFromPoints": 0,
+    "Mesh.MeshSizeExtendFromBoundary": 0,
+    "Mesh.HighOrderOptimize": 0,  # its optimiser can abort the process
+}
+
+
+def _short(fault: BaseException) -> str:
+    return " ".join(str(fault).split())[:160] or type(fault).__name__
+
+
+def _strictly_nested(loops: Sequence[Loop]) -> bool:
+    """Each loop strictly inside the one before it, by a clearance of a thousandth of its size."""
+    for outer, inner in zip(loops, loops[1:]):
+        samples = inner.sample(24)
+        if not np.all(outer.contains(samples)):
+            return False
+        wall = outer.sample(24)
+        gap = np.sqrt(((samples[:, None] - wall[None]) ** 2).sum(-1)).min()
+        if gap < 1e-3 * np.sqrt(outer.area):
+            return False
+    return True
+
+
+def _oriented(mesh: Mesh) -> Mesh:
+    """The mesh with cells that run counter-clockwise (mirrored ones get their nodes renumbered)."""
+    corner = mesh.points[mesh.cells[:, :3]]
+    edge1, edge2 = corner[:, 1] - corner[:, 0], corner[:, 2] - corner[:, 0]
+    clockwise = edge1[:, 0] * edge2[:, 1] - edge1[:, 1] * edge2[:, 0] < 0
+    if not clockwise.any():
+        return mesh
+    element = triangle(mesh.degree)
+    mirrored = np.rint(element.nodes[:, ::-1] * mesh.degree).astype(int)
+    place = {tuple(n): i for i, n in enumerate(np.rint(element.nodes * mesh.degree).astype(int))}
+    order = np.array([place[tuple(n)] for n in mirrored])
+    cells = mesh.cells.copy()
+    cells[clockwise] = cells[clockwise][:, order]
+    return replace(mesh, cells=cells)
+
+
+def _folded(mesh: Mesh) -> NDArray[np.bool_]:
+    """Cells whose Jacobian is not clearly positive at their nodes and at a lattice twice as fine."""
+    element = triangle(mesh.degree)
+    folded = np.zeros(len(mesh.cells), dtype=bool)
+    curved = ~is_straight(mesh)
+    nodes = mesh.points[mesh.cells[curved]]
+    slopes = element.gradients(triangle(8).nodes)
+    jacobian = np.einsum("rqa,cax->cqxr", slopes, nodes, optimize=True)
+    det = jacobian[..., 0, 0] * jacobian[..., 1, 1] - jacobian[..., 0, 1] * jacobian[..., 1, 0]
+    folded[curved] = det.min(axis=1) <= 0.05 * det.mean(axis=1)
+    return folded
+
+
+def is_straight(mesh: Mesh) -> NDArray[np.bool_]:
+    """(c,) cells whose map from the reference triangle is affine to rounding."""
+    nodes = mesh.points[mesh.cells]
+    barycentric = np.column_stack([1 - triangle(mesh.degree).nodes.sum(1), triangle(mesh.degree).nodes])
+    flat = np.einsum("av,cvx->cax", barycentric, nodes[:, :3])
+    reach = np.abs(nodes[:, 1:3] - nodes[:, :1]).max(axis=(1, 2))
+    return np.asarray(np.abs(nodes - flat).max(axis=(1, 2)) < 1e-11 * reach)
+
+
+def _smaller_where(mesh: Mesh, marked: NDArray[np.bool_], size: SizeField) -> SizeField:
+    """The size field with half of today's size at the vertices of the marked cells."""
+    corner = mesh.points[mesh.cells[:, :3]]
+    edge = np.linalg.norm(corner - np.roll(corner, 1, axis=1), axis=2).max(axis=1)
+    wanted = np.where(marked, 0.5 * edge, edge)
+    at_vertex = np.full(len(mesh.points), np.inf)
+    np.minimum.at(at_vertex, mesh.cells[:, :3], wanted[:, None])
+    return replace(size, triangles=corner, sizes_nm=at_vertex[mesh.cells[:, :3]])
+
+
+def _place(mesh: Mesh, marked: NDArray[np.bool_]) -> str:
+    x, y = mesh.points[mesh.cells[marked][0, :3]].mean(axis=0)
+    return f"{x:.3g}, {y:.3g}"

@@ -1,0 +1,251 @@
+"""Matrices of a curved mesh: real scalar blocks weighted by fields; nothing else imports scikit-fem.
+
+The nodes of a Lagrange mesh are its degrees of freedom, so a function is known by its values at the mesh's points and
+functions of neighbouring cells match by construction. Quadrature and the reference quartic come from scikit-fem.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+from functools import cached_property, lru_cache
+from typing import Any
+
+import numpy as np
+import scipy.sparse as sparse
+from numpy.typing import NDArray
+
+from wiresolve.fem.lagrange import LagrangeTriangle, triangle
+from wiresolve.fem.meshing import Mesh, is_straight
+
+Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
+Flags = NDArray[np.bool_]
+Field = Array
+"""A scalar field: (cells,) constant in each cell, or (cells, quadrature points)."""
+Form = Mapping[tuple[str, str], Field]
+"""Fields D_ab of the form sum_ab int (d_a u) D_ab (d_b v), with a, b among "x", "y" and "1" (no derivative)."""
+
+_SLOT = {"x": 0, "y": 1, "1": 2}
+_CHUNK = 2048
+
+
+@lru_cache(maxsize=None)
+def _rule(order: int) -> tuple[Array, Array]:
+    from skfem.quadrature import get_quadrature
+    from skfem.refdom import RefTri
+
+    points, weights = get_quadrature(RefTri, order)
+    return np.ascontiguousarray(points.T), np.asarray(weights)
+
+
+@lru_cache(maxsize=None)
+def _reference_tensor(degree: int) -> Array:
+    """int (d_a phi_i)(d_b phi_j) over the reference triangle, shape (9, n, n), with a, b = x, y, 1."""
+    at, weights = _rule(2 * degree)
+    parts = _reference_parts(triangle(degree), at)
+    return np.einsum("q,aqi,bqj->abij", weights, parts, parts, optimize=True).reshape(9, parts.shape[2], -1)
+
+
+def _reference_parts(element: LagrangeTriangle, at: Array) -> Array:
+    """Reference derivatives and values, shape (3, points, functions)."""
+    return np.concatenate([element.gradients(at), element.values(at)[None]])
+
+
+@dataclass(frozen=True, eq=False)
+class Space:
+    """Continuous functions of the mesh's degree on the cells that carriers may enter.
+
+    Attributes
+    ----------
+    mesh : the curved mesh; functions live at `nodes`, a subset of its points.
+    """
+
+    mesh: Mesh
+
+    @cached_property
+    def cells(self) -> Ints:
+        """(c,) numbers of the cells that carriers may enter."""
+        return np.flatnonzero(self.mesh.admitted)
+
+    @cached_property
+    def nodes(self) -> Ints:
+        """(n,) mesh points that belong to these cells."""
+        return np.unique(self.mesh.cells[self.cells])
+
+    @cached_property
+    def dofs(self) -> Ints:
+        """(c, nodes per cell) numbers of the cells' nodes among `nodes`."""
+        number = np.full(len(self.mesh.points), -1)
+        number[self.nodes] = np.arange(len(self.nodes))
+        return np.asarray(number[self.mesh.cells[self.cells]])
+
+    @cached_property
+    def wall(self) -> Flags:
+        """(n,) nodes on a wall: edges that only one admitted cell has."""
+        return self._on_edges(self._lonely_edges)
+
+    def rim_of(self, region: int) -> Flags:
+        """(n,) wall nodes on edges of one region's cells."""
+        here = self.mesh.region[self.cells] == region
+        return self._on_edges(self._lonely_edges & here[:, None])
+
+    def _on_edges(self, lonely: Flags) -> Flags:
+        degree, dofs = self.mesh.degree, self.dofs
+        flags = np.zeros(len(self.nodes), dtype=bool)
+        for edge in range(3):
+            inner = 3 + edge * (degree - 1) + np.arange(degree - 1)
+            local = np.concatenate([[edge, (edge + 1) % 3], inner])
+            flags[dofs[lonely[:, edge]][:, local]] = True
+        return flags
+
+    @cached_property
+    def _lonely_edges(self) -> Flags:
+        """(c, 3) edges that only one admitted cell has."""
+        ends = np.sort(self.dofs[:, [[0, 1], [1, 2], [2, 0]]].reshape(-1, 2), axis=1)
+        key = ends[:, 0] * len(self.nodes) + ends[:, 1]
+        _, index, count = np.unique(key, return_inverse=True, return_counts=True)
+        return np.asarray((count[index.ravel()] == 1).reshape(-1, 3))
+
+    @property
+    def wall_length_nm(self) -> float:
+        """Length of the walls, by the chords of their cells."""
+        corner = self.mesh.points[self.mesh.cells[self.cells][:, :3]]
+        chord = np.linalg.norm(np.roll(corner, -1, axis=1) - corner, axis=2)
+        return float(chord[self._lonely_edges].sum())
+
+    @cached_property
+    def free(self) -> Ints:
+        """(f,) nodes that are not on a wall, numbers among `nodes`."""
+        return np.flatnonzero(~self.wall)
+
+    @cached_property
+    def straight(self) -> Flags:
+        """(c,) cells with an affine map."""
+        return is_straight(self.mesh)[self.cells]
+
+    @property
+    def quadrature_order(self) -> int:
+        """Order of the rule on curved cells and for fields that vary inside a cell."""
+        return 2 * self.mesh.degree + 4
+
+    @cached_property
+    def quadrature_points(self) -> Array:
+        """(c, q, 2) points in nm at which a varying field is wanted."""
+        at, _ = _rule(self.quadrature_order)
+        values = triangle(self.mesh.degree).values(at)
+        return np.asarray(np.einsum("qa,cax->cqx", values, self.mesh.points[self.mesh.cells[self.cells]], optimize=True))
+
+    @cached_property
+    def quadrature_weights(self) -> Array:
+        """(c, q) weights in nm^2 that go with `quadrature_points`."""
+        at, weights = _rule(self.quadrature_order)
+        slopes = triangle(self.mesh.degree).gradients(at)
+        local = self.mesh.points[self.mesh.cells[self.cells]]
+        jacobian = np.einsum("rqa,cax->cqxr", slopes, local, optimize=True)
+        det = jacobian[..., 0, 0] * jacobian[..., 1, 1] - jacobian[..., 0, 1] * jacobian[..., 1, 0]
+        return np.asarray(det * weights)
+
+    def elements(self, form: Form, cells: slice | Ints) -> Array:
+        """Element matrices of a form on some of the cells, shape (len(cells), n, n)."""
+        nodes, straight = self.nodes[self.dofs[cells]], self.straight[cells]
+        constant = {key: field[cells] for key, field in form.items() if field.ndim == 1}
+        varying = {key: field[cells] for key, field in form.items() if field.ndim == 2}
+        plain = straight if set(varying) <= {("1", "1")} else np.zeros_like(straight)
+        out = np.zeros((*nodes.shape, nodes.shape[1]))
+        if plain.any():
+            if constant:
+                out[plain] = self._straight(nodes[plain], {key: field[plain] for key, field in constant.items()})
+            if varying:
+                out[plain] += self._straight_varying(nodes[plain], varying["1", "1"][plain])
+        if not plain.all():
+            both = {key: field[~plain] for key, field in (*constant.items(), *varying.items())}
+            out[~plain] = self._curved(nodes[~plain], both)
+        return out
+
+    def _straight_varying(self, nodes: Ints, field: Field) -> Array:
+        at, weights = _rule(self.quadrature_order)
+        values = triangle(self.mesh.degree).values(at)
+        pairs = (values[:, :, None] * values[:, None, :]).reshape(len(weights), -1)
+        corner = self.mesh.points[nodes[:, :3]]
+        first, second = corner[:, 1] - corner[:, 0], corner[:, 2] - corner[:, 0]
+        det = first[:, 0] * second[:, 1] - first[:, 1] * second[:, 0]
+        return np.asarray((field * weights * det[:, None]) @ pairs).reshape(len(nodes), nodes.shape[1], -1)
+
+    def _straight(self, nodes: Ints, form: Form) -> Array:
+        corner = self.mesh.points[nodes[:, :3]]
+        jacobian = np.stack([corner[:, 1] - corner[:, 0], corner[:, 2] - corner[:, 0]], axis=2)
+        det = jacobian[:, 0, 0] * jacobian[:, 1, 1] - jacobian[:, 0, 1] * jacobian[:, 1, 0]
+        pull = np.zeros((len(nodes), 3, 3))
+        pull[:, 0, 0], pull[:, 0, 1] = jacobian[:, 1, 1] / det, -jacobian[:, 0, 1] / det
+        pull[:, 1, 0], pull[:, 1, 1] = -jacobian[:, 1, 0] / det, jacobian[:, 0, 0] / det
+        pull[:, 2, 2] = 1
+        fields = np.zeros((len(nodes), 3, 3))
+        for (a, b), values in form.items():
+            fields[:, _SLOT[a], _SLOT[b]] += values
+        weights = (pull @ fields @ pull.transpose(0, 2, 1)) * det[:, None, None]
+        tensor = _reference_tensor(self.mesh.degree)
+        n = tensor.shape[1]
+        return np.asarray((weights.reshape(-1, 9) @ tensor.reshape(9, -1)).reshape(-1, n, n))
+
+    def _curved(self, nodes: Ints, form: Form) -> Array:
+        at, weights = _rule(self.quadrature_order)
+        parts = _reference_parts(triangle(self.mesh.degree), at)
+        count, q = parts.shape[2], len(weights)
+        out = np.empty((len(nodes), count, count))
+        for start in range(0, len(nodes), _CHUNK // 4):
+            chunk = slice(start, start + _CHUNK // 4)
+            local = self.mesh.points[nodes[chunk]]
+            c = len(local)
+            jacobian = np.einsum("rqa,cax->cqxr", parts[:2], local, optimize=True)
+            det = jacobian[..., 0, 0] * jacobian[..., 1, 1] - jacobian[..., 0, 1] * jacobian[..., 1, 0]
+            down = np.empty((c, 3, q, count))
+            gx, gy = parts[0][None], parts[1][None]
+            inverse = (jacobian / det[..., None, None])[..., None]
+            down[:, 0] = inverse[:, :, 1, 1] * gx - inverse[:, :, 1, 0] * gy
+            down[:, 1] = inverse[:, :, 0, 0] * gy - inverse[:, :, 0, 1] * gx
+            down[:, 2] = parts[2]
+            right = np.zeros_like(down)
+            for (a, b), values in form.items():
+                field = values[chunk]
+                scale = (field[:, None] if field.ndim == 1 else field) * det * weights
+                right[:, _SLOT[a]] += scale[..., None] * down[:, _SLOT[b]]
+            stacked = down.reshape(c, 3 * q, count)
+            out[chunk] = stacked.transpose(0, 2, 1) @ right.reshape(c, 3 * q, count)
+        return out
+
+    def chunks(self) -> Iterator[slice]:
+        """Slices of the cells, small enough that element matrices of one fit the cache of a laptop."""
+        for start in range(0, len(self.cells), _CHUNK):
+            yield slice(start, min(start + _CHUNK, len(self.cells)))
+
+    def matrix(self, form: Form) -> sparse.csr_array:
+        """The form on all `nodes` (walls included), shape (n, n)."""
+        dofs = self.dofs
+        n, count = len(self.nodes), dofs.shape[1]
+        index = np.int32 if n < 2**31 else np.int64
+        data = np.empty((len(dofs), count, count))
+        for chunk in self.chunks():
+            data[chunk] = self.elements(form, chunk)
+        rows = np.broadcast_to(dofs[:, :, None], data.shape).astype(index).ravel()
+        columns = np.broadcast_to(dofs[:, None, :], data.shape).astype(index).ravel()
+        return sparse.csr_array((data.ravel(), (rows, columns)), shape=(n, n))
+
+    def field(self, by_region: Any) -> Field:
+        """(c,) a field that is constant in each region, from one number a region."""
+        return np.asarray(by_region, dtype=float)[self.mesh.region[self.cells]]
+
+    @property
+    def ones(self) -> Field:
+        """(c,) the field 1."""
+        return np.ones(len(self.cells))
+
+    @cached_property
+    def mass(self) -> sparse.csr_array:
+        """The matrix of int u v."""
+        return self.matrix({("1", "1"): self.ones})
+
+    @cached_property
+    def area_nm2(self) -> float:
+        """Area that carriers may enter."""
+        return float(self.mass.sum())
