@@ -1,0 +1,72 @@
+"""The number of states by phase-space counting: a first guess of sizes, and the tail above the solved states.
+
+N(E) = integral of m (E - V)+ / (2 pi hbar^2) over the section, less (length of the walls) x sqrt(m (E - V)) / (4 pi hbar)
+averaged over the section (H. Weyl's law with its boundary term; M. Kac, Am. Math. Mon. 73, 1 (1966)), with
+m = 1/sqrt(det W) from the in-plane inverse mass W.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from wiresolve.fem.space import Space
+from wiresolve.physics.pencil import Operator
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, eq=False)
+class PhaseSpace:
+    """What the count needs of a section: small pieces of it with area, edge and stiffness.
+
+    Attributes
+    ----------
+    area_nm2, edge_eV, stiffness_eV_nm2 : (p,) each piece's area, lowest energy, and hbar^2/2m = sqrt(det A).
+    wall_nm : length of the walls.
+    """
+
+    area_nm2: Array
+    edge_eV: Array
+    stiffness_eV_nm2: Array
+    wall_nm: float
+
+    @property
+    def bottom_eV(self) -> float:
+        """Lowest energy in the section."""
+        return float(self.edge_eV.min())
+
+    def count(self, energy_eV: Array) -> Array:
+        """Orbital states below each energy (same shape), never negative."""
+        above = np.maximum(np.asarray(energy_eV)[..., None] - self.edge_eV, 0) / self.stiffness_eV_nm2
+        inside = (self.area_nm2 * above).sum(axis=-1) / (4 * np.pi)
+        share = self.area_nm2 / self.area_nm2.sum()
+        return np.asarray(np.maximum(inside - self.wall_nm * (share * np.sqrt(above)).sum(axis=-1) / (4 * np.pi), 0))
+
+    def energy_of(self, count: float) -> float:
+        """The energy below which `count` states lie."""
+        low, step = self.bottom_eV, 1e-3
+        while self.count(np.array(low + step)) < count:
+            step *= 2
+        grid = low + step * np.linspace(0, 1, 257)
+        return float(np.interp(count, np.maximum.accumulate(self.count(grid)), grid))
+
+
+def phase_space(space: Space, operator: Operator) -> PhaseSpace:
+    """The phase space of a one-band operator on the space's cells."""
+    region = space.mesh.region[space.cells]
+    edge = np.array([float(c.constant[0, 0].real) for c in operator.by_region])[region]
+    stiffness = np.array([np.sqrt(np.linalg.det(c.quadratic[:2, :2, 0, 0].real)) for c in operator.by_region])[region]
+    weights = space.quadrature_weights
+    if operator.potential is None:
+        # Without a varying potential a region is one piece.
+        regions = np.unique(region)
+        area = np.array([weights[region == r].sum() for r in regions])
+        first = [int(np.argmax(region == r)) for r in regions]
+        return PhaseSpace(area, edge[first], stiffness[first], space.wall_length_nm)
+    at = space.quadrature_points
+    energy = edge[:, None] + operator.potential(at[..., 0], at[..., 1])
+    spread = np.broadcast_to(stiffness[:, None], weights.shape)
+    return PhaseSpace(weights.ravel(), energy.ravel(), spread.ravel(), space.wall_length_nm)

@@ -1,0 +1,289 @@
+"""Certified subband minima: meshes refined until every wanted energy's bar is under the accuracy, then counted."""
+
+from __future__ import annotations
+
+import logging
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from wiresolve.describe.section import Piece
+from wiresolve.errors import ConvergenceError
+from wiresolve.fem import eigen, estimate
+from wiresolve.fem.corners import Corner, gradings, singular_corners
+from wiresolve.fem.meshing import Mesh, Mesher, SizeField
+from wiresolve.fem.space import Space
+from wiresolve.physics.pencil import Operator, Pencil, build
+from wiresolve.physics.semiclassical import PhaseSpace, phase_space
+
+Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
+OperatorOf = Callable[[Mesh], Operator]
+"""The operator over a mesh's regions."""
+Progress = Callable[[str, float, str], None]
+
+_log = logging.getLogger(__name__)
+
+MOST_UNKNOWNS = 300_000
+"""A mesh above this would leave a laptop's memory and patience; the best result so far is kept and marked."""
+FIRST = 300.0
+SAFE = 0.7
+_SPARE = 4
+"""States solved beyond the wanted ones, so that a level at the end is seen whole."""
+_PER_WAVE = 1.55e-8
+"""Relative error of a smooth section's energy at k h = 1, times (k h)^8: fitted on circles, for the first mesh only."""
+
+
+@dataclass(frozen=True, eq=False)
+class Solved:
+    """States of one mesh with their bars.
+
+    Attributes
+    ----------
+    energy_eV, bar_eV, level : (m,) ascending, m at least the wanted number; levels from 1.
+    states : (nodes x bands, m) on all nodes of the space, orthonormal in the mass matrix.
+    shift_eV : an energy below all states.
+    """
+
+    pencil: Pencil
+    operator: Operator
+    energy_eV: Array
+    bar_eV: Array
+    level: Ints
+    states: NDArray[Any]
+    enriched: estimate.Enriched
+    enriched_pencil: Pencil
+    shift_eV: float
+    phase_space: PhaseSpace
+
+    @property
+    def unknown_states(self) -> NDArray[Any]:
+        """The states on the pencil's unknowns."""
+        return np.asarray(self.states[self.pencil.kept])
+
+
+@dataclass(frozen=True, eq=False)
+class Certified:
+    """The last mesh's states, what was reached, and the proof that none is missing.
+
+    Attributes
+    ----------
+    wanted : how many of the states were asked for.
+    missed : states below the counting energy that the solver did not return.
+    wall_effect_eV : (wanted,) None where the outermost layer is no barrier.
+    met : every wanted bar is under the accuracy.
+    """
+
+    solved: Solved
+    wanted: int
+    missed: int
+    wall_effect_eV: Array | None
+    passes: int
+    met: bool
+
+
+@dataclass(frozen=True)
+class Barrier:
+    """The outermost layer where it is a barrier: the region's name, its edge and stiffness, whether it may be extended."""
+
+    region: str
+    edge_eV: float
+    stiffness_eV_nm2: float
+    extendable: bool
+
+
+def levels(energy_eV: Array, bar_eV: Array) -> Ints:
+    """Clusters of neighbouring energies that are equal within their bars, numbered from 1, shape (m,)."""
+    apart = np.diff(energy_eV) > bar_eV[:-1] + bar_eV[1:]
+    return np.asarray(1 + np.concatenate([[0], np.cumsum(apart)]), dtype=np.int64)
+
+
+def solve_on(coarse: Mesh, fine: Mesh, operator_of: OperatorOf, count: int) -> Solved:
+    """States and bars on one pair of meshes (degree 4 and 6 over the same triangles)."""
+    space, finer = Space(coarse), Space(fine)
+    operator = operator_of(coarse)
+    pencil, above = build(space, operator), build(finer, operator)
+    cells = phase_space(space, operator)
+    unknowns = len(pencil.kept)
+    if count > unknowns // 2:
+        raise ConvergenceError(f"{count} states were asked of a mesh with {unknowns} unknowns")
+    shift = cells.bottom_eV - 1e-3 * (cells.energy_of(count) - cells.bottom_eV)
+    energy, states = eigen.lowest(pencil.h0, pencil.mass, count, shift)
+    full = pencil.spread(states)
+    enriched = estimate.enrich(
+        space, finer, energy, full, above.local(), above.local_mass, shift, operator.bands
+    )
+    bar = estimate.bars(enriched)
+    level = levels(energy, bar)
+    bar = estimate.bars(enriched, level)
+    return Solved(pencil, operator, energy, bar, levels(energy, bar), full, enriched, above, shift, cells)
+
+
+def certify_at(solved: Solved, k_per_nm: float, count: int) -> Solved:
+    """The states at another k on the same meshes, with bars of their own."""
+    pencil = solved.pencil
+    energy, states = eigen.lowest(pencil.at(k_per_nm), pencil.mass, count + _SPARE, solved.shift_eV)
+    full = pencil.spread(states)
+    enriched = estimate.enrich(
+        pencil.space,
+        solved.enriched.space,
+        energy,
+        full,
+        solved.enriched_pencil.local(k_per_nm),
+        solved.enriched_pencil.local_mass,
+        solved.shift_eV,
+        solved.operator.bands,
+    )
+    bar = estimate.bars(enriched)
+    level = levels(energy, bar)
+    return replace(
+        solved, energy_eV=energy, bar_eV=estimate.bars(enriched, level), level=level, states=full, enriched=enriched
+    )
+
+
+def certify(
+    draw: Callable[[float], Sequence[Piece]],
+    operator_of: OperatorOf,
+    wanted: int,
+    accuracy_eV: float,
+    barrier: Barrier | None = None,
+    on_progress: Progress | None = None,
+) -> Certified:
+    """The lowest `wanted` states, each to `accuracy_eV`, with bars, count and wall effect.
+
+    Parameters
+    ----------
+    draw : the pieces of the section in painting order, given how far in nm the outermost layer is to be extended
+        (ignored where there is nothing to extend).
+    barrier : the outermost layer where it is a barrier.
+    """
+    tell = on_progress or (lambda stage, fraction, detail: None)
+    distance, passes = 0.0, 0
+    for _ in range(6):
+        with Mesher(draw(distance)) as mesher:
+            size, corners, start = _first_size(mesher, operator_of, wanted, accuracy_eV)
+            if barrier is not None and barrier.extendable and distance == 0.0:
+                distance = _first_distance(start, barrier, wanted)
+                continue
+            best, solved_passes = _refine(mesher, size, corners, operator_of, wanted, accuracy_eV, passes, tell, barrier)
+        passes += solved_passes
+        effect = None if barrier is None else wall_effect(best, barrier, wanted)
+        if barrier is None or effect is None or not barrier.extendable:
+            break
+        more = _further(best, effect, barrier, wanted, accuracy_eV)
+        if more == 0.0:
+            break
+        distance = min(distance + more, 20 * np.sqrt(best.pencil.space.area_nm2))
+    tell("count", 0.9, "counting the states below the highest wanted one")
+    best, missed = _counted(best, wanted)
+    met = bool((best.bar_eV[:wanted] <= accuracy_eV).all())
+    return Certified(best, wanted, missed, effect, passes, met)
+
+
+def _first_size(
+    mesher: Mesher, operator_of: OperatorOf, wanted: int, accuracy_eV: float
+) -> tuple[SizeField, tuple[Corner, ...], PhaseSpace]:
+    """A size field for the first mesh, from the wave length of the highest wanted state and the singular corners."""
+    rough, _ = mesher.mesh(SizeField(mesher.extent_nm / 4))
+    space, operator = Space(rough), operator_of(rough)
+    cells = phase_space(space, operator)
+    top = cells.energy_of(wanted + 1)
+    wave_number = float(np.sqrt((np.maximum(top - cells.edge_eV, 0) / cells.stiffness_eV_nm2).max()))
+    inverse_mass = [np.asarray(c.quadratic[:2, :2, 0, 0].real) for c in operator.by_region]
+    corners = singular_corners(rough, inverse_mass)
+    relative = accuracy_eV / estimate.BAR_FACTOR / 2 / (top - cells.bottom_eV)
+    if corners or len(operator.by_region) > 1:
+        # The fit below knows smooth sections only; a second mesh, sized by what the first one shows, is cheaper
+        # than a first one that is too fine.
+        relative *= FIRST
+    largest = (relative / _PER_WAVE) ** 0.125 / wave_number
+    largest = min(max(largest, 0.4 / wave_number), 3.0 / wave_number, mesher.extent_nm / 3)
+    reach = float(np.sqrt(space.area_nm2) / 2)
+    return SizeField(largest, gradings(corners, largest, reach)), corners, cells
+
+
+def _refine(
+    mesher: Mesher,
+    size: SizeField,
+    corners: tuple[Corner, ...],
+    operator_of: OperatorOf,
+    wanted: int,
+    accuracy_eV: float,
+    passes: int,
+    tell: Progress,
+    barrier: Barrier | None,
+) -> tuple[Solved, int]:
+    """Solve and re-mesh until the bars are under the accuracy, or no longer fall."""
+    best: Solved | None = None
+    worst, stalled = np.inf, 0
+    for number in range(1, 11):
+        solved = solve_on(*mesher.mesh(size), operator_of, wanted + _SPARE)
+        bar = float(solved.bar_eV[:wanted].max())
+        unknowns = len(solved.pencil.kept)
+        tell("mesh", 0.1 + 0.08 * number, f"mesh {passes + number}: {unknowns} unknowns, widest bar {1e3 * bar:.3g} meV")
+        _log.debug("pass %d: %d unknowns, bar %.3g eV", passes + number, unknowns, bar)
+        stalled = 0 if bar < 0.7 * worst else stalled + 1
+        if bar < worst:
+            best, worst = solved, bar
+        if bar <= accuracy_eV or stalled >= 2:
+            break
+        target = max(accuracy_eV / estimate.BAR_FACTOR * SAFE, 1e-3 * bar)
+        size = estimate.finer(solved.enriched, size, corners, target, wanted)
+        if unknowns * (bar / (1.75 * target)) ** 0.25 > MOST_UNKNOWNS:
+            break
+    assert best is not None
+    return best, number
+
+
+def _first_distance(cells: PhaseSpace, barrier: Barrier, wanted: int) -> float:
+    """A first guess of how far the outermost layer must reach: 8 decay lengths at half its height."""
+    height = max(barrier.edge_eV - cells.bottom_eV, 1e-3)
+    return float(8 * np.sqrt(2 * barrier.stiffness_eV_nm2 / height))
+
+
+def wall_effect(solved: Solved, barrier: Barrier, wanted: int) -> Array:
+    """How far each energy falls when the outer hard wall is left free, (wanted,) in eV."""
+    space = solved.pencil.space
+    region = [r.name for r in space.mesh.regions].index(barrier.region)
+    free = replace(solved.pencil, kept=build(space, solved.operator, space.rim_of(region)).kept)
+    energy, _ = eigen.lowest(free.h0, free.mass, wanted + 2, solved.shift_eV)
+    return np.asarray(solved.energy_eV[:wanted] - energy[:wanted])
+
+
+def _further(solved: Solved, effect: Array, barrier: Barrier, wanted: int, accuracy_eV: float) -> float:
+    """How much farther the wall must be for the bound states not to see it, 0 where it is far enough.
+
+    The hard wall's own share is about half of the effect. It falls as exp(-2 distance/decay length); a thousandth of
+    the accuracy costs little more than a tenth.
+    """
+    bound = solved.energy_eV[:wanted] < barrier.edge_eV
+    wish = np.maximum(1e-3 * accuracy_eV, 1e-11)
+    if not bound.any() or effect[bound].max() <= wish:
+        return 0.0
+    decay = np.sqrt(np.maximum(barrier.edge_eV - solved.energy_eV[:wanted], 1e-6) / barrier.stiffness_eV_nm2)
+    return float((np.log(np.maximum(effect[bound], 1e-300) / wish) / (2 * decay[bound])).max() * 1.15)
+
+
+def _counted(solved: Solved, wanted: int) -> tuple[Solved, int]:
+    """The count of the states below the first clear gap above the wanted ones, against those found."""
+    for _ in range(4):
+        energy, bar = solved.energy_eV, solved.bar_eV
+        gaps = [i for i in range(wanted - 1, len(energy) - 1) if energy[i + 1] - energy[i] > bar[i] + bar[i + 1]]
+        if gaps:
+            found = gaps[0] + 1
+            between = (energy[found - 1] + energy[found]) / 2
+            missed = eigen.count_below(solved.pencil.h0, solved.pencil.mass, float(between)) - found
+            if missed == 0:
+                return solved, 0
+        # A level without a clear end, or a state that the iteration passed over: solve for more.
+        solved = _again(solved, 2 * len(energy) - wanted + _SPARE)
+    raise ConvergenceError("states below the highest wanted one are missing and four wider solves did not find them")
+
+
+def _again(solved: Solved, count: int) -> Solved:
+    """The same mesh solved for more states."""
+    coarse, fine = solved.pencil.space.mesh, solved.enriched.space.mesh
+    return solve_on(coarse, fine, lambda mesh: solved.operator, count)
