@@ -1,0 +1,194 @@
+"""The complete, frozen result of a run, and its plain-data form (what `result.json` holds)."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import asdict, dataclass, field
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from wiresolve.describe.problem import Problem
+from wiresolve.fem.meshing import Mesh
+
+Array = NDArray[np.float64]
+SCHEMA = "wiresolve-result-1"
+
+
+@dataclass(frozen=True)
+class Subband:
+    """One orbital state of one group of valleys: an entry of the subband table.
+
+    `energy_eV` is the subband's minimum from the result's energy zero, `error_eV` the bar of its discretisation,
+    `level` the cluster of entries that are equal within their bars (from 1), `axial_mass` in m0 (None where E(k)
+    starts linearly), `shares` the probability by layer, `bound` and `wall_effect_eV` None where the outermost layer
+    is no barrier, `line_density_per_nm` at the Fermi level and the first temperature (None without a Fermi level).
+    """
+
+    index: int
+    level: int
+    valley: str
+    energy_eV: float
+    error_eV: float
+    k_min_per_nm: float
+    axial_mass: float | None
+    axial_mass_error: float | None
+    spin_degeneracy: int
+    valley_degeneracy: int
+    layer: str
+    shares: Mapping[str, float]
+    bound: bool | None
+    wall_effect_eV: float | None
+    line_density_per_nm: float | None
+
+
+@dataclass(frozen=True)
+class MeshSummary:
+    """Size of the final mesh and how many meshes were made on the way to it."""
+
+    cells: int
+    unknowns: int
+    degree: int
+    area_nm2: float
+    passes: int
+
+
+@dataclass(frozen=True)
+class Warned:
+    """A warning with a code that describes itself, what is the matter, and what to do."""
+
+    code: str
+    text: str
+    remedy: str
+
+
+@dataclass(frozen=True, eq=False)
+class ThermalCurve:
+    """A quantity against the Fermi level at one temperature; `values` has the shape of `fermi_eV`."""
+
+    temperature_K: float
+    fermi_eV: Array
+    values: Array
+
+
+@dataclass(frozen=True, eq=False)
+class DensityOfStates:
+    """Exact averages of the 1D density of states over energy bins, all degeneracies counted.
+
+    `edges_eV` (n + 1,), `per_eV_nm` (n,); the inverse-square-root edges lie at `singular_at_eV`.
+    """
+
+    edges_eV: Array
+    per_eV_nm: Array
+    singular_at_eV: Array
+
+
+@dataclass(frozen=True, eq=False)
+class Dispersion:
+    """E(k) of the listed subbands: `k_per_nm` (m,) from 0 on, `energy_eV` (n, m), bound of the reduced space's error."""
+
+    k_per_nm: Array
+    energy_eV: Array
+    error_bound_eV: float
+
+
+@dataclass(frozen=True)
+class Verdict:
+    """The plain-language answer and the numbers behind it (see `physics.verdict`)."""
+
+    text: str
+    single_subband: Mapping[str, Any]
+    steps: tuple[Mapping[str, Any], ...]
+    effective_dimension: tuple[Mapping[str, Any], ...]
+
+
+@dataclass(frozen=True, eq=False)
+class Result:
+    """Everything a run found. It is data: no field is filled in later.
+
+    `modes` has the shape (mesh points, listed subbands): real envelope functions in 1/nm at the mesh's nodes, each
+    normalised to 1 over the section. `material_fields` holds values by cell (`mass_m0`, `band_edge_eV`).
+    """
+
+    problem: Problem
+    mesh: Mesh
+    modes: Array
+    cell_fields: Mapping[str, Array]
+    subbands: tuple[Subband, ...]
+    summary: MeshSummary
+    energy_zero_text: str
+    energy_zero_on_common_scale_eV: float | None
+    states_missed: int
+    accuracy_met: bool
+    dispersion: Dispersion
+    density_of_states: DensityOfStates
+    conductance: tuple[ThermalCurve, ...]
+    density: tuple[ThermalCurve, ...]
+    line_density_per_nm: float | None
+    verdict: Verdict
+    warnings: tuple[Warned, ...]
+    not_modelled: tuple[str, ...]
+    versions: Mapping[str, str]
+    timings_s: Mapping[str, float] = field(default_factory=dict)
+
+    @property
+    def energies_eV(self) -> Array:
+        """Energies of the listed subbands, shape (n,)."""
+        return np.array([s.energy_eV for s in self.subbands])
+
+    @property
+    def errors_eV(self) -> Array:
+        """Error bars of the listed subbands, shape (n,)."""
+        return np.array([s.error_eV for s in self.subbands])
+
+    def to_dict(self) -> dict[str, Any]:
+        """Plain data (dicts, lists, strings, numbers, None), the content of `result.json`."""
+        materials = [
+            asdict(value) for material in self.problem.resolved_materials().values() for value in material.values
+        ]
+        return {
+            "schema": SCHEMA,
+            "title": self.problem.title,
+            "input_digest": self.problem.digest,
+            "versions": dict(self.versions),
+            "energy_zero": {
+                "text": self.energy_zero_text,
+                "value_eV_on_common_scale": self.energy_zero_on_common_scale_eV,
+            },
+            "mesh": asdict(self.summary),
+            "subbands": [{**asdict(s), "shares": dict(s.shares)} for s in self.subbands],
+            "sensitivities": [],
+            "gates": [],
+            "line_density_per_nm": self.line_density_per_nm,
+            "states_missed": self.states_missed,
+            "accuracy_met": self.accuracy_met,
+            "dispersion": {
+                "k_per_nm": self.dispersion.k_per_nm.tolist(),
+                "energy_eV": self.dispersion.energy_eV.tolist(),
+                "error_bound_eV": self.dispersion.error_bound_eV,
+            },
+            "density_of_states": {
+                "edges_eV": self.density_of_states.edges_eV.tolist(),
+                "per_eV_nm": self.density_of_states.per_eV_nm.tolist(),
+                "singular_at_eV": self.density_of_states.singular_at_eV.tolist(),
+            },
+            "conductance": [
+                {"temperature_K": c.temperature_K, "fermi_eV": c.fermi_eV.tolist(), "G_over_G0": c.values.tolist()}
+                for c in self.conductance
+            ],
+            "density": [
+                {"temperature_K": c.temperature_K, "fermi_eV": c.fermi_eV.tolist(), "per_nm": c.values.tolist()}
+                for c in self.density
+            ],
+            "verdict": {
+                "text": self.verdict.text,
+                "single_subband": dict(self.verdict.single_subband),
+                "steps": [dict(s) for s in self.verdict.steps],
+                "effective_dimension": [dict(d) for d in self.verdict.effective_dimension],
+            },
+            "warnings": [asdict(w) for w in self.warnings],
+            "not_modelled": list(self.not_modelled),
+            "materials": materials,
+            "timings_s": dict(self.timings_s),
+        }

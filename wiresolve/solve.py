@@ -1,0 +1,210 @@
+"""The main story: from a problem to a complete result.
+
+    problem -> wire (pieces, operator, barrier) -> certified subband minima -> modes, axial masses, E(k)
+            -> spectrum (with what lies above the listed states) -> what is measured -> verdict -> result
+"""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from functools import lru_cache
+from importlib import metadata
+
+import numpy as np
+from numpy.typing import NDArray
+
+from wiresolve.describe.problem import Problem
+from wiresolve.physics import modes, remarks, statistics, transport, verdict
+from wiresolve.physics.axial_bands import AxialBands
+from wiresolve.physics.spectrum import Spectrum
+from wiresolve.physics.listing import Listing, listing, spectrum_of
+from wiresolve.physics.subbands import Certified, certify
+from wiresolve.physics.wire import Wire
+from wiresolve.result import (
+    DensityOfStates,
+    Dispersion,
+    MeshSummary,
+    Result,
+    Subband,
+    ThermalCurve,
+    Verdict,
+    Warned,
+)
+from wiresolve.units import KB
+
+Array = NDArray[np.float64]
+Progress = Callable[[str, float, str], None]
+
+SPIN = 2
+"""Both spins share each effective-mass state."""
+
+
+def solve(problem: Problem, on_progress: Progress | None = None) -> Result:
+    """Solve a wire.
+
+    Parameters
+    ----------
+    problem : the whole description.
+    on_progress : called with (stage, fraction done, detail) now and then.
+
+    Returns
+    -------
+    Result
+        Complete; where the accuracy could not be reached it holds the best that was found and says so
+        (`accuracy_met`, a warning).
+
+    Raises
+    ------
+    InputError, MeshError, ConvergenceError
+        The section leaves nothing to solve, cannot be meshed, or its states cannot be accounted for.
+    """
+    from threadpoolctl import threadpool_limits
+
+    clock = _Clock()
+    # More BLAS threads only get in each other's way at these sizes.
+    with threadpool_limits(limits=1, user_api="blas"):
+        wire = Wire(problem)
+        with clock("subbands"):
+            certified = certify(
+                wire.draw, wire.operator, problem.accuracy.subbands, problem.accuracy.energy_eV, wire.barrier, on_progress
+            )
+        with clock("axial"):
+            found = listing(wire, certified)
+        with clock("above"):
+            spectrum = spectrum_of(wire, certified, found)
+    with clock("measured"):
+        return _assembled(wire, certified, found, spectrum, clock)
+
+
+def _assembled(wire: Wire, certified: Certified, found: Listing, spectrum: Spectrum, clock: _Clock) -> Result:
+    problem, space = wire.problem, certified.solved.pencil.space
+    temperatures = problem.carriers.temperature_K
+    fermi = problem.carriers.fermi_level_eV
+    by_subband = None if fermi is None else statistics.line_density_by_subband(spectrum, fermi, temperatures[0])
+    total = None if fermi is None else float(statistics.line_density(spectrum, fermi, temperatures[0]))
+    subbands = _subbands(wire, certified, found, None if by_subband is None else np.ravel(by_subband))
+    warnings, said = remarks.on(wire, certified, found)
+    judged = verdict.judge(spectrum, temperatures, fermi, said)
+    zero_text, zero_value = problem.energy_zero()
+    points = np.zeros((len(space.mesh.points), certified.wanted), dtype=found.states.dtype)
+    points[space.nodes] = found.states[:, : certified.wanted]
+    mesh = space.mesh
+    edges = _edges(spectrum)
+    density_of_states = statistics.density_of_states(spectrum, edges)
+    return Result(
+        problem=problem,
+        mesh=mesh,
+        modes=points,
+        cell_fields=_cell_fields(wire, certified),
+        subbands=subbands,
+        summary=MeshSummary(
+            len(mesh.cells), len(certified.solved.pencil.kept), mesh.degree, space.area_nm2, certified.passes
+        ),
+        energy_zero_text=zero_text,
+        energy_zero_on_common_scale_eV=zero_value,
+        states_missed=certified.missed,
+        accuracy_met=certified.met,
+        dispersion=_dispersion(found.bands, certified.wanted),
+        density_of_states=DensityOfStates(edges, density_of_states.per_eV_nm, density_of_states.singular_at_eV),
+        conductance=_curves(spectrum, temperatures, transport.conductance),
+        density=_curves(spectrum, temperatures, statistics.line_density),
+        line_density_per_nm=total,
+        verdict=Verdict(judged.text, judged.single_subband, judged.steps, judged.effective_dimension),
+        warnings=tuple(Warned(*w) for w in warnings),
+        not_modelled=remarks.NOT_MODELLED,
+        versions=_versions(),
+        timings_s=clock.seconds,
+    )
+
+
+def _subbands(
+    wire: Wire, certified: Certified, found: Listing, density: Array | None
+) -> tuple[Subband, ...]:
+    listed, barrier, effect = [], wire.barrier, certified.wall_effect_eV
+    for i in range(certified.wanted):
+        shares = {name: float(share[i]) for name, share in found.shares.items()}
+        layer = max(shares, key=lambda name: shares[name])
+        energy = float(found.energy_eV[i])
+        mass, mass_error = found.axial_mass[i], found.axial_mass_error[i]
+        listed.append(
+            Subband(
+                index=i + 1,
+                level=int(certified.solved.level[i]),
+                valley=found.valley,
+                energy_eV=energy,
+                error_eV=float(found.bar_eV[i]),
+                k_min_per_nm=float(found.k_min_per_nm[i]),
+                axial_mass=float(mass) if np.isfinite(mass) else None,
+                axial_mass_error=float(mass_error) if np.isfinite(mass) else None,
+                spin_degeneracy=SPIN,
+                valley_degeneracy=found.valley_degeneracy,
+                layer=layer,
+                shares=shares,
+                bound=None if barrier is None else bool(energy < barrier.edge_eV),
+                wall_effect_eV=None if effect is None else float(effect[i]),
+                line_density_per_nm=None if density is None else float(density[i]),
+            )
+        )
+    return tuple(listed)
+
+
+def _cell_fields(wire: Wire, certified: Certified) -> dict[str, Array]:
+    mesh = certified.solved.pencil.space.mesh
+    mass, edge = [], []
+    for region in mesh.regions:
+        material = wire.materials[region.material]
+        mass.append(1 / material.inverse_mass[2][2] if material.inverse_mass else np.nan)
+        known = region.carriers and material.conduction_edge_eV is not None
+        edge.append(wire.edge_eV(region.material, region.offset_eV) if known else np.nan)
+    return {"mass_m0": np.array(mass)[mesh.region], "band_edge_eV": np.array(edge)[mesh.region]}
+
+
+def _dispersion(bands: AxialBands, wanted: int) -> Dispersion:
+    return Dispersion(bands.k_per_nm, bands.energy_eV[:wanted], bands.error_bound_eV)
+
+
+def _curves(
+    spectrum: Spectrum, temperatures: tuple[float, ...], quantity: Callable[[Spectrum, Array, float], Array]
+) -> tuple[ThermalCurve, ...]:
+    """The quantity from well below the first subband up to the last listed one, at T = 0 and each temperature."""
+    curves = []
+    bottom, top = spectrum.energy_eV[0], spectrum.energy_eV[spectrum.listed - 1]
+    for temperature in dict.fromkeys((0.0, *temperatures)):
+        margin = max(0.1 * (top - bottom), 6 * KB * temperature, 1e-3)
+        fermi = np.linspace(bottom - margin, max(top, bottom + margin), 401)
+        curves.append(ThermalCurve(temperature, fermi, np.asarray(quantity(spectrum, fermi, temperature))))
+    return tuple(curves)
+
+
+def _edges(spectrum: Spectrum) -> Array:
+    bottom, top = float(spectrum.energy_eV[0]), float(spectrum.energy_eV[spectrum.listed - 1])
+    span = max(top - bottom, 1e-3)
+    return np.linspace(bottom - 0.05 * span, top + 0.15 * span, 241)
+
+
+@lru_cache(maxsize=1)
+def _versions() -> dict[str, str]:
+    found = {}
+    for name in ("wiresolve", "numpy", "scipy", "scikit-fem", "gmsh", "meshio"):
+        try:
+            found[name] = metadata.version(name)
+        except metadata.PackageNotFoundError:
+            found[name] = "not installed"
+    return found
+
+
+class _Clock:
+    """Seconds spent in each part."""
+
+    def __init__(self) -> None:
+        self.seconds: dict[str, float] = {}
+        self._begun = time.perf_counter()
+
+    @contextmanager
+    def __call__(self, part: str) -> Iterator[None]:
+        begun = time.perf_counter()
+        yield
+        self.seconds[part] = time.perf_counter() - begun
+        self.seconds["total"] = time.perf_counter() - self._begun
