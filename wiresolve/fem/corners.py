@@ -20,8 +20,6 @@ from wiresolve.fem.meshing import Grading, Mesh
 Array = NDArray[np.float64]
 
 SMOOTH_FROM = 4.0
-LEAST = 0.1
-"""Exponents from here on cost no order at degree 4 and need no grading."""
 
 
 @dataclass(frozen=True)
@@ -152,12 +150,14 @@ def exponents(sectors: Sequence[tuple[float, float]], closed: bool) -> Array:
     return np.asarray(np.sqrt(squares[squares > 1e-6]))
 
 
-def gradings(corners: Sequence[Corner], largest_nm: float, reach_nm: float, degree: int = 4) -> tuple[Grading, ...]:
-    """Gradings that let cells grow from each corner to `largest_nm` at `reach_nm` away."""
+def gradings(
+    corners: Sequence[Corner], largest_nm: float, reach_nm: float, least: float, degree: int = 4
+) -> tuple[Grading, ...]:
+    """Gradings that let cells grow from each corner to `largest_nm` at `reach_nm` away, from no less than `least` of it."""
     made = []
     for corner in corners:
         power = 1 - min(corner.exponent, degree) / (degree + 1)
         # The innermost cell is where the size reaches the distance itself.
         inner = reach_nm * min(1.0, largest_nm / reach_nm) ** (1 / (1 - power))
-        made.append(Grading(corner.x, corner.y, reach_nm, largest_nm, power, max(0.5 * inner, LEAST * largest_nm)))
+        made.append(Grading(corner.x, corner.y, reach_nm, largest_nm, power, max(0.5 * inner, least * largest_nm)))
     return tuple(made)

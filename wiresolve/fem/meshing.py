@@ -100,6 +100,8 @@ class Mesher:
         import gmsh
 
         self._gmsh = gmsh
+        if gmsh.isInitialized():
+            raise MeshError("Gmsh is in use in this process; call gmsh.finalize() first")
         gmsh.initialize([], readConfigFiles=False, interruptible=False)
         try:
             for option, value in _OPTIONS.items():

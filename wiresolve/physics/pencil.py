@@ -20,6 +20,7 @@ from wiresolve.bands.coefficients import Coefficients
 from wiresolve.fem.space import Field, Form, Space
 
 Array = NDArray[np.float64]
+Cells = slice | NDArray[np.int64]
 _AXES = ("x", "y")
 
 
@@ -152,10 +153,10 @@ class Pencil:
             total = total + k_per_nm**2 * self.h2
         return total
 
-    def local(self, k_per_nm: float = 0.0) -> Callable[[Space, slice], NDArray[Any]]:
-        """Element matrices of H(k), shape (cells, nodes x bands, nodes x bands), on `space` only."""
+    def local(self, k_per_nm: float = 0.0) -> Callable[[Space, Cells], NDArray[Any]]:
+        """Element matrices of H(k), shape (cells, nodes x bands, nodes x bands), on this pencil's space."""
 
-        def elements(space: Space, cells: slice) -> NDArray[Any]:
+        def elements(space: Space, cells: Cells) -> NDArray[Any]:
             total: Any = 0
             for term in self.terms:
                 if term.order == 0 or k_per_nm:
@@ -165,10 +166,41 @@ class Pencil:
 
         return elements
 
-    def local_mass(self, space: Space, cells: slice) -> NDArray[Any]:
+    def local_mass(self, space: Space, cells: Cells) -> NDArray[Any]:
         """Element matrices of the inner product."""
         block = space.elements({("1", "1"): space.ones}, cells)
         return block if self.bands == 1 else np.kron(block, np.eye(self.bands))
+
+    def has(self, order: int) -> bool:
+        """Whether the operator has a part of this order in k."""
+        return any(term.order == order for term in self.terms)
+
+    @property
+    def uniform_axial_eV_nm2(self) -> float | None:
+        """The number a where H(k) = H0 + a k^2 with one a for the whole section and all bands, else None."""
+        second = [term for term in self.terms if term.order == 2]
+        if self.has(1) or len(second) != 1 or set(second[0].form) != {("1", "1")}:
+            return None
+        field, matrix = second[0].form["1", "1"], second[0].matrix
+        same = np.allclose(field, field.flat[0], rtol=1e-14) and np.array_equal(matrix, matrix[0, 0] * np.eye(self.bands))
+        return float(field.flat[0] * matrix[0, 0].real) if same else None
+
+    def expected(self, order: int, states: NDArray[Any]) -> NDArray[Any]:
+        """<i|H_order|j> of states (n, m) of the pencil, (m, m), cell by cell: no large matrix is made for it."""
+        full = self.spread(states)
+        total: Any = np.zeros((states.shape[1], states.shape[1]))
+        for chunk in self.space.chunks():
+            dofs = self.space.dofs[chunk]
+            if self.bands > 1:
+                dofs = (dofs[:, :, None] * self.bands + np.arange(self.bands)).reshape(len(dofs), -1)
+            local = full[dofs]
+            for term in self.terms:
+                if term.order == order:
+                    block = self.space.elements(term.form, chunk)
+                    block = block * term.matrix[0, 0] if self.bands == 1 else np.kron(block, term.matrix)
+                    image = (block @ local).reshape(-1, local.shape[2])
+                    total = total + local.conj().reshape(-1, local.shape[2]).T @ image
+        return np.asarray(total)
 
     def spread(self, states: NDArray[Any]) -> NDArray[Any]:
         """States (n, m) of the pencil on all nodes of the space, zero on the walls: (nodes x bands, m)."""

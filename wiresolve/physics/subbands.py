@@ -29,10 +29,15 @@ _log = logging.getLogger(__name__)
 
 MOST_UNKNOWNS = 300_000
 """A mesh above this would leave a laptop's memory and patience; the best result so far is kept and marked."""
-FIRST = 300.0
-SAFE = 0.7
 _SPARE = 4
 """States solved beyond the wanted ones, so that a level at the end is seen whole."""
+_COARSER = 300.0
+"""How much less accurate the first mesh of a section with corners or interfaces is: the fit below knows smooth sections
+only, and a second mesh that is sized by what the first one shows is cheaper than a first one that is too fine."""
+_REACH = 1.5
+"""Cells grow from a corner to their full size over this many full sizes."""
+_AIM = 0.7
+"""The next mesh aims at this share of the accuracy, so that one that turns out a little worse still meets it."""
 _PER_WAVE = 1.55e-8
 """Relative error of a smooth section's energy at k h = 1, times (k h)^8: fitted on circles, for the first mesh only."""
 
@@ -114,7 +119,7 @@ def solve_on(coarse: Mesh, fine: Mesh, operator_of: OperatorOf, count: int) -> S
     energy, states = eigen.lowest(pencil.h0, pencil.mass, count, shift)
     full = pencil.spread(states)
     enriched = estimate.enrich(
-        space, finer, energy, full, above.local(), above.local_mass, shift, operator.bands
+        space, finer, energy, full, (pencil.local(), above.local()), above.local_mass, shift, operator.bands
     )
     bar = estimate.bars(enriched)
     level = levels(energy, bar)
@@ -132,7 +137,7 @@ def certify_at(solved: Solved, k_per_nm: float, count: int) -> Solved:
         solved.enriched.space,
         energy,
         full,
-        solved.enriched_pencil.local(k_per_nm),
+        (pencil.local(k_per_nm), solved.enriched_pencil.local(k_per_nm)),
         solved.enriched_pencil.local_mass,
         solved.shift_eV,
         solved.operator.bands,
@@ -195,14 +200,14 @@ def _first_size(
     inverse_mass = [np.asarray(c.quadratic[:2, :2, 0, 0].real) for c in operator.by_region]
     corners = singular_corners(rough, inverse_mass)
     relative = accuracy_eV / estimate.BAR_FACTOR / 2 / (top - cells.bottom_eV)
+    # How small the first mesh's innermost cells are; later meshes follow the indicators.
+    least = float(np.clip((relative / 1e-3) ** 0.25, 0.05, 0.8))
     if corners or len(operator.by_region) > 1:
-        # The fit below knows smooth sections only; a second mesh, sized by what the first one shows, is cheaper
-        # than a first one that is too fine.
-        relative *= FIRST
+        relative *= _COARSER
     largest = (relative / _PER_WAVE) ** 0.125 / wave_number
     largest = min(max(largest, 0.4 / wave_number), 3.0 / wave_number, mesher.extent_nm / 3)
-    reach = float(np.sqrt(space.area_nm2) / 2)
-    return SizeField(largest, gradings(corners, largest, reach)), corners, cells
+    reach = min(float(np.sqrt(space.area_nm2) / 2), _REACH * largest)
+    return SizeField(largest, gradings(corners, largest, reach, least)), corners, cells
 
 
 def _refine(
@@ -228,9 +233,11 @@ def _refine(
         stalled = 0 if bar < 0.7 * worst else stalled + 1
         if bar < worst:
             best, worst = solved, bar
-        if bar <= accuracy_eV or stalled >= 2:
+        if bar <= accuracy_eV or stalled >= 3:
             break
-        target = max(accuracy_eV / estimate.BAR_FACTOR * SAFE, 1e-3 * bar)
+        # A mesh that missed its aim was outside the law that sized it: aim lower the next time.
+        aim = _AIM / 2 ** max(number - 2, 0)
+        target = max(accuracy_eV / estimate.BAR_FACTOR * aim, 1e-3 * bar)
         size = estimate.finer(solved.enriched, size, corners, target, wanted)
         if unknowns * (bar / (1.75 * target)) ** 0.25 > MOST_UNKNOWNS:
             break

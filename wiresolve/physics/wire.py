@@ -55,6 +55,10 @@ class Wire:
         loop = outside_loop(self.inner, max(distance_nm, 0.25 * size))
         return (Piece("outside", loop, outside, True, 0.0), *self.inner)
 
+    def inverse_mass(self, material: str) -> Array:
+        """(3, 3) inverse mass of a material in 1/m0."""
+        return np.asarray(self.materials[material].inverse_mass, dtype=float)
+
     def edge_eV(self, piece_material: str, offset_eV: float) -> float:
         """Band edge of a region from the energy zero."""
         return (self.materials[piece_material].conduction_edge_eV or 0.0) + offset_eV - self.zero_eV
@@ -62,8 +66,11 @@ class Wire:
     def operator(self, mesh: Mesh) -> Operator:
         """The operator over a mesh's regions; regions that carriers cannot enter get a stand-in that is never used."""
         stand_in = Coefficients(np.eye(3)[:, :, None, None], np.zeros((3, 1, 1)), np.zeros((1, 1)))
+        admitted = [r for r in mesh.regions if r.carriers]
+        tensors = effective_mass.without_common_shear([self.inverse_mass(r.material) for r in admitted])
+        of_region = {r.name: tensor for r, tensor in zip(admitted, tensors, strict=True)}
         by_region = tuple(
-            effective_mass.coefficients(self.materials[r.material], self.edge_eV(r.material, r.offset_eV))
+            effective_mass.coefficients(of_region[r.name], self.edge_eV(r.material, r.offset_eV))
             if r.carriers
             else stand_in
             for r in mesh.regions
