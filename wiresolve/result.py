@@ -86,7 +86,7 @@ class DensityOfStates:
 
 @dataclass(frozen=True, eq=False)
 class Dispersion:
-    """E(k) of the listed subbands: `k_per_nm` (m,) from 0 on, `energy_eV` (n, m), bound of the reduced space's error."""
+    """E(k) of the listed subbands: `k_per_nm` (m,) from 0 on, `energy_eV` (n, m), and the reduced space's error."""
 
     k_per_nm: Array
     energy_eV: Array

@@ -1,7 +1,7 @@
 """The main story: from a problem to a complete result.
 
-    problem -> wire (pieces, operator, barrier) -> certified subband minima -> modes, axial masses, E(k)
-            -> spectrum (with what lies above the listed states) -> what is measured -> verdict -> result
+problem -> wire (pieces, operator, barrier) -> certified subband minima -> modes, axial masses, E(k)
+        -> spectrum (with what lies above the listed states) -> what is measured -> verdict -> result
 """
 
 from __future__ import annotations
@@ -16,10 +16,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe.problem import Problem
-from wiresolve.physics import modes, remarks, statistics, transport, verdict
+from wiresolve.physics import remarks, statistics, transport, verdict
 from wiresolve.physics.axial_bands import AxialBands
-from wiresolve.physics.spectrum import Spectrum
 from wiresolve.physics.listing import Listing, listing, spectrum_of
+from wiresolve.physics.spectrum import Spectrum
 from wiresolve.physics.subbands import Certified, certify
 from wiresolve.physics.wire import Wire
 from wiresolve.result import (
@@ -68,7 +68,12 @@ def solve(problem: Problem, on_progress: Progress | None = None) -> Result:
         wire = Wire(problem)
         with clock("subbands"):
             certified = certify(
-                wire.draw, wire.operator, problem.accuracy.subbands, problem.accuracy.energy_eV, wire.barrier, on_progress
+                wire.draw,
+                wire.operator,
+                problem.accuracy.subbands,
+                problem.accuracy.energy_eV,
+                wire.barrier,
+                on_progress,
             )
         with clock("axial"):
             found = listing(wire, certified)
@@ -119,9 +124,7 @@ def _assembled(wire: Wire, certified: Certified, found: Listing, spectrum: Spect
     )
 
 
-def _subbands(
-    wire: Wire, certified: Certified, found: Listing, density: Array | None
-) -> tuple[Subband, ...]:
+def _subbands(wire: Wire, certified: Certified, found: Listing, density: Array | None) -> tuple[Subband, ...]:
     listed, barrier, effect = [], wire.barrier, certified.wall_effect_eV
     for i in range(certified.wanted):
         shares = {name: float(share[i]) for name, share in found.shares.items()}

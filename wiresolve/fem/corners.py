@@ -120,7 +120,7 @@ def exponents(sectors: Sequence[tuple[float, float]], closed: bool) -> Array:
     closed : they close around it; otherwise walls bound the fan.
     """
     if not closed and len(sectors) == 1:
-        return np.pi / sectors[0][0] * np.arange(1, 9)
+        return np.asarray(np.pi / sectors[0][0] * np.arange(1, 9))
     degree, pieces = 8, []
     for angle, weight in sectors:
         parts = max(1, int(np.ceil(angle / 1.2)))
@@ -153,7 +153,7 @@ def exponents(sectors: Sequence[tuple[float, float]], closed: bool) -> Array:
 def gradings(
     corners: Sequence[Corner], largest_nm: float, reach_nm: float, least: float, degree: int = 4
 ) -> tuple[Grading, ...]:
-    """Gradings that let cells grow from each corner to `largest_nm` at `reach_nm` away, from no less than `least` of it."""
+    """Gradings that let cells grow from each corner, from no less than `least` of it, to `largest_nm` at `reach_nm`."""
     made = []
     for corner in corners:
         power = 1 - min(corner.exponent, degree) / (degree + 1)

@@ -23,7 +23,7 @@ Array = NDArray[np.float64]
 
 @dataclass(frozen=True, eq=False)
 class Factor:
-    """A factor of H - shift M: solves with it, and how many states lie below the shift (None where pivoting spoilt it)."""
+    """A factor of H - shift M: solves with it, the number of states below it (None where pivoting spoilt that)."""
 
     shift: float
     solver: Any
@@ -72,9 +72,7 @@ def count_below(hamiltonian: Any, mass: Any, energy: float) -> int:
     raise ConvergenceError(f"the states below {energy:.6g} eV could not be counted")
 
 
-def lowest(
-    hamiltonian: Any, mass: Any, count: int, shift: float, start: Any = None
-) -> tuple[Array, NDArray[Any]]:
+def lowest(hamiltonian: Any, mass: Any, count: int, shift: float, start: Any = None) -> tuple[Array, NDArray[Any]]:
     """The `count` states nearest above `shift`, which must lie below the spectrum or in a gap.
 
     Parameters
@@ -98,7 +96,7 @@ def lowest(
     start = _start(n, kind) if start is None else start
     try:
         values, vectors = sparse_linalg.eigsh(
-            hamiltonian, k=count, M=mass, sigma=shift, OPinv=inverse, v0=start, which="LM", tol=0, ncv=min(n, 2 * count + 8)
+            hamiltonian, k=count, M=mass, sigma=shift, OPinv=inverse, v0=start, tol=0, ncv=min(n, 2 * count + 8)
         )
     except sparse_linalg.ArpackNoConvergence as fault:
         raise ConvergenceError(
@@ -120,10 +118,10 @@ def ritz_from(hamiltonian: NDArray[Any], mass: NDArray[Any]) -> tuple[Array, NDA
 
 
 def _hermitian(matrix: NDArray[Any]) -> NDArray[Any]:
-    return (matrix + matrix.conj().T) / 2
+    return np.asarray((matrix + matrix.conj().T) / 2)
 
 
 def _start(n: int, kind: Any) -> NDArray[Any]:
     # A fixed quasi-random vector: no global random state, and no symmetry that could hide a state.
     golden = 0.6180339887498949
-    return (0.1 + np.mod(np.arange(1, n + 1) * golden, 1.0)).astype(kind)
+    return np.asarray(0.1 + np.mod(np.arange(1, n + 1) * golden, 1.0), dtype=kind)

@@ -9,7 +9,7 @@ bar is fixed by the study in scripts/error_bar_study.
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -27,9 +27,11 @@ Local = Callable[[Space, slice | NDArray[np.int64]], NDArray[Any]]
 """Element matrices of an operator on some cells of a space, shape (cells, nodes x bands, nodes x bands)."""
 
 BAR_FACTOR = 2.0
-"""The bar is this times the fall of the energy from degree 4 to degree 6. On a smooth section the fall is the whole
-error; beside a corner of exponent a the error at degree p goes like p^(-4 a) (I. Babuska and M. Suri, RAIRO Modél. Math.
-Anal. Numér. 21, 199 (1987)), so that the error is 1.8 falls at a slit, a = 1/2, the sharpest corner a wall can have."""
+"""The bar is this times the fall of the energy from degree 4 to degree 6.
+
+On a smooth section the fall is the whole error. Beside a corner of exponent a the error at degree p goes like p^(-4 a)
+(I. Babuska and M. Suri, RAIRO Model. Math. Anal. Numer. 21, 199 (1987)): it is 1.8 falls at a slit, a = 1/2, which is
+the sharpest corner that a wall can have."""
 BAR_FLOOR = 4e-13
 """No bar is below this times the largest energy of the block: rounding in the factor and in Rayleigh-Ritz."""
 
@@ -83,7 +85,7 @@ def enrich(
     """
     hamiltonian = hamiltonians[1]
     element = triangle(fine.mesh.degree)
-    outer, inner = (element.count - element.inner) * bands, element.inner * bands
+    outer = (element.count - element.inner) * bands
     before = prolong(coarse, fine, states, bands)
     dofs = _with_bands(fine.dofs, bands)
     total, m = before.shape
@@ -129,7 +131,9 @@ def enrich(
     # Inside a cluster the two bases may be turned against each other; the difference is taken to the projection.
     overlap = np.zeros((m, m), dtype=kind)
     for chunk in fine.chunks():
-        overlap += (before[dofs[chunk]].conj().transpose(0, 2, 1) @ (mass(fine, chunk) @ after[dofs[chunk]])).sum(axis=0)
+        overlap += (before[dofs[chunk]].conj().transpose(0, 2, 1) @ (mass(fine, chunk) @ after[dofs[chunk]])).sum(
+            axis=0
+        )
     indicator = np.empty((len(fine.cells), m))
     difference = after - before @ overlap
     for chunk in fine.chunks():

@@ -7,7 +7,7 @@ inner nodes as a smaller triangle of degree p - 3 by the same rule.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from functools import cached_property, lru_cache
+from functools import cache, cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -62,7 +62,7 @@ class LagrangeTriangle:
 
     @cached_property
     def _coefficients(self) -> Array:
-        return np.linalg.inv(self._monomials(self.nodes))
+        return np.asarray(np.linalg.inv(self._monomials(self.nodes)), dtype=float)
 
     def _monomials(self, at: Array) -> Array:
         i, j = _exponents(self.degree)
@@ -82,7 +82,7 @@ class LagrangeTriangle:
         return np.stack([along_x @ self._coefficients, along_y @ self._coefficients])
 
 
-@lru_cache(maxsize=None)
+@cache
 def triangle(degree: int) -> LagrangeTriangle:
     """The element of a degree, made once."""
     return LagrangeTriangle(degree)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
+from itertools import pairwise
 from types import TracebackType
 from typing import Any, Self
 
@@ -258,7 +259,7 @@ class Mesher:
         """The drawing's point nearest to a place."""
         model = self._gmsh.model
         places = {tag: model.getValue(0, tag, []) for _, tag in model.getEntities(0)}
-        return min(places, key=lambda tag: (places[tag][0] - x) ** 2 + (places[tag][1] - y) ** 2)
+        return int(min(places, key=lambda tag: (places[tag][0] - x) ** 2 + (places[tag][1] - y) ** 2))
 
     def _read(self, degree: int) -> Mesh:
         gmsh, count = self._gmsh, (degree + 1) * (degree + 2) // 2
@@ -279,13 +280,9 @@ class Mesher:
         renumber[kept] = np.arange(len(kept))
         ends = [gmsh.model.mesh.getNodes(0, tag)[0] for _, tag in gmsh.model.getEntities(0)]
         corners = renumber[by_tag[np.concatenate(ends).astype(np.int64)]] if ends else np.zeros(0, dtype=np.int64)
-        regions = tuple(
-            Region(p.name, p.material, p.carriers, p.offset_eV) for p in (self.pieces[i] for i in used)
-        )
+        regions = tuple(Region(p.name, p.material, p.carriers, p.offset_eV) for p in (self.pieces[i] for i in used))
         points = np.ascontiguousarray(xyz.reshape(-1, 3)[kept, :2])
-        return _oriented(
-            Mesh(degree, points, renumber[old], np.concatenate(region), regions, corners[corners >= 0])
-        )
+        return _oriented(Mesh(degree, points, renumber[old], np.concatenate(region), regions, corners[corners >= 0]))
 
 
 _OPTIONS = {
@@ -306,7 +303,7 @@ def _short(fault: BaseException) -> str:
 
 def _strictly_nested(loops: Sequence[Loop]) -> bool:
     """Each loop strictly inside the one before it, by a clearance of a thousandth of its size."""
-    for outer, inner in zip(loops, loops[1:]):
+    for outer, inner in pairwise(loops):
         samples = inner.sample(24)
         if not np.all(outer.contains(samples)):
             return False

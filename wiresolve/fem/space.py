@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
-from functools import cached_property, lru_cache
+from functools import cache, cached_property
 from typing import Any
 
 import numpy as np
@@ -30,7 +30,7 @@ _SLOT = {"x": 0, "y": 1, "1": 2}
 _CHUNK = 2048
 
 
-@lru_cache(maxsize=None)
+@cache
 def _rule(order: int) -> tuple[Array, Array]:
     from skfem.quadrature import get_quadrature
     from skfem.refdom import RefTri
@@ -39,12 +39,13 @@ def _rule(order: int) -> tuple[Array, Array]:
     return np.ascontiguousarray(points.T), np.asarray(weights)
 
 
-@lru_cache(maxsize=None)
+@cache
 def _reference_tensor(degree: int) -> Array:
     """int (d_a phi_i)(d_b phi_j) over the reference triangle, shape (9, n, n), with a, b = x, y, 1."""
     at, weights = _rule(2 * degree)
     parts = _reference_parts(triangle(degree), at)
-    return np.einsum("q,aqi,bqj->abij", weights, parts, parts, optimize=True).reshape(9, parts.shape[2], -1)
+    tensor = np.einsum("q,aqi,bqj->abij", weights, parts, parts, optimize=True)
+    return np.asarray(tensor.reshape(9, parts.shape[2], -1))
 
 
 def _reference_parts(element: LagrangeTriangle, at: Array) -> Array:
@@ -134,7 +135,9 @@ class Space:
         """(c, q, 2) points in nm at which a varying field is wanted."""
         at, _ = _rule(self.quadrature_order)
         values = triangle(self.mesh.degree).values(at)
-        return np.asarray(np.einsum("qa,cax->cqx", values, self.mesh.points[self.mesh.cells[self.cells]], optimize=True))
+        return np.asarray(
+            np.einsum("qa,cax->cqx", values, self.mesh.points[self.mesh.cells[self.cells]], optimize=True)
+        )
 
     @cached_property
     def quadrature_weights(self) -> Array:

@@ -1,8 +1,8 @@
 """Motion along the wire: the axial mass from perturbation theory, and E(k) from a reduced space.
 
-Second-order perturbation in k gives E(k) = E + k^2 D with D = <H2> + second order in H1; in a level, the matrix of D over
-its states (J. M. Luttinger and W. Kohn, Phys. Rev. 97, 869 (1955), section IV). States at a few k span a space in which
-H(k) is a small dense matrix for every other k.
+Second-order perturbation in k gives E(k) = E + k^2 D with D = <H2> + second order in H1; in a level, the matrix of D
+over its states (J. M. Luttinger and W. Kohn, Phys. Rev. 97, 869 (1955), section IV). States at a few k span a space in
+which H(k) is a small dense matrix for every other k.
 """
 
 from __future__ import annotations
@@ -20,8 +20,8 @@ from wiresolve.physics.pencil import Pencil
 Array = NDArray[np.float64]
 
 LINEAR_ABOVE = 1e-3
-"""A first-order term counts when it moves E by more than this share of the second-order one at k = 0.1/nm; what the mesh
-leaves of a term that symmetry forbids is a hundred times smaller."""
+"""A first-order term counts when it moves E by more than this share of the second-order one at k = 0.1/nm; what the
+mesh leaves of a term that symmetry forbids is a hundred times smaller."""
 
 
 def curvature(pencil: Pencil, energies: Array, states: NDArray[Any], levels: NDArray[np.int64], shift: float) -> Array:
@@ -79,7 +79,12 @@ def _second_order(
 
 
 def _projected_cg(
-    pencil: Pencil, energy: float, right: NDArray[Any], states: NDArray[Any], weighted: NDArray[Any], solver: eigen.Factor
+    pencil: Pencil,
+    energy: float,
+    right: NDArray[Any],
+    states: NDArray[Any],
+    weighted: NDArray[Any],
+    solver: eigen.Factor,
 ) -> NDArray[Any]:
     """(H0 - E M)^-1 on the complement of the known states, where it is positive definite."""
     x = np.zeros_like(right)
@@ -97,7 +102,7 @@ def _projected_cg(
         along = now / float(np.real(np.vdot(direction, image)))
         x, residual, before = x + along * direction, residual - along * image, now
         if np.linalg.norm(residual) < 1e-11 * size:
-            return x
+            return np.asarray(x)
     raise ConvergenceError("the axial mass did not converge: another state lies just above the solved ones")
 
 
@@ -177,4 +182,3 @@ def _orthonormal(pencil: Pencil, more: NDArray[Any], space: NDArray[Any] | None)
     values, vectors = np.linalg.eigh((gram + gram.conj().T) / 2)
     kept = values > 1e-11 * values.max()
     return np.asarray(joined @ (vectors[:, kept] / np.sqrt(values[kept])))
-

@@ -22,7 +22,7 @@ Array = NDArray[np.float64]
 
 SPIN = 2
 _THERMAL_REACH = 12.0
-"""States are solved up to this many kT above the lowest (20 above the Fermi level); the rest is counted semiclassically."""
+"""States are solved up to this many kT above the lowest (20 above the Fermi level); above, they are counted by area."""
 _FERMI_REACH = 20.0
 _MOST_THERMAL = 80
 _K_POINTS = 61
@@ -74,7 +74,9 @@ def listing(wire: Wire, certified: Certified) -> Listing:
     energy, bar, k_min = solved.energy_eV.copy(), solved.bar_eV.copy(), np.zeros(len(solved.energy_eV))
     below = energy[: certified.wanted] - bands.energy_eV.min(axis=1) > bar[: certified.wanted]
     if below.any():
-        energy, bar, k_min, mass, error = _off_centre(solved, bands, np.flatnonzero(below), energy, bar, k_min, mass, error)
+        energy, bar, k_min, mass, error = _off_centre(
+            solved, bands, np.flatnonzero(below), energy, bar, k_min, mass, error
+        )
     material = wire.materials[_carrying(wire).material]
     parabola = solved.energy_eV[: certified.wanted, None] + coarse[: certified.wanted, None] * k**2
     parabolic = bool(np.isfinite(coarse).all() and np.abs(bands.energy_eV - parabola).max() < 1e-9)
@@ -102,7 +104,14 @@ def _energy_reach(wire: Wire, certified: Certified) -> float:
 
 
 def _off_centre(
-    solved: Solved, bands: AxialBands, which: NDArray[np.int64], energy: Array, bar: Array, k_min: Array, mass: Array, error: Array
+    solved: Solved,
+    bands: AxialBands,
+    which: NDArray[np.int64],
+    energy: Array,
+    bar: Array,
+    k_min: Array,
+    mass: Array,
+    error: Array,
 ) -> tuple[Array, Array, Array, Array, Array]:
     """Minima that lie off k = 0: where they are, and their energies solved there with bars of their own."""
     k = bands.k_per_nm
@@ -120,7 +129,6 @@ def _off_centre(
 def spectrum_of(wire: Wire, certified: Certified, found: Listing) -> Spectrum:
     """The listed subbands, the states above them that temperature can reach, and a semiclassical tail."""
     solved, wanted = certified.solved, certified.wanted
-    space = solved.pencil.space
     degeneracy = SPIN * found.valley_degeneracy
     hottest = KB * max(*wire.problem.carriers.temperature_K, 1.0)
     fermi = wire.problem.carriers.fermi_level_eV

@@ -76,10 +76,10 @@ def direction_energies(pencil: Pencil, states: NDArray[Any], axes: Array, parts:
     out = np.empty((states.shape[1], 2))
     at = space.quadrature_points
     for i, axis in enumerate(axes):
-        strength = sum(axis[a] * axis[b] * quadratic.get((s, t), 0.0) for a, s in enumerate("xy") for b, t in enumerate("xy"))
-        form = {
-            (s, t): strength * axis[a] * axis[b] for a, s in enumerate("xy") for b, t in enumerate("xy")
-        }
+        strength = sum(
+            axis[a] * axis[b] * quadratic.get((s, t), 0.0) for a, s in enumerate("xy") for b, t in enumerate("xy")
+        )
+        form = {(s, t): strength * axis[a] * axis[b] for a, s in enumerate("xy") for b, t in enumerate("xy")}
         part = parts[i]
         if part is not None:
             form["1", "1"] = part(at[..., 0], at[..., 1])

@@ -182,7 +182,9 @@ class Pencil:
         if self.has(1) or len(second) != 1 or set(second[0].form) != {("1", "1")}:
             return None
         field, matrix = second[0].form["1", "1"], second[0].matrix
-        same = np.allclose(field, field.flat[0], rtol=1e-14) and np.array_equal(matrix, matrix[0, 0] * np.eye(self.bands))
+        same = np.allclose(field, field.flat[0], rtol=1e-14) and np.array_equal(
+            matrix, matrix[0, 0] * np.eye(self.bands)
+        )
         return float(field.flat[0] * matrix[0, 0].real) if same else None
 
     def expected(self, order: int, states: NDArray[Any]) -> NDArray[Any]:
@@ -223,4 +225,3 @@ def build(space: Space, operator: Operator, released: NDArray[np.bool_] | None =
 
 def _plain(matrix: NDArray[Any]) -> NDArray[Any]:
     return np.asarray(matrix.real) if not np.iscomplexobj(matrix) or not matrix.imag.any() else matrix
-

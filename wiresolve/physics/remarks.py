@@ -59,12 +59,12 @@ def on(wire: Wire, certified: Certified, found: Listing) -> tuple[tuple[Warning_
                 if barrier.extendable
                 else f"make {barrier.region} thicker, or write outside = a material"
             )
-            warnings.append(
-                ("wall-too-near", f"the outer hard wall moves bound states by up to {far:.2g} meV", remedy)
-            )
+            warnings.append(("wall-too-near", f"the outer hard wall moves bound states by up to {far:.2g} meV", remedy))
     beyond = int(np.sum(certified.solved.level[wanted:] == certified.solved.level[wanted - 1]))
     if beyond:
-        said.append(f"The last listed level has {beyond} more state{'s' if beyond > 1 else ''} that the list leaves out.")
+        said.append(
+            f"The last listed level has {beyond} more state{'s' if beyond > 1 else ''} that the list leaves out."
+        )
     lowest = carrying_piece(wire)
     outside = np.flatnonzero(found.shares.get(lowest, np.ones(wanted))[:wanted] < 0.5)
     if len(outside):

@@ -1,7 +1,7 @@
 """The number of states by phase-space counting: a first guess of sizes, and the tail above the solved states.
 
-N(E) = integral of m (E - V)+ / (2 pi hbar^2) over the section, less (length of the walls) x sqrt(m (E - V)) / (4 pi hbar)
-averaged over the section (H. Weyl's law with its boundary term; M. Kac, Am. Math. Mon. 73, 1 (1966)), with
+N(E) = integral of m (E - V)+ / (2 pi hbar^2) over the section, less (length of the walls) x sqrt(2 m (E - V)) /
+(4 pi hbar) averaged over the section (H. Weyl's law with its boundary term; M. Kac, Am. Math. Mon. 73, 1 (1966)), with
 m = 1/sqrt(det W) from the in-plane inverse mass W.
 """
 

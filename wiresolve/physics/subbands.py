@@ -92,7 +92,7 @@ class Certified:
 
 @dataclass(frozen=True)
 class Barrier:
-    """The outermost layer where it is a barrier: the region's name, its edge and stiffness, whether it may be extended."""
+    """The outermost layer where it is a barrier: its region, edge and stiffness, and whether it may be extended."""
 
     region: str
     edge_eV: float
@@ -173,7 +173,9 @@ def certify(
             if barrier is not None and barrier.extendable and distance == 0.0:
                 distance = _first_distance(start, barrier, wanted)
                 continue
-            best, solved_passes = _refine(mesher, size, corners, operator_of, wanted, accuracy_eV, passes, tell, barrier)
+            best, solved_passes = _refine(
+                mesher, size, corners, operator_of, wanted, accuracy_eV, passes, tell, barrier
+            )
         passes += solved_passes
         effect = None if barrier is None else wall_effect(best, barrier, wanted)
         if barrier is None or effect is None or not barrier.extendable:
@@ -228,7 +230,9 @@ def _refine(
         solved = solve_on(*mesher.mesh(size), operator_of, wanted + _SPARE)
         bar = float(solved.bar_eV[:wanted].max())
         unknowns = len(solved.pencil.kept)
-        tell("mesh", 0.1 + 0.08 * number, f"mesh {passes + number}: {unknowns} unknowns, widest bar {1e3 * bar:.3g} meV")
+        tell(
+            "mesh", 0.1 + 0.08 * number, f"mesh {passes + number}: {unknowns} unknowns, widest bar {1e3 * bar:.3g} meV"
+        )
         _log.debug("pass %d: %d unknowns, bar %.3g eV", passes + number, unknowns, bar)
         stalled = 0 if bar < 0.7 * worst else stalled + 1
         if bar < worst:

@@ -1,0 +1,172 @@
+"""The subbands of a wire as the measured quantities need them: energies, masses, degeneracies, what lies above."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+from wiresolve.errors import InputError
+from wiresolve.physics.tabulated_band import TabulatedBand, tabulated_band
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, eq=False)
+class Spectrum:
+    """The subbands of a wire, lowest first.
+
+    Parameters
+    ----------
+    energy_eV : (n,) ascending minima from the energy zero.
+    error_eV : (n,) their bars.
+    axial_mass : (n,) in m0, positive; NaN where it is not known (E(k) starts linearly; then the subband needs its row
+        of `band_eV`).
+    degeneracy : (n,) whole, spin times valley.
+    level : (n,) whole, from 1, not falling: entries of one number are equal within their bars.
+    listed : the first so many entries are the certified ones that are reported; the rest are there for thermal sums.
+    k_per_nm, band_eV : (m,) from 0 up and (n, m): axial dispersion, even in k, from the same energy zero. A row of NaN,
+        and k beyond the table, stand for the parabola with the axial mass.
+    tail_energy_eV, tail_count : (q,) ascending energies, from the same zero and not below the last of `energy_eV`, and
+        the semiclassical number of further subbands (times their degeneracies) with minima up to there, from 0 on.
+    tail_axial_mass : their mass in m0.
+    direction_energy_eV : (n, 2) or None: kinetic plus potential energy in the two confined directions where the
+        section separates (rows may be NaN where it is not known).
+    direction_names : their names, e.g. ("x", "y").
+
+    Raises
+    ------
+    InputError : for arrays that do not fit these rules.
+    """
+
+    energy_eV: Array
+    error_eV: Array
+    axial_mass: Array
+    degeneracy: NDArray[np.int_]
+    level: NDArray[np.int_]
+    listed: int
+    k_per_nm: Array | None = None
+    band_eV: Array | None = None
+    tail_energy_eV: Array | None = None
+    tail_count: Array | None = None
+    tail_axial_mass: float | None = None
+    direction_energy_eV: Array | None = None
+    direction_names: tuple[str, ...] = ()
+
+    def __post_init__(self) -> None:
+        for name in ("energy_eV", "error_eV", "axial_mass", "k_per_nm", "band_eV", "tail_energy_eV", "tail_count"):
+            value = getattr(self, name)
+            if value is not None:
+                object.__setattr__(self, name, np.asarray(value, dtype=float))
+        for name in ("degeneracy", "level"):
+            object.__setattr__(self, name, _whole(name, getattr(self, name)))
+        self._check_states()
+        self._check_bands()
+        self._check_tail()
+        if self.direction_energy_eV is not None:
+            object.__setattr__(self, "direction_energy_eV", np.asarray(self.direction_energy_eV, dtype=float))
+            _require(
+                "direction_energy_eV",
+                self.direction_energy_eV.shape == (self.energy_eV.size, len(self.direction_names)),
+                "must have a row a state and a column a direction name",
+                self.direction_energy_eV.shape,
+            )
+
+    def _check_states(self) -> None:
+        size = self.energy_eV.size
+        _require("energy_eV", self.energy_eV.ndim == 1 and size > 0, "must be a list of energies", self.energy_eV.shape)
+        _require("energy_eV", bool(np.isfinite(self.energy_eV).all()), "must be finite")
+        _require("energy_eV", bool((np.diff(self.energy_eV) >= 0).all()), "must ascend")
+        for name in ("error_eV", "axial_mass", "degeneracy", "level"):
+            shape = getattr(self, name).shape
+            _require(name, shape == (size,), f"must have one value for each of the {size} energies", shape)
+        _require("error_eV", bool((self.error_eV >= 0).all()), "must not be negative")
+        masses = self.axial_mass[~np.isnan(self.axial_mass)]
+        _require("axial_mass", bool(((masses > 0) & np.isfinite(masses)).all()), "must be positive")
+        _require("degeneracy", bool((self.degeneracy >= 1).all()), "must be 1 or more")
+        steps = np.diff(self.level)
+        _require("level", self.level[0] == 1 and bool((steps >= 0).all()), "must start at 1 and not fall")
+        _require("listed", 1 <= self.listed <= size, f"must lie between 1 and {size}", self.listed)
+
+    def _check_bands(self) -> None:
+        tabulated: NDArray[np.bool_] = np.zeros(self.energy_eV.size, dtype=bool)
+        if self.band_eV is not None:
+            k = self.k_per_nm
+            _require("k_per_nm", k is not None and k.ndim == 1 and k.size >= 4, "must have four values or more")
+            assert k is not None
+            _require("k_per_nm", k[0] == 0 and bool((np.diff(k) > 0).all()), "must ascend from 0")
+            expected = (self.energy_eV.size, k.size)
+            _require("band_eV", self.band_eV.shape == expected, f"must have the shape {expected}", self.band_eV.shape)
+            tabulated = np.asarray(np.isfinite(self.band_eV).all(axis=1))
+        unknown = np.isnan(self.axial_mass) & ~tabulated
+        _require("axial_mass", not unknown.any(), "must be known where there is no table of the band")
+
+    def _check_tail(self) -> None:
+        energy, count = self.tail_energy_eV, self.tail_count
+        if energy is None and count is None:
+            return
+        _require("tail_energy_eV", energy is not None and count is not None, "needs tail_count, and the reverse")
+        assert energy is not None and count is not None
+        _require("tail_count", energy.ndim == 1 and energy.size >= 2, "must have two energies or more", energy.shape)
+        _require("tail_count", energy.shape == count.shape, "must have one value an energy", count.shape)
+        _require("tail_energy_eV", bool((np.diff(energy) > 0).all()), "must ascend")
+        _require(
+            "tail_energy_eV",
+            bool(energy[0] >= self.energy_eV[-1] - 1e-9),
+            "must start at the last solved state or above, from the same energy zero",
+            float(energy[0]),
+        )
+        _require("tail_count", count[0] == 0 and bool((np.diff(count) >= 0).all()), "must start at 0 and not fall")
+        mass = self.tail_axial_mass
+        _require("tail_axial_mass", mass is not None and mass > 0, "must be positive where there is a tail", mass)
+
+    @cached_property
+    def bands(self) -> tuple[TabulatedBand | None, ...]:
+        """For each subband its tabulated E(k), or None where it is the parabola with the axial mass."""
+        if self.band_eV is None or self.k_per_nm is None:
+            return (None,) * self.energy_eV.size
+        return tuple(
+            tabulated_band(self.k_per_nm, row, float(energy), float(mass)) if np.isfinite(row).all() else None
+            for row, energy, mass in zip(self.band_eV, self.energy_eV, self.axial_mass, strict=True)
+        )
+
+    @cached_property
+    def parabolic(self) -> NDArray[np.bool_]:
+        """(n,) where the subband is a parabola."""
+        return np.array([band is None for band in self.bands])
+
+    @property
+    def top_eV(self) -> float:
+        """Up to which energy the states are known: the end of the tail, or the last state."""
+        return float(self.energy_eV[-1] if self.tail_energy_eV is None else self.tail_energy_eV[-1])
+
+    @cached_property
+    def thresholds(self) -> tuple[Array, Array]:
+        """Energies at which modes open or close, ascending, and by how many each time, spin and valleys counted.
+
+        A parabola opens `degeneracy` modes at its minimum; a band with extrema opens or closes them in pairs. The
+        running sum is the number of modes M(E) that run in one direction, spin-resolved.
+        """
+        energies, modes = [self.energy_eV[self.parabolic]], [self.degeneracy[self.parabolic].astype(float)]
+        for band, degeneracy in zip(self.bands, self.degeneracy, strict=True):
+            if band is not None:
+                energies.append(band.turning_eV)
+                modes.append(band.turning_modes * degeneracy)
+        energy, change = np.concatenate(energies), np.concatenate(modes)
+        order = np.argsort(energy, kind="stable")
+        return energy[order], change[order]
+
+
+def _require(field: str, holds: bool, rule: str, given: object = None) -> None:
+    if not holds:
+        raise InputError(field, rule, given)
+
+
+def _whole(field: str, values: Sequence[int] | NDArray[np.int_]) -> NDArray[np.int_]:
+    array = np.asarray(values)
+    rounded = np.asarray(np.rint(array), dtype=int)
+    _require(field, bool((rounded == array).all()), "must be whole numbers", values)
+    return rounded
