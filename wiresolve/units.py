@@ -60,7 +60,7 @@ _SAMPLES = {
     "voltage": "0.5 V", "wave number": "0.1 nm^-1", "line density": "1e6 cm^-1", "sheet density": "1e12 cm^-2",
     "density": "1e18 cm^-3",
 }  # fmt: skip
-_QUANTITY = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d{1,4})?)\s*(\S.*)?", re.ASCII)
+_QUANTITY = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d{1,4})?)\s*(1/.*|[^\d\s].*)?", re.ASCII)
 
 
 def parse_quantity(text: object, dimension: str, field: str) -> float:

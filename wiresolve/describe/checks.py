@@ -1,0 +1,86 @@
+"""Checks of single values that every description shares: a finite number in a range, a whole number, a text."""
+
+from __future__ import annotations
+
+import difflib
+import math
+from collections.abc import Iterable
+from numbers import Integral, Real
+
+from wiresolve.errors import InputError
+
+SHORTEST_nm, LONGEST_nm = 0.1, 1e4
+"""Lengths of a section outside this range are refused: below an atom's size, or no wire."""
+THINNEST_nm = 0.05
+"""Layers and corner radii below this are refused."""
+
+
+def finite(field: str, value: object, remedy: str = "") -> float:
+    """`value` as a float; InputError for anything but a finite real number (True and False are no numbers)."""
+    if isinstance(value, bool) or not isinstance(value, Real):
+        raise InputError(field, "must be a number", value, remedy)
+    try:
+        number = float(value)
+    except (OverflowError, ValueError):
+        number = math.inf
+    if not math.isfinite(number):
+        raise InputError(field, "must be a finite number", value, remedy)
+    return number
+
+
+def in_range(field: str, value: object, low: float, high: float, unit: str = "", remedy: str = "") -> float:
+    """`value` as a float within [low, high]; InputError that tells the range otherwise."""
+    number = finite(field, value, remedy)
+    if not low <= number <= high:
+        space = f" {unit}" if unit else ""
+        rule = "must be positive" if number <= 0 < low else f"must lie between {low:g}{space} and {high:g}{space}"
+        shown = f"{number:g}{space}" if unit else number
+        raise InputError(field, rule, shown, remedy)
+    return number
+
+
+def length(field: str, value: object, low: float = SHORTEST_nm, high: float = LONGEST_nm) -> float:
+    """A length in nm that a section can have."""
+    return in_range(field, value, low, high, "nm")
+
+
+def whole(field: str, value: object, low: int, high: int) -> int:
+    """`value` as an int within [low, high]; a float or a bool is an error."""
+    if isinstance(value, bool) or not isinstance(value, Integral):
+        raise InputError(field, f"must be a whole number from {low} to {high}", value)
+    number = int(value)
+    if not low <= number <= high:
+        shown = number if abs(number) < 1e30 else "a huge one"
+        raise InputError(field, f"must be a whole number from {low} to {high}", shown)
+    return number
+
+
+def text(field: str, value: object, longest: int = 200) -> str:
+    """A printable text that is not empty."""
+    if not isinstance(value, str):
+        raise InputError(field, "must be a text in quotes", value)
+    if not value.strip():
+        raise InputError(field, "must not be empty", value)
+    if len(value) > longest:
+        raise InputError(field, f"must be at most {longest} characters long", value)
+    if not value.isprintable():
+        raise InputError(field, "must hold printable characters only, on one line", value)
+    return value
+
+
+def choice(field: str, value: object, allowed: Iterable[str]) -> str:
+    """One of the allowed words; InputError that proposes the nearest otherwise."""
+    words = tuple(allowed)
+    if not isinstance(value, str) or value not in words:
+        raise InputError(field, "must be one of " + ", ".join(f'"{w}"' for w in words), value, nearest(value, words))
+    return value
+
+
+def nearest(given: object, allowed: Iterable[str], count: int = 3) -> str:
+    """A remedy that names the allowed words nearest to the given one, or an empty text."""
+    words = list(allowed)
+    if not isinstance(given, str) or not words:
+        return ""
+    by_lower = {w.lower(): w for w in words}
+    close = difflib.get_close_matches(given[:80].lower(), by_lower, n=count, cutoff=0.5)
+    return "did you mean " + " or ".join(f"'{by_lower[c]}'" for c in close) + "?" if close else ""

@@ -1,0 +1,99 @@
+"""A table of a wire file while it is read: typed access to its keys, with errors that name the key's whole path."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+from typing import Any
+
+from wiresolve.describe import checks
+from wiresolve.errors import InputError
+from wiresolve.units import parse_quantity
+
+LATER = {
+    "valleys": "valleys off the zone centre",
+    "nonparabolicity": "nonparabolic bands",
+    "zone_boundary": "valleys off the zone centre",
+    "crystal": "crystals other than zincblende",
+    "gates": "gates",
+    "surfaces": "surface charge",
+    "surroundings": "surroundings of the wire",
+    "voltages": "voltage sweeps",
+    "transport": "scattering and contacts",
+    "donors": "doping",
+    "acceptors": "doping",
+    "ionisation": "doping",
+    "file": "potentials from a file",
+}
+"""Keys of the wire file that this version knows but does not model, and what they stand for."""
+
+
+@dataclass(frozen=True)
+class Table:
+    """A TOML table with its path in the file ("section.layers[1]"; list entries count from 1)."""
+
+    path: str
+    data: Mapping[str, Any]
+
+    def at(self, key: str) -> str:
+        """The path of one of its keys."""
+        shown = key if key.isprintable() and key else ascii(key)
+        return f"{self.path}.{shown}" if self.path else shown
+
+    def only(self, allowed: Iterable[str], of: str = "") -> None:
+        """InputError for any other key: not modelled yet, or unknown, with the nearest allowed ones."""
+        words = tuple(allowed)
+        for key in self.data:
+            if key in words:
+                continue
+            if key in LATER:
+                rule = f"this version does not model {LATER[key]} yet"
+                raise InputError(self.at(key), rule, remedy="take the key out, or wait for a version that does")
+            near = checks.nearest(key, words)
+            known = ("allowed are " if near else "its keys are ") + ", ".join(words)
+            rule = f"is no key of {of or (f'[{self.path}]' if self.path else 'a wire file')}"
+            raise InputError(self.at(key)[:120], rule, remedy=f"{near} {known}".strip())
+
+    def __contains__(self, key: str) -> bool:
+        return key in self.data
+
+    def required(self, key: str, sample: str = "") -> Any:
+        """The key's value; InputError where it is missing."""
+        if key not in self.data:
+            raise InputError(self.at(key), "is missing", remedy=f"write e.g. {key} = {sample}" if sample else "")
+        return self.data[key]
+
+    def quantity(self, key: str, dimension: str, sample: str = "") -> float:
+        """A required quantity in internal units."""
+        return parse_quantity(self.required(key, sample), dimension, self.at(key))
+
+    def optional_quantity(self, key: str, dimension: str) -> float | None:
+        """A quantity in internal units, or None where the key is missing."""
+        return parse_quantity(self.data[key], dimension, self.at(key)) if key in self.data else None
+
+    def text(self, key: str, sample: str = "") -> str:
+        """A required text."""
+        return checks.text(self.at(key), self.required(key, sample))
+
+    def row(self, key: str, count: int, what: str) -> list[Any]:
+        """A required list with `count` entries."""
+        value = self.required(key)
+        if not isinstance(value, list) or len(value) != count:
+            raise InputError(self.at(key), f"must be a list of {what}", value)
+        return value
+
+    def table(self, key: str) -> Table:
+        """A sub-table."""
+        value = self.data[key]
+        if not isinstance(value, dict):
+            given = "a list of tables" if isinstance(value, list) else value
+            raise InputError(self.at(key), "must be one table", given, f"write [{self.at(key)}] once")
+        return Table(self.at(key), value)
+
+    def tables(self, key: str) -> list[Table]:
+        """The entries of an array of tables; none where the key is missing."""
+        value = self.data.get(key, [])
+        if not isinstance(value, list) or not all(isinstance(entry, dict) for entry in value):
+            given = "a table" if isinstance(value, dict) else value
+            raise InputError(self.at(key), "must be a list of tables", given, f"write [[{self.at(key)}]] for each")
+        return [Table(f"{self.at(key)}[{k}]", entry) for k, entry in enumerate(value, 1)]
