@@ -17,6 +17,8 @@ Array = NDArray[np.float64]
 
 _SERIES_TERMS = 23
 """Terms of the accelerated series: its error falls as 5.83^-terms (3e-18 here)."""
+_THIN_BELOW = -38.0
+"""Below, the second term of the series, exp(eta)/2^(j+1) of the first, is lost in rounding."""
 _SHIFT = 8
 """Poles taken out before the asymptotic series is used at |eta + 2 pi i shift| >= 50, where it is exact to 1e-16."""
 _ASYMPTOTIC_TERMS = 11
@@ -57,9 +59,12 @@ def fermi_integral(order: float, eta: ArrayLike) -> Array:
         return np.asarray(np.logaddexp(0.0, argument))
     flat = argument.ravel()
     values = np.full(flat.shape, np.nan)
-    low = flat <= 0
+    low = (flat <= 0) & (flat > _THIN_BELOW)
     if low.any():
         values[low] = _from_series(order, flat[low])
+    low = flat <= _THIN_BELOW
+    if low.any():
+        values[low] = np.exp(flat[low])
     if doubled % 2 == 0:
         high = flat > 0
         if high.any():

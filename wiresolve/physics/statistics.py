@@ -30,6 +30,8 @@ Array = NDArray[np.float64]
 
 _FROZEN_ETA = 1e8
 """Above this (E_F - E)/kT the thermal correction pi^2/24/eta^2 is below rounding: the T = 0 form is used."""
+_TAIL_REACH = 60.0
+"""exp(-60) is 1e-26: ten thousand million subbands this many kT up add nothing in double precision."""
 _HIGHEST_FERMI_EV = 1e3
 """A Fermi level farther than this above the first subband is no wire's: no effective-mass band reaches there."""
 
@@ -132,6 +134,14 @@ def tail_density(spectrum: Spectrum, fermi_eV: ArrayLike, temperature_K: ArrayLi
     return np.asarray(np.maximum(np.where(cold, frozen, thermal) @ changes, 0.0))
 
 
+def tail_matters(spectrum: Spectrum, fermi_eV: Array, temperature_K: Array) -> NDArray[np.bool_]:
+    """Where the tail is not lost in the rounding of what the first subband holds or conducts."""
+    if spectrum.tail_energy_eV is None:
+        return np.zeros(np.broadcast(fermi_eV, temperature_K).shape, dtype=bool)
+    reached = np.maximum(fermi_eV, spectrum.energy_eV[0]) + _TAIL_REACH * KB * np.asarray(temperature_K)
+    return np.asarray(reached > spectrum.tail_energy_eV[0])
+
+
 def slope_changes(energy: Array, count: Array) -> Array:
     """By how much the slope of the piecewise linear `count` changes at each of its points (0 outside of them)."""
     return np.asarray(np.diff(np.diff(count) / np.diff(energy), prepend=0.0, append=0.0))
@@ -144,8 +154,12 @@ def line_density(spectrum: Spectrum, fermi_eV: ArrayLike, temperature_K: ArrayLi
     ------
     InputError : for a temperature below zero.
     """
-    solved = line_density_by_subband(spectrum, fermi_eV, temperature_K).sum(axis=0)
-    return np.asarray(solved + tail_density(spectrum, fermi_eV, temperature_K))
+    total = np.asarray(line_density_by_subband(spectrum, fermi_eV, temperature_K).sum(axis=0))
+    fermi, temperature = np.broadcast_arrays(np.asarray(fermi_eV, dtype=float), np.asarray(temperature_K, dtype=float))
+    matters = tail_matters(spectrum, fermi, temperature)
+    if matters.any():
+        total[matters] += tail_density(spectrum, fermi[matters], temperature[matters])
+    return total
 
 
 def fermi_level(spectrum: Spectrum, line_density_per_nm: float, temperature_K: float) -> float:

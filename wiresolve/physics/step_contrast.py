@@ -16,10 +16,12 @@ _POINTS = 25
 _SPACINGS = np.array([40.0, 14, 11, 10, 9, 8, 7, 6, 5.5, 5, 4.5, 4, 3.5, 3, 2.5, 2])
 """Spacings in kT, falling, on which limits are bracketed."""
 _PASSES = 6
-"""Newton steps for a dip and false-position steps for a limit: the last digits that a reader could ask for."""
+"""Newton steps for a dip, to rounding; false-position steps for a limit take as many."""
 
 
-def contrasts(energy_eV: Array, modes: Array, lower_eV: Array, upper_eV: Array, thermal_eV: Array) -> Array:
+def contrasts(
+    energy_eV: Array, modes: Array, lower_eV: Array, upper_eV: Array, thermal_eV: Array, passes: int = _PASSES
+) -> Array:
     """Contrast 1 - dip/peak of dG/dmu for pairs of neighbouring steps, 0 where it does not dip between them.
 
     dG/dmu is the sum of `modes` p((mu - E)/kT)/kT over all steps, p(x) = 1/(4 cosh^2(x/2)). The dip is its minimum
@@ -30,6 +32,7 @@ def contrasts(energy_eV: Array, modes: Array, lower_eV: Array, upper_eV: Array, 
     ----------
     energy_eV, modes : (s,) ascending energies at which modes open (or, negative, close).
     lower_eV, upper_eV, thermal_eV : (i,) the two steps and kT of each pair; one result each.
+    passes : Newton steps for the dip.
     """
     result = np.ones(lower_eV.shape)
     near = upper_eV - lower_eV < _RESOLVED * thermal_eV
@@ -43,7 +46,7 @@ def contrasts(energy_eV: Array, modes: Array, lower_eV: Array, upper_eV: Array, 
     rows, best = np.arange(slope.shape[0]), np.clip(slope.argmin(axis=1), 1, _POINTS - 2)
     low, high, x = grid[rows, best - 1], grid[rows, best + 1], grid[rows, best]
     dip = slope.min(axis=1)
-    for _ in range(_PASSES):
+    for _ in range(passes):
         value, first, second = _bell_and_slopes(x[:, None] - where, weight)
         dip = np.minimum(dip, value)
         falling = first < 0
@@ -70,7 +73,7 @@ def falls_below_at(
 
     def evaluate(thermal: Array) -> Array:
         rows = thermal.shape[0]
-        flat = contrasts(energy_eV, modes, np.tile(lower_eV, rows), np.tile(upper_eV, rows), thermal.ravel())
+        flat = contrasts(energy_eV, modes, np.tile(lower_eV, rows), np.tile(upper_eV, rows), thermal.ravel(), 3)
         return flat.reshape(thermal.shape)
 
     target = np.array(thresholds)[:, None]
@@ -78,7 +81,7 @@ def falls_below_at(
     seen = np.zeros(ladder.shape)
     open_ = np.ones(pairs, dtype=bool)
     for row, thermal in enumerate(ladder):
-        seen[row, open_] = contrasts(energy_eV, modes, lower_eV[open_], upper_eV[open_], thermal[open_])
+        seen[row, open_] = contrasts(energy_eV, modes, lower_eV[open_], upper_eV[open_], thermal[open_], 2)
         open_ &= seen[row] >= target.min()  # below the lowest threshold it is settled
         if not open_.any():
             break

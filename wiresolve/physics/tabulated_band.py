@@ -23,11 +23,13 @@ CONSISTENT_WITHIN_EV = 2e-3
 """A table whose minimum is farther than this from the subband's energy is another band or another energy zero."""
 _ROUNDING = 4e-16
 """Relative error of an energy from rounding: nearer than that, a root is found."""
+_EXACT, _ROUGH = 60, 4
+"""Newton steps where k(E) is the result, and where it only bounds a window (a few kT more or less do not matter)."""
 _REACH = 32.0
 """Distance in kT beyond which the Fermi function is 0 or 1 to 1e-14."""
 _PANELS, _POINTS = 14, 10
-"""Gauss panels over a window of 2 x _REACH: a panel is 4.6 kT where E is linear in k: error near 1e-9 of the carriers
-within kT of the Fermi level, far below that of any table."""
+"""Gauss panels over a window of 2 x _REACH: a panel is 4.6 kT where E is linear in k: error below 1e-8 of the
+carriers, far below that of any table."""
 _SHARED_PANEL = 2.3
 """Mean height in kT of the panels that many Fermi levels share: where E grows as k^2, the steepest is twice as high."""
 _BOLTZMANN_PANELS = 5
@@ -44,7 +46,12 @@ class _Piece:
     high_eV: float
     rising: bool
     energy: Callable[[Array], Array]
-    wave_number: Callable[[Array], Array]
+    wave_number: Callable[[Array, int], Array]
+
+    @property
+    def at_low_per_nm(self) -> float:
+        """k of the end with the lower energy."""
+        return self.start_per_nm if self.rising else self.end_per_nm
 
 
 @dataclass(frozen=True, eq=False)
@@ -78,10 +85,12 @@ class TabulatedBand:
         weight, mean = np.zeros(kT.shape), np.zeros(kT.shape)
         for piece in self.pieces:
             top = np.minimum(piece.high_eV, self.lowest_eV + 40 * kT)
-            low = np.full(kT.shape, piece.low_eV)
-            k, factor = _panels(*_ends(piece, low, np.maximum(top, low)), _BOLTZMANN_PANELS)
+            if (top <= piece.low_eV).all():
+                continue
+            end = piece.wave_number(np.maximum(top, piece.low_eV), _ROUGH)
+            k, factor = _panels(np.full(kT.shape, piece.at_low_per_nm), end, _BOLTZMANN_PANELS)
             x = (piece.energy(k) - self.lowest_eV) / kT[:, None]
-            w = factor * np.exp(-x)
+            w = np.abs(factor) * np.exp(-x)
             weight += w.sum(axis=1)
             mean += (w * x).sum(axis=1)
         return weight, mean
@@ -161,7 +170,7 @@ class _Cubic:
     coefficients: Array
 
     def cell(self, k: Array) -> NDArray[np.intp]:
-        return np.clip(np.searchsorted(self.knots, k, side="right") - 1, 0, self.knots.size - 2)
+        return _cell(self.knots, k)
 
     def __call__(self, k: Array) -> Array:
         cell = self.cell(k)
@@ -169,14 +178,14 @@ class _Cubic:
         c = self.coefficients
         return np.asarray(((c[0, cell] * t + c[1, cell]) * t + c[2, cell]) * t + c[3, cell])
 
-    def inverse(self, energy: Array, low: Array, high: Array, guess: Array, rising: bool) -> Array:
+    def inverse(self, energy: Array, low: Array, high: Array, guess: Array, rising: bool, passes: int) -> Array:
         """k between `low` and `high` (in one cell, E monotone) with E(k) = energy: Newton, kept safe by bisection."""
         cell = self.cell((low + high) / 2)
         left = self.knots[cell]
         c3, c2, c1, c0 = self.coefficients[:, cell]
         sign = 1.0 if rising else -1.0
         a, b, t = low - left, high - left, guess - left
-        for _ in range(60):
+        for _ in range(passes):
             residual = sign * (((c3 * t + c2) * t + c1) * t + c0 - energy)
             short = residual < 0
             a, b = np.where(short, t, a), np.where(short, b, t)
@@ -220,17 +229,18 @@ def _table_piece(cubic: _Cubic, knots: Array) -> _Piece:
     rising = bool(values[-1] > values[0])
     ordered, energies = (knots, values) if rising else (knots[::-1], values[::-1])
 
-    def wave_number(energy: Array) -> Array:
-        cell = np.clip(np.searchsorted(energies, energy, side="right") - 1, 0, energies.size - 2)
+    def wave_number(energy: Array, passes: int) -> Array:
+        cell = _cell(energies, energy)
         from_k, to_k = ordered[cell], ordered[cell + 1]
-        part = np.clip((energy - energies[cell]) / (energies[cell + 1] - energies[cell]), 0.0, 1.0)
+        part = (energy - energies[cell]) / (energies[cell + 1] - energies[cell])
+        part = np.minimum(np.maximum(part, 0.0), 1.0)
         # E starts flat in the first cell, as a parabola
         guess = from_k + (to_k - from_k) * np.where(cell == 0, np.sqrt(part), part)
         ends = (part == 0) | (part == 1)
         inner = ~ends
         if inner.any():
             low, high = np.minimum(from_k, to_k)[inner], np.maximum(from_k, to_k)[inner]
-            guess[inner] = cubic.inverse(energy[inner], low, high, guess[inner], rising)
+            guess[inner] = cubic.inverse(energy[inner], low, high, guess[inner], rising, passes)
         return guess
 
     low, high = float(energies[0]), float(energies[-1])
@@ -241,64 +251,52 @@ def _outer_piece(start_per_nm: float, start_eV: float, curvature: float) -> _Pie
     def energy(k: Array) -> Array:
         return np.asarray(start_eV + curvature * (k * k - start_per_nm**2))
 
-    def wave_number(energy: Array) -> Array:
+    def wave_number(energy: Array, passes: int) -> Array:
         return np.asarray(np.sqrt(start_per_nm**2 + np.maximum(energy - start_eV, 0.0) / curvature))
 
     return _Piece(start_per_nm, np.inf, start_eV, np.inf, True, energy, wave_number)
-
-
-def _filled(piece: _Piece, fermi: Array) -> Array:
-    """Length of the piece below each Fermi level."""
-    length = np.zeros_like(fermi)
-    full = fermi >= piece.high_eV
-    length[full] = piece.end_per_nm - piece.start_per_nm
-    partly = (fermi > piece.low_eV) & ~full
-    if partly.any():
-        k = piece.wave_number(fermi[partly])
-        length[partly] = k - piece.start_per_nm if piece.rising else piece.end_per_nm - k
-    return length
 
 
 def _occupied(piece: _Piece, lowest_eV: float, fermi: Array, kT: Array) -> Array:
     """Integral of the Fermi function: the full part counted, the window around the Fermi level by Gauss panels."""
     low = np.minimum(np.maximum(fermi - _REACH * kT, piece.low_eV), piece.high_eV)
     high = np.minimum(np.maximum(fermi, lowest_eV) + _REACH * kT, piece.high_eV)
+    if (high <= piece.low_eV).all():
+        return np.zeros(fermi.shape)
     if fermi.size > 1 and kT[0] > 0 and np.ptp(kT) == 0 and high.max() > low.min():
         count = ceil((high.max() - low.min()) / (_SHARED_PANEL * kT[0]))
         if count <= _PANELS * fermi.size:
             return _occupied_by_shared_panels(piece, count, low, high, fermi, float(kT[0]))
-    length = _filled(piece, low)
+    full_to = piece.wave_number(low, _ROUGH if kT.min() > 0 else _EXACT)
+    length = np.abs(full_to - piece.at_low_per_nm)
     window = high > low
     if window.any():
         fermi, kT = fermi[window, None], kT[window, None]
-        k, weight = _panels(*_ends(piece, low[window], high[window]), _PANELS)
-        length[window] += (weight * expit((fermi - piece.energy(k)) / kT)).sum(axis=1)
+        k, weight = _panels(full_to[window], piece.wave_number(high[window], _ROUGH), _PANELS)
+        length[window] += (np.abs(weight) * expit((fermi - piece.energy(k)) / kT)).sum(axis=1)
     return length
 
 
 def _occupied_by_shared_panels(piece: _Piece, count: int, low: Array, high: Array, fermi: Array, kT: float) -> Array:
     """The same at one temperature, with E(k) worked out once, on panels that all Fermi levels share."""
-    bottom = np.array([low.min()])
-    start, end = _ends(piece, bottom, np.array([high.max()]))
-    width = (end - start)[0] / count
+    start, end = piece.wave_number(np.array([low.min(), high.max()]), _ROUGH)
+    width = (end - start) / count  # negative on a falling piece: from low to high energy
     points, weights = _gauss()
-    edges = piece.energy(np.linspace(start[0], end[0], count + 1))
+    edges = piece.energy(start + width * np.arange(count + 1))
     energy = piece.energy(start + width * (np.arange(count)[:, None] + (points + 1) / 2))
-    if not piece.rising:
-        edges, energy = edges[::-1], energy[::-1]
     # panels before `first` are full, those from `last` on empty
     first = np.searchsorted(edges[1:], low)
     last = np.searchsorted(edges[:-1], high)
     panel = first[:, None] + np.arange(max(int((last - first).max()), 1))
     partly = panel < last[:, None]
     filling = expit((fermi[:, None, None] - energy[np.minimum(panel, count - 1)]) / kT) @ (weights / 2)
-    return np.asarray(_filled(piece, bottom) + width * (first + np.where(partly, filling, 0.0).sum(axis=1)))
+    panels = first + np.where(partly, filling, 0.0).sum(axis=1)
+    return np.asarray(abs(start - piece.at_low_per_nm) + abs(width) * panels)
 
 
-def _ends(piece: _Piece, low: Array, high: Array) -> tuple[Array, Array]:
-    """Smaller and larger k of the piece's parts with energies between `low` and `high`."""
-    at_low, at_high = piece.wave_number(low), piece.wave_number(high)
-    return (at_low, at_high) if piece.rising else (at_high, at_low)
+def _cell(edges: Array, at: Array) -> NDArray[np.intp]:
+    """Number of the interval between ascending edges in which each value lies, the ends included."""
+    return np.minimum(np.maximum(np.searchsorted(edges, at, side="right") - 1, 0), edges.size - 2)
 
 
 @cache

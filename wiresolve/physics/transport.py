@@ -9,7 +9,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from wiresolve.physics.fermi import checked_temperature, fermi_integral, occupation
 from wiresolve.physics.spectrum import Spectrum
-from wiresolve.physics.statistics import slope_changes
+from wiresolve.physics.statistics import slope_changes, tail_matters
 from wiresolve.physics.step_contrast import contrasts, falls_below_at
 from wiresolve.units import CONDUCTANCE_QUANTUM_SIEMENS, KB
 
@@ -40,14 +40,16 @@ def conductance(spectrum: Spectrum, fermi_eV: ArrayLike, temperature_K: float) -
     temperature = float(checked_temperature(temperature_K))
     fermi = np.asarray(fermi_eV, dtype=float)
     energy, modes = spectrum.thresholds
-    total = modes @ occupation(energy[:, None], fermi.ravel(), temperature) / 2
-    if spectrum.tail_energy_eV is not None and spectrum.tail_count is not None:
-        distance = fermi.reshape(-1, 1) - spectrum.tail_energy_eV
+    flat = fermi.ravel()
+    total = np.asarray(modes @ occupation(energy[:, None], flat, temperature) / 2)
+    matters = tail_matters(spectrum, flat, np.asarray(temperature))
+    if spectrum.tail_energy_eV is not None and spectrum.tail_count is not None and matters.any():
+        distance = flat[matters, None] - spectrum.tail_energy_eV
         kT = KB * temperature
         filled = kT * fermi_integral(0, distance / kT) if temperature else np.maximum(distance, 0.0)
         tail = filled @ slope_changes(spectrum.tail_energy_eV, spectrum.tail_count) / 2
-        total = total + np.maximum(tail, 0.0)
-    return np.asarray(total).reshape(fermi.shape)
+        total[matters] += np.maximum(tail, 0.0)
+    return total.reshape(fermi.shape)
 
 
 def in_siemens(G_over_G0: ArrayLike) -> Array:
