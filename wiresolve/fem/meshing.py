@@ -282,7 +282,7 @@ class Mesher:
         corners = renumber[by_tag[np.concatenate(ends).astype(np.int64)]] if ends else np.zeros(0, dtype=np.int64)
         regions = tuple(Region(p.name, p.material, p.carriers, p.offset_eV) for p in (self.pieces[i] for i in used))
         points = np.ascontiguousarray(xyz.reshape(-1, 3)[kept, :2])
-        return _oriented(Mesh(degree, points, renumber[old], np.concatenate(region), regions, corners[corners >= 0]))
+        return oriented(Mesh(degree, points, renumber[old], np.concatenate(region), regions, corners[corners >= 0]))
 
 
 _OPTIONS = {
@@ -314,7 +314,7 @@ def _strictly_nested(loops: Sequence[Loop]) -> bool:
     return True
 
 
-def _oriented(mesh: Mesh) -> Mesh:
+def oriented(mesh: Mesh) -> Mesh:
     """The mesh with cells that run counter-clockwise (mirrored ones get their nodes renumbered)."""
     corner = mesh.points[mesh.cells[:, :3]]
     edge1, edge2 = corner[:, 1] - corner[:, 0], corner[:, 2] - corner[:, 0]

@@ -243,6 +243,50 @@ class Space:
         """(c,) the field 1."""
         return np.ones(len(self.cells))
 
+    def library_basis(self) -> tuple[Any, Ints]:
+        """scikit-fem's quartic basis on the same curved cells, for forms of one's own, and its numbers of `nodes`.
+
+        Returns
+        -------
+        basis : ``skfem.CellBasis`` of ``ElementTriP4`` on a mesh whose map is quartic too.
+        number : (n,) the basis's number of each of this space's nodes: ``ours = theirs[number]``.
+
+        Raises
+        ------
+        ValueError
+            The space's degree is not 4.
+        """
+        from skfem import Basis, MeshTri, MeshTri2
+        from skfem.assembly import Dofs
+        from skfem.element import ElementTriP4
+
+        if self.mesh.degree != 4:
+            raise ValueError(f"scikit-fem has a quartic triangle, none of degree {self.mesh.degree}")
+
+        vertices, corner = np.unique(self.dofs[:, :3], return_inverse=True)
+        corner = corner.reshape(-1, 3)
+        # The quartic's functions match across edges only where each cell's vertices ascend.
+        order = np.argsort(corner, axis=1)
+        ascending = np.take_along_axis(corner, order, axis=1).T
+        points = self.mesh.points[self.nodes]
+        numbering = Dofs(MeshTri(points[vertices].T, ascending), ElementTriP4())
+        ours, theirs = (
+            np.rint(4 * np.column_stack([1 - nodes.sum(axis=1), nodes])).astype(int)
+            for nodes in (triangle(4).nodes, ElementTriP4.doflocs)
+        )
+        place = {tuple(weights): i for i, weights in enumerate(ours)}
+        number = np.empty(len(self.nodes), dtype=np.int64)
+        for turn in np.unique(order, axis=0):
+            same = (order == turn).all(axis=1)
+            for j, weights in enumerate(theirs):
+                turned = np.empty(3, dtype=int)
+                turned[turn] = weights
+                number[self.dofs[same, place[tuple(turned)]]] = numbering.element_dofs[j, same]
+        places = np.empty((2, numbering.N))
+        places[:, number] = points.T
+        curved = MeshTri2(places, ascending, elem=ElementTriP4)
+        return Basis(curved, ElementTriP4(), intorder=self.quadrature_order), number
+
     @cached_property
     def mass(self) -> sparse.csr_array:
         """The matrix of int u v."""
