@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 import scipy.linalg as dense
@@ -19,6 +20,7 @@ from wiresolve.fem.meshing import Grading, Mesh
 
 Array = NDArray[np.float64]
 
+_ANGULAR_DEGREE = 8
 SMOOTH_FROM = 4.0
 
 
@@ -111,6 +113,20 @@ def _merged(parts: list[tuple[float, float]]) -> list[tuple[float, float]]:
     return merged
 
 
+@lru_cache(maxsize=1)
+def _angular_element() -> tuple[Array, Array]:
+    """Stiffness and mass of an element of unit length and high degree on an angle."""
+    count = _ANGULAR_DEGREE + 1
+    nodes = np.linspace(0, 1, count)
+    gauss, weights = np.polynomial.legendre.leggauss(count)
+    gauss, weights = (gauss + 1) / 2, weights / 2
+    basis = [np.polynomial.Polynomial.fromroots(np.delete(nodes, i)) for i in range(count)]
+    basis = [p / p(nodes[i]) for i, p in enumerate(basis)]
+    value = np.array([p(gauss) for p in basis])
+    slope = np.array([p.deriv()(gauss) for p in basis])
+    return (slope * weights) @ slope.T, (value * weights) @ value.T
+
+
 def exponents(sectors: Sequence[tuple[float, float]], closed: bool) -> Array:
     """Exponents a of r^a, ascending and positive, where sectors of different inverse mass meet.
 
@@ -121,18 +137,11 @@ def exponents(sectors: Sequence[tuple[float, float]], closed: bool) -> Array:
     """
     if not closed and len(sectors) == 1:
         return np.asarray(np.pi / sectors[0][0] * np.arange(1, 9))
-    degree, pieces = 8, []
+    degree, pieces = _ANGULAR_DEGREE, []
     for angle, weight in sectors:
         parts = max(1, int(np.ceil(angle / 1.2)))
         pieces += [(angle / parts, weight)] * parts
-    nodes = np.linspace(0, 1, degree + 1)
-    gauss, weights = np.polynomial.legendre.leggauss(degree + 1)
-    gauss, weights = (gauss + 1) / 2, weights / 2
-    basis = [np.polynomial.Polynomial.fromroots(np.delete(nodes, i)) for i in range(degree + 1)]
-    basis = [p / p(nodes[i]) for i, p in enumerate(basis)]
-    value = np.array([p(gauss) for p in basis])
-    slope = np.array([p.deriv()(gauss) for p in basis])
-    stiff, mass = (slope * weights) @ slope.T, (value * weights) @ value.T
+    stiff, mass = _angular_element()
     size = degree * len(pieces) + 1
     left, right = np.zeros((size, size)), np.zeros((size, size))
     for i, (angle, weight) in enumerate(pieces):

@@ -20,15 +20,25 @@ from wiresolve.errors import ConvergenceError
 
 Array = NDArray[np.float64]
 
+SINGLE_FROM = 60_000
+"""Definite systems from this many unknowns on are factored in single precision."""
+
 
 @dataclass(frozen=True, eq=False)
 class Factor:
-    """A factor of H - shift M: solves with it, the number of states below it (None where pivoting spoilt that)."""
+    """A factor of H - shift M: solves with it, and counts the states below the shift."""
 
     shift: float
     solver: Any
-    below: int | None
     kind: Any
+
+    @property
+    def below(self) -> int | None:
+        """Number of states below the shift; None where the factor pivoted, which spoils the count."""
+        if not np.array_equal(self.solver.perm_r, self.solver.perm_c):
+            return None
+        # The copy of the triangle that the diagonal needs is as large as the factor: it is made for a count only.
+        return int(np.count_nonzero(self.solver.U.diagonal().real < 0))
 
     def solve(self, right: NDArray[Any]) -> NDArray[Any]:
         """(H - shift M)^-1 applied to one vector or to columns; complex ones by parts where the matrix is real."""
@@ -40,7 +50,10 @@ class Factor:
 
 def factor(hamiltonian: Any, mass: Any, shift: float) -> Factor:
     """Factor H - shift M symmetrically, without pivoting for size."""
-    matrix = sparse.csc_matrix(hamiltonian - shift * mass)
+    return _factor(sparse.csc_array(hamiltonian - shift * mass), shift)
+
+
+def _factor(matrix: Any, shift: float = 0.0) -> Factor:
     with warnings.catch_warnings():
         warnings.simplefilter("ignore", sparse_linalg.MatrixRankWarning)
         try:
@@ -49,11 +62,39 @@ def factor(hamiltonian: Any, mass: Any, shift: float) -> Factor:
             )
         except RuntimeError as fault:
             raise ConvergenceError(f"the matrix at {shift:.6g} eV is singular: {fault}") from None
-    below = None
-    if np.array_equal(solver.perm_r, solver.perm_c):
-        pivots = solver.U.diagonal()
-        below = int(np.count_nonzero(pivots.real < 0))
-    return Factor(shift, solver, below, matrix.dtype)
+    return Factor(shift, solver, matrix.dtype)
+
+
+def solve_definite(matrix: Any, right: NDArray[Any]) -> NDArray[Any]:
+    """Solve a Hermitian positive definite system (n, n) for columns (n, m), to 1e-10.
+
+    A large matrix is factored in single precision, which halves the memory, and conjugate gradients with that factor
+    restore the digits in a few steps.
+    """
+    if matrix.shape[0] < SINGLE_FROM:
+        return _factor(matrix).solve(right)
+    single = np.complex64 if np.iscomplexobj(matrix) else np.float32
+    rough = _factor(matrix.astype(single))
+    blocks = [right[:, start : start + 6] for start in range(0, right.shape[1], 6)]
+    return np.hstack([_conjugate_gradients(matrix, block, rough) for block in blocks])
+
+
+def _conjugate_gradients(matrix: Any, right: NDArray[Any], rough: Factor) -> NDArray[Any]:
+    scale = np.maximum(np.linalg.norm(right, axis=0), 1e-300)
+    residual = right / scale
+    answer, direction, before = np.zeros_like(residual), np.zeros_like(residual), np.ones(right.shape[1])
+    for _ in range(60):
+        step = rough.solve(residual).astype(residual.dtype)
+        now = np.real(np.einsum("ij,ij->j", residual.conj(), step))
+        direction = step + direction * (now / before)
+        image = matrix @ direction
+        along = now / np.maximum(np.real(np.einsum("ij,ij->j", direction.conj(), image)), 1e-300)
+        answer += along * direction
+        residual -= along * image
+        before = np.maximum(now, 1e-300)
+        if np.linalg.norm(residual, axis=0).max() < 1e-10:
+            return np.asarray(answer * scale)
+    raise ConvergenceError("the enriched step did not converge: the mesh's cells are too uneven")
 
 
 def count_below(hamiltonian: Any, mass: Any, energy: float) -> int:

@@ -224,14 +224,13 @@ class Space:
 
     def matrix(self, form: Form) -> sparse.csr_array:
         """The form on all `nodes` (walls included), shape (n, n)."""
-        dofs = self.dofs
+        dofs = self.dofs.astype(np.int32)
         n, count = len(self.nodes), dofs.shape[1]
-        index = np.int32 if n < 2**31 else np.int64
         data = np.empty((len(dofs), count, count))
         for chunk in self.chunks():
             data[chunk] = self.elements(form, chunk)
-        rows = np.broadcast_to(dofs[:, :, None], data.shape).astype(index).ravel()
-        columns = np.broadcast_to(dofs[:, None, :], data.shape).astype(index).ravel()
+        rows = np.broadcast_to(dofs[:, :, None], data.shape).ravel()
+        columns = np.broadcast_to(dofs[:, None, :], data.shape).ravel()
         return sparse.csr_array((data.ravel(), (rows, columns)), shape=(n, n))
 
     def field(self, by_region: Any) -> Field:
@@ -287,7 +286,7 @@ class Space:
         curved = MeshTri2(places, ascending, elem=ElementTriP4)
         return Basis(curved, ElementTriP4(), intorder=self.quadrature_order), number
 
-    @cached_property
+    @property
     def mass(self) -> sparse.csr_array:
         """The matrix of int u v."""
         return self.matrix({("1", "1"): self.ones})
@@ -295,4 +294,10 @@ class Space:
     @cached_property
     def area_nm2(self) -> float:
         """Area that carriers may enter."""
-        return float(self.mass.sum())
+        return float(self.quadrature_weights.sum())
+
+    @property
+    def center_nm(self) -> Array:
+        """(2,) centroid of that area."""
+        weights = self.quadrature_weights[..., None]
+        return np.asarray((weights * self.quadrature_points).sum(axis=(0, 1)) / self.area_nm2)

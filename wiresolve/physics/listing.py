@@ -56,8 +56,9 @@ def listing(wire: Wire, certified: Certified) -> Listing:
     """Everything that is listed of the certified states."""
     solved = certified.solved
     whole = int(solved.level[-1])
-    states = modes.canonical(solved.pencil.space, solved.states, solved.level, whole)
-    coarse = curvature(solved.pencil, solved.energy_eV, states[solved.pencil.kept], solved.level, solved.shift_eV)
+    unknowns = modes.canonical(solved.pencil, solved.unknown_states, solved.level, whole)
+    states = solved.pencil.spread(unknowns)
+    coarse = curvature(solved.pencil, solved.energy_eV, unknowns, solved.level, solved.shift_eV)
     # The same at degree 6 shows what the mesh still does to the mass.
     fine_states = solved.enriched.states[solved.enriched_pencil.kept]
     fine = curvature(solved.enriched_pencil, solved.enriched.energy_eV, fine_states, solved.level, solved.shift_eV)
@@ -68,7 +69,7 @@ def listing(wire: Wire, certified: Certified) -> Listing:
     stiffness = np.nanmedian(np.abs(coarse)) if np.isfinite(coarse).any() else HBAR2_OVER_2M0
     k = np.linspace(0, np.sqrt(reach / stiffness), _K_POINTS)
     bands = dispersion(
-        solved.pencil, solved.energy_eV, states[solved.pencil.kept], k, solved.shift_eV,
+        solved.pencil, solved.energy_eV, unknowns, k, solved.shift_eV,
         0.1 * wire.problem.accuracy.energy_eV, certified.wanted,
     )  # fmt: skip
     energy, bar, k_min = solved.energy_eV.copy(), solved.bar_eV.copy(), np.zeros(len(solved.energy_eV))

@@ -14,16 +14,15 @@ Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
 
-def canonical(space: Space, states: NDArray[Any], level: Ints, whole: int) -> NDArray[Any]:
-    """States (nodes, m) turned within each level to one frame, with one sign each.
+def canonical(pencil: Pencil, states: NDArray[Any], level: Ints, whole: int) -> NDArray[Any]:
+    """States (n, m) of a one-band pencil turned within each level to one frame, with one sign each.
 
-    In a level the frame diagonalises a function that is even in y and falls off in all angular harmonics, with a small
-    odd part; the sign makes the overlap with a skew exponential positive. Levels from the number `whole` on may be cut
-    and are left as they are.
+    In a level the frame diagonalises a function that is even in y and holds all angular harmonics, with a small odd
+    part; the sign makes the overlap with a skew exponential positive. Levels from the number `whole` on may be cut and
+    are left as they are.
     """
-    points = space.mesh.points[space.nodes]
-    center = np.average(points, axis=0, weights=np.asarray(space.mass.sum(axis=1)).ravel())
-    place = (points - center) @ np.array([1, 1j])
+    space = pencil.space
+    place = (space.mesh.points[space.nodes[pencil.kept]] - space.center_nm) @ np.array([1, 1j])
     place = 0.8 * place / np.abs(place).max()
     weight = (1 / (1 - place)).real + 1e-3 * place.imag
     skew = np.exp(1.3 * place.real + 0.7 * place.imag)
@@ -33,10 +32,10 @@ def canonical(space: Space, states: NDArray[Any], level: Ints, whole: int) -> ND
         if len(pick) > 1 and number < whole:
             block = out[:, pick]
             # The weight as a field at the nodes: its interpolant is as good a frame as the function itself.
-            matrix = block.conj().T @ (space.mass @ (weight[:, None] * block))
+            matrix = block.conj().T @ (pencil.mass @ (weight[:, None] * block))
             _, turn = np.linalg.eigh((matrix + matrix.conj().T) / 2)
             out[:, pick] = block @ turn
-    overlap = skew @ (space.mass @ out)
+    overlap = skew @ (pencil.mass @ out)
     phase = np.where(np.abs(overlap) > 0, overlap / np.maximum(np.abs(overlap), 1e-300), 1.0)
     return np.asarray(out * np.conj(phase) if np.iscomplexobj(out) else out * np.sign(phase))
 

@@ -14,6 +14,7 @@ from wiresolve.describe.section import Piece
 from wiresolve.errors import ConvergenceError
 from wiresolve.fem import eigen, estimate
 from wiresolve.fem.corners import Corner, gradings, singular_corners
+from wiresolve.fem.enrich import Enriched, enrich
 from wiresolve.fem.meshing import Mesh, Mesher, SizeField
 from wiresolve.fem.space import Space
 from wiresolve.physics.pencil import Operator, Pencil, build
@@ -59,7 +60,7 @@ class Solved:
     bar_eV: Array
     level: Ints
     states: NDArray[Any]
-    enriched: estimate.Enriched
+    enriched: Enriched
     enriched_pencil: Pencil
     shift_eV: float
     phase_space: PhaseSpace
@@ -118,7 +119,7 @@ def solve_on(coarse: Mesh, fine: Mesh, operator_of: OperatorOf, count: int) -> S
     shift = cells.bottom_eV - 1e-3 * (cells.energy_of(count) - cells.bottom_eV)
     energy, states = eigen.lowest(pencil.h0, pencil.mass, count, shift)
     full = pencil.spread(states)
-    enriched = estimate.enrich(
+    enriched = enrich(
         space, finer, energy, full, (pencil.local(), above.local()), above.local_mass, shift, operator.bands
     )
     bar = estimate.bars(enriched)
@@ -132,7 +133,7 @@ def certify_at(solved: Solved, k_per_nm: float, count: int) -> Solved:
     pencil = solved.pencil
     energy, states = eigen.lowest(pencil.at(k_per_nm), pencil.mass, count + _SPARE, solved.shift_eV)
     full = pencil.spread(states)
-    enriched = estimate.enrich(
+    enriched = enrich(
         pencil.space,
         solved.enriched.space,
         energy,

@@ -1,0 +1,190 @@
+"""One enriched step: the states of degree 4, improved at degree 6 on the same triangles.
+
+The states are carried to degree 6 (geometry included), improved there by one step of inverse iteration whose inner
+nodes are condensed cell by cell, and ended by Rayleigh-Ritz.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import scipy.sparse as sparse
+from numpy.typing import NDArray
+
+from wiresolve.fem.eigen import ritz_from, solve_definite
+from wiresolve.fem.lagrange import triangle
+from wiresolve.fem.space import Space
+
+Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
+Local = Callable[[Space, slice | Ints], NDArray[Any]]
+"""Element matrices of an operator on some cells of a space, shape (cells, nodes x bands, nodes x bands)."""
+
+
+@dataclass(frozen=True, eq=False)
+class Enriched:
+    """States improved at degree 6.
+
+    Attributes
+    ----------
+    space : the space of degree 6.
+    energy_eV : (m,) energies there.
+    fall_eV : (m,) how far below the degree-4 energies they lie.
+    indicator_eV : (c, m) each cell's share of the fall.
+    states : (nodes x bands, m) the improved states at the nodes of `space`.
+    """
+
+    space: Space
+    energy_eV: Array
+    fall_eV: Array
+    indicator_eV: Array
+    states: NDArray[Any]
+
+
+def enrich(
+    coarse: Space,
+    fine: Space,
+    energies: Array,
+    states: NDArray[Any],
+    hamiltonians: tuple[Local, Local],
+    mass: Local,
+    shift: float,
+    bands: int = 1,
+) -> Enriched:
+    """One step of inverse iteration at `shift`, below all states, in the finer space.
+
+    Parameters
+    ----------
+    energies, states : (m,) and (nodes x bands, m), the degree-4 block on all nodes of `coarse`.
+    hamiltonians : element matrices of H on the coarse and on the fine space.
+    mass : element matrices of the inner product, on either.
+    """
+    parts = _Parts(fine, hamiltonians[1], mass, bands)
+    before = prolong(coarse, fine, states, bands)
+    after = _inverse_iteration(parts, before, shift)
+    small_h, small_m = (np.zeros((after.shape[1],) * 2, dtype=after.dtype) for _ in range(2))
+    for _, dofs, h, w in parts:
+        local = after[dofs]
+        turned = local.conj().transpose(0, 2, 1)
+        small_h += (turned @ (h @ local)).sum(axis=0)
+        small_m += (turned @ (w @ local)).sum(axis=0)
+    improved, turn = ritz_from(small_h, small_m)
+    after = after @ turn
+    # Inside a level the two bases may be turned against each other: the difference is taken to the projection.
+    overlap = np.zeros_like(small_m)
+    for _, dofs, _, w in parts:
+        overlap += (before[dofs].conj().transpose(0, 2, 1) @ (w @ after[dofs])).sum(axis=0)
+    indicator = np.empty((len(fine.cells), after.shape[1]))
+    for chunk, dofs, h, w in parts:
+        local = after[dofs] - before[dofs] @ overlap
+        indicator[chunk] = np.einsum("cim,cim->cm", local.conj(), (h - shift * w) @ local).real
+    indicator = np.maximum(indicator, 0)
+    curved = np.flatnonzero(~(coarse.straight & fine.straight))
+    for start in range(0, len(curved), 1024):
+        cells = curved[start : start + 1024]
+        local = before[with_bands(fine.dofs[cells], bands)]
+        there = _local_energy(local, hamiltonians[1](fine, cells), mass(fine, cells), energies)
+        local = states[with_bands(coarse.dofs[cells], bands)]
+        here = _local_energy(local, hamiltonians[0](coarse, cells), mass(coarse, cells), energies)
+        indicator[cells] += np.abs(there - here)
+    return Enriched(fine, improved, energies - improved, indicator, after)
+
+
+def prolong(coarse: Space, fine: Space, states: NDArray[Any], bands: int = 1) -> NDArray[Any]:
+    """Degree-4 states (nodes x bands, m) at the nodes of the finer space over the same cells."""
+    carry = triangle(coarse.mesh.degree).values(triangle(fine.mesh.degree).nodes)
+    m = states.shape[1]
+    by_node = states.reshape(-1, bands * m)
+    out = np.zeros((len(fine.nodes), bands * m), dtype=states.dtype)
+    for chunk in fine.chunks():
+        out[fine.dofs[chunk]] = carry @ by_node[coarse.dofs[chunk]]
+    return out.reshape(-1, m)
+
+
+def with_bands(dofs: Ints, bands: int) -> Ints:
+    """Rows of the cells' nodes, node-major: (c, nodes) to (c, nodes x bands)."""
+    if bands == 1:
+        return dofs
+    return np.asarray((dofs[:, :, None] * bands + np.arange(bands)).reshape(len(dofs), -1))
+
+
+@dataclass(frozen=True, eq=False)
+class _Parts:
+    """The cells in chunks with their rows and element matrices; on a small mesh the matrices are made once."""
+
+    space: Space
+    hamiltonian: Local
+    mass: Local
+    bands: int
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "_kept", {})
+
+    def __iter__(self) -> Iterator[tuple[slice, Ints, NDArray[Any], NDArray[Any]]]:
+        kept: dict[int, tuple[slice, Ints, NDArray[Any], NDArray[Any]]] = self.__dict__["_kept"]
+        for chunk in self.space.chunks():
+            found = kept.get(chunk.start)
+            if found is None:
+                dofs = with_bands(self.space.dofs[chunk], self.bands)
+                found = chunk, dofs, self.hamiltonian(self.space, chunk), self.mass(self.space, chunk)
+                if len(self.space.cells) <= 2 * len(dofs):
+                    kept[chunk.start] = found
+            yield found
+
+
+def _inverse_iteration(parts: _Parts, block: NDArray[Any], shift: float) -> NDArray[Any]:
+    """(H - shift M)^-1 M applied to a block on all nodes, zero on the walls."""
+    space, bands = parts.space, parts.bands
+    element = triangle(space.mesh.degree)
+    outer = (element.count - element.inner) * bands
+    unknown = np.zeros(len(space.nodes), dtype=bool)
+    unknown[space.dofs[:, : element.count - element.inner]] = True
+    unknown &= ~space.wall
+    unknown = np.repeat(unknown, bands)
+    number = np.full(len(block), -1, dtype=np.int32)
+    number[unknown] = np.arange(unknown.sum(), dtype=np.int32)
+    kind = np.result_type(block.dtype, next(iter(parts))[2].dtype)
+    condensed = np.empty((len(space.cells), outer, outer), dtype=kind)
+    right = np.zeros((int(unknown.sum()) + 1, block.shape[1]), dtype=kind)
+    for chunk, dofs, h, w in parts:
+        s, load = h - shift * w, w @ block[dofs]
+        pulled, given = _condensation(s, load, outer)
+        condensed[chunk] = s[:, :outer, :outer] - s[:, :outer, outer:] @ pulled
+        # Rows on the walls have the number -1: they end in a last row that is dropped.
+        np.add.at(right, number[dofs[:, :outer]], load[:, :outer] - s[:, :outer, outer:] @ given)
+    rim = number[with_bands(space.dofs[:, : element.count - element.inner], bands)]
+    matrix = _gathered(condensed, rim, int(unknown.sum()))
+    del condensed
+    solved = solve_definite(matrix, right[:-1])
+    del matrix, right
+    out = np.zeros((len(block), block.shape[1]), dtype=kind)
+    out[unknown] = solved
+    for _, dofs, h, w in parts:
+        pulled, given = _condensation(h - shift * w, w @ block[dofs], outer)
+        out[dofs[:, outer:]] = given - pulled @ out[dofs[:, :outer]]
+    return out
+
+
+def _condensation(s: NDArray[Any], load: NDArray[Any], outer: int) -> tuple[NDArray[Any], NDArray[Any]]:
+    """What the inner nodes answer to the outer ones and to their own load."""
+    both = np.linalg.solve(s[:, outer:, outer:], np.concatenate([s[:, outer:, :outer], load[:, outer:]], axis=2))
+    return both[:, :, :outer], both[:, :, outer:]
+
+
+def _gathered(elements: NDArray[Any], rows: NDArray[np.int32], size: int) -> sparse.csc_array:
+    """The sum of element matrices (c, n, n) at numbered rows (c, n); the number -1 is left out."""
+    walls = (rows < 0).any(axis=1)
+    held = rows[walls] < 0
+    elements[walls] *= ~(held[:, :, None] | held[:, None, :])
+    rows = np.maximum(rows, 0)
+    down = np.broadcast_to(rows[:, :, None], elements.shape).ravel()
+    across = np.broadcast_to(rows[:, None, :], elements.shape).ravel()
+    return sparse.csc_array((elements.ravel(), (down, across)), shape=(size, size))
+
+
+def _local_energy(local: NDArray[Any], h: NDArray[Any], w: NDArray[Any], energies: Array) -> Array:
+    """Each cell's part of <H - E>, (cells, m): it differs between two geometries of one curved cell."""
+    return np.asarray(np.einsum("cim,cim->cm", local.conj(), h @ local - (w @ local) * energies).real)
