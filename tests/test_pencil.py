@@ -14,7 +14,8 @@ from wiresolve.describe.section import Layer, Patch, Section
 from wiresolve.describe.shapes import Circle, Rectangle
 from wiresolve.describe.wirefile import parse
 from wiresolve.fem import eigen
-from wiresolve.fem.meshing import Mesh, Mesher, SizeField
+from wiresolve.fem.mesh import Mesh
+from wiresolve.fem.meshing import Mesher, SizeField
 from wiresolve.fem.space import Space
 from wiresolve.physics.pencil import Operator, build
 from wiresolve.physics.subbands import certify, solve_on
@@ -93,7 +94,7 @@ def spectral_reference(k: float, count: int, modes: int = 22) -> np.ndarray:
 
 @pytest.mark.parametrize("k", [0.0, 0.35])
 def test_two_coupled_bands_against_a_spectral_reference(k: float) -> None:
-    """Every term of the operator, with a coupling that varies over the section, to 2e-8 of the energy (corners on an even mesh)."""
+    """Every term of the operator, with a coupling that varies over the section, on an even mesh (not graded)."""
     operator = Operator((two_bands(),), coupling=((coupling, SIGMA_X),))
     with Mesher(Section(Rectangle(width_nm=WIDTH, height_nm=HEIGHT), "a").pieces()) as mesher:
         mesh, _ = mesher.mesh(SizeField(0.5))

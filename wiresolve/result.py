@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe.problem import Problem
-from wiresolve.fem.meshing import Mesh
+from wiresolve.fem.mesh import Mesh
 
 Array = NDArray[np.float64]
 SCHEMA = "wiresolve-result-1"

@@ -16,7 +16,8 @@ import scipy.linalg as dense
 from numpy.typing import NDArray
 
 from wiresolve.fem.lagrange import triangle
-from wiresolve.fem.meshing import Grading, Mesh
+from wiresolve.fem.mesh import Mesh
+from wiresolve.fem.meshing import Grading
 
 Array = NDArray[np.float64]
 

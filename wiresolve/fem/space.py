@@ -16,7 +16,7 @@ import scipy.sparse as sparse
 from numpy.typing import NDArray
 
 from wiresolve.fem.lagrange import LagrangeTriangle, triangle
-from wiresolve.fem.meshing import Mesh, is_straight
+from wiresolve.fem.mesh import Mesh, is_straight
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]

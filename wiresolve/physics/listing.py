@@ -26,6 +26,8 @@ _THERMAL_REACH = 12.0
 _FERMI_REACH = 20.0
 _MOST_THERMAL = 80
 _K_POINTS = 61
+_AXIAL_eV = 1e-6
+"""E(k) between the minima is never asked for more closely than this: the mesh is made for k = 0."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -70,7 +72,7 @@ def listing(wire: Wire, certified: Certified) -> Listing:
     k = np.linspace(0, np.sqrt(reach / stiffness), _K_POINTS)
     bands = dispersion(
         solved.pencil, solved.energy_eV, unknowns, k, solved.shift_eV,
-        0.1 * wire.problem.accuracy.energy_eV, certified.wanted,
+        max(0.1 * wire.problem.accuracy.energy_eV, _AXIAL_eV), certified.wanted,
     )  # fmt: skip
     energy, bar, k_min = solved.energy_eV.copy(), solved.bar_eV.copy(), np.zeros(len(solved.energy_eV))
     below = energy[: certified.wanted] - bands.energy_eV.min(axis=1) > bar[: certified.wanted]

@@ -7,7 +7,7 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 from wiresolve.describe.problem import Problem
-from wiresolve.fem.meshing import Mesh
+from wiresolve.fem.mesh import Mesh
 from wiresolve.physics.subbands import certify
 from wiresolve.physics.wire import Wire
 

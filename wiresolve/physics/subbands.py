@@ -15,7 +15,8 @@ from wiresolve.errors import ConvergenceError
 from wiresolve.fem import eigen, estimate
 from wiresolve.fem.corners import Corner, gradings, singular_corners
 from wiresolve.fem.enrich import Enriched, enrich
-from wiresolve.fem.meshing import Mesh, Mesher, SizeField
+from wiresolve.fem.mesh import Mesh
+from wiresolve.fem.meshing import Mesher, SizeField
 from wiresolve.fem.space import Space
 from wiresolve.physics.pencil import Operator, Pencil, build
 from wiresolve.physics.semiclassical import PhaseSpace, phase_space
@@ -39,6 +40,8 @@ _REACH = 1.5
 """Cells grow from a corner to their full size over this many full sizes."""
 _AIM = 0.7
 """The next mesh aims at this share of the accuracy, so that one that turns out a little worse still meets it."""
+_GROWTH = 4.0
+"""How much larger cells are far out in a material that goes on outside."""
 _PER_WAVE = 1.55e-8
 """Relative error of a smooth section's energy at k h = 1, times (k h)^8: fitted on circles, for the first mesh only."""
 
@@ -168,11 +171,11 @@ def certify(
     """
     tell = on_progress or (lambda stage, fraction, detail: None)
     distance, passes = 0.0, 0
-    for _ in range(6):
+    for _ in range(4):
         with Mesher(draw(distance)) as mesher:
-            size, corners, start = _first_size(mesher, operator_of, wanted, accuracy_eV)
+            size, corners, start = _first_size(mesher, operator_of, wanted, accuracy_eV, barrier)
             if barrier is not None and barrier.extendable and distance == 0.0:
-                distance = _first_distance(start, barrier, wanted)
+                distance = _first_distance(start, barrier)
                 continue
             best, solved_passes = _refine(
                 mesher, size, corners, operator_of, wanted, accuracy_eV, passes, tell, barrier
@@ -184,7 +187,10 @@ def certify(
         more = _further(best, effect, barrier, wanted, accuracy_eV)
         if more == 0.0:
             break
-        distance = min(distance + more, 20 * np.sqrt(best.pencil.space.area_nm2))
+        farthest = _farthest(best, barrier)
+        if distance >= farthest:
+            break
+        distance = min(distance + more, farthest)
     tell("count", 0.9, "counting the states below the highest wanted one")
     best, missed = _counted(best, wanted)
     met = bool((best.bar_eV[:wanted] <= accuracy_eV).all())
@@ -192,7 +198,7 @@ def certify(
 
 
 def _first_size(
-    mesher: Mesher, operator_of: OperatorOf, wanted: int, accuracy_eV: float
+    mesher: Mesher, operator_of: OperatorOf, wanted: int, accuracy_eV: float, barrier: Barrier | None
 ) -> tuple[SizeField, tuple[Corner, ...], PhaseSpace]:
     """A size field for the first mesh, from the wave length of the highest wanted state and the singular corners."""
     rough, _ = mesher.mesh(SizeField(mesher.extent_nm / 4))
@@ -210,7 +216,21 @@ def _first_size(
     largest = (relative / _PER_WAVE) ** 0.125 / wave_number
     largest = min(max(largest, 0.4 / wave_number), 3.0 / wave_number, mesher.extent_nm / 3)
     reach = min(float(np.sqrt(space.area_nm2) / 2), _REACH * largest)
-    return SizeField(largest, gradings(corners, largest, reach, least)), corners, cells
+    first = SizeField(largest, gradings(corners, largest, reach, least))
+    if barrier is not None and barrier.extendable:
+        first = _coarser_outside(first, rough, barrier, top)
+    return first, corners, cells
+
+
+def _coarser_outside(size: SizeField, rough: Mesh, barrier: Barrier, top_eV: float) -> SizeField:
+    """Cells that grow away from what the outer material surrounds: states decay there, or have long waves."""
+    corner = rough.cells[:, :3]
+    outer = rough.region == [r.name for r in rough.regions].index(barrier.region)
+    wave = np.sqrt(max(top_eV - barrier.edge_eV, 0) / barrier.stiffness_eV_nm2)
+    grown = min(_GROWTH * size.largest_nm, max(2 / wave, size.largest_nm) if wave else np.inf)
+    sizes = np.full(len(rough.points), grown)
+    sizes[np.unique(corner[~outer])] = size.largest_nm
+    return replace(size, largest_nm=grown, triangles=rough.points[corner], sizes_nm=sizes[corner])
 
 
 def _refine(
@@ -250,10 +270,22 @@ def _refine(
     return best, number
 
 
-def _first_distance(cells: PhaseSpace, barrier: Barrier, wanted: int) -> float:
+def _first_distance(cells: PhaseSpace, barrier: Barrier) -> float:
     """A first guess of how far the outermost layer must reach: 8 decay lengths at half its height."""
     height = max(barrier.edge_eV - cells.bottom_eV, 1e-3)
     return float(8 * np.sqrt(2 * barrier.stiffness_eV_nm2 / height))
+
+
+def _farthest(solved: Solved, barrier: Barrier) -> float:
+    """How far the outermost layer is extended at most.
+
+    States just below its edge, or above, would push it out for ever and fill it with states of its own: 24 decay
+    lengths at half its height, or three times the size of what it surrounds, and the wall's effect is said.
+    """
+    space = solved.pencil.space
+    name = [r.name for r in space.mesh.regions].index(barrier.region)
+    weights = space.quadrature_weights[space.mesh.region[space.cells] != name]
+    return float(max(3 * _first_distance(solved.phase_space, barrier), 3 * np.sqrt(weights.sum())))
 
 
 def wall_effect(solved: Solved, barrier: Barrier, wanted: int) -> Array:

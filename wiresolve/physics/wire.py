@@ -16,7 +16,7 @@ from wiresolve.describe.problem import Problem
 from wiresolve.describe.section import Piece, outside_loop
 from wiresolve.describe.shapes import Rectangle
 from wiresolve.errors import InputError
-from wiresolve.fem.meshing import Mesh
+from wiresolve.fem.mesh import Mesh
 from wiresolve.physics.pencil import Operator
 from wiresolve.physics.subbands import Barrier
 from wiresolve.units import HBAR2_OVER_2M0
