@@ -1,0 +1,166 @@
+"""The repository is what its own documents say: commands, files, examples, the agreed top level."""
+
+from __future__ import annotations
+
+import ast
+import os
+import re
+import subprocess
+import sys
+import tomllib
+from pathlib import Path
+
+import click
+import pytest
+
+import wiresolve.cli
+from wiresolve.describe import wirefile
+from wiresolve.doctor import GMSH_LIBRARIES
+
+REPOSITORY = Path(__file__).resolve().parents[1]
+README = (REPOSITORY / "README.md").read_text(encoding="utf-8")
+DEVELOPERS = (REPOSITORY / "DEVELOPERS.md").read_text(encoding="utf-8")
+TOP_LEVEL = {
+    "README.md",
+    "DEVELOPERS.md",
+    "LICENSE",
+    "CHANGELOG.md",
+    "pyproject.toml",
+    "constraints.txt",
+    ".ci",
+    ".gitignore",
+    "wiresolve",
+    "geometries",
+    "tests",
+    "examples",
+    "scripts",
+}
+LONGEST_MODULE = 450
+
+
+def tracked() -> list[str]:
+    """Paths of all files under version control."""
+    # The folder may belong to somebody else than who runs the tests, as in a container.
+    listing = subprocess.run(
+        ["git", "-c", "safe.directory=*", "ls-files", "-z"], cwd=REPOSITORY, capture_output=True, text=True, check=True
+    )
+    return [name for name in listing.stdout.split("\0") if name]
+
+
+def code_blocks(language: str) -> list[str]:
+    """The README's fenced blocks of a language."""
+    return re.findall(rf"^```{language}\n(.*?)^```$", README, flags=re.DOTALL | re.MULTILINE)
+
+
+def real_commands() -> dict[str, click.Command]:
+    """The commands of the command line by name."""
+    groups = [thing for thing in vars(wiresolve.cli).values() if isinstance(thing, click.Group)]
+    return dict(groups[0].commands)
+
+
+def test_top_level_holds_what_was_agreed() -> None:
+    assert {name.split("/")[0] for name in tracked()} == TOP_LEVEL
+
+
+def test_no_generated_file_is_tracked() -> None:
+    endings = (".vtu", ".pvd", ".npz", ".h5", ".pyc", ".sqlite")
+    assert [name for name in tracked() if name.endswith(endings) or name.startswith("results/")] == []
+
+
+def test_modules_are_short() -> None:
+    lengths = {
+        str(path.relative_to(REPOSITORY)): len(path.read_text(encoding="utf-8").splitlines())
+        for path in (REPOSITORY / "wiresolve").rglob("*.py")
+    }
+    assert {name: length for name, length in lengths.items() if length > LONGEST_MODULE} == {}
+
+
+@pytest.mark.parametrize("text", [README, DEVELOPERS], ids=["README", "DEVELOPERS"])
+def test_named_files_exist(text: str) -> None:
+    named = re.findall(r"(?:\./)?((?:scripts|geometries|examples|tests|wiresolve|\.ci)/[\w./-]*\w)", text)
+    assert named
+    assert [name for name in named if not (REPOSITORY / name).exists() and name != "wiresolve/survey"] == []
+
+
+@pytest.mark.parametrize("text", [README, DEVELOPERS], ids=["README", "DEVELOPERS"])
+def test_named_scripts_can_be_started(text: str) -> None:
+    scripts = re.findall(r"(?<!\w)\./(scripts/\w+)", text)
+    assert scripts
+    assert [name for name in scripts if not os.access(REPOSITORY / name, os.X_OK)] == []
+
+
+def test_documented_commands_are_the_real_ones() -> None:
+    documented = set(re.findall(r"`wiresolve (\w[\w-]*)", README))
+    assert documented == set(real_commands())
+    passed_through = re.search(r"^ +((?:\w+ \| )+)--version\)", (REPOSITORY / "scripts" / "run").read_text(), re.M)
+    assert passed_through
+    assert set(passed_through[1].replace("|", " ").split()) == set(real_commands())
+
+
+def test_documented_warnings_are_the_real_ones() -> None:
+    rows = README.partition("### Warnings")[2].partition("\n## ")[0]
+    code = re.compile(r"[a-z]+(-[a-z]+)+")
+    real = set()
+    for path in (REPOSITORY / "wiresolve").rglob("*.py"):
+        for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+            # A warning is a code, a text and a remedy.
+            if isinstance(node, ast.Tuple) and len(node.elts) == 3 and isinstance(node.elts[0], ast.Constant):
+                first = node.elts[0].value
+                if isinstance(first, str) and code.fullmatch(first):
+                    real.add(first)
+    assert set(re.findall(r"^\| `(\S+)` \|", rows, re.MULTILINE)) == real
+
+
+def test_generated_parts_of_the_readme_are_fresh() -> None:
+    run = subprocess.run(
+        [sys.executable, "scripts/_readme.py", "--check"], cwd=REPOSITORY, capture_output=True, text=True
+    )
+    assert run.returncode == 0, run.stderr
+
+
+def test_wire_file_of_the_readme_is_valid() -> None:
+    (block,) = code_blocks("toml")
+    problem = wirefile.parse(block, REPOSITORY)
+    assert problem.title == tomllib.loads(block)["title"]
+    assert problem.accuracy.subbands == 10
+
+
+def test_all_keys_of_the_wire_file_are_documented() -> None:
+    tables = (wirefile.SECTION_KEYS, wirefile.LAYER_KEYS, wirefile.PATCH_KEYS, wirefile.MATERIAL_KEYS)
+    keys = {key for table in (*tables, *wirefile.LENGTH_KEYS.values()) for key in table}
+    reference = README.partition("## The wire file")[2].partition("## Command line")[0]
+    assert sorted(key for key in keys | set(wirefile.SHAPES) if not re.search(rf"[`.\[]{key}[` \]]", reference)) == []
+
+
+def test_script_of_the_readme_runs(tmp_path: Path) -> None:
+    (block,) = code_blocks("python")
+    run = subprocess.run([sys.executable, "-W", "error", "-c", block], cwd=tmp_path, capture_output=True, text=True)
+    assert run.returncode == 0, run.stderr
+    assert run.stdout.strip()
+    assert (tmp_path / "results" / "from_python" / "result.json").is_file()
+
+
+def test_pins_cover_the_dependencies() -> None:
+    project = tomllib.loads((REPOSITORY / "pyproject.toml").read_text(encoding="utf-8"))["project"]
+    wanted = project["dependencies"] + project["optional-dependencies"]["test"]
+    pins = dict(
+        line.split("==")
+        for line in (REPOSITORY / "constraints.txt").read_text().splitlines()
+        if not line.startswith("#")
+    )
+    names = {re.split(r"[<>=!~\[]", requirement)[0] for requirement in wanted}
+    assert sorted(names - pins.keys()) == []
+    assert all(re.fullmatch(r"[\w.]+", version) for version in pins.values())
+
+
+def test_system_packages_are_the_same_everywhere() -> None:
+    script = (REPOSITORY / "scripts" / "_environment.sh").read_text(encoding="utf-8")
+    packages = [package for _, package in re.findall(r'^ +"(lib\S+\.so\.\d+) (lib\S+)"$', script, re.MULTILINE)]
+    assert packages == GMSH_LIBRARIES.split()
+    assert "apt-get install --yes " + " ".join(packages) in README
+
+
+def test_continuous_integration_runs_the_readme_command() -> None:
+    text = (REPOSITORY / ".ci" / "run").read_text(encoding="utf-8")
+    assert "exec ./scripts/test" in text
+    assert "./scripts/test" in code_blocks("")[1]
