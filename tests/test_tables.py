@@ -1,0 +1,117 @@
+"""Numbers and words: bars and digits, `result.json`, `subbands.csv`, the printed table."""
+
+from __future__ import annotations
+
+import csv
+import io
+import json
+import math
+from dataclasses import replace
+
+import numpy as np
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from tests.synthetic import core_shell_result
+from wiresolve.output.tables import result_json, subband_table, subbands_csv, summary, with_bar
+
+
+@given(st.floats(-1e4, 1e4), st.floats(1e-8, 1e3))
+def test_the_printed_interval_holds_the_given_one(value: float, bar: float) -> None:
+    middle, half = (float(part) for part in with_bar(value, bar).split(" ± "))
+    slack = 1e-9 * max(1.0, abs(value))
+    assert middle - half <= value - bar + slack
+    assert middle + half >= value + bar - slack
+    assert half <= max(1.5 * bar, bar + 2e-6) * (1 + 1e-12)
+
+
+@pytest.mark.parametrize(
+    ("value", "bar", "text"),
+    [
+        (33.07418, 0.0023, "33.074 ± 0.003"),
+        (33.07418, 0.02, "33.07 ± 0.03"),
+        (230.9776, 0.0097, "230.978 ± 0.011"),
+        (1.25, 0.5, "1.2 ± 0.6"),
+        (120.0, 25.0, "120 ± 25"),
+        (5.0, 0.096, "5.00 ± 0.10"),
+        (-0.0004, 0.001, "-0.0004 ± 0.0010"),
+        (-0.00001, 0.001, "0.0000 ± 0.0011"),
+        (5.0, 0.0, "5"),
+        (1 / 3, 1e-15, "0.333333 ± 0.000001"),
+    ],
+)
+def test_digits_follow_the_bar(value: float, bar: float, text: str) -> None:
+    assert with_bar(value, bar) == text
+
+
+def test_json_holds_the_result_to_the_last_bit() -> None:
+    result = core_shell_result()
+    text = result_json(result, status="done")
+    data = json.loads(text)
+    assert data.pop("status") == "done"
+    assert data == json.loads(json.dumps(result.to_dict()))
+    assert [s["energy_eV"] for s in data["subbands"]] == result.energies_eV.tolist()
+    assert list(data) == sorted(data)
+    assert result_json(result, status="done") == text
+    assert not [line for line in text.splitlines() if line.strip().rstrip(",").replace(".", "").isdigit()]
+
+
+def test_json_takes_numpy_and_refuses_what_is_no_number() -> None:
+    result = core_shell_result()
+    verdict = replace(result.verdict, single_subband={"holds": np.bool_(True), "n": np.int64(3), "x": np.float64(0.5)})
+    data = json.loads(result_json(replace(result, verdict=verdict)))
+    assert data["verdict"]["single_subband"] == {"holds": True, "n": 3, "x": 0.5}
+    broken = replace(result.verdict, single_subband={"share": math.nan})
+    with pytest.raises(ValueError, match=r"verdict\.single_subband\.share is nan"):
+        result_json(replace(result, verdict=broken))
+
+
+def test_csv_is_the_subbands() -> None:
+    result = core_shell_result()
+    lines = subbands_csv(result).splitlines()
+    comments = [line for line in lines if line.startswith("#")]
+    assert any(result.problem.digest in line for line in comments)
+    rows = list(csv.DictReader(io.StringIO("\n".join(lines[len(comments) :]))))
+    assert len(rows) == len(result.subbands)
+    for row, subband in zip(rows, result.subbands, strict=True):
+        assert float(row["energy_eV"]) == subband.energy_eV
+        assert float(row["error_eV"]) == subband.error_eV
+        assert (int(row["index"]), int(row["level"]), row["layer"]) == (subband.index, subband.level, subband.layer)
+        assert float(row["share_core"]) + float(row["share_layer_1"]) == pytest.approx(1)
+        assert row["bound"] == row["wall_effect_eV"] == ""
+
+
+def test_spacings_stand_between_levels_in_meV_and_kT() -> None:
+    result = core_shell_result(6)
+    header, units, *rows = subband_table(result)
+    assert "to the next" in header
+    assert "kT at 77 K" in units
+    # Subbands 2 and 3 are a pair: only the second carries the spacing to level 3.
+    pair = [row.split() for row in rows[1:3]]
+    gap_meV = 1e3 * (result.energies_eV[3] - result.energies_eV[2])
+    assert pair[0][5:] == ["0.0670", "core", "2", "x", "1"]
+    assert float(pair[1][5]) == pytest.approx(gap_meV, rel=1e-3)
+    # kT at 77 K is 6.6353 meV (CODATA: 8.617333e-5 eV/K times 77 K).
+    assert float(pair[1][7]) == pytest.approx(gap_meV / 6.635347, rel=5e-3)
+
+
+def test_a_long_table_is_cut_and_says_so() -> None:
+    lines = subband_table(core_shell_result(45))
+    assert len(lines) == 2 + 40 + 1
+    assert lines[-1] == "and 5 more, see subbands.csv"
+    assert len(subbands_csv(core_shell_result(45)).splitlines()) == 3 + 1 + 45
+
+
+def test_the_summary_gives_the_verdict_first() -> None:
+    result = core_shell_result()
+    text = summary(result, "results/wire")
+    order = [
+        text.index(part) for part in ("One channel up to 77 K", "subband", "open-barrier", "Make the shell", "Files")
+    ]
+    assert order == sorted(order)
+    assert "results/wire" in text.splitlines()[-1]
+    assert "0 states missed" in text
+    assert "ACCURACY MISSED" not in text
+    assert "ACCURACY MISSED" in summary(replace(result, accuracy_met=False))
+    assert max(len(line) for line in text.splitlines()) <= 120

@@ -1,0 +1,107 @@
+"""`modes.vtu`, read back with PyVista and integrated with VTK's own shape functions."""
+
+from __future__ import annotations
+
+import math
+from pathlib import Path
+
+import numpy as np
+import pytest
+import pyvista
+from vtkmodules.vtkCommonCore import vtkIdList
+from vtkmodules.vtkCommonDataModel import VTK_LAGRANGE_TRIANGLE
+
+from tests.synthetic import CORE_NM, RADIUS_NM, core_shell_result, rectangle_result
+from wiresolve.output.vtk import write_modes, write_section
+
+
+def integrals(grid: pyvista.UnstructuredGrid, values: np.ndarray) -> np.ndarray:
+    """Integral of a nodal function's square over each cell, by VTK's functions and a collapsed Gauss rule."""
+    t, w = np.polynomial.legendre.leggauss(9)
+    t, w = (t + 1) / 2, w / 2
+    u, v = np.meshgrid(t, t, indexing="ij")
+    points = np.column_stack([u.ravel(), (v * (1 - u)).ravel()])
+    weights = (w[:, None] * w[None, :] * (1 - u)).ravel()
+    cell = grid.GetCell(0)
+    shape, slope = [], []
+    for point in points:
+        functions, derivatives = [0.0] * 15, [0.0] * 45
+        cell.InterpolateFunctions([*point, 0.0], functions)
+        cell.InterpolateDerivs([*point, 0.0], derivatives)
+        shape.append(functions)
+        slope.append(np.reshape(derivatives[:30], (2, 15)))
+    nodes = np.empty((grid.n_cells, 15), dtype=np.int64)
+    ids = vtkIdList()
+    for number in range(grid.n_cells):
+        grid.GetCellPoints(number, ids)
+        nodes[number] = [ids.GetId(i) for i in range(15)]
+    at = grid.points[nodes][:, :, :2]
+    jacobian = np.einsum("qda,cax->cqdx", np.array(slope), at)
+    area = jacobian[..., 0, 0] * jacobian[..., 1, 1] - jacobian[..., 0, 1] * jacobian[..., 1, 0]
+    inside = np.einsum("qa,ca->cq", np.array(shape), values[nodes])
+    return np.einsum("q,cq,cq->c", weights, np.abs(area), inside**2)
+
+
+def test_a_polynomial_mode_integrates_to_one(tmp_path: Path) -> None:
+    write_modes(rectangle_result(), tmp_path / "modes.vtu")
+    grid = pyvista.read(tmp_path / "modes.vtu")
+    assert set(grid.celltypes) == {VTK_LAGRANGE_TRIANGLE}
+    total = integrals(grid, grid.point_data["psi_01_per_nm"])
+    assert total.sum() == pytest.approx(1, abs=1e-12)
+    # The half on the left holds half of it, so cells carry their own values and not a permutation of them.
+    left = grid.cell_centers().points[:, 0] < 0
+    density = grid.point_data["density_01_per_nm2"]
+    assert density == pytest.approx(grid.point_data["psi_01_per_nm"] ** 2, rel=1e-15)
+    assert integrals(grid, np.ones(grid.n_points)).sum() == pytest.approx(200, rel=1e-12)
+    assert 0.3 < total[left].sum() < 0.7
+
+
+def test_curved_cells_hold_the_round_wire(tmp_path: Path) -> None:
+    result = core_shell_result(5)
+    write_modes(result, tmp_path / "modes.vtu")
+    grid = pyvista.read(tmp_path / "modes.vtu")
+    area = integrals(grid, np.ones(grid.n_points))
+    # Quartic arcs: the area is right to the eighth power of the angle that an edge spans.
+    assert area.sum() == pytest.approx(math.pi * RADIUS_NM**2, rel=1e-7)
+    core = grid.field_data["layer_names"].tolist().index("core")
+    assert area[grid.cell_data["layer"] == core].sum() == pytest.approx(math.pi * CORE_NM**2, rel=1e-7)
+    for index in range(1, 6):
+        psi = grid.point_data[f"psi_{index:02d}_per_nm"]
+        assert integrals(grid, psi).sum() == pytest.approx(1, abs=2e-4)
+
+
+def test_names_and_fields_of_the_file(tmp_path: Path) -> None:
+    result = core_shell_result(10)
+    write_modes(result, tmp_path / "modes.vtu")
+    grid = pyvista.read(tmp_path / "modes.vtu")
+    wanted = [
+        f"{kind}_{i:02d}_{unit}" for i in range(1, 11) for kind, unit in (("psi", "per_nm"), ("density", "per_nm2"))
+    ]
+    assert set(grid.point_data.keys()) == set(wanted)
+    assert set(grid.cell_data.keys()) == {"layer", "material", "mass_m0", "band_edge_eV"}
+    assert grid.field_data["energy_eV"] == pytest.approx(result.energies_eV, rel=1e-15)
+    assert grid.field_data["error_eV"] == pytest.approx(result.errors_eV, rel=1e-15)
+    assert grid.field_data["level"].tolist() == [s.level for s in result.subbands]
+    assert grid.field_data["input_digest"].tolist() == [result.problem.digest]
+    materials = grid.field_data["material_names"].tolist()
+    barrier = grid.cell_data["material"] == materials.index("Al0.3Ga0.7As")
+    assert np.all(grid.cell_data["band_edge_eV"][barrier] == 0.3)
+    assert np.all(grid.cell_data["band_edge_eV"][~barrier] == 0.0)
+    assert np.all(grid.points[:, 2] == 0)
+    assert grid.points[:, :2] == pytest.approx(result.mesh.points, abs=1e-12)
+
+
+def test_the_same_result_gives_the_same_bytes(tmp_path: Path) -> None:
+    result = core_shell_result(3)
+    for name in ("a", "b"):
+        write_modes(result, tmp_path / name)
+    assert (tmp_path / "a").read_bytes() == (tmp_path / "b").read_bytes()
+
+
+def test_a_mesh_alone(tmp_path: Path) -> None:
+    result = core_shell_result(1)
+    write_section(result.mesh, tmp_path / "section.vtu")
+    grid = pyvista.read(tmp_path / "section.vtu")
+    assert grid.n_cells == len(result.mesh.cells)
+    assert grid.point_data.keys() == []
+    assert np.array_equal(grid.cell_data["layer"], result.mesh.region)

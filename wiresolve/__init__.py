@@ -1,0 +1,99 @@
+"""Subbands of a nanowire's cross-section, each energy with its error bar, and what they mean for conductance.
+
+    import wiresolve as ws
+
+    problem = ws.load("wire.toml")
+    result = ws.solve(problem)
+    ws.write(result, "results/wire")
+    ws.figures.modes(result).savefig("modes.png")
+
+Lengths are in nm, energies in eV, temperatures in K, masses in those of the free electron. Names are loaded when they
+are first used (PEP 562).
+"""
+
+from __future__ import annotations
+
+import importlib
+import sys
+from types import ModuleType
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from wiresolve.describe import shapes
+    from wiresolve.describe.materials import Material
+    from wiresolve.describe.problem import Accuracy, Carriers, Orientation, Potential, Problem
+    from wiresolve.describe.section import Layer, Patch, Section
+    from wiresolve.describe.wirefile import read as load
+    from wiresolve.errors import WiresolveError
+    from wiresolve.output import figures
+    from wiresolve.output.folder import write
+    from wiresolve.physics.section_mesh import mesh
+    from wiresolve.result import Result
+    from wiresolve.solve import solve
+
+__all__ = [
+    "Accuracy",
+    "Carriers",
+    "Layer",
+    "Material",
+    "Orientation",
+    "Patch",
+    "Potential",
+    "Problem",
+    "Result",
+    "Section",
+    "WiresolveError",
+    "figures",
+    "load",
+    "mesh",
+    "shapes",
+    "solve",
+    "write",
+]
+__version__ = "0.1.0"
+
+_HOMES = {
+    "Accuracy": "wiresolve.describe.problem:Accuracy",
+    "Carriers": "wiresolve.describe.problem:Carriers",
+    "Layer": "wiresolve.describe.section:Layer",
+    "Material": "wiresolve.describe.materials:Material",
+    "Orientation": "wiresolve.describe.problem:Orientation",
+    "Patch": "wiresolve.describe.section:Patch",
+    "Potential": "wiresolve.describe.problem:Potential",
+    "Problem": "wiresolve.describe.problem:Problem",
+    "Result": "wiresolve.result:Result",
+    "Section": "wiresolve.describe.section:Section",
+    "WiresolveError": "wiresolve.errors:WiresolveError",
+    "figures": "wiresolve.output.figures:",
+    "load": "wiresolve.describe.wirefile:read",
+    "mesh": "wiresolve.physics.section_mesh:mesh",
+    "shapes": "wiresolve.describe.shapes:",
+    "solve": "wiresolve.solve:solve",
+    "write": "wiresolve.output.folder:write",
+}
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _HOMES:
+        raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
+    module, _, member = _HOMES[name].partition(":")
+    found: Any = importlib.import_module(module)
+    if member:
+        found = getattr(found, member)
+    globals()[name] = found
+    return found
+
+
+def __dir__() -> list[str]:
+    return sorted({*globals(), *_HOMES})
+
+
+class _Package(ModuleType):
+    """Keeps `wiresolve.solve` the function: importing the module of that name would bind the module here."""
+
+    def __setattr__(self, name: str, value: Any) -> None:
+        if not (isinstance(value, ModuleType) and _HOMES.get(name, "").endswith(f":{name}")):
+            super().__setattr__(name, value)
+
+
+sys.modules[__name__].__class__ = _Package

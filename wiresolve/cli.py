@@ -1,0 +1,351 @@
+"""The command line: a thin skin over the library, and the one place that turns an error into a line and a code.
+
+Exit codes: 0 done; 1 internal fault; 2 wrong usage or input, or a warning under `--strict`; 3 no mesh; 4 not converged;
+5 done but less accurate than asked; 130 interrupted.
+"""
+
+from __future__ import annotations
+
+import errno
+import logging
+import os
+import signal
+import sys
+import threading
+from collections.abc import Callable, Iterator, Sequence
+from contextlib import contextmanager
+from pathlib import Path
+from typing import TYPE_CHECKING, Any, NoReturn
+
+import click
+
+from wiresolve.doctor import GMSH_LIBRARIES, examine, missing_library
+from wiresolve.errors import InputError, WiresolveError
+
+if TYPE_CHECKING:
+    from wiresolve.describe.problem import Problem
+    from wiresolve.result import Result
+
+INTERRUPTED, ACCURACY_MISSED, REFUSED = 130, 5, 2
+
+
+class _Program(click.Group):
+    """The group of commands; whatever a command raises leaves as one line on stderr and an exit code."""
+
+    def main(
+        self,
+        args: Sequence[str] | None = None,
+        prog_name: str | None = None,
+        complete_var: str | None = None,
+        standalone_mode: bool = True,
+        **extra: Any,
+    ) -> Any:
+        if not standalone_mode:
+            return super().main(args, prog_name, complete_var, standalone_mode=False, **extra)
+        given = list(sys.argv[1:] if args is None else args)
+        debug = "--debug" in given or bool(os.environ.get("WIRESOLVE_DEBUG"))
+        try:
+            code = super().main(given, "wiresolve", complete_var, standalone_mode=False, **extra)
+        except BaseException as fault:
+            code = _explain(fault, debug)
+        sys.exit(code if isinstance(code, int) else 0)
+
+
+def _explain(fault: BaseException, debug: bool) -> int:
+    """Print the line for what stopped a command, and return its exit code."""
+    if isinstance(fault, SystemExit):
+        return fault.code if isinstance(fault.code, int) else 1
+    if debug and not isinstance(fault, click.ClickException | click.Abort | KeyboardInterrupt):
+        import traceback
+
+        traceback.print_exception(fault)
+    if isinstance(fault, click.exceptions.NoArgsIsHelpError):
+        click.echo(fault.format_message(), err=True)
+        return fault.exit_code
+    if isinstance(fault, click.Abort | KeyboardInterrupt):
+        _complain("interrupted", "")
+        return INTERRUPTED
+    if isinstance(fault, click.UsageError):
+        path = fault.ctx.command_path if fault.ctx else "wiresolve"
+        _complain(f"{fault.format_message().rstrip('.')} (see '{path} --help')")
+        return fault.exit_code
+    if isinstance(fault, click.ClickException):
+        _complain(fault.format_message())
+        return fault.exit_code
+    if isinstance(fault, WiresolveError):
+        _complain(str(fault))
+        return fault.exit_code
+    if isinstance(fault, OSError) and fault.errno in (errno.ENOSPC, errno.EDQUOT):
+        _complain("the disk is full; make room or write elsewhere")
+        return InputError.exit_code
+    if isinstance(fault, MemoryError):
+        _complain("out of memory; ask for fewer subbands or a larger error")
+        return 1
+    if library := missing_library(str(fault)):
+        _complain(f"the system library {library} is missing; as root on Debian: apt-get install {GMSH_LIBRARIES}")
+        return 1
+    hint = "" if debug else "; WIRESOLVE_DEBUG=1 shows where"
+    _complain(f"internal fault, please report it with the wire file: {type(fault).__name__}: {fault}{hint}")
+    return 1
+
+
+def _complain(text: str, kind: str = "error: ") -> None:
+    """One printable line on stderr."""
+    line = "".join(c if c.isprintable() else " " if c.isspace() else repr(c)[1:-1] for c in text)
+    click.echo(f"wiresolve: {kind}{line}", err=True)
+
+
+def _print(text: str) -> None:
+    """Text on stdout in whatever it can encode; a reader that has gone away (`| head`) is no error."""
+    encoding = sys.stdout.encoding or "ascii"
+    try:
+        text.encode(encoding)
+    except UnicodeEncodeError:
+        text = text.replace("±", "+/-").replace("×", "x").replace("²", "2").replace("µ", "u")
+        text = text.encode(encoding, "backslashreplace").decode(encoding)
+    try:
+        click.echo(text)
+    except BrokenPipeError:
+        sys.stdout = open(os.devnull, "w", encoding="utf-8")  # noqa: SIM115 - it has to outlive this call
+
+
+def _heed_signals() -> None:
+    """Let a closed pipe raise an error, and a termination unwind, so that what is being written gets removed.
+
+    Gmsh sets both back to ending the process on the spot.
+    """
+    if threading.current_thread() is not threading.main_thread():
+        return
+
+    def stop(*_: object) -> NoReturn:
+        raise SystemExit(128 + signal.SIGTERM)
+
+    signal.signal(signal.SIGTERM, stop)
+    if hasattr(signal, "SIGPIPE"):
+        signal.signal(signal.SIGPIPE, signal.SIG_IGN)
+
+
+@contextmanager
+def _progress(shown: bool) -> Iterator[Callable[[str, float, str], None] | None]:
+    """A callback that draws a bar on stderr where that is a terminal, else None."""
+    if not (shown and sys.stderr.isatty()):
+        yield None
+        return
+    from rich.console import Console
+    from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
+
+    columns = (TextColumn("{task.description}"), BarColumn(), TimeElapsedColumn(), TextColumn("{task.fields[detail]}"))
+    with Progress(*columns, console=Console(stderr=True), transient=True) as bar:
+        task = bar.add_task("mesh", total=1.0, detail="")
+
+        def report(stage: str, fraction: float, detail: str) -> None:
+            bar.update(task, description=stage, completed=fraction, detail=detail)
+
+        yield report
+
+
+def _read(file: Path, accuracy: str | None = None) -> Problem:
+    from dataclasses import replace
+
+    from wiresolve.describe.wirefile import read
+
+    problem = read(file)
+    if accuracy is not None:
+        from wiresolve.units import parse_quantity
+
+        energy_eV = parse_quantity(accuracy, "energy", "--accuracy")
+        try:
+            problem = replace(problem, accuracy=replace(problem.accuracy, energy_eV=energy_eV))
+        except InputError as fault:
+            raise InputError("--accuracy", fault.rule, accuracy, fault.remedy) from fault
+    return problem
+
+
+def _show_version(context: click.Context, _: click.Parameter, wanted: bool) -> None:
+    if wanted:
+        click.echo(sys.modules["wiresolve"].__version__)
+        context.exit()
+
+
+@click.group(cls=_Program, context_settings={"help_option_names": ["-h", "--help"]})
+@click.option(
+    "--version", is_flag=True, is_eager=True, expose_value=False, callback=_show_version, help="Print the version."
+)
+@click.option("--debug", is_flag=True, help="Log to stderr and show where a fault arose (also WIRESOLVE_DEBUG=1).")
+def program(debug: bool) -> None:
+    """Subbands of a nanowire's section, each energy with its error bar, and what they mean for conductance.
+
+    A wire file (TOML) describes the wire. "wiresolve check FILE" shows how it is understood, "wiresolve solve FILE"
+    answers.
+    """
+    if debug or os.environ.get("WIRESOLVE_DEBUG"):
+        logging.basicConfig(level=logging.INFO, stream=sys.stderr, force=True)
+        logging.getLogger("wiresolve").setLevel(logging.DEBUG)
+
+
+_file = click.argument("file", type=click.Path(path_type=Path))
+
+
+@program.command()
+@_file
+@click.option("--out", type=click.Path(path_type=Path), help="Folder for the result [default: results/NAME].")
+@click.option("--replace", is_flag=True, help="Replace an older result in --out.")
+@click.option("--accuracy", metavar="ENERGY", help='Wanted error of each energy, e.g. "0.1 meV", over the file\'s.')
+@click.option("--json", "as_json", is_flag=True, help="Print result.json instead of the verdict and the table.")
+@click.option("--quiet", is_flag=True, help="Print nothing but errors (and what --json asks for).")
+@click.option("--strict", is_flag=True, help="Exit with 2 if there is any warning.")
+@click.option("--no-figures", is_flag=True, help="Draw no figures.")
+def solve(
+    file: Path,
+    out: Path | None,
+    replace: bool,
+    accuracy: str | None,
+    as_json: bool,
+    quiet: bool,
+    strict: bool,
+    no_figures: bool,
+) -> int:
+    """Find the subbands of a wire and write them out.
+
+    The folder holds input.toml, result.json, subbands.csv, modes.vtu (for ParaView) and figures. Without --out it is
+    results/NAME in the current folder and takes the place of the last one; a folder named by --out is never
+    overwritten unless --replace is given.
+    """
+    from wiresolve.output.folder import check_target, write
+    from wiresolve.output.tables import DONE, result_json, summary
+
+    problem = _read(file, accuracy)
+    folder = Path("results") / file.stem if out is None else out
+    may_replace = replace or out is None
+    check_target(folder, replace=may_replace, field="--out")
+    from wiresolve.solve import solve as find
+
+    with _progress(not quiet) as report:
+        result = find(problem, on_progress=report)
+        _heed_signals()
+        code, reasons = _judged(result, strict)
+        status = "; ".join(reasons) or DONE
+        if report is not None:
+            report("writing", 1.0, str(folder))
+        write(result, folder, replace=may_replace, figures=not no_figures, status=status, field="--out")
+    if as_json:
+        _print(result_json(result, status).rstrip("\n"))
+    elif not quiet:
+        _print(summary(result, folder, status))
+    if reasons:
+        _complain(f"{'; '.join(reasons)}; the results are in {folder}, marked so")
+    return code
+
+
+def _judged(result: Result, strict: bool) -> tuple[int, list[str]]:
+    """Exit code of a finished run, and what is held against it."""
+    code, reasons = 0, []
+    if strict and result.warnings:
+        codes = ", ".join(dict.fromkeys(w.code for w in result.warnings))
+        code, reasons = REFUSED, [f"warnings under --strict: {codes}"]
+    if not result.accuracy_met:
+        wanted, worst = 1e3 * result.problem.accuracy.energy_eV, 1e3 * float(result.errors_eV.max())
+        code = ACCURACY_MISSED
+        reasons.insert(0, f"accuracy missed: wanted {wanted:g} meV, the largest bar is {worst:.2g} meV")
+    return code, reasons
+
+
+@program.command()
+@_file
+@click.option("--out", type=click.Path(path_type=Path), help="VTU file for the mesh [default: results/NAME.mesh.vtu].")
+@click.option("--replace", is_flag=True, help="Replace the file named by --out.")
+def mesh(file: Path, out: Path | None, replace: bool) -> int:
+    """Mesh a wire's section and write the mesh for ParaView.
+
+    It is the mesh on which a solve ends: fine enough for the accuracy that the wire file asks for.
+    """
+    from wiresolve.output.folder import check_file, writing
+    from wiresolve.output.vtk import write_section
+
+    problem = _read(file)
+    target = check_file(out or Path("results") / f"{file.stem}.mesh.vtu", replace=replace or out is None, field="--out")
+    from wiresolve.physics.section_mesh import section_mesh
+
+    with _progress(True) as report:
+        made = section_mesh(problem, report)
+        _heed_signals()
+        with writing(target, "--out") as fresh:
+            write_section(made.mesh, fresh)
+    curved = f"{len(made.mesh.cells):,} curved cells of degree {made.mesh.degree}, {made.unknowns:,} unknowns"
+    _print(f"{curved}, {made.area_nm2:.6g} nm^2; {', '.join(f'{n:,} in {name}' for name, n in made.cells_by_region())}")
+    _print(f"File: {out or target}")
+    if not made.met:
+        _complain("the accuracy wanted was missed; this is the best mesh found")
+    return 0 if made.met else ACCURACY_MISSED
+
+
+@program.command()
+@_file
+def check(file: Path) -> None:
+    """Print what is understood of a wire file.
+
+    Every value with its unit; nothing is solved.
+    """
+    from wiresolve.describe.wirefile import describe
+    from wiresolve.output.tables import described
+
+    _print("\n".join(described(describe(_read(file)))))
+
+
+@program.command()
+@click.argument("name", required=False)
+@click.option("--temperature", default="300 K", show_default=True, help="Lattice temperature of the values.")
+def materials(name: str | None, temperature: str) -> None:
+    """List materials, or all values of one.
+
+    NAME is one of the list or an alloy as a plain formula, like Al0.3Ga0.7As.
+    """
+    from wiresolve.describe.materials import look_up, table_names
+    from wiresolve.output.tables import aligned, paragraphs
+    from wiresolve.units import parse_quantity
+
+    lattice_K = parse_quantity(temperature, "temperature", "--temperature")
+    if name is None:
+        rows = [["name", "electron mass", "conduction edge", "gap", "permittivity"], ["", "m0", "eV", "eV", ""]]
+        for material in (look_up(entry, lattice_K) for entry in table_names()):
+            numbers = (material.electron_mass, material.conduction_edge_eV, material.gap_eV, material.permittivity)
+            rows.append([material.name, *("" if n is None else f"{n:.4g}" for n in numbers)])
+        _print("\n".join(aligned(rows, left={0})))
+        _print(f"at {lattice_K:g} K; 'wiresolve materials NAME' shows where a value is from")
+        return
+    found = look_up(name, lattice_K).values
+    sources = list(dict.fromkeys(value.source for value in found))
+    rows = [["quantity", "value", "unit", "at", "source", "checked against it"]]
+    for value in found:
+        at = "" if value.temperature_K is None else f"{value.temperature_K:g} K"
+        checked = "yes" if value.checked else "no, from memory"
+        source = f"[{sources.index(value.source) + 1}]"
+        rows.append([value.quantity, f"{value.value:.6g}", value.unit, at, source, checked])
+    _print("\n".join(aligned(rows, left={0, 2, 5})))
+    for number, source in enumerate(sources, 1):
+        _print("\n".join(paragraphs(f"[{number}] {source}")))
+
+
+@program.command()
+def doctor() -> int:
+    """Prove the installation.
+
+    Checks packages and system libraries, and solves eight wires whose energies are known in closed form.
+    """
+    sound = True
+    for line in examine():
+        sound &= line.ok
+        _print(line.text)
+    _print("all is well" if sound else "something is amiss, see above")
+    return 0 if sound else 1
+
+
+def main(args: Sequence[str] | None = None) -> NoReturn:
+    """Run the command line and leave the interpreter with its exit code."""
+
+    _heed_signals()
+    # Libraries' own log lines and warnings are no answer to the user; --debug brings them back.
+    logging.captureWarnings(True)
+    logging.getLogger().addHandler(logging.NullHandler())
+    program.main(args)
+    raise SystemExit(0)

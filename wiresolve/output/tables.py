@@ -1,0 +1,244 @@
+"""A result as numbers and words: `result.json`, `subbands.csv` and the table that the command line prints."""
+
+from __future__ import annotations
+
+import csv
+import io
+import json
+import math
+import re
+import textwrap
+from collections.abc import Iterable, Mapping, Sequence
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from wiresolve.result import Result, Subband
+from wiresolve.units import KB
+
+DONE = "done"
+"""The `status` of a result that nothing is held against."""
+WIDTH = 96
+"""Characters a line that running text is wrapped to."""
+MOST_ROWS = 40
+"""Subbands that the printed table shows; `subbands.csv` has all."""
+
+
+def with_bar(value: float, bar: float) -> str:
+    """`value ± bar` with as many decimals as the bar deserves: one digit of it, or two where one is too coarse.
+
+    The bar is rounded up, and widened by what rounding moved the value, so that the printed interval holds the whole
+    of the given one; it is at most 1.5 times as wide while six decimals are enough for that.
+    """
+    if not math.isfinite(bar) or bar <= 0:
+        return f"{value:.9g}"
+    for decimals in range(min(6, max(0, -math.floor(math.log10(bar)))), 7):
+        unit = 10.0**-decimals
+        shown = round(value, decimals) + 0.0  # no minus sign before a zero
+        half = max(1, math.ceil(round((bar + abs(value - shown)) / unit, 6))) * unit
+        if half <= 1.5 * bar:
+            break
+    return f"{shown:.{decimals}f} ± {half:.{decimals}f}"
+
+
+def levels(subbands: Sequence[Subband]) -> list[list[Subband]]:
+    """The entries grouped by level, in order."""
+    groups: dict[int, list[Subband]] = {}
+    for subband in subbands:
+        groups.setdefault(subband.level, []).append(subband)
+    return list(groups.values())
+
+
+def level_energy_eV(group: Sequence[Subband]) -> float:
+    """Mean energy of a level's entries."""
+    return sum(s.energy_eV for s in group) / len(group)
+
+
+def states(group: Sequence[Subband]) -> int:
+    """States at the bottom of a level, spin and valleys counted."""
+    return sum(s.spin_degeneracy * s.valley_degeneracy for s in group)
+
+
+def result_json(result: Result, status: str = DONE) -> str:
+    """The text of `result.json`: `Result.to_dict` and `status`, keys sorted, a list of numbers on one line.
+
+    Raises
+    ------
+    ValueError
+        A number is not finite: JSON has no word for it, and no result holds one.
+    """
+    return _json({**result.to_dict(), "status": status}, "", 0) + "\n"
+
+
+def _json(value: Any, path: str, depth: int) -> str:
+    inner, outer = "  " * (depth + 1), "  " * depth
+    if isinstance(value, Mapping):
+        items = [f"{json.dumps(str(k))}: {_json(value[k], f'{path}.{k}', depth + 1)}" for k in sorted(value, key=str)]
+        return "{\n" + inner + f",\n{inner}".join(items) + f"\n{outer}}}" if items else "{}"
+    if isinstance(value, np.ndarray):
+        value = value.tolist()
+    if isinstance(value, list | tuple):
+        items = [_json(v, f"{path}[{i}]", depth + 1) for i, v in enumerate(value)]
+        if any(isinstance(v, Mapping | list | tuple | str | np.ndarray) for v in value):
+            return "[\n" + inner + f",\n{inner}".join(items) + f"\n{outer}]"
+        return "[" + ", ".join(items) + "]"
+    if isinstance(value, np.generic):
+        value = value.item()
+    if isinstance(value, float) and not math.isfinite(value):
+        raise ValueError(f"{path.lstrip('.')} is {value}, which result.json cannot hold")
+    return json.dumps(value, ensure_ascii=False)
+
+
+def write_json(result: Result, path: str | Path, status: str = DONE) -> None:
+    """Write `result.json` (see `result_json`)."""
+    Path(path).write_text(result_json(result, status), encoding="utf-8")
+
+
+COLUMNS = (
+    "index",
+    "level",
+    "valley",
+    "energy_eV",
+    "error_eV",
+    "k_min_per_nm",
+    "axial_mass",
+    "axial_mass_error",
+    "spin_degeneracy",
+    "valley_degeneracy",
+    "layer",
+    "bound",
+    "wall_effect_eV",
+    "line_density_per_nm",
+)
+
+
+def subbands_csv(result: Result, status: str = DONE) -> str:
+    """The text of `subbands.csv`: a line a subband under the names that `result.json` uses, then a share a layer.
+
+    Lines in front that start with `#` say what it is, the energy zero and the digest of the input. What does not apply
+    is empty.
+    """
+    places = list(dict.fromkeys(place for s in result.subbands for place in s.shares))
+    lines = io.StringIO()
+    lines.write(f"# wiresolve subbands of {' '.join(result.problem.title.split())}\n")
+    lines.write(f"# energies from {' '.join(result.energy_zero_text.split())}; masses in units of m0\n")
+    lines.write(f"# status {status}; input digest {result.problem.digest}\n")
+    table = csv.writer(lines, lineterminator="\n")
+    table.writerow([*COLUMNS, *(f"share_{place.replace(' ', '_')}" for place in places)])
+    for s in result.subbands:
+        row = [getattr(s, name) for name in COLUMNS] + [s.shares.get(place, 0.0) for place in places]
+        table.writerow([_cell(value) for value in row])
+    return lines.getvalue()
+
+
+def _cell(value: object) -> str:
+    if value is None:
+        return ""
+    if isinstance(value, bool | np.bool_):
+        return "true" if value else "false"
+    if isinstance(value, float):
+        return repr(float(value))
+    return str(value)
+
+
+def write_subbands(result: Result, path: str | Path, status: str = DONE) -> None:
+    """Write `subbands.csv` (see `subbands_csv`)."""
+    Path(path).write_text(subbands_csv(result, status), encoding="utf-8")
+
+
+def aligned(rows: Sequence[Sequence[str]], left: Iterable[int] = ()) -> list[str]:
+    """Lines of a table whose columns are as wide as they need to be; those in `left` flush left, others right."""
+    left = set(left)
+    widths = [max(len(row[c]) for row in rows) for c in range(len(rows[0]))]
+    lines = []
+    for row in rows:
+        cells = [v.ljust(widths[c]) if c in left else v.rjust(widths[c]) for c, v in enumerate(row)]
+        lines.append("  ".join(cells).rstrip())
+    return lines
+
+
+def described(rows: Sequence[tuple[str, str]]) -> list[str]:
+    """Keys and texts in two columns, long texts wrapped inside theirs."""
+    width = max(len(key) for key, _ in rows) + 2
+    lines: list[str] = []
+    for key, text in rows:
+        wrapped = textwrap.wrap(text, max(40, WIDTH - width)) or [""]
+        lines += [f"{head:<{width}}{part}" for head, part in zip([key, *[""] * len(wrapped)], wrapped, strict=False)]
+    return lines
+
+
+def paragraphs(text: str, indent: str = "") -> list[str]:
+    """Running text wrapped to the width of a terminal, its own line breaks kept."""
+    lines: list[str] = []
+    for line in text.splitlines():
+        lines += textwrap.wrap(line, WIDTH, initial_indent=indent, subsequent_indent=indent) or [""]
+    return lines
+
+
+def subband_table(result: Result) -> list[str]:
+    """The subbands as aligned lines, a header of two lines first.
+
+    At most the first `MOST_ROWS` are shown. The spacing to the next level stands at a level's last entry, in meV and
+    in kT of each carrier temperature; the last level of the list has none.
+    """
+    temperatures = [t for t in result.problem.carriers.temperature_K if t > 0]
+    asked_bound = any(s.bound is not None for s in result.subbands)
+    head = ["", "", "energy", "to the next", *("to the next" for _ in temperatures), "axial", "", "spin x"]
+    unit = ["subband", "level", "meV", "meV", *(f"kT at {t:g} K" for t in temperatures), "mass", "layer", "valley"]
+    if asked_bound:
+        head, unit = [*head, ""], [*unit, "bound"]
+    rows = [head, unit]
+    energies = iter(_on_the_point([with_bar(1e3 * s.energy_eV, 1e3 * s.error_eV) for s in result.subbands]))
+    groups = levels(result.subbands)
+    for number, group in enumerate(groups):
+        spacing = level_energy_eV(groups[number + 1]) - level_energy_eV(group) if number + 1 < len(groups) else None
+        for s in group:
+            shown = spacing if s is group[-1] else None
+            row = [str(s.index), str(s.level), next(energies)]
+            row.append("" if shown is None else f"{1e3 * shown:.4g}")
+            row += ["" if shown is None else f"{shown / (KB * t):.3g}" for t in temperatures]
+            row.append("none" if s.axial_mass is None else f"{s.axial_mass:.4f}")
+            row += [s.layer, f"{s.spin_degeneracy} x {s.valley_degeneracy}"]
+            if asked_bound:
+                row.append({True: "yes", False: "no", None: ""}[s.bound])
+            rows.append(row)
+    lines = aligned(rows[: MOST_ROWS + 2], left={5 + len(temperatures)})
+    hidden = len(result.subbands) - MOST_ROWS
+    return [*lines, f"and {hidden} more, see subbands.csv"] if hidden > 0 else lines
+
+
+def _on_the_point(texts: Sequence[str]) -> list[str]:
+    """The texts padded so that their first decimal points stand below each other."""
+    places = [len(re.split(r"[. ]", text, maxsplit=1)[0]) for text in texts]
+    moved = [" " * (max(places) - place) + text for text, place in zip(texts, places, strict=True)]
+    return [text.ljust(max(map(len, moved))) for text in moved]
+
+
+def summary(result: Result, folder: str | Path | None = None, status: str = DONE) -> str:
+    """What the command line prints: verdict, table, warnings with remedies, and where the files are."""
+    lines = [result.problem.title] if result.problem.title else []
+    lines += [*paragraphs(result.verdict.text), "", *subband_table(result), ""]
+    size = result.summary
+    lines += paragraphs(
+        f"Energies count from the {result.energy_zero_text}, ± the error bar of the discretisation;"
+        f" {size.unknowns:,} unknowns in {size.cells:,} curved cells, {size.passes}"
+        f" mesh{'' if size.passes == 1 else 'es'};"
+        f" {result.states_missed} states missed by count."
+    )
+    if not result.accuracy_met:
+        worst = 1e3 * float(max(result.errors_eV, default=0.0))
+        lines += paragraphs(
+            f"ACCURACY MISSED: asked for {1e3 * result.problem.accuracy.energy_eV:g} meV, the largest bar is"
+            f" {worst:.2g} meV. These are the best values found."
+        )
+    for warning in result.warnings:
+        lines += ["", *paragraphs(f"warning {warning.code}: {warning.text}")]
+        lines += paragraphs(warning.remedy, indent="    ")
+    if result.not_modelled:
+        lines += ["", *paragraphs(f"Not modelled: {'; '.join(result.not_modelled)}.")]
+    if status != DONE:
+        lines += ["", *paragraphs(f"Marked: {status}.")]
+    if folder is not None:
+        lines += ["", f"Files: {folder}"]
+    return "\n".join(lines)
