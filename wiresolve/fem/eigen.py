@@ -20,6 +20,8 @@ from wiresolve.errors import ConvergenceError
 
 Array = NDArray[np.float64]
 
+_TOLERANCE = 1e-11
+"""Of the iteration, relative; energies are as exact as its square after Rayleigh-Ritz."""
 SINGLE_FROM = 60_000
 """Definite systems from this many unknowns on are factored in single precision."""
 
@@ -137,7 +139,14 @@ def lowest(hamiltonian: Any, mass: Any, count: int, shift: float, start: Any = N
     start = _start(n, kind) if start is None else start
     try:
         values, vectors = sparse_linalg.eigsh(
-            hamiltonian, k=count, M=mass, sigma=shift, OPinv=inverse, v0=start, tol=0, ncv=min(n, 2 * count + 8)
+            hamiltonian,
+            k=count,
+            M=mass,
+            sigma=shift,
+            OPinv=inverse,
+            v0=start,
+            tol=_TOLERANCE,
+            ncv=min(n, 2 * count + 8),
         )
     except sparse_linalg.ArpackNoConvergence as fault:
         raise ConvergenceError(
