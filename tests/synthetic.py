@@ -13,6 +13,7 @@ from wiresolve.describe.problem import Accuracy, Carriers, Problem
 from wiresolve.describe.section import Layer, Section
 from wiresolve.describe.shapes import Circle, Rectangle
 from wiresolve.fem.mesh import Mesh, Region
+from wiresolve.physics.spectrum import Spectrum
 from wiresolve.result import DensityOfStates, Dispersion, MeshSummary, Result, Subband, ThermalCurve, Verdict, Warned
 from wiresolve.units import HBAR2_OVER_2M0, KB
 
@@ -156,6 +157,14 @@ def core_shell_result(count: int = 10, **changes: Any) -> Result:
         "modes": round_modes(mesh.points, orders),
         "cell_fields": {"mass_m0": np.where(mesh.region == 0, 0.09, MASS), "band_edge_eV": barrier},
         "subbands": subbands,
+        "spectrum": Spectrum(
+            energy_eV=energies,
+            error_eV=np.full(len(energies), 2.3e-6),
+            axial_mass=np.full(len(energies), MASS),
+            degeneracy=np.full(len(energies), 2),
+            level=np.array([s.level for s in subbands]),
+            listed=len(energies),
+        ),
         "summary": MeshSummary(
             cells=len(mesh.cells),
             unknowns=len(mesh.points),

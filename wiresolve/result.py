@@ -7,10 +7,12 @@ from dataclasses import asdict, dataclass, field
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
 from wiresolve.describe.problem import Problem
 from wiresolve.fem.mesh import Mesh
+from wiresolve.physics import statistics, transport
+from wiresolve.physics.spectrum import Spectrum
 
 Array = NDArray[np.float64]
 SCHEMA = "wiresolve-result-1"
@@ -108,7 +110,9 @@ class Result:
     """Everything a run found. It is data: no field is filled in later.
 
     `modes` has the shape (mesh points, listed subbands): real envelope functions in 1/nm at the mesh's nodes, each
-    normalised to 1 over the section. `material_fields` holds values by cell (`mass_m0`, `band_edge_eV`).
+    normalised to 1 over the section. `cell_fields` holds values by cell (`mass_m0`, the axial mass, and `band_edge_eV`;
+    NaN where carriers are kept out). `spectrum` is what `line_density`, `fermi_level` and `conductance_at` stand on:
+    the listed subbands and what lies above them.
     """
 
     problem: Problem
@@ -116,6 +120,7 @@ class Result:
     modes: Array
     cell_fields: Mapping[str, Array]
     subbands: tuple[Subband, ...]
+    spectrum: Spectrum
     summary: MeshSummary
     energy_zero_text: str
     energy_zero_on_common_scale_eV: float | None
@@ -141,6 +146,24 @@ class Result:
     def errors_eV(self) -> Array:
         """Error bars of the listed subbands, shape (n,)."""
         return np.array([s.error_eV for s in self.subbands])
+
+    def line_density(self, fermi_eV: float, temperature_K: float) -> float:
+        """Carriers per nm of wire at a Fermi level (from the energy zero), all states counted."""
+        return float(statistics.line_density(self.spectrum, fermi_eV, temperature_K))
+
+    def fermi_level(self, line_density_per_nm: float, temperature_K: float) -> float:
+        """The Fermi level in eV at which the wire holds so many carriers per nm.
+
+        Raises
+        ------
+        InputError
+            The density is not positive, or more than the known states hold.
+        """
+        return statistics.fermi_level(self.spectrum, line_density_per_nm, temperature_K)
+
+    def conductance_at(self, fermi_eV: ArrayLike, temperature_K: float) -> Array:
+        """Ballistic conductance in units of G0 = 2 e^2/h at Fermi levels in eV, in their shape."""
+        return transport.conductance(self.spectrum, fermi_eV, temperature_K)
 
     def to_dict(self) -> dict[str, Any]:
         """Plain data (dicts, lists, strings, numbers, None), the content of `result.json`."""
@@ -174,7 +197,12 @@ class Result:
                 "singular_at_eV": self.density_of_states.singular_at_eV.tolist(),
             },
             "conductance": [
-                {"temperature_K": c.temperature_K, "fermi_eV": c.fermi_eV.tolist(), "G_over_G0": c.values.tolist()}
+                {
+                    "temperature_K": c.temperature_K,
+                    "fermi_eV": c.fermi_eV.tolist(),
+                    "G_over_G0": c.values.tolist(),
+                    "G_siemens": transport.in_siemens(c.values).tolist(),
+                }
                 for c in self.conductance
             ],
             "density": [

@@ -37,6 +37,8 @@ from wiresolve.units import KB
 Array = NDArray[np.float64]
 Progress = Callable[[str, float, str], None]
 
+_NEAR_STEP = np.array([-8.0, -5.0, -3.0, -2.0, -1.0, 0.0, 1.0, 2.0, 3.0, 5.0, 8.0])
+"""Places around a step, in kT, at which curves have points."""
 SPIN = 2
 """Both spins share each effective-mass state."""
 
@@ -104,6 +106,7 @@ def _assembled(wire: Wire, certified: Certified, found: Listing, spectrum: Spect
         modes=points,
         cell_fields=_cell_fields(wire, certified),
         subbands=subbands,
+        spectrum=spectrum,
         summary=MeshSummary(
             len(mesh.cells), len(certified.solved.pencil.kept), mesh.degree, space.area_nm2, certified.passes
         ),
@@ -171,12 +174,17 @@ def _dispersion(bands: AxialBands, wanted: int) -> Dispersion:
 def _curves(
     spectrum: Spectrum, temperatures: tuple[float, ...], quantity: Callable[[Spectrum, Array, float], Array]
 ) -> tuple[ThermalCurve, ...]:
-    """The quantity from well below the first subband up to the last listed one, at T = 0 and each temperature."""
+    """The quantity from well below the first subband to the last listed one, at T = 0 and at each temperature."""
     curves = []
-    bottom, top = spectrum.energy_eV[0], spectrum.energy_eV[spectrum.listed - 1]
+    listed = spectrum.energy_eV[: spectrum.listed]
+    bottom, top = float(listed[0]), float(listed[-1])
     for temperature in dict.fromkeys((0.0, *temperatures)):
-        margin = max(0.1 * (top - bottom), 6 * KB * temperature, 1e-3)
-        fermi = np.linspace(bottom - margin, max(top, bottom + margin), 401)
+        thermal = KB * temperature
+        margin = max(0.1 * (top - bottom), 6 * thermal, 1e-3)
+        even = np.linspace(bottom - margin, max(top, bottom + margin), 301)
+        # Steps that are narrower than the even points are apart get points of their own.
+        near = (listed[:, None] + max(thermal, 1e-9) * _NEAR_STEP).ravel()
+        fermi = np.unique(np.concatenate([even, near[near <= even[-1]]]))
         curves.append(ThermalCurve(temperature, fermi, np.asarray(quantity(spectrum, fermi, temperature))))
     return tuple(curves)
 
@@ -184,7 +192,8 @@ def _curves(
 def _edges(spectrum: Spectrum) -> Array:
     bottom, top = float(spectrum.energy_eV[0]), float(spectrum.energy_eV[spectrum.listed - 1])
     span = max(top - bottom, 1e-3)
-    return np.linspace(bottom - 0.05 * span, top + 0.15 * span, 241)
+    # Not beyond the last solved state: what lies above it would be missing there.
+    return np.linspace(bottom - 0.05 * span, min(top + 0.15 * span, float(spectrum.energy_eV[-1])), 241)
 
 
 @lru_cache(maxsize=1)

@@ -22,6 +22,8 @@ Array = NDArray[np.float64]
 
 _TOLERANCE = 1e-11
 """Of the iteration, relative; energies are as exact as its square after Rayleigh-Ritz."""
+_SLICE = 60
+"""States of one window where many are wanted."""
 SINGLE_FROM = 60_000
 """Definite systems from this many unknowns on are factored in single precision."""
 
@@ -133,17 +135,25 @@ def lowest(hamiltonian: Any, mass: Any, count: int, shift: float, start: Any = N
     if n <= max(3 * count, 60):
         values, vectors = dense.eigh(hamiltonian.toarray(), mass.toarray(), subset_by_index=(0, count - 1))
         return values, vectors
-    solver = factor(hamiltonian, mass, shift)
-    kind = np.result_type(hamiltonian.dtype, mass.dtype)
-    inverse = sparse_linalg.LinearOperator((n, n), matvec=solver.solve, dtype=kind)
+    if count <= 2 * _SLICE:
+        _, vectors = _nearest(hamiltonian, mass, factor(hamiltonian, mass, shift), count, start)
+    else:
+        vectors = _sliced(hamiltonian, mass, count, shift)
+    return ritz(hamiltonian, mass, vectors)
+
+
+def _nearest(hamiltonian: Any, mass: Any, inverse: Factor, count: int, start: Any = None) -> tuple[Array, NDArray[Any]]:
+    """The `count` states nearest to the factor's shift on either side, ascending."""
+    n, kind = hamiltonian.shape[0], np.result_type(hamiltonian.dtype, mass.dtype)
+    operator = sparse_linalg.LinearOperator((n, n), matvec=inverse.solve, dtype=kind)
     start = _start(n, kind) if start is None else start
     try:
         values, vectors = sparse_linalg.eigsh(
             hamiltonian,
             k=count,
             M=mass,
-            sigma=shift,
-            OPinv=inverse,
+            sigma=inverse.shift,
+            OPinv=operator,
             v0=start,
             tol=_TOLERANCE,
             ncv=min(n, 2 * count + 8),
@@ -152,7 +162,49 @@ def lowest(hamiltonian: Any, mass: Any, count: int, shift: float, start: Any = N
         raise ConvergenceError(
             f"{len(fault.eigenvalues)} of {count} states converged; ask fewer states or a coarser accuracy"
         ) from None
-    return ritz(hamiltonian, mass, vectors)
+    order = np.argsort(values, kind="stable")
+    return values[order], vectors[:, order]
+
+
+def _sliced(hamiltonian: Any, mass: Any, count: int, shift: float) -> NDArray[Any]:
+    """A basis of the `count` lowest states, window after window: the cost grows with their number, not its square.
+
+    Each window's factor counts the states below its shift, so every state has a number; a window is taken up to its
+    last clear gap, and the next one starts there.
+    """
+    values, vectors = _nearest(hamiltonian, mass, factor(hamiltonian, mass, shift), _SLICE)
+    done = _before_last_gap(values)
+    energies, blocks = list(values[:done]), [vectors[:, :done]]
+    ahead = 0.5
+    for _ in range(40 + 4 * count // _SLICE):
+        if len(energies) >= count:
+            return np.hstack(blocks)[:, :count]
+        known, top = len(energies), energies[-1]
+        window = max(top - energies[-min(known, _SLICE)], 1e-9 * max(abs(top), 1e-9))
+        inverse = factor(hamiltonian, mass, top + ahead * window)
+        below = inverse.below
+        if below is None:
+            ahead *= 0.97
+            continue
+        values, vectors = _nearest(hamiltonian, mass, inverse, _SLICE + _SLICE // 2)
+        first = below - int(np.sum(values < inverse.shift))
+        if first > known:
+            ahead *= 0.7
+            continue
+        done = _before_last_gap(values)
+        if first + done <= known:
+            ahead *= 1.2
+            continue
+        energies += list(values[known - first : done])
+        blocks.append(vectors[:, known - first : done])
+    raise ConvergenceError(f"{len(energies)} of {count} states were found; ask fewer states")
+
+
+def _before_last_gap(values: Array) -> int:
+    """How many ascending values stand before the last gap that is no splitting of a pair."""
+    gaps = np.diff(values)
+    clear = np.flatnonzero(gaps > 1e-3 * np.median(gaps[gaps > 0]))
+    return int(clear[-1]) + 1 if len(clear) else 0
 
 
 def ritz(hamiltonian: Any, mass: Any, block: NDArray[Any]) -> tuple[Array, NDArray[Any]]:

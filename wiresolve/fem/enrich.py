@@ -53,6 +53,7 @@ def enrich(
     mass: Local,
     shift: float,
     bands: int = 1,
+    varying: bool = False,
 ) -> Enriched:
     """One step of inverse iteration at `shift`, below all states, in the finer space.
 
@@ -61,6 +62,7 @@ def enrich(
     energies, states : (m,) and (nodes x bands, m), the degree-4 block on all nodes of `coarse`.
     hamiltonians : element matrices of H on the coarse and on the fine space.
     mass : element matrices of the inner product, on either.
+    varying : the operator has fields that vary inside cells.
     """
     parts = _Parts(fine, hamiltonians[1], mass, bands)
     before = prolong(coarse, fine, states, bands)
@@ -68,23 +70,24 @@ def enrich(
     small_h, small_m = (np.zeros((after.shape[1],) * 2, dtype=after.dtype) for _ in range(2))
     for _, dofs, h, w in parts:
         local = after[dofs]
-        turned = local.conj().transpose(0, 2, 1)
-        small_h += (turned @ (h @ local)).sum(axis=0)
-        small_m += (turned @ (w @ local)).sum(axis=0)
+        small_h += _summed(local, h @ local)
+        small_m += _summed(local, w @ local)
     improved, turn = ritz_from(small_h, small_m)
     after = after @ turn
     # Inside a level the two bases may be turned against each other: the difference is taken to the projection.
     overlap = np.zeros_like(small_m)
     for _, dofs, _, w in parts:
-        overlap += (before[dofs].conj().transpose(0, 2, 1) @ (w @ after[dofs])).sum(axis=0)
+        overlap += _summed(before[dofs], w @ after[dofs])
     indicator = np.empty((len(fine.cells), after.shape[1]))
     for chunk, dofs, h, w in parts:
         local = after[dofs] - before[dofs] @ overlap
         indicator[chunk] = np.einsum("cim,cim->cm", local.conj(), (h - shift * w) @ local).real
     indicator = np.maximum(indicator, 0)
-    curved = np.flatnonzero(~(coarse.straight & fine.straight))
-    for start in range(0, len(curved), 1024):
-        cells = curved[start : start + 1024]
+    # The two degrees differ in the geometry of curved cells, and in the quadrature of fields that vary inside cells: a
+    # kink of the potential is seen by the rules of both, and by no polynomial.
+    unlike = np.flatnonzero(~(coarse.straight & fine.straight) | varying)
+    for start in range(0, len(unlike), 1024):
+        cells = unlike[start : start + 1024]
         local = before[with_bands(fine.dofs[cells], bands)]
         there = _local_energy(local, hamiltonians[1](fine, cells), mass(fine, cells), energies)
         local = states[with_bands(coarse.dofs[cells], bands)]
@@ -183,6 +186,12 @@ def _gathered(elements: NDArray[Any], rows: NDArray[np.int32], size: int) -> spa
     down = np.broadcast_to(rows[:, :, None], elements.shape).ravel()
     across = np.broadcast_to(rows[:, None, :], elements.shape).ravel()
     return sparse.csc_array((elements.ravel(), (down, across)), shape=(size, size))
+
+
+def _summed(left: NDArray[Any], right: NDArray[Any]) -> NDArray[Any]:
+    """Sum over cells and nodes of conj(left) right: (c, n, m) twice to (m, m)."""
+    m = left.shape[2]
+    return np.asarray(left.reshape(-1, m).conj().T @ right.reshape(-1, m))
 
 
 def _local_energy(local: NDArray[Any], h: NDArray[Any], w: NDArray[Any], energies: Array) -> Array:

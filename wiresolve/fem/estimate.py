@@ -22,16 +22,22 @@ BAR_FACTOR = 2.0
 
 On a smooth section the fall is the whole error. Beside a corner of exponent a the error at degree p goes like p^(-4 a)
 (I. Babuska and M. Suri, RAIRO Model. Math. Anal. Numer. 21, 199 (1987)): it is 1.8 falls at a slit, a = 1/2, which is
-the sharpest corner that a wall can have."""
+the sharpest corner that a wall can have. Where materials of very unequal mass meet, a can be smaller: `bar_factor`."""
 BAR_FLOOR = 4e-13
 """No bar is below this times the largest energy of the block: rounding in the factor and in Rayleigh-Ritz."""
 
 
-def bars(enriched: Enriched, levels: NDArray[np.int64] | None = None) -> Array:
-    """Error bars (m,) of the degree-4 energies; entries of one level share the widest."""
+def bar_factor(corners: Sequence[Corner]) -> float:
+    """What the fall is multiplied by: more than `BAR_FACTOR` where an interface is more singular than any wall."""
+    lowest = min((corner.exponent for corner in corners), default=1.0)
+    return float(max(BAR_FACTOR, 1.15 / (1 - (4 / 6) ** (4 * lowest))))
+
+
+def bars(enriched: Enriched, factor: float, levels: NDArray[np.int64] | None = None) -> Array:
+    """Error bars (m,) of the degree-4 energies: the fall times a factor; entries of one level share the widest."""
     # Errors of geometry and of the functions can cancel in the fall, but not in the cells' shares.
     fall = np.maximum(np.abs(enriched.fall_eV), 0.5 * enriched.indicator_eV.sum(axis=0))
-    bar = np.asarray(BAR_FACTOR * fall + BAR_FLOOR * np.abs(enriched.energy_eV).max())
+    bar = np.asarray(factor * fall + BAR_FLOOR * np.abs(enriched.energy_eV).max())
     if levels is not None:
         for level in np.unique(levels):
             bar[levels == level] = bar[levels == level].max()
@@ -72,6 +78,8 @@ def finer(enriched: Enriched, before: SizeField, corners: Sequence[Corner], targ
         sizes[at_corner] = (edge[cells][touching] * smaller).min()
     return SizeField(
         largest_nm=float(sizes.max()),
+        spots=before.spots,
+        turn_cells=before.turn_cells,
         triangles=corner,
         sizes_nm=sizes,
     )

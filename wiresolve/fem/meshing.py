@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from wiresolve.describe.curves import Arc, EllipseArc, Line, Loop, Spline
 from wiresolve.describe.section import Piece
 from wiresolve.errors import InputError, MeshError
-from wiresolve.fem.mesh import Mesh, Region, blended, folded, oriented
+from wiresolve.fem.mesh import Mesh, Region, blended, ears, folded, oriented, without
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -43,11 +43,15 @@ class SizeField:
     ----------
     largest_nm : everywhere.
     gradings : around corners.
+    spots : (x, y, radius, size) circles in which cells are at most so large.
+    turn_cells : at least so many cells around a full turn of a curve (0: no matter how many).
     triangles, sizes_nm : (t, 3, 2) and (t, 3): linear interpolation in a triangulation of the section.
     """
 
     largest_nm: float
     gradings: tuple[Grading, ...] = ()
+    spots: tuple[tuple[float, float, float, float], ...] = ()
+    turn_cells: int = 0
     triangles: Array | None = None
     sizes_nm: Array | None = None
 
@@ -158,13 +162,21 @@ class Mesher:
         Raises
         ------
         MeshError
-            Gmsh failed, or a curved cell stayed folded after three refinements around it.
+            Gmsh failed, or a curved cell stayed folded after five refinements around it.
         """
-        for _ in range(4):
+        most = None
+        for _ in range(6):
             coarse, fine = self._generate(size)
             bent = folded(coarse) | folded(fine)
+            if bent.any():
+                swaps = ears(coarse, bent)
+                coarse, fine = without(coarse, swaps), without(fine, swaps)
+                bent = folded(coarse) | folded(fine)
             if not bent.any():
                 return coarse, fine
+            most = most or 10 * len(coarse.cells) + 2000
+            if len(coarse.cells) > most:
+                break
             size = _smaller_where(coarse, bent, size)
         raise MeshError(
             f"{int(bent.sum())} curved cells stay folded near ({_place(coarse, bent)}) nm;"
@@ -195,6 +207,7 @@ class Mesher:
         for tag in gmsh.view.getTags():
             gmsh.view.remove(tag)
         gmsh.option.setNumber("Mesh.MeshSizeMax", size.largest_nm)
+        gmsh.option.setNumber("Mesh.MeshSizeFromCurvature", size.turn_cells)
         parts = []
         alike: dict[tuple[float, float, float, float], list[int]] = {}
         for g in size.gradings:
@@ -207,6 +220,13 @@ class Mesher:
             # Plain decimals only: Gmsh's parser ends the process on anything that it cannot read.
             fields.setString(law, "F", f"{smallest:.15f}+{outer:.12f}*(F{distance}/{reach:.12f})^{power:.6f}")
             parts.append(law)
+        for x, y, radius, cell in size.spots:
+            spot = fields.add("Ball")
+            for name, value in (("XCenter", x), ("YCenter", y), ("Radius", radius), ("Thickness", 2 * radius)):
+                fields.setNumber(spot, name, value)
+            fields.setNumber(spot, "VIn", cell)
+            fields.setNumber(spot, "VOut", size.largest_nm)
+            parts.append(spot)
         if size.triangles is not None and size.sizes_nm is not None:
             view = gmsh.view.add("size")
             corners = np.zeros((len(size.triangles), 12))
@@ -310,6 +330,10 @@ _OPTIONS = {
 }
 
 
+_MANY = 12
+"""Folded cells above which the whole mesh is sized anew; fewer are mended by spots, which leave the rest as it is."""
+
+
 def _short(fault: BaseException) -> str:
     return " ".join(str(fault).split())[:160] or type(fault).__name__
 
@@ -328,13 +352,20 @@ def _strictly_nested(loops: Sequence[Loop]) -> bool:
 
 
 def _smaller_where(mesh: Mesh, marked: NDArray[np.bool_], size: SizeField) -> SizeField:
-    """The size field with half of today's size at the vertices of the marked cells."""
+    """The size field with cells of less than half of today's size at the marked ones."""
     corner = mesh.points[mesh.cells[:, :3]]
-    edge = np.linalg.norm(corner - np.roll(corner, 1, axis=1), axis=2).max(axis=1)
-    wanted = np.where(marked, 0.5 * edge, edge)
-    at_vertex = np.full(len(mesh.points), np.inf)
-    np.minimum.at(at_vertex, mesh.cells[:, :3], wanted[:, None])
-    return replace(size, triangles=corner, sizes_nm=at_vertex[mesh.cells[:, :3]])
+    edge = np.linalg.norm(corner - np.roll(corner, 1, axis=1), axis=2)
+    if marked.sum() > _MANY:
+        longest = edge.max(axis=1)
+        at_vertex = np.full(len(mesh.points), np.inf)
+        np.minimum.at(at_vertex, mesh.cells[:, :3], np.where(marked, 0.35, 0.75)[:, None] * longest[:, None])
+        return replace(size, triangles=corner, sizes_nm=at_vertex[mesh.cells[:, :3]])
+    corner, edge = corner[marked], edge[marked]
+    spots = [
+        (float(x), float(y), 0.6 * float(longest), 0.5 * float(mean))
+        for (x, y), longest, mean in zip(corner.mean(axis=1), edge.max(axis=1), edge.mean(axis=1), strict=True)
+    ]
+    return replace(size, spots=(*size.spots, *spots))
 
 
 def _place(mesh: Mesh, marked: NDArray[np.bool_]) -> str:

@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe.section import Piece
-from wiresolve.fem import eigen, estimate
+from wiresolve.fem import eigen
 from wiresolve.physics import modes
 from wiresolve.physics.axial_bands import AxialBands, curvature, dispersion
 from wiresolve.physics.spectrum import Spectrum
@@ -65,7 +65,7 @@ def listing(wire: Wire, certified: Certified) -> Listing:
     fine_states = solved.enriched.states[solved.enriched_pencil.kept]
     fine = curvature(solved.enriched_pencil, solved.enriched.energy_eV, fine_states, solved.level, solved.shift_eV)
     mass = HBAR2_OVER_2M0 / coarse
-    error = estimate.BAR_FACTOR * np.abs(HBAR2_OVER_2M0 / fine - mass) + 1e-12 * np.abs(mass)
+    error = solved.bar_factor * np.abs(HBAR2_OVER_2M0 / fine - mass) + 1e-12 * np.abs(mass)
 
     reach = _energy_reach(wire, certified)
     stiffness = np.nanmedian(np.abs(coarse)) if np.isfinite(coarse).any() else HBAR2_OVER_2M0

@@ -53,6 +53,11 @@ class Operator:
         """N."""
         return self.by_region[0].bands
 
+    @property
+    def varies(self) -> bool:
+        """Whether a field varies inside the regions."""
+        return self.potential is not None or bool(self.coupling)
+
     def terms(self, space: Space) -> tuple[Term, ...]:
         """The operator as terms on a space; equal matrices share one form."""
         gathered: dict[tuple[int, bytes], tuple[dict[tuple[str, str], Field], NDArray[Any]]] = {}

@@ -29,8 +29,11 @@ Progress = Callable[[str, float, str], None]
 
 _log = logging.getLogger(__name__)
 
-MOST_UNKNOWNS = 300_000
-"""A mesh above this would leave a laptop's memory and patience; the best result so far is kept and marked."""
+MOST_VALUES = 12_000_000
+"""Unknowns times states above which a mesh would leave a laptop's memory and patience: the best result so far is kept
+and marked. A first mesh above it is made coarser."""
+_NODES_PER_AREA = 18.0
+"""Unknowns of an even mesh in a square of the cells' size."""
 _SPARE = 4
 """States solved beyond the wanted ones, so that a level at the end is seen whole."""
 _COARSER = 300.0
@@ -40,6 +43,8 @@ _REACH = 1.5
 """Cells grow from a corner to their full size over this many full sizes."""
 _AIM = 0.7
 """The next mesh aims at this share of the accuracy, so that one that turns out a little worse still meets it."""
+_TURN_CELLS = 10
+"""Cells around a full turn of a curve, at least: larger ones beside a fillet would fold."""
 _GROWTH = 4.0
 """How much larger cells are far out in a material that goes on outside."""
 _PER_WAVE = 1.55e-8
@@ -55,6 +60,7 @@ class Solved:
     energy_eV, bar_eV, level : (m,) ascending, m at least the wanted number; levels from 1.
     states : (nodes x bands, m) on all nodes of the space, orthonormal in the mass matrix.
     shift_eV : an energy below all states.
+    bar_factor : how many falls wide the bars are.
     """
 
     pencil: Pencil
@@ -67,6 +73,7 @@ class Solved:
     enriched_pencil: Pencil
     shift_eV: float
     phase_space: PhaseSpace
+    bar_factor: float
 
     @property
     def unknown_states(self) -> NDArray[Any]:
@@ -110,8 +117,10 @@ def levels(energy_eV: Array, bar_eV: Array) -> Ints:
     return np.asarray(1 + np.concatenate([[0], np.cumsum(apart)]), dtype=np.int64)
 
 
-def solve_on(coarse: Mesh, fine: Mesh, operator_of: OperatorOf, count: int) -> Solved:
-    """States and bars on one pair of meshes (degree 4 and 6 over the same triangles)."""
+def solve_on(
+    coarse: Mesh, fine: Mesh, operator_of: OperatorOf, count: int, factor: float = estimate.BAR_FACTOR
+) -> Solved:
+    """States and bars (`factor` falls wide) on one pair of meshes (degree 4 and 6 over the same triangles)."""
     space, finer = Space(coarse), Space(fine)
     operator = operator_of(coarse)
     pencil, above = build(space, operator), build(finer, operator)
@@ -123,12 +132,24 @@ def solve_on(coarse: Mesh, fine: Mesh, operator_of: OperatorOf, count: int) -> S
     energy, states = eigen.lowest(pencil.h0, pencil.mass, count, shift)
     full = pencil.spread(states)
     enriched = enrich(
-        space, finer, energy, full, (pencil.local(), above.local()), above.local_mass, shift, operator.bands
+        space,
+        finer,
+        energy,
+        full,
+        (pencil.local(), above.local()),
+        above.local_mass,
+        shift,
+        operator.bands,
+        operator.varies,
     )
-    bar = estimate.bars(enriched)
-    level = levels(energy, bar)
-    bar = estimate.bars(enriched, level)
-    return Solved(pencil, operator, energy, bar, levels(energy, bar), full, enriched, above, shift, cells)
+    bar, level = _bars_and_levels(energy, enriched, factor)
+    return Solved(pencil, operator, energy, bar, level, full, enriched, above, shift, cells, factor)
+
+
+def _bars_and_levels(energy: Array, enriched: Enriched, factor: float) -> tuple[Array, Ints]:
+    """Bars, one for each level, and the levels that these bars make."""
+    bar = estimate.bars(enriched, factor, levels(energy, estimate.bars(enriched, factor)))
+    return bar, levels(energy, bar)
 
 
 def certify_at(solved: Solved, k_per_nm: float, count: int) -> Solved:
@@ -145,12 +166,10 @@ def certify_at(solved: Solved, k_per_nm: float, count: int) -> Solved:
         solved.enriched_pencil.local_mass,
         solved.shift_eV,
         solved.operator.bands,
+        solved.operator.varies,
     )
-    bar = estimate.bars(enriched)
-    level = levels(energy, bar)
-    return replace(
-        solved, energy_eV=energy, bar_eV=estimate.bars(enriched, level), level=level, states=full, enriched=enriched
-    )
+    bar, level = _bars_and_levels(energy, enriched, solved.bar_factor)
+    return replace(solved, energy_eV=energy, bar_eV=bar, level=level, states=full, enriched=enriched)
 
 
 def certify(
@@ -201,7 +220,7 @@ def _first_size(
     mesher: Mesher, operator_of: OperatorOf, wanted: int, accuracy_eV: float, barrier: Barrier | None
 ) -> tuple[SizeField, tuple[Corner, ...], PhaseSpace]:
     """A size field for the first mesh, from the wave length of the highest wanted state and the singular corners."""
-    rough, _ = mesher.mesh(SizeField(mesher.extent_nm / 4))
+    rough, _ = mesher.mesh(SizeField(mesher.extent_nm / 4, turn_cells=_TURN_CELLS))
     space, operator = Space(rough), operator_of(rough)
     cells = phase_space(space, operator)
     top = cells.energy_of(wanted + 1)
@@ -214,9 +233,10 @@ def _first_size(
     if corners or len(operator.by_region) > 1:
         relative *= _COARSER
     largest = (relative / _PER_WAVE) ** 0.125 / wave_number
-    largest = min(max(largest, 0.4 / wave_number), 3.0 / wave_number, mesher.extent_nm / 3)
+    affordable = np.sqrt(_NODES_PER_AREA * space.area_nm2 * (wanted + _SPARE) / MOST_VALUES)
+    largest = min(max(largest, 0.4 / wave_number, affordable), 3.0 / wave_number, mesher.extent_nm / 3)
     reach = min(float(np.sqrt(space.area_nm2) / 2), _REACH * largest)
-    first = SizeField(largest, gradings(corners, largest, reach, least))
+    first = SizeField(largest, gradings(corners, largest, reach, least), turn_cells=_TURN_CELLS)
     if barrier is not None and barrier.extendable:
         first = _coarser_outside(first, rough, barrier, top)
     return first, corners, cells
@@ -246,9 +266,9 @@ def _refine(
 ) -> tuple[Solved, int]:
     """Solve and re-mesh until the bars are under the accuracy, or no longer fall."""
     best: Solved | None = None
-    worst, stalled = np.inf, 0
+    worst, stalled, factor = np.inf, 0, estimate.bar_factor(corners)
     for number in range(1, 11):
-        solved = solve_on(*mesher.mesh(size), operator_of, wanted + _SPARE)
+        solved = solve_on(*mesher.mesh(size), operator_of, wanted + _SPARE, factor)
         bar = float(solved.bar_eV[:wanted].max())
         unknowns = len(solved.pencil.kept)
         tell(
@@ -262,9 +282,9 @@ def _refine(
             break
         # A mesh that missed its aim was outside the law that sized it: aim lower the next time.
         aim = _AIM / 2 ** max(number - 2, 0)
-        target = max(accuracy_eV / estimate.BAR_FACTOR * aim, 1e-3 * bar)
+        target = max(accuracy_eV / factor * aim, 1e-3 * bar)
         size = estimate.finer(solved.enriched, size, corners, target, wanted)
-        if unknowns * (bar / (1.75 * target)) ** 0.25 > MOST_UNKNOWNS:
+        if unknowns * (bar / (factor * target)) ** 0.25 * (wanted + _SPARE) > MOST_VALUES:
             break
     assert best is not None
     return best, number
@@ -330,4 +350,4 @@ def _counted(solved: Solved, wanted: int) -> tuple[Solved, int]:
 def _again(solved: Solved, count: int) -> Solved:
     """The same mesh solved for more states."""
     coarse, fine = solved.pencil.space.mesh, solved.enriched.space.mesh
-    return solve_on(coarse, fine, lambda mesh: solved.operator, count)
+    return solve_on(coarse, fine, lambda mesh: solved.operator, count, solved.bar_factor)
