@@ -51,7 +51,7 @@ def test_thin_shells_do_not_fold(thickness: float) -> None:
 
 
 def test_an_ear_is_swapped() -> None:
-    """A cell with two edges on one smooth curve has no angle at its vertex: a swap mends it and keeps area and nodes."""
+    """A cell with two edges on one smooth curve has no angle at its vertex; a swap mends it, area and nodes stay."""
     with Mesher(Section(Rectangle(width_nm=20, height_nm=12, corner_radius_nm=1), "a").pieces()) as mesher:
         mesh, _ = mesher.mesh(SizeField(20.0))
     straight = Section(Rectangle(width_nm=20, height_nm=12, corner_radius_nm=1), "a")

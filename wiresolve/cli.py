@@ -264,15 +264,16 @@ def mesh(file: Path, out: Path | None, replace: bool) -> int:
 
     problem = _read(file)
     target = check_file(out or Path("results") / f"{file.stem}.mesh.vtu", replace=replace or out is None, field="--out")
-    from wiresolve.physics.section_mesh import section_mesh
+    from wiresolve.physics.section_mesh import mesh as mesh_of
 
     with _progress(True) as report:
-        made = section_mesh(problem, report)
+        made = mesh_of(problem, report)
         _heed_signals()
         with writing(target, "--out") as fresh:
             write_section(made.mesh, fresh)
     curved = f"{len(made.mesh.cells):,} curved cells of degree {made.mesh.degree}, {made.unknowns:,} unknowns"
-    _print(f"{curved}, {made.area_nm2:.6g} nm^2; {', '.join(f'{n:,} in {name}' for name, n in made.cells_by_region())}")
+    _print(f"{curved}; {', '.join(f'{n:,} in {name}' for name, n in made.cells.items())}")
+    _print("Area: " + ", ".join(f"{name} {area:.6g} nm^2" for name, area in made.areas_nm2.items() if area))
     _print(f"File: {out or target}")
     if not made.met:
         _complain("the accuracy wanted was missed; this is the best mesh found")

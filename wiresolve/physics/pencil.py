@@ -149,6 +149,11 @@ class Pencil:
         full = mass if self.bands == 1 else sparse.kron(mass, np.eye(self.bands), format="csr")
         return sparse.csr_array(full[self.kept][:, self.kept])
 
+    def forget(self) -> None:
+        """Let go of the assembled matrices; they are made again when they are asked for."""
+        for name in ("h0", "h1", "h2", "mass"):
+            self.__dict__.pop(name, None)
+
     def at(self, k_per_nm: float) -> Any:
         """H(k)."""
         total = self.h0

@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from collections import Counter
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
+
+import numpy as np
 
 from wiresolve.describe.problem import Problem
 from wiresolve.fem.mesh import Mesh
@@ -14,20 +15,19 @@ from wiresolve.physics.wire import Wire
 
 @dataclass(frozen=True, eq=False)
 class SectionMesh:
-    """A mesh on which every wanted energy has its bar, unless `met` is false: then it is the best that was found."""
+    """A mesh on which every wanted energy has its bar, unless `met` is false: then it is the best that was found.
+
+    `cells` and `areas_nm2` are by region; regions that carriers cannot enter have cells, but no area here.
+    """
 
     mesh: Mesh
     unknowns: int
-    area_nm2: float
+    cells: Mapping[str, int]
+    areas_nm2: Mapping[str, float]
     met: bool
 
-    def cells_by_region(self) -> list[tuple[str, int]]:
-        """Regions by name and how many cells each has."""
-        count = Counter(self.mesh.region.tolist())
-        return [(region.name, count[number]) for number, region in enumerate(self.mesh.regions)]
 
-
-def section_mesh(problem: Problem, on_progress: Callable[[str, float, str], None] | None = None) -> SectionMesh:
+def mesh(problem: Problem, on_progress: Callable[[str, float, str], None] | None = None) -> SectionMesh:
     """Mesh a problem's section until the wanted energies have the wanted accuracy.
 
     Raises
@@ -41,9 +41,13 @@ def section_mesh(problem: Problem, on_progress: Callable[[str, float, str], None
     with threadpool_limits(limits=1, user_api="blas"):
         done = certify(wire.draw, wire.operator, accuracy.subbands, accuracy.energy_eV, wire.barrier, on_progress)
     space = done.solved.pencil.space
-    return SectionMesh(space.mesh, len(done.solved.pencil.kept), space.area_nm2, done.met)
-
-
-def mesh(problem: Problem) -> Mesh:
-    """The curved mesh of a problem's section, fine enough for its accuracy (see `section_mesh`)."""
-    return section_mesh(problem).mesh
+    names = [region.name for region in space.mesh.regions]
+    count = np.bincount(space.mesh.region, minlength=len(names))
+    area = np.bincount(space.mesh.region[space.cells], space.quadrature_weights.sum(axis=1), minlength=len(names))
+    return SectionMesh(
+        mesh=space.mesh,
+        unknowns=len(done.solved.pencil.kept),
+        cells=dict(zip(names, count.tolist(), strict=True)),
+        areas_nm2=dict(zip(names, area.tolist(), strict=True)),
+        met=done.met,
+    )

@@ -45,6 +45,8 @@ _AIM = 0.7
 """The next mesh aims at this share of the accuracy, so that one that turns out a little worse still meets it."""
 _TURN_CELLS = 10
 """Cells around a full turn of a curve, at least: larger ones beside a fillet would fold."""
+_HARDLY = 0.4
+"""Gradings to no less than this share of the largest cell are left away: they cost more than they save."""
 _GROWTH = 4.0
 """How much larger cells are far out in a material that goes on outside."""
 _PER_WAVE = 1.55e-8
@@ -131,6 +133,8 @@ def solve_on(
     shift = cells.bottom_eV - 1e-3 * (cells.energy_of(count) - cells.bottom_eV)
     energy, states = eigen.lowest(pencil.h0, pencil.mass, count, shift)
     full = pencil.spread(states)
+    if unknowns >= eigen.SINGLE_FROM:
+        pencil.forget()
     enriched = enrich(
         space,
         finer,
@@ -236,7 +240,8 @@ def _first_size(
     affordable = np.sqrt(_NODES_PER_AREA * space.area_nm2 * (wanted + _SPARE) / MOST_VALUES)
     largest = min(max(largest, 0.4 / wave_number, affordable), 3.0 / wave_number, mesher.extent_nm / 3)
     reach = min(float(np.sqrt(space.area_nm2) / 2), _REACH * largest)
-    first = SizeField(largest, gradings(corners, largest, reach, least), turn_cells=_TURN_CELLS)
+    graded = gradings(corners, largest, reach, least) if least < _HARDLY else ()
+    first = SizeField(largest, graded, turn_cells=_TURN_CELLS)
     if barrier is not None and barrier.extendable:
         first = _coarser_outside(first, rough, barrier, top)
     return first, corners, cells
