@@ -174,19 +174,28 @@ def _dispersion(bands: AxialBands, wanted: int) -> Dispersion:
 def _curves(
     spectrum: Spectrum, temperatures: tuple[float, ...], quantity: Callable[[Spectrum, Array, float], Array]
 ) -> tuple[ThermalCurve, ...]:
-    """The quantity from well below the first subband to the last listed one, at T = 0 and at each temperature."""
+    """The quantity from well below the first subband to beyond the last listed one, at T = 0 and at each temperature."""
     curves = []
     listed = spectrum.energy_eV[: spectrum.listed]
     bottom, top = float(listed[0]), float(listed[-1])
     for temperature in dict.fromkeys((0.0, *temperatures)):
         thermal = KB * temperature
         margin = max(0.1 * (top - bottom), 6 * thermal, 1e-3)
-        even = np.linspace(bottom - margin, max(top, bottom + margin), 301)
+        even = np.linspace(bottom - margin, max(_end(spectrum), bottom + margin), 301)
         # Steps that are narrower than the even points are apart get points of their own.
         near = (listed[:, None] + max(thermal, 1e-9) * _NEAR_STEP).ravel()
         fermi = np.unique(np.concatenate([even, near[near <= even[-1]]]))
         curves.append(ThermalCurve(temperature, fermi, np.asarray(quantity(spectrum, fermi, temperature))))
     return tuple(curves)
+
+
+def _end(spectrum: Spectrum) -> float:
+    """Where curves end: beyond the last listed level, so that its step is seen, but before the next one."""
+    listed = spectrum.listed
+    bottom, top = float(spectrum.energy_eV[0]), float(spectrum.energy_eV[listed - 1])
+    higher = spectrum.energy_eV[spectrum.level > spectrum.level[listed - 1]]
+    room = 0.5 * float(higher[0] - top) if len(higher) else 0.0
+    return top + min(room, 0.15 * (top - bottom) + 1e-3)
 
 
 def _edges(spectrum: Spectrum) -> Array:

@@ -24,6 +24,8 @@ SPIN = 2
 _THERMAL_REACH = 12.0
 """States are solved up to this many kT above the lowest (20 above the Fermi level); above, they are counted by area."""
 _FERMI_REACH = 20.0
+_ROUGH = 0.02
+"""States above the listed ones are used while their error is below this many kT."""
 _MOST_THERMAL = 80
 _K_POINTS = 61
 _AXIAL_eV = 1e-6
@@ -149,9 +151,12 @@ def spectrum_of(wire: Wire, certified: Certified, found: Listing) -> Spectrum:
         above, vectors = eigen.lowest(solved.pencil.h0, solved.pencil.mass, count, solved.shift_eV)
         # Unrefined states: the error of a smooth state of degree 4 grows like E^5.
         height = np.maximum((above[known:] - solved.shift_eV) / (energy[-1] - solved.shift_eV), 1.0)
-        energy = np.concatenate([energy, above[known:]])
-        bar = np.concatenate([bar, bar[-1] * height**5])
-        states = np.hstack([states, solved.pencil.spread(vectors[:, known:])])
+        rough = bar[-1] * height**5
+        # Where these errors would count against kT, the count by area is the better one.
+        count = known + int(np.searchsorted(rough, _ROUGH * hottest))
+        energy = np.concatenate([energy, above[known:count]])
+        bar = np.concatenate([bar, rough[: count - known]])
+        states = np.hstack([states, solved.pencil.spread(vectors[:, known:count])])
         mass = np.concatenate([mass, np.full(count - known, HBAR2_OVER_2M0 / stiffness)])
     unknown = ~(np.isfinite(mass) & (mass > 0))
     unknown[:wanted] &= found.parabolic
@@ -160,7 +165,8 @@ def spectrum_of(wire: Wire, certified: Certified, found: Listing) -> Spectrum:
     directions, names = _directions(wire, solved, states)
     tail_energy = np.linspace(energy.max() + 1e-9, max(energy.max(), ceiling) + 40 * hottest, 257)
     tail = solved.phase_space.count(tail_energy)
-    tail = degeneracy * np.maximum.accumulate(tail - tail[0])
+    tail = degeneracy * np.maximum.accumulate(np.maximum(tail - len(energy), 0.0))
+    tail[0] = 0.0  # what the solved states are short of the smooth count joins in the first interval
     table = None if found.parabolic else np.full((len(energy), len(found.bands.k_per_nm)), np.nan)
     if table is not None:
         table[:wanted] = found.bands.energy_eV
