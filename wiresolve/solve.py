@@ -174,7 +174,7 @@ def _dispersion(bands: AxialBands, wanted: int) -> Dispersion:
 def _curves(
     spectrum: Spectrum, temperatures: tuple[float, ...], quantity: Callable[[Spectrum, Array, float], Array]
 ) -> tuple[ThermalCurve, ...]:
-    """The quantity from well below the first subband to beyond the last listed one, at T = 0 and at each temperature."""
+    """The quantity from well below the first subband to beyond the last listed one, at T = 0 and each temperature."""
     curves = []
     listed = spectrum.energy_eV[: spectrum.listed]
     bottom, top = float(listed[0]), float(listed[-1])
