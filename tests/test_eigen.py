@@ -40,6 +40,30 @@ def test_lowest_states_of_a_grid_in_closed_form() -> None:
     np.testing.assert_allclose(h @ states, (m @ states) * energy, atol=1e-11)
 
 
+@pytest.mark.parametrize("count", [130, 333])
+def test_many_states_come_in_windows(count: int) -> None:
+    """More states than one window holds, orbital pairs and all, in closed form."""
+    h, m = grid(40)
+    energy, states = eigen.lowest(h, m, count, -0.01)
+    np.testing.assert_allclose(energy, exact(40)[:count], rtol=1e-11)
+    np.testing.assert_allclose(states.T @ (m @ states), np.eye(count), atol=1e-11)
+
+
+def test_large_definite_systems_keep_their_digits(monkeypatch: pytest.MonkeyPatch) -> None:
+    """A factor in single precision and conjugate gradients give what a factor in double precision gives."""
+    h, m = grid(30)
+    matrix = sparse.csc_array(h + 0.01 * m)
+    right = np.random.default_rng(5).normal(size=(900, 9))
+    plain = eigen.solve_definite(matrix, right)
+    monkeypatch.setattr(eigen, "SINGLE_FROM", 100)
+    rough = eigen.solve_definite(matrix, right)
+    assert np.linalg.norm(rough - plain) < 1e-8 * np.linalg.norm(plain)
+    phase = sparse.diags_array(np.exp(1j * np.random.default_rng(3).uniform(0, 6, 900)))
+    turned = sparse.csc_array(phase @ matrix @ phase.conj())
+    answer = eigen.solve_definite(turned, phase @ right)
+    assert np.linalg.norm(answer - phase @ plain) < 1e-8 * np.linalg.norm(plain)
+
+
 def test_complex_pencil_keeps_pairs_orthonormal() -> None:
     """A gauge factor on every node leaves the energies and makes the pencil complex; pairs stay orthonormal."""
     h, m = grid(20)

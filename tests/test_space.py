@@ -54,7 +54,7 @@ def test_area_and_moments_of_a_circle(index: int, close: float) -> None:
 def test_library_agrees(section: Section) -> None:
     """Stiffness, mass and first-derivative forms against scikit-fem's assembly on the same quartic cells."""
     space = Space(meshes(section, 4.0)[0])
-    basis, number = space.library_basis()
+    basis, number = space.quartic_basis()
     one = space.ones
     for form, library in (
         ({("x", "x"): 2 * one, ("x", "y"): 0.3 * one, ("y", "x"): 0.3 * one, ("y", "y"): one}, stiffness),

@@ -242,7 +242,7 @@ class Space:
         """(c,) the field 1."""
         return np.ones(len(self.cells))
 
-    def library_basis(self) -> tuple[Any, Ints]:
+    def quartic_basis(self) -> tuple[Any, Ints]:
         """scikit-fem's quartic basis on the same curved cells, for forms of one's own, and its numbers of `nodes`.
 
         Returns

@@ -200,10 +200,8 @@ def certify(
             if barrier is not None and barrier.extendable and distance == 0.0:
                 distance = _first_distance(start, barrier)
                 continue
-            best, solved_passes = _refine(
-                mesher, size, corners, operator_of, wanted, accuracy_eV, passes, tell, barrier
-            )
-        passes += solved_passes
+            best, made = _refine(mesher, size, corners, operator_of, wanted, accuracy_eV, passes, tell)
+        passes += made
         effect = None if barrier is None else wall_effect(best, barrier, wanted)
         if barrier is None or effect is None or not barrier.extendable:
             break
@@ -267,7 +265,6 @@ def _refine(
     accuracy_eV: float,
     passes: int,
     tell: Progress,
-    barrier: Barrier | None,
 ) -> tuple[Solved, int]:
     """Solve and re-mesh until the bars are under the accuracy, or no longer fall."""
     best: Solved | None = None
@@ -276,9 +273,8 @@ def _refine(
         solved = solve_on(*mesher.mesh(size), operator_of, wanted + _SPARE, factor)
         bar = float(solved.bar_eV[:wanted].max())
         unknowns = len(solved.pencil.kept)
-        tell(
-            "mesh", 0.1 + 0.08 * number, f"mesh {passes + number}: {unknowns} unknowns, widest bar {1e3 * bar:.3g} meV"
-        )
+        detail = f"mesh {passes + number}: {unknowns} unknowns, widest bar {1e3 * bar:.3g} meV"
+        tell("mesh", 0.1 + 0.08 * number, detail)
         _log.debug("pass %d: %d unknowns, bar %.3g eV", passes + number, unknowns, bar)
         stalled = 0 if bar < 0.7 * worst else stalled + 1
         if bar < worst:
