@@ -52,7 +52,7 @@ def finer(enriched: Enriched, before: SizeField, corners: Sequence[Corner], targ
 
     Parameters
     ----------
-    corners : the singular corners of the drawing; their gradings shrink with the mesh around them.
+    corners : the singular corners of the drawing, at which cells may shrink by much more than elsewhere.
     """
     mesh, cells = enriched.space.mesh, enriched.space.cells
     share = enriched.indicator_eV[:, :wanted]
