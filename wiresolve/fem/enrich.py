@@ -23,9 +23,6 @@ Ints = NDArray[np.int64]
 Local = Callable[[Space, slice | Ints], NDArray[Any]]
 """Element matrices of an operator on some cells of a space, shape (cells, nodes x bands, nodes x bands)."""
 
-_RULES_APART = 3.0
-"""Two rules of quadrature err alike at a kink: their difference counts this many times on straight cells."""
-
 
 @dataclass(frozen=True, eq=False)
 class Enriched:
@@ -86,17 +83,15 @@ def enrich(
         local = after[dofs] - before[dofs] @ overlap
         indicator[chunk] = np.einsum("cim,cim->cm", local.conj(), (h - shift * w) @ local).real
     indicator = np.maximum(indicator, 0)
-    # The two degrees differ in the geometry of curved cells, and in the quadrature of fields that vary inside cells: a
-    # kink of the potential is seen by the rules of both, and by no polynomial.
-    flat = coarse.straight & fine.straight
-    unlike = np.flatnonzero(~flat | varying)
+    # The two degrees differ in the geometry of curved cells too, and in how varying fields are integrated.
+    unlike = np.flatnonzero(~(coarse.straight & fine.straight) | varying)
     for start in range(0, len(unlike), 1024):
         cells = unlike[start : start + 1024]
         local = before[with_bands(fine.dofs[cells], bands)]
         there = _local_energy(local, hamiltonians[1](fine, cells), mass(fine, cells), energies)
         local = states[with_bands(coarse.dofs[cells], bands)]
         here = _local_energy(local, hamiltonians[0](coarse, cells), mass(coarse, cells), energies)
-        indicator[cells] += np.where(flat[cells], _RULES_APART, 1.0)[:, None] * np.abs(there - here)
+        indicator[cells] += np.abs(there - here)
     return Enriched(fine, improved, energies - improved, indicator, after)
 
 

@@ -40,6 +40,16 @@ def _rule(order: int) -> tuple[Array, Array]:
 
 
 @cache
+def _composite_rule(order: int) -> tuple[Array, Array]:
+    """The rule on each of the 16 like parts of the reference triangle."""
+    at, weights = _rule(order)
+    corners = np.array([(i, j) for i in range(4) for j in range(4 - i)]) / 4
+    upright = [corner + at / 4 for corner in corners]
+    turned = [corner + (1 - at) / 4 for corner in corners if corner.sum() < 0.75 - 1e-9]
+    return np.vstack([*upright, *turned]), np.tile(weights / 16, 16)
+
+
+@cache
 def _reference_tensor(degree: int) -> Array:
     """int (d_a phi_i)(d_b phi_j) over the reference triangle, shape (9, n, n), with a, b = x, y, 1."""
     at, weights = _rule(2 * degree)
@@ -60,9 +70,12 @@ class Space:
     Attributes
     ----------
     mesh : the curved mesh; functions live at `nodes`, a subset of its points.
+    composite : fields that vary inside cells are integrated on 16 parts of each, which sees what one rule cannot (a
+        kink of a potential).
     """
 
     mesh: Mesh
+    composite: bool = False
 
     @cached_property
     def cells(self) -> Ints:
@@ -130,10 +143,14 @@ class Space:
         """Order of the rule on curved cells and for fields that vary inside a cell."""
         return 2 * self.mesh.degree + 4
 
+    @property
+    def _varying_rule(self) -> tuple[Array, Array]:
+        return _composite_rule(12) if self.composite else _rule(self.quadrature_order)
+
     @cached_property
     def quadrature_points(self) -> Array:
         """(c, q, 2) points in nm at which a varying field is wanted."""
-        at, _ = _rule(self.quadrature_order)
+        at, _ = self._varying_rule
         values = triangle(self.mesh.degree).values(at)
         return np.asarray(
             np.einsum("qa,cax->cqx", values, self.mesh.points[self.mesh.cells[self.cells]], optimize=True)
@@ -142,7 +159,7 @@ class Space:
     @cached_property
     def quadrature_weights(self) -> Array:
         """(c, q) weights in nm^2 that go with `quadrature_points`."""
-        at, weights = _rule(self.quadrature_order)
+        at, weights = self._varying_rule
         slopes = triangle(self.mesh.degree).gradients(at)
         local = self.mesh.points[self.mesh.cells[self.cells]]
         jacobian = np.einsum("rqa,cax->cqxr", slopes, local, optimize=True)
@@ -167,7 +184,7 @@ class Space:
         return out
 
     def _straight_varying(self, nodes: Ints, field: Field) -> Array:
-        at, weights = _rule(self.quadrature_order)
+        at, weights = self._varying_rule
         values = triangle(self.mesh.degree).values(at)
         pairs = (values[:, :, None] * values[:, None, :]).reshape(len(weights), -1)
         corner = self.mesh.points[nodes[:, :3]]
@@ -192,12 +209,14 @@ class Space:
         return np.asarray((weights.reshape(-1, 9) @ tensor.reshape(9, -1)).reshape(-1, n, n))
 
     def _curved(self, nodes: Ints, form: Form) -> Array:
-        at, weights = _rule(self.quadrature_order)
+        varying = any(field.ndim == 2 for field in form.values())
+        at, weights = self._varying_rule if varying else _rule(self.quadrature_order)
         parts = _reference_parts(triangle(self.mesh.degree), at)
         count, q = parts.shape[2], len(weights)
         out = np.empty((len(nodes), count, count))
-        for start in range(0, len(nodes), _CHUNK // 4):
-            chunk = slice(start, start + _CHUNK // 4)
+        size = max(1, _CHUNK * 12 // q)
+        for start in range(0, len(nodes), size):
+            chunk = slice(start, start + size)
             local = self.mesh.points[nodes[chunk]]
             c = len(local)
             jacobian = np.einsum("rqa,cax->cqxr", parts[:2], local, optimize=True)

@@ -123,8 +123,8 @@ def solve_on(
     coarse: Mesh, fine: Mesh, operator_of: OperatorOf, count: int, factor: float = estimate.BAR_FACTOR
 ) -> Solved:
     """States and bars (`factor` falls wide) on one pair of meshes (degree 4 and 6 over the same triangles)."""
-    space, finer = Space(coarse), Space(fine)
     operator = operator_of(coarse)
+    space, finer = Space(coarse), Space(fine, composite=operator.varies)
     pencil, above = build(space, operator), build(finer, operator)
     cells = phase_space(space, operator)
     unknowns = len(pencil.kept)
