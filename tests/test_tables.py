@@ -7,6 +7,7 @@ import io
 import json
 import math
 from dataclasses import replace
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -14,7 +15,19 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from tests.synthetic import core_shell_result
-from wiresolve.output.tables import result_json, subband_table, subbands_csv, summary, with_bar
+from wiresolve.describe.wirefile import read
+from wiresolve.output.tables import (
+    from_memory,
+    result_json,
+    step_table,
+    subband_table,
+    subbands_csv,
+    summary,
+    with_bar,
+)
+from wiresolve.solve import solve
+
+GEOMETRIES = Path(__file__).parents[1] / "geometries"
 
 
 @given(st.floats(-1e4, 1e4), st.floats(1e-8, 1e3))
@@ -116,3 +129,19 @@ def test_the_summary_gives_the_verdict_first() -> None:
     assert "ACCURACY MISSED" not in text
     assert "ACCURACY MISSED" in summary(replace(result, accuracy_met=False))
     assert max(len(line) for line in text.splitlines()) <= 120
+
+
+def test_the_summary_tells_each_step_and_what_is_from_memory() -> None:
+    """Steps of the solved main wire, against its own verdict; values without a checked text are named."""
+    result = solve(read(GEOMETRIES / "core_shell_gaas.toml"))
+    rows = step_table(result)
+    assert rows[0].split() == ["step", "opens", "at", "height", "then", "at", "4.2", "K", "at", "77", "K"]
+    warm = result.verdict.steps[1]["levels"]
+    assert len(rows) == 2 + len(warm)
+    for row, step in zip(rows[2:], warm, strict=True):
+        assert row.endswith(f"{step['kind']} {math.floor(100 * step['contrast'])} %")
+        assert row.split()[0] == str(step["level"])
+    assert [float(row.split()[5]) for row in rows[2:]] == [1, 3, 5, 6]
+    assert "GaAs: valence edge" in from_memory(result)
+    assert "permittivity" not in from_memory(result)
+    assert "Values from memory" in summary(result)

@@ -14,6 +14,7 @@ from typing import Any
 
 import numpy as np
 
+from wiresolve.describe.materials import GIVEN
 from wiresolve.result import Result, Subband
 from wiresolve.units import KB
 
@@ -208,6 +209,38 @@ def subband_table(result: Result) -> list[str]:
     return [*lines, f"and {hidden} more, see subbands.csv"] if hidden > 0 else lines
 
 
+def step_table(result: Result) -> list[str]:
+    """The conductance steps as aligned lines, one a level: where each opens, its height, and whether it is seen.
+
+    For each temperature: plateau, shoulder or merged, with the contrast in per cent. Empty where there are no steps.
+    """
+    if not result.verdict.steps:
+        return []
+    temperatures = [f"at {entry['temperature_K']:g} K" for entry in result.verdict.steps]
+    rows = [
+        ["step", "opens at", "height", "then", *temperatures],
+        ["level", "meV", "G0", "G0", *("" for _ in temperatures)],
+    ]
+    for number, first in enumerate(result.verdict.steps[0]["levels"][:MOST_ROWS]):
+        row = [str(first["level"]), with_bar(1e3 * first["opens_at_eV"], 1e3 * first["opens_error_eV"])]
+        row += [f"{first['height_G0']:g}", f"{first['plateau_G0']:g}"]
+        for entry in result.verdict.steps:
+            step = entry["levels"][number]
+            row.append(step["kind"] + ("" if step["contrast"] is None else f" {math.floor(100 * step['contrast'])} %"))
+        rows.append(row)
+    return aligned(rows, left=range(4, 4 + len(temperatures)))
+
+
+def from_memory(result: Result) -> str:
+    """The material values that no text was checked for, by material; empty where there are none."""
+    found: dict[str, list[str]] = {}
+    for material in result.problem.resolved_materials().values():
+        for value in material.values:
+            if not value.checked and not value.source.startswith(GIVEN):
+                found.setdefault(material.name, []).append(value.quantity.replace("_", " "))
+    return "; ".join(f"{name}: {', '.join(names)}" for name, names in found.items())
+
+
 def _on_the_point(texts: Sequence[str]) -> list[str]:
     """The texts padded so that their first decimal points stand below each other."""
     places = [len(re.split(r"[. ]", text, maxsplit=1)[0]) for text in texts]
@@ -219,6 +252,8 @@ def summary(result: Result, folder: str | Path | None = None, status: str = DONE
     """What the command line prints: verdict, table, warnings with remedies, and where the files are."""
     lines = [result.problem.title] if result.problem.title else []
     lines += [*paragraphs(result.verdict.text), "", *subband_table(result), ""]
+    if steps := step_table(result):
+        lines += [*steps, ""]
     size = result.summary
     lines += paragraphs(
         f"Energies count from the {result.energy_zero_text}, ± the error bar of the discretisation;"
@@ -235,6 +270,8 @@ def summary(result: Result, folder: str | Path | None = None, status: str = DONE
     for warning in result.warnings:
         lines += ["", *paragraphs(f"warning {warning.code}: {warning.text}")]
         lines += paragraphs(warning.remedy, indent="    ")
+    if remembered := from_memory(result):
+        lines += ["", *paragraphs(f"Values from memory, not checked against a text: {remembered}.")]
     if result.not_modelled:
         lines += ["", *paragraphs(f"Not modelled: {'; '.join(result.not_modelled)}.")]
     if status != DONE:
