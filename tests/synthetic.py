@@ -129,7 +129,7 @@ def core_shell_result(count: int = 10, **changes: Any) -> Result:
         Subband(
             index=i + 1,
             level=labels.index((m, n)) + 1,
-            valley="Gamma",
+            valley="zone centre",
             energy_eV=float(energy),
             error_eV=2.3e-6 * (i + 1),
             k_min_per_nm=0.0,

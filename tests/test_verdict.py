@@ -194,7 +194,7 @@ def test_a_medium_wire_is_single_subband_without_resolved_steps() -> None:
     assert judged.single_subband["per_temperature"][0]["holds"]
     assert [row["kind"] for row in judged.steps[0]["levels"]][:2] == ["merged", "merged"]
     assert "At 50 K" in judged.text
-    assert "single-subband, 97.8 % of thin carriers" in judged.text
+    assert "single-subband, the first level holds 97.8 % of few carriers" in judged.text
     assert "none of 2 steps resolved as plateaus" in judged.text
 
 
@@ -324,7 +324,7 @@ def test_one_level_alone_is_judged() -> None:
 def test_shares_just_short_of_the_threshold_are_not_rounded_up() -> None:
     spacing = log(38) * KB * 30 * 0.9999
     judged = judge(spectrum_of([0.1, 0.1 + spacing, 0.1 + spacing, 0.2]), [30.0], None)
-    assert "not single-subband, 94.9 % of thin carriers" in judged.text
+    assert "not single-subband, the first level holds 94.9 % of few carriers" in judged.text
 
 
 @pytest.mark.parametrize(

@@ -105,7 +105,7 @@ class Verdict:
     effective_dimension: tuple[Mapping[str, Any], ...]
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Result:
     """Everything a run found. It is data: no field is filled in later.
 
@@ -136,6 +136,14 @@ class Result:
     not_modelled: tuple[str, ...]
     versions: Mapping[str, str]
     timings_s: Mapping[str, float] = field(default_factory=dict)
+
+    def __repr__(self) -> str:
+        levels = ", ".join(f"{1e3 * s.energy_eV:.6g}" for s in self.subbands[:8])
+        more = ", ..." if len(self.subbands) > 8 else ""
+        codes = ", ".join(w.code for w in self.warnings) or "no warnings"
+        widest = 1e3 * max(s.error_eV for s in self.subbands)
+        title = self.problem.title or "untitled"
+        return f"<Result {title!r}: subbands at {levels}{more} meV, bars up to {widest:.2g} meV; {codes}>"
 
     @property
     def energies_eV(self) -> Array:

@@ -121,7 +121,7 @@ def _assembled(wire: Wire, certified: Certified, found: Listing, spectrum: Spect
         line_density_per_nm=total,
         verdict=Verdict(judged.text, judged.single_subband, judged.steps, judged.effective_dimension),
         warnings=tuple(Warned(*w) for w in warnings),
-        not_modelled=remarks.NOT_MODELLED,
+        not_modelled=remarks.not_modelled(wire),
         versions=_versions(),
         timings_s=clock.seconds,
     )

@@ -22,7 +22,6 @@ LIGHTEST, HEAVIEST = 1e-3, 100.0
 GIVEN_SCALE = "wire file"
 """Name of the scale on which a user's own conduction edges stand."""
 GIVEN = "given in the wire file"
-NARROW_GAP_eV = 0.5
 HOTTEST_FIT_K = 600.0
 
 
@@ -53,7 +52,7 @@ class Material:
     conduction_edge_eV: float | None
     edge_scale: str | None
     permittivity: float | None
-    valley: str = "Gamma"
+    valley: str = "zone centre"
     valley_degeneracy: int = 1
     electron_affinity_eV: float | None = None
     gap_eV: float | None = None
@@ -346,12 +345,6 @@ def _notes(name: str, numbers: Mapping[str, _Number], kelvin: float) -> tuple[tu
         notes.append(
             ("indirect-gap", text, "use an Al fraction below 0.41, or do not rely on states near that barrier")
         )
-    if gap < NARROW_GAP_eV:
-        text = (
-            f"the gap of {name} is only {gap:.3f} eV: its mass grows with energy, which this version does not model, so"
-        )
-        text += " energies and spacings come out too high"
-        notes.append(("narrow-gap", text, "trust energies that are small beside the gap; a larger section lowers them"))
     if kelvin > HOTTEST_FIT_K:
         text = f"the gap of {name} is extrapolated to {kelvin:g} K, beyond what its fit was made for"
         notes.append(("lattice-temperature", text, "set lattice_temperature, or describe the material yourself"))

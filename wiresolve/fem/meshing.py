@@ -251,7 +251,7 @@ class Mesher:
         gmsh, count = self._gmsh, (degree + 1) * (degree + 2) // 2
         tags, xyz, _ = gmsh.model.mesh.getNodes()
         cells, region = [], []
-        used = sorted(set(self._owner.values()))
+        used = sorted(set(self._owner.values()), key=lambda i: _rank(self.pieces[i].name))
         for surface in sorted(self._owner):
             kinds, _, nodes = gmsh.model.mesh.getElements(2, surface)
             if len(kinds) != 1:
@@ -332,6 +332,12 @@ _OPTIONS = {
 
 _MANY = 12
 """Folded cells above which the whole mesh is sized anew; fewer are mended by spots, which leave the rest as it is."""
+
+
+def _rank(name: str) -> tuple[int, int]:
+    """Regions are listed from the core outwards, then the patches, then what goes on outside."""
+    kind, _, number = name.partition(" ")
+    return ("core", "layer", "patch", "outside").index(kind), int(number or 0)
 
 
 def _short(fault: BaseException) -> str:

@@ -14,6 +14,7 @@ from typing import Any
 import numpy as np
 import scipy.sparse as sparse
 from numpy.typing import NDArray
+from scipy.sparse import csgraph
 
 from wiresolve.fem.lagrange import LagrangeTriangle, triangle
 from wiresolve.fem.mesh import Mesh, is_straight
@@ -120,6 +121,16 @@ class Space:
         key = ends[:, 0] * len(self.nodes) + ends[:, 1]
         _, index, count = np.unique(key, return_inverse=True, return_counts=True)
         return np.asarray((count[index.ravel()] == 1).reshape(-1, 3))
+
+    @cached_property
+    def parts(self) -> int:
+        """Number of parts that walls keep from each other."""
+        size, dofs = len(self.nodes), self.dofs
+        inner = ~self.wall[dofs]
+        rows = np.broadcast_to(dofs[:, -1:], dofs.shape)
+        links = sparse.coo_array((np.ones(int(inner.sum())), (rows[inner], dofs[inner])), shape=(size, size))
+        _, label = csgraph.connected_components(links.tocsr(), directed=False)
+        return len(np.unique(label[dofs[:, -1]]))
 
     @property
     def wall_length_nm(self) -> float:

@@ -83,7 +83,7 @@ def judge(
     single = _single_subband(spectrum, temperatures, fermi_eV)
     staircase = _staircase(spectrum, temperatures)
     dimension = _dimension(spectrum, temperatures)
-    sentences = [_headline(single, staircase, fermi_eV), _ladder(spectrum, staircase)]
+    sentences = [_headline(spectrum, single, staircase, fermi_eV), _ladder(spectrum, staircase)]
     sentences += [_at_temperature(row, table) for row, table in zip(single["per_temperature"], staircase, strict=True)]
     sentences += [_dimension_sentence(dimension)]
     sentences += [remark.strip() for remark in remarks]
@@ -200,10 +200,15 @@ def _part_margin(spectrum: Spectrum, direction: int) -> Callable[[Array], Array]
     return lambda temperature: FROZEN_DIMENSION - direction_dimensions(spectrum, temperature)[0][direction]
 
 
-def _headline(single: dict[str, Any], staircase: tuple[dict[str, Any], ...], fermi_eV: float | None) -> str:
+def _headline(
+    spectrum: Spectrum, single: dict[str, Any], staircase: tuple[dict[str, Any], ...], fermi_eV: float | None
+) -> str:
     where = "" if fermi_eV is None else f" with the Fermi level at {_millivolts(fermi_eV)}"
     limit = _up_to(single["holds_up_to_K"], single["searched_up_to_K"])
-    text = f"Design estimate for a ballistic wire{where}: a single-subband channel {limit}"
+    count = int((spectrum.level == 1).sum())
+    what = "a single-subband channel" if count == 1 else f"a channel of one level, which is {count} subbands,"
+    said = f"{what} {limit}" if single["holds_up_to_K"] > 0 else f"not {what.rstrip(',')} at any temperature"
+    text = f"Design estimate for a ballistic wire{where}: {said}"
     first = staircase[0]["levels"][0]
     if first["plateau_up_to_K"] is None:
         return text + "."
@@ -231,10 +236,9 @@ def _at_temperature(row: dict[str, Any], table: dict[str, Any]) -> str:
     if ratio is not None:
         scale += f", first spacing {_short(ratio)} kT"
     said = "single-subband" if row["holds"] else "not single-subband"
-    said += f", {_percent(row['share_non_degenerate'])} of thin carriers"
+    said += f", the first level holds {_percent(row['share_non_degenerate'])} of few carriers"
     if row["share_at_fermi_level"] is not None:
-        said += f" and {_percent(row['share_at_fermi_level'])} of those at the Fermi level"
-    said += " in the first level"
+        said += f" and {_percent(row['share_at_fermi_level'])} of all with this Fermi level"
     return f"At {_short(row['temperature_K'])} K ({scale}): {said}{_steps_clause(table)}."
 
 
