@@ -230,6 +230,7 @@ def test_an_existing_folder_is_refused_before_solving(here: Path, monkeypatch: p
     result = run("solve", "wire.toml", "--out", "out")
     assert result.exit_code == 2
     assert "--out: exists already" in one_line(result)
+    assert "say --replace" in result.stderr
     (here / "out" / "notes.txt").write_text("mine")
     result = run("solve", "wire.toml", "--out", "out", "--replace")
     assert result.exit_code == 2
@@ -247,6 +248,7 @@ def test_a_read_only_place_is_refused_before_solving(here: Path, monkeypatch: py
         result = run(*words)
         assert result.exit_code == 2
         assert "Read-only file system" in one_line(result)
+        assert "probe" not in result.stderr
     assert left(here) == ["wire.toml"]
 
 
@@ -277,6 +279,20 @@ def test_an_interrupted_write_keeps_the_last_result(here: Path, monkeypatch: pyt
     assert (result.exit_code, result.stdout) == (130, "")
     assert left(here / "results") == ["wire"]
     assert (here / "results" / "wire" / "result.json").read_bytes() == before
+
+
+def test_an_interruption_is_one_line(here: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    fail_with(monkeypatch, KeyboardInterrupt())
+    result = run("solve", "wire.toml")
+    assert (result.exit_code, result.stdout, result.stderr) == (130, "", "wiresolve: interrupted\n")
+
+
+def test_notes_beside_the_last_result_stay(here: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    answer_with(monkeypatch, lambda: core_shell_result(1))
+    run("solve", "wire.toml", "--no-figures")
+    (here / "results" / "wire" / "notes.txt").write_text("mine")
+    assert run("solve", "wire.toml", "--no-figures").exit_code == 0
+    assert (here / "results" / "wire" / "notes.txt").read_text() == "mine"
 
 
 def test_missed_accuracy_is_code_5_and_marked(here: Path, monkeypatch: pytest.MonkeyPatch) -> None:
@@ -320,6 +336,22 @@ def test_mesh_writes_the_section(here: Path) -> None:
     assert run("mesh", "wire.toml", "--out", "results/wire.mesh.vtu").exit_code == 2
     assert run("mesh", "wire.toml", "--out", "results/wire.mesh.vtu", "--replace").exit_code == 0
     assert run("mesh", "wire.toml", "--out", "results").exit_code == 2
+
+
+def test_a_mesh_never_takes_the_place_of_what_is_no_mesh(here: Path) -> None:
+    (here / "notes.txt").write_text("mine")
+    os.link(here / "wire.toml", here / "same.vtu")
+    for out, says in (
+        ("wire.toml", "is the input file itself"),
+        ("./same.vtu", "is the input file itself"),
+        ("notes.txt", "is no .vtu file"),
+    ):
+        for extra in ((), ("--replace",)):
+            result = run("mesh", "wire.toml", "--out", out, *extra)
+            assert result.exit_code == 2
+            assert says in one_line(result)
+    assert (here / "wire.toml").read_text() == GOOD
+    assert (here / "notes.txt").read_text() == "mine"
 
 
 def test_check_prints_units_and_solves_nothing(here: Path, monkeypatch: pytest.MonkeyPatch) -> None:

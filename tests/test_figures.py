@@ -6,6 +6,7 @@ import subprocess
 import sys
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
@@ -15,7 +16,8 @@ from PIL import Image
 from tests.synthetic import CORE_NM, RADIUS_NM, core_shell_result, round_mesh, round_modes
 from wiresolve.describe.problem import Carriers
 from wiresolve.output import figures
-from wiresolve.output.raster import edges, outline, raster
+from wiresolve.output.raster import edges, outline, outlines, raster
+from wiresolve.output.tables import subband_table
 from wiresolve.units import CONDUCTANCE_QUANTUM_SIEMENS
 
 
@@ -102,6 +104,118 @@ def test_a_pair_is_drawn_as_two_and_counted_as_four() -> None:
     texts = [text.get_text() for text in ladder.texts if "±" in text.get_text()]
     assert [text.split()[-1] for text in texts] == ["(×2)", "(×4)"]
     assert len(ladder.patches) == 3
+
+
+def words(axes: Any) -> list[str]:
+    return [text.get_text() for text in axes.texts]
+
+
+def test_titles_of_modes_have_the_bars_of_the_table() -> None:
+    result = core_shell_result(2)
+    sharp = replace(result, subbands=tuple(replace(s, error_eV=3e-9) for s in result.subbands))
+    table = subband_table(sharp)[2:]
+    for axes, row in zip(figures.modes(sharp).axes, table, strict=True):
+        energy = axes.get_title().splitlines()[1].removesuffix(" meV")
+        assert energy.endswith("± 0.000004") or energy.endswith("± 0.000003")
+        assert energy in row
+
+
+def test_a_long_bar_of_kT_is_cut_and_says_so() -> None:
+    """The levels span 35 meV: kT is 0.36 meV at 4.2 K, 6.6 meV at 77 K, 51.7 meV at 600 K (8.617333e-5 eV/K)."""
+    result = core_shell_result(3)
+    hot = replace(result, problem=replace(result.problem, carriers=Carriers(temperature_K=(4.2, 77.0, 600.0))))
+    ladder = figures.levels(hot).axes[0]
+    low, top = ladder.get_ylim()
+    kelvin = [word for word in words(ladder) if "kT" in word]
+    assert kelvin == ["kT at 77 K", "kT at 600 K, longer than shown", "too short to draw: kT at 4.2 K"]
+    bars = [line.get_ydata() for line in ladder.lines if line.get_linewidth() == 3]
+    assert [bars[0][0], bars[0][1] - bars[0][0]] == pytest.approx([1e3 * result.energies_eV[0], 6.635347], rel=1e-5)
+    assert low < bars[1][0] < bars[1][1] <= top
+    heads = [line for line in ladder.lines if line.get_marker() == "^"]
+    assert [line.get_ydata()[0] for line in heads] == [bars[1][1]]
+    for text in ladder.texts:
+        box = text.get_window_extent()
+        assert box.y1 <= ladder.title.get_window_extent().y0
+
+
+def test_labels_of_the_dispersion_stay_in_the_frame_and_have_lines() -> None:
+    result = core_shell_result(30)
+    figure = figures.dispersion(result)
+    axes = figure.axes[0]
+    frame = axes.get_window_extent()
+    labels = [text for text in axes.texts if text.get_text().isdigit()]
+    assert labels
+    heights = sorted(text.get_window_extent().y0 for text in labels)
+    for text in labels:
+        box = text.get_window_extent()
+        assert frame.y0 - 1 <= box.y0 and box.y1 <= frame.y1 + 1 and box.x1 <= figure.bbox.x1
+    assert min(np.diff(heights), default=99) > 0.8 * 7 / 72 * figure.dpi
+    curves = [line for line in axes.lines if len(line.get_xdata()) > 3]
+    looks = {
+        (s.level, line.get_color(), str(line._dash_pattern)) for s, line in zip(result.subbands, curves, strict=True)
+    }
+    assert len(looks) == len({look[1:] for look in looks}) == len({s.level for s in result.subbands})
+
+
+def test_the_dispersion_is_cut_where_levels_would_run_together() -> None:
+    result = core_shell_result(6)
+    k = np.linspace(0, 6.0, 61)
+    wide = replace(result.dispersion, k_per_nm=k, energy_eV=result.energies_eV[:, None] + 0.57 * k**2)
+    axes = figures.dispersion(replace(result, dispersion=wide)).axes[0]
+    assert axes.get_xlim()[1] < 1.5
+    assert axes.get_xlabel().endswith("(1/nm)") and axes.get_ylabel() == "Energy (meV)"
+
+
+@pytest.mark.parametrize(("fermi_eV", "seen"), [(0.05, True), (-3.0, False), (9.0, False), (None, False)])
+def test_the_fermi_level_is_marked(fermi_eV: float | None, seen: bool) -> None:
+    result = core_shell_result(6)
+    carriers = replace(result.problem.carriers, fermi_level_eV=fermi_eV)
+    result = replace(result, problem=replace(result.problem, carriers=carriers))
+    for draw, along in ((figures.conductance, "x"), (figures.dispersion, "y")):
+        axes = draw(result).axes[0]
+        said = [word for word in words(axes) if "Fermi" in word]
+        dashed = [
+            getattr(line, f"get_{along}data")()
+            for line in axes.lines
+            if line.get_linewidth() == 0.6 and line.is_dashed()
+        ]
+        if seen:
+            assert said == ["Fermi level"]
+            assert [list(ends) for ends in dashed] == [[50.0, 50.0]]
+        else:
+            assert dashed == []
+            assert said == [] if fermi_eV is None else said[0].startswith(f"Fermi level {1e3 * fermi_eV:.4g} meV")
+
+
+def test_energies_are_in_meV() -> None:
+    result = core_shell_result(6)
+    for draw, name in ((figures.density_of_states, "Energy (meV)"), (figures.conductance, "Fermi level (meV)")):
+        axes = draw(result).axes[0]
+        assert axes.get_xlabel() == name
+        low, high = axes.get_xlim()
+        assert low < 1e3 * result.energies_eV[0] < 1e3 * result.energies_eV[-1] < high
+    # The area under the curve is the number of states a nm, whatever the unit.
+    data = result.density_of_states
+    stairs = figures.density_of_states(result).axes[0].patches[0].get_data()
+    area = np.sum(stairs.values * np.diff(stairs.edges))
+    assert area == pytest.approx(np.sum(data.per_eV_nm * np.diff(data.edges_eV)), rel=1e-12)
+
+
+def test_a_material_that_goes_on_outside_fills_the_frame() -> None:
+    result = core_shell_result(1)
+    regions = tuple(replace(r, name="outside") if r.name == "layer 1" else r for r in result.mesh.regions)
+    open_mesh = replace(result.mesh, regions=regions)
+    rim = outlines(result.mesh, edges(result.mesh))
+    assert np.hypot(*rim.reshape(-1, 2).T).max() == pytest.approx(RADIUS_NM, rel=1e-6)
+    kept = outlines(open_mesh, edges(open_mesh))
+    assert np.hypot(*kept.reshape(-1, 2).T) == pytest.approx(CORE_NM, rel=1e-5)
+    figure = figures.section(replace(result, mesh=open_mesh))
+    figure.canvas.draw()
+    image = np.asarray(figure.canvas.buffer_rgba())
+    axes = figure.axes[0].get_window_extent()
+    corner = image[image.shape[0] - round(axes.y0) - 6, round(axes.x0) + 5, :3]
+    # Beyond the rim of the mesh, and coloured all the same.
+    assert (corner < 250).any()
 
 
 def test_one_subband_and_many(tmp_path: Path) -> None:

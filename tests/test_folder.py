@@ -45,7 +45,7 @@ def test_an_old_result_is_replaced_only_when_told(tmp_path: Path) -> None:
     target = tmp_path / "wire"
     folder.write(core_shell_result(1), target, figures=False)
     old = (target / "result.json").read_bytes()
-    with pytest.raises(InputError, match="exists already"):
+    with pytest.raises(InputError, match=r"folder: exists already.*pass replace=True"):
         folder.write(core_shell_result(2), target, figures=False)
     assert (target / "result.json").read_bytes() == old
     folder.write(core_shell_result(2), target, replace=True, figures=False)
@@ -132,6 +132,53 @@ def test_the_old_result_comes_back_when_the_new_one_cannot_be_renamed(
     assert len(calls) == 3
     assert names(tmp_path) == ["wire"]
     assert len(json.loads((target / "result.json").read_text())["subbands"]) == 1
+
+
+def keep_own(target: Path) -> dict[str, str]:
+    """Put a user's own files beside a result, among its figures too."""
+    own = {"notes.txt": "mine", "scripts/fit.py": "mine too", "figures/poster.png": "drawn by hand", ".hidden": ""}
+    for name, text in own.items():
+        (target / name).parent.mkdir(exist_ok=True)
+        (target / name).write_text(text)
+    return own
+
+
+@pytest.mark.parametrize("drawn", [True, False])
+def test_a_users_own_files_outlive_the_result(tmp_path: Path, drawn: bool) -> None:
+    assert set(folder.DRAWN) == set(figures.FIGURES)
+    target = tmp_path / "wire"
+    folder.write(core_shell_result(1), target)
+    own = keep_own(target)
+    folder.write(core_shell_result(2), target, replace=True, figures=drawn)
+    assert {name: (target / name).read_text() for name in own} == own
+    assert len(json.loads((target / "result.json").read_text())["subbands"]) == 2
+    assert len(names(target / "figures")) == 1 + 2 * len(figures.FIGURES) * drawn
+    assert names(tmp_path) == ["wire"]
+
+
+@pytest.mark.parametrize("failing", range(1, 7))
+@pytest.mark.parametrize("fault", [OSError(errno.EIO, "input/output error"), KeyboardInterrupt()])
+def test_a_users_own_files_outlive_a_failure(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, failing: int, fault: BaseException
+) -> None:
+    target = tmp_path / "wire"
+    folder.write(core_shell_result(1), target, figures=False)
+    own = keep_own(target)
+    rename, calls = os.replace, []
+
+    def one_fails(source: Path, to: Path) -> None:
+        calls.append(to)
+        if len(calls) == failing:
+            raise fault
+        rename(source, to)
+
+    monkeypatch.setattr(os, "replace", one_fails)
+    # Two renames of folders, and one for each of four entries.
+    with pytest.raises(InputError if isinstance(fault, OSError) else KeyboardInterrupt):
+        folder.write(core_shell_result(2), target, replace=True, figures=False)
+    assert {name: (target / name).read_text() for name in own} == own
+    assert len(json.loads((target / "result.json").read_text())["subbands"]) == 1
+    assert names(tmp_path) == ["wire"]
 
 
 def test_looking_at_a_target_leaves_no_trace(tmp_path: Path) -> None:

@@ -19,6 +19,7 @@ from wiresolve.describe.wirefile import read
 from wiresolve.output.tables import (
     from_memory,
     result_json,
+    significant,
     step_table,
     subband_table,
     subbands_csv,
@@ -27,6 +28,7 @@ from wiresolve.output.tables import (
 )
 from wiresolve.solve import solve
 
+STEP = {"opens_at_eV": 0.02, "opens_error_eV": 1e-5, "kind": "plateau", "contrast": 0.95}
 GEOMETRIES = Path(__file__).parents[1] / "geometries"
 
 
@@ -104,10 +106,46 @@ def test_spacings_stand_between_levels_in_meV_and_kT() -> None:
     # Subbands 2 and 3 are a pair: only the second carries the spacing to level 3.
     pair = [row.split() for row in rows[1:3]]
     gap_meV = 1e3 * (result.energies_eV[3] - result.energies_eV[2])
-    assert pair[0][5:] == ["0.0670", "core", "2", "x", "1"]
+    assert pair[0][5:] == ["0.0670", "core", "(GaAs)", "2", "x", "1"]
     assert float(pair[1][5]) == pytest.approx(gap_meV, rel=1e-3)
     # kT at 77 K is 6.6353 meV (CODATA: 8.617333e-5 eV/K times 77 K).
     assert float(pair[1][7]) == pytest.approx(gap_meV / 6.635347, rel=5e-3)
+
+
+@pytest.mark.parametrize(
+    ("value", "text"),
+    [
+        (9.996, "10.0"),
+        (7.6349, "7.63"),
+        (10.0, "10.0"),
+        (2763.4, "2760"),
+        (0.0120004, "0.0120"),
+        (99.96, "100"),
+        (0.0, "0"),
+    ],
+)
+def test_three_digits_everywhere(value: float, text: str) -> None:
+    assert significant(value, 3) == text
+
+
+def test_more_than_three_temperatures_are_in_the_file_only() -> None:
+    result = core_shell_result(3)
+    carriers = replace(result.problem.carriers, temperature_K=(0.0, 4.2, 20.0, 77.0, 150.0, 300.0))
+    steps = [
+        {"temperature_K": t, "levels": [dict.fromkeys(("level", "height_G0", "plateau_G0"), 1) | STEP]}
+        for t in carriers.temperature_K
+    ]
+    many = replace(
+        result,
+        problem=replace(result.problem, carriers=carriers),
+        verdict=replace(result.verdict, steps=tuple(steps)),
+    )
+    lines = subband_table(many)
+    assert [part.split(" K")[0] for part in lines[1].split("kT at ")[1:]] == ["4.2", "20", "77"]
+    assert lines[-1] == "and 2 more temperatures, see result.json"
+    assert step_table(many)[0].split()[5:] == ["at", "0", "K", "at", "4.2", "K", "at", "20", "K"]
+    assert step_table(many)[-1] == "and 3 more temperatures, see result.json"
+    assert not [line for line in subband_table(result) if "result.json" in line]
 
 
 def test_a_long_table_is_cut_and_says_so() -> None:

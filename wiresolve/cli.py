@@ -50,6 +50,13 @@ class _Program(click.Group):
             code = _explain(fault, debug)
         sys.exit(code if isinstance(code, int) else 0)
 
+    def invoke(self, ctx: click.Context) -> Any:
+        try:
+            return super().invoke(ctx)
+        except KeyboardInterrupt as fault:
+            # Left to itself, click prints an empty line for it.
+            raise click.Abort from fault
+
 
 def _explain(fault: BaseException, debug: bool) -> int:
     """Print the line for what stopped a command, and return its exit code."""
@@ -189,7 +196,7 @@ _file = click.argument("file", type=click.Path(path_type=Path))
 @program.command()
 @_file
 @click.option("--out", type=click.Path(path_type=Path), help="Folder for the result [default: results/NAME].")
-@click.option("--replace", is_flag=True, help="Replace an older result in --out.")
+@click.option("--replace", is_flag=True, help="Replace an older result in --out; other files there stay.")
 @click.option("--accuracy", metavar="ENERGY", help='Wanted error of each energy, e.g. "0.1 meV", over the file\'s.')
 @click.option("--json", "as_json", is_flag=True, help="Print result.json instead of the verdict and the table.")
 @click.option("--quiet", is_flag=True, help="Print nothing but errors (and what --json asks for).")
@@ -253,7 +260,7 @@ def _judged(result: Result, strict: bool) -> tuple[int, list[str]]:
 @program.command()
 @_file
 @click.option("--out", type=click.Path(path_type=Path), help="VTU file for the mesh [default: results/NAME.mesh.vtu].")
-@click.option("--replace", is_flag=True, help="Replace the file named by --out.")
+@click.option("--replace", is_flag=True, help="Replace the .vtu file named by --out.")
 def mesh(file: Path, out: Path | None, replace: bool) -> int:
     """Mesh a wire's section and write the mesh for ParaView.
 
@@ -263,7 +270,8 @@ def mesh(file: Path, out: Path | None, replace: bool) -> int:
     from wiresolve.output.vtk import write_section
 
     problem = _read(file)
-    target = check_file(out or Path("results") / f"{file.stem}.mesh.vtu", replace=replace or out is None, field="--out")
+    wanted = out or Path("results") / f"{file.stem}.mesh.vtu"
+    target = check_file(wanted, replace=replace or out is None, field="--out", suffix=".vtu", source=file)
     from wiresolve.physics.section_mesh import mesh as mesh_of
 
     with _progress(True) as report:

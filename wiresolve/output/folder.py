@@ -16,6 +16,8 @@ from wiresolve.output import tables, vtk
 from wiresolve.result import Result
 
 INPUT, RESULT, SUBBANDS, MODES, FIGURES = "input.toml", "result.json", "subbands.csv", "modes.vtu", "figures"
+DRAWN = ("section", "modes", "levels", "density_of_states", "dispersion", "conductance")
+"""Names of the figures, known here without loading what draws them."""
 
 
 def write(
@@ -30,7 +32,8 @@ def write(
     """Write a result into a folder: `input.toml`, `result.json`, `subbands.csv`, `modes.vtu` and `figures/`.
 
     Everything goes into a fresh hidden folder beside the target, which is then renamed; whatever stops it on the way
-    leaves no part of a result, and an older one as it was.
+    leaves no part of a result, and an older one as it was. What else lies in the folder of an older result (notes, a
+    script, a picture of one's own under `figures`) goes over into the new one.
 
     Parameters
     ----------
@@ -80,37 +83,63 @@ def check_target(folder: str | Path, *, replace: bool, field: str = "folder") ->
             if not target.is_dir():
                 raise InputError(field, "is a file, and a result is a folder", str(path), "give another name")
             if not replace:
-                raise InputError(field, "exists already", str(path), "give another name, or say --replace")
+                raise InputError(field, "exists already", str(path), _how_to_replace(field))
             if any(target.iterdir()) and not ((target / RESULT).is_file() and (target / INPUT).is_file()):
                 raise InputError(
                     field, "exists and holds no result, so it is not replaced", str(path), "give another name"
                 )
-        place = next(p for p in target.parents if p.exists())
-        if not place.is_dir():
-            raise InputError(field, f"cannot be made, {place} is a file", str(path), "give another name")
-        # Asking for permissions does not see every read-only disk; making a folder does.
-        probe = _beside(place / target.name, "probe")
-        probe.mkdir()
-        probe.rmdir()
+        _try_place(target, path, field)
     return target
 
 
-def check_file(path: str | Path, *, replace: bool, field: str = "path") -> Path:
-    """The absolute path of a single file that can be written.
+def check_file(
+    path: str | Path, *, replace: bool, field: str = "path", suffix: str = "", source: str | Path | None = None
+) -> Path:
+    """The absolute path of a single file that can be written; nothing is left behind by looking.
+
+    Parameters
+    ----------
+    path : the file.
+    replace : whether it may be there already.
+    field : what an error calls it.
+    suffix : how the name of a file ends that may be replaced at all, like ".vtu"; any where empty.
+    source : a file that is read, hence never written.
 
     Raises
     ------
     InputError
-        It exists and is not to be replaced, is a folder, or cannot be written there.
+        It exists and is not to be replaced, is a folder, is `source`, or cannot be written there.
     """
-    with _readable(Path(path), field):
-        target = Path(path).resolve()
+    given = Path(path)
+    with _readable(given, field):
+        target = given.resolve()
         if target.is_dir():
             raise InputError(field, "is a folder, and a file is wanted", str(path), "give another name")
-        if target.exists() and not replace:
-            raise InputError(field, "exists already", str(path), "give another name, or say --replace")
-    check_target(target.parent / _beside(target, "probe").name, replace=False, field=field)
+        if target.exists():
+            if source is not None and target.samefile(source):
+                raise InputError(field, "is the input file itself", str(path), "give another name")
+            if suffix and target.suffix.lower() != suffix:
+                rule = f"exists and is no {suffix} file, so it is not replaced"
+                raise InputError(field, rule, str(path), "give another name")
+            if not replace:
+                raise InputError(field, "exists already", str(path), _how_to_replace(field))
+        _try_place(target, given, field)
     return target
+
+
+def _how_to_replace(field: str) -> str:
+    """What to say to whoever typed an option, or called a function."""
+    return f"give another name, or {'say --replace' if field.startswith('--') else 'pass replace=True'}"
+
+
+def _try_place(target: Path, given: Path, field: str) -> None:
+    """Make and remove a folder beside `target`: asking for permissions does not see every read-only disk."""
+    place = next(p for p in target.parents if p.exists())
+    if not place.is_dir():
+        raise InputError(field, f"cannot be made, {place} is a file", str(given), "give another name")
+    probe = _beside(place / target.name, "probe")
+    probe.mkdir()
+    probe.rmdir()
 
 
 def _beside(target: Path, purpose: str) -> Path:
@@ -161,18 +190,39 @@ def _parents(target: Path) -> Iterator[None]:
 
 
 def _put_in_place(fresh: Path, target: Path) -> None:
+    """Rename `fresh` to `target`, with the user's own entries of the folder that was there; undone on failure.
+
+    Those entries are never in a folder that gets removed: they leave the old one last, and return to it first.
+    """
     old = _beside(target, "old")
-    moved = False
+    own: list[Path] = []
     try:
         if target.exists():
+            own = _own_entries(target)
             os.replace(target, old)
-            moved = True
         os.replace(fresh, target)
+        for entry in own:
+            (target / entry).parent.mkdir(exist_ok=True)
+            os.replace(old / entry, target / entry)
     except BaseException:
-        if moved and not target.exists():
+        if old.exists():
+            for entry in own:
+                if not os.path.lexists(old / entry):
+                    os.replace(target / entry, old / entry)
+            if target.exists():
+                os.replace(target, fresh)
             os.replace(old, target)
         raise
     shutil.rmtree(old, ignore_errors=True)
+
+
+def _own_entries(folder: Path) -> list[Path]:
+    """Relative paths of what lies in a result folder and is none of what this program writes there."""
+    own = [Path(p.name) for p in folder.iterdir() if p.name not in (INPUT, RESULT, SUBBANDS, MODES, FIGURES)]
+    drawn, pictures = {f"{name}.{kind}" for name in DRAWN for kind in ("png", "svg")}, folder / FIGURES
+    if pictures.is_dir() and not pictures.is_symlink():
+        own += [Path(FIGURES, p.name) for p in pictures.iterdir() if p.name not in drawn]
+    return own
 
 
 @contextmanager

@@ -91,6 +91,25 @@ def outline(found: Edges, region: int) -> list[Array]:
     return loops
 
 
+def outermost(found: Edges, region: int) -> tuple[list[Array], int]:
+    """The loops around a region, and which of them is the outermost."""
+    loops = outline(found, region)
+    return loops, max(range(len(loops)), key=lambda n: float(loops[n][:, 0].max()))
+
+
+def outlines(mesh: Mesh, found: Edges) -> Array:
+    """Polylines between regions and around them; where a material goes on outside, the end of its mesh is none."""
+    drawn = found.on_outline
+    for number, region in enumerate(mesh.regions):
+        if region.name == "outside" and (found.regions == number).any():
+            loops, last = outermost(found, number)
+            rim = set(map(tuple, loops[last].tolist()))
+            bordering = (found.regions == number).any(axis=1) & (found.regions == -1).any(axis=1)
+            ends = [all(tuple(p) in rim for p in line[[0, -1]].tolist()) for line in found.lines]
+            drawn = drawn & ~(bordering & np.array(ends))
+    return found.lines[drawn]
+
+
 @dataclass(frozen=True, eq=False)
 class Raster:
     """Where the pixels of an image lie in a mesh.

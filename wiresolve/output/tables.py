@@ -24,6 +24,8 @@ WIDTH = 96
 """Characters a line that running text is wrapped to."""
 MOST_ROWS = 40
 """Subbands that the printed table shows; `subbands.csv` has all."""
+MOST_TEMPERATURES = 3
+"""Temperatures that the printed tables have columns for; `result.json` has all."""
 
 
 def with_bar(value: float, bar: float) -> str:
@@ -41,6 +43,16 @@ def with_bar(value: float, bar: float) -> str:
         if half <= 1.5 * bar:
             break
     return f"{shown:.{decimals}f} ± {half:.{decimals}f}"
+
+
+def significant(value: float, digits: int) -> str:
+    """A number rounded to so many significant digits, trailing zeros kept, never with an exponent."""
+    if value == 0 or not math.isfinite(value):
+        return f"{value:g}"
+    # Rounded first, since that may bring a digit more in front: 9.996 is 10.0 and not 10.00.
+    rounded = float(f"{value:.{digits - 1}e}")
+    decimals = digits - 1 - math.floor(math.log10(abs(rounded)))
+    return f"{rounded:.{max(0, decimals)}f}"
 
 
 def levels(subbands: Sequence[Subband]) -> list[list[Subband]]:
@@ -181,9 +193,12 @@ def subband_table(result: Result) -> list[str]:
     """The subbands as aligned lines, a header of two lines first.
 
     At most the first `MOST_ROWS` are shown. The spacing to the next level stands at a level's last entry, in meV and
-    in kT of each carrier temperature; the last level of the list has none.
+    in kT of the first `MOST_TEMPERATURES` carrier temperatures; the last level of the list has none. A layer is shown
+    with its material.
     """
-    temperatures = [t for t in result.problem.carriers.temperature_K if t > 0]
+    warm = [t for t in result.problem.carriers.temperature_K if t > 0]
+    temperatures = warm[:MOST_TEMPERATURES]
+    material = {region.name: region.material for region in result.mesh.regions}
     asked_bound = any(s.bound is not None for s in result.subbands)
     head = ["", "", "energy", "to the next", *("to the next" for _ in temperatures), "axial", "", "spin x"]
     unit = ["subband", "level", "meV", "meV", *(f"kT at {t:g} K" for t in temperatures), "mass", "layer", "valley"]
@@ -197,26 +212,39 @@ def subband_table(result: Result) -> list[str]:
         for s in group:
             shown = spacing if s is group[-1] else None
             row = [str(s.index), str(s.level), next(energies)]
-            row.append("" if shown is None else f"{1e3 * shown:.4g}")
-            row += ["" if shown is None else f"{shown / (KB * t):.3g}" for t in temperatures]
+            row.append("" if shown is None else significant(1e3 * shown, 4))
+            row += ["" if shown is None else significant(shown / (KB * t), 3) for t in temperatures]
             row.append("none" if s.axial_mass is None else f"{s.axial_mass:.4f}")
-            row += [s.layer, f"{s.spin_degeneracy} x {s.valley_degeneracy}"]
+            layer = f"{s.layer} ({material[s.layer]})" if s.layer in material else s.layer
+            row += [layer, f"{s.spin_degeneracy} x {s.valley_degeneracy}"]
             if asked_bound:
                 row.append({True: "yes", False: "no", None: ""}[s.bound])
             rows.append(row)
     lines = aligned(rows[: MOST_ROWS + 2], left={5 + len(temperatures)})
     hidden = len(result.subbands) - MOST_ROWS
-    return [*lines, f"and {hidden} more, see subbands.csv"] if hidden > 0 else lines
+    if hidden > 0:
+        lines.append(f"and {hidden} more, see subbands.csv")
+    if more := _left_out(warm):
+        lines.append(more)
+    return lines
+
+
+def _left_out(temperatures: Sequence[float]) -> str:
+    count = len(temperatures) - MOST_TEMPERATURES
+    plural = "" if count == 1 else "s"
+    return f"and {count} more temperature{plural}, see result.json" if count > 0 else ""
 
 
 def step_table(result: Result) -> list[str]:
     """The conductance steps as aligned lines, one a level: where each opens, its height, and whether it is seen.
 
-    For each temperature: plateau, shoulder or merged, with the contrast in per cent. Empty where there are no steps.
+    For each of the first `MOST_TEMPERATURES`: plateau, shoulder or merged, with the contrast in per cent. Empty where
+    there are no steps.
     """
     if not result.verdict.steps:
         return []
-    temperatures = [f"at {entry['temperature_K']:g} K" for entry in result.verdict.steps]
+    entries = result.verdict.steps[:MOST_TEMPERATURES]
+    temperatures = [f"at {entry['temperature_K']:g} K" for entry in entries]
     rows = [
         ["step", "opens at", "height", "then", *temperatures],
         ["level", "meV", "G0", "G0", *("" for _ in temperatures)],
@@ -224,11 +252,13 @@ def step_table(result: Result) -> list[str]:
     for number, first in enumerate(result.verdict.steps[0]["levels"][:MOST_ROWS]):
         row = [str(first["level"]), with_bar(1e3 * first["opens_at_eV"], 1e3 * first["opens_error_eV"])]
         row += [f"{first['height_G0']:g}", f"{first['plateau_G0']:g}"]
-        for entry in result.verdict.steps:
+        for entry in entries:
             step = entry["levels"][number]
             row.append(step["kind"] + ("" if step["contrast"] is None else f" {math.floor(100 * step['contrast'])} %"))
         rows.append(row)
-    return aligned(rows, left=range(4, 4 + len(temperatures)))
+    lines = aligned(rows, left=range(4, 4 + len(temperatures)))
+    more = _left_out([entry["temperature_K"] for entry in result.verdict.steps])
+    return [*lines, more] if more else lines
 
 
 def from_memory(result: Result) -> str:
