@@ -69,7 +69,28 @@ CASES: dict[str, tuple[str, str, tuple[str, ...]]] = {
     "outline": (CIRCLE, 'shape = "outline"\nfile = "a.csv"', ("section.shape", "later version")),
     "mesh": (CIRCLE, 'shape = "mesh"', ("section.shape", "later version")),
     "bare number": ('"10 nm"', "10", ("section.diameter", "needs its unit", 'diameter = "10 nm"')),
-    "bare energy": ('"0.1 meV"', "0.1", ("accuracy.energy", 'energy = "0.1 eV"')),
+    "bare energy": ('"0.1 meV"', "0.1", ("accuracy.energy", 'energy = "0.1 meV"')),
+    "unitless accuracy": ('"0.1 meV"', '"0.1"', ("accuracy.energy", 'energy = "0.1 meV"')),
+    "accuracy in nm": ('"0.1 meV"', '"0.1 nm"', ("accuracy.energy", 'energy = "0.1 meV"')),
+    "bare Fermi level": ("subbands", "fermi_level = 0.1\nsubbands", ("accuracy.fermi_level", "[carriers]")),
+    "decimal comma": ('"10 nm"', '"20,5 nm"', ("section.diameter", "decimal point", 'diameter = "20.5 nm"')),
+    "length in um": ('"10 nm"', '"20 um"', ("section.diameter", "got '20 um'", "10000 nm")),
+    "layer in um": ('"2 nm"', '"0.6 um"', ("section.layers[1].thickness", "got '0.6 um'")),
+    "temperature in mK": ('"300 K"', '["4 K", "3e6 mK"]', ("carriers.temperature", "got '3e6 mK'")),
+    "layers at the top": ("[[section.layers]]", "[[layers]]", ("layers: ", "write [[section.layers]]")),
+    "patches at the top": ("[[section.layers]]", "[[patches]]", ("patches: ", "write [[section.patches]]")),
+    "radius": ("diameter =", "radius =", ("section.radius", "did you mean 'diameter'? (twice the radius)")),
+    "size of a circle": ("diameter =", "size =", ("section.size", "did you mean 'diameter'?")),
+    "width of a circle": ("diameter =", "width =", ("section.width", "did you mean 'diameter'?")),
+    "diameter of a hexagon": (
+        '"circle"',
+        '"hexagon"',
+        ("section.diameter", "did you mean 'across_flats' or 'across_corners'?"),
+    ),
+    "title in a table": (CIRCLE, f'{CIRCLE}\ntitle = "late"', ("section.title", "above the first table")),
+    "temp": ("temperature =", "temp =", ("carriers.temp", "did you mean 'temperature'?")),
+    "mass": ("electron_mass", "mass", ("materials.probe.mass", "did you mean 'electron_mass'?")),
+    "the start of a key": ("[accuracy]", "fermi = 3\n[accuracy]", ("carriers.fermi", "did you mean 'fermi_level'?")),
     "missing unit": ('"10 nm"', '"10"', ("section.diameter", "unit is missing")),
     "wrong unit": ('"10 nm"', '"10 eV"', ("section.diameter", "must be a length", "unit of energy")),
     "unknown unit": ('"10 nm"', '"10 parsec"', ("section.diameter", "'parsec'", "nm")),
@@ -181,6 +202,11 @@ def refusal(text: str, name: str = "wire.toml") -> str:
     assert len(message) < 600
     assert message.isprintable()  # hence one line
     return message
+
+
+@pytest.mark.parametrize("key", ["glow", "colour", "note", "rim", "edge", "mesh_size"])
+def test_nothing_far_off_is_guessed(key: str) -> None:
+    assert "did you mean" not in refusal(GOOD.replace(CIRCLE, f"{CIRCLE}\n{key} = 1"))
 
 
 def test_the_good_file_is_good() -> None:

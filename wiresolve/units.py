@@ -35,8 +35,8 @@ def _inverse(lengths: Mapping[str, str], power: int) -> dict[str, str]:
     return found
 
 
-_LENGTHS = {"nm": "1", "pm": "1e-3", "Angstrom": "0.1", "um": "1e3", "\u00b5m": "1e3", "\u03bcm": "1e3"}
-_LENGTHS |= {"mm": "1e6", "cm": "1e7", "m": "1e9"}
+_LENGTHS = {"nm": "1", "pm": "1e-3", "Angstrom": "0.1", "angstrom": "0.1", "um": "1e3", "\u00b5m": "1e3"}
+_LENGTHS |= {"\u03bcm": "1e3", "mm": "1e6", "cm": "1e7", "m": "1e9"}
 _INVERSE_FROM = {name: _LENGTHS[name] for name in ("nm", "um", "cm", "m")}
 
 UNITS: Mapping[str, Mapping[str, str]] = MappingProxyType(
@@ -56,43 +56,51 @@ UNITS: Mapping[str, Mapping[str, str]] = MappingProxyType(
 )
 """Spellings of the units of each dimension, with the factor to the internal unit (the first one; angles in degrees)."""
 _SAMPLES = {
-    "length": "10 nm", "energy": "0.1 meV", "temperature": "77 K", "angle": "15 deg", "electric field": "0.01 V/nm",
+    "length": "10 nm", "energy": "0.1 eV", "temperature": "77 K", "angle": "15 deg", "electric field": "0.01 V/nm",
     "voltage": "0.5 V", "wave number": "0.1 nm^-1", "line density": "1e6 cm^-1", "sheet density": "1e12 cm^-2",
     "density": "1e18 cm^-3",
 }  # fmt: skip
+_USUAL = {"accuracy.energy": "0.1 meV", "--accuracy": "0.1 meV", "harmonic.x": "5 meV", "harmonic.y": "5 meV"}
+"""Samples for fields whose usual unit is not that of their dimension."""
 _QUANTITY = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d{1,4})?)\s*(1/.*|[^\d\s].*)?", re.ASCII)
+_COMMA = re.compile(r"([+-]?\d+),(\d+(?:[eE][+-]?\d{1,4})?)\s*([^\d\s,.].*)?", re.ASCII)
 
 
 def parse_quantity(text: object, dimension: str, field: str) -> float:
     """Value of a text such as "6 nm" in the internal unit of its dimension (correctly rounded).
 
     Raises `InputError` for a bare number, a missing or wrong unit, a number that is not finite, or no text at all;
-    the message shows the spelling that is wanted.
+    the message shows the spelling that is wanted, as it has to be typed where `field` is an option ("--accuracy").
     """
-    units, sample = UNITS[dimension], _SAMPLES[dimension]
-    key = re.sub(r"\[\d+\]$", "", field.rsplit(".", 1)[-1])
-    spelled = f'write e.g. {key} = "{sample}"' if not field.endswith("]") else f'write e.g. "{sample}"'
-    a = "an" if dimension[0] in "aeiou" else "a"
+    units = UNITS[dimension]
+    sample = next((usual for end, usual in _USUAL.items() if field.endswith(end)), _SAMPLES[dimension])
+    usual_unit = sample.split()[1]
+    spelled, a = _spelled(field, sample), "an" if dimension[0] in "aeiou" else "a"
     if isinstance(text, int | float) and not isinstance(text, bool):
-        number = repr(text) if abs(text) < 1e30 else sample.split()[0]
-        unit = next(iter(units))
-        wanted = f'{key} = "{number} {unit}"' if not field.endswith("]") else f'"{number} {unit}"'
-        raise InputError(field, "a number needs its unit, as a text in quotes", text, f"write e.g. {wanted}")
+        wanted = _spelled(field, f"{text!r} {usual_unit}" if abs(text) < 1e30 else sample)
+        raise InputError(field, "a number needs its unit, as a text in quotes", text, wanted)
     if not isinstance(text, str):
         raise InputError(field, f"must be {a} {dimension} in quotes", text, spelled)
-    match = _QUANTITY.fullmatch(text.strip()) if len(text) <= 80 else None
+    short = text.strip() if len(text) <= 80 else ""
+    if comma := _COMMA.fullmatch(short):
+        before, after, unit = comma[1], comma[2], comma[3] if comma[3] in units else usual_unit
+        wanted = _spelled(field, f"{before}.{after} {unit}")
+        wanted += f' or "{before}{after} {unit}"' if len(after) == 3 else ""  # a comma between thousands, perhaps
+        raise InputError(field, "a decimal point is wanted, no comma", text, wanted)
+    match = _QUANTITY.fullmatch(short)
     if match is None:
         finite = "must be a finite number with a unit" if re.match(r"\s*[+-]?(nan|inf)", text, re.I) else ""
         raise InputError(field, finite or f"must be {a} {dimension}: a number and a unit", text, spelled)
     number, unit = match[1], match[2]
     if unit is None:
-        raise InputError(field, "the unit is missing", text, spelled)
+        raise InputError(field, "the unit is missing", text, _spelled(field, f"{number} {usual_unit}"))
     if unit not in units:
         other = next((name for name, known in UNITS.items() if unit in known), None)
         if other is not None:
             raise InputError(field, f"must be {a} {dimension}, but '{unit}' is a unit of {other}", text, spelled)
-        near = difflib.get_close_matches(unit[:20], units, n=2, cutoff=0.4)
-        known = " or ".join(near) if near else ", ".join(name for name in units if name.isascii())
+        names = [name for name in units if name != "angstrom"]
+        near = difflib.get_close_matches(unit[:20], names, n=2, cutoff=0.4)
+        known = " or ".join(near) if near else ", ".join(name for name in names if name.isascii())
         raise InputError(field, f"'{unit[:20]}' is no known unit of {dimension}", text, f"use {known}; {spelled}")
     value = float(Decimal(number) * Decimal(units[unit]))
     if not math.isfinite(value):
@@ -100,10 +108,28 @@ def parse_quantity(text: object, dimension: str, field: str) -> float:
     return value
 
 
+def _spelled(field: str, sample: str) -> str:
+    """What to write for a field: its key too in a wire file, as it is typed for an option, alone in a list."""
+    if field.startswith("--"):
+        return f'write e.g. {field} "{sample}"'
+    return f'write e.g. "{sample}"' if field.endswith("]") else f'write e.g. {field.rsplit(".", 1)[-1]} = "{sample}"'
+
+
+def same_quantity(one: str, other: str) -> bool:
+    """Whether two texts give one value to six digits, such as "20 um" and "20000 nm"."""
+    for dimension in UNITS:
+        try:
+            a, b = parse_quantity(one, dimension, ""), parse_quantity(other, dimension, "")
+        except InputError:
+            continue
+        return math.isclose(a, b, rel_tol=1e-5)
+    return False
+
+
 def format_quantity(value: float, dimension: str, unit: str | None = None, digits: int | None = None) -> str:
     """A text that `parse_quantity` reads back: exactly in the internal unit, or with `digits` digits in another one."""
     first = next(iter(UNITS[dimension]))
     if unit is None and digits is None:
-        return f"{value!r} {first}"
+        return f"{value + 0.0!r} {first}"  # -0.0 becomes 0.0: equal values have equal texts
     shown = value / float(UNITS[dimension][unit or first])
     return f"{shown:.{digits or 6}g} {unit or first}"

@@ -13,6 +13,8 @@ SHORTEST_nm, LONGEST_nm = 0.1, 1e4
 """Lengths of a section outside this range are refused: below an atom's size, or no wire."""
 THINNEST_nm = 0.05
 """Layers and corner radii below this are refused."""
+ALIKE, SHORTEST_START = 0.7, 4
+"""How alike a misspelt word must be to one that is proposed (1: equal), or how many of its first letters must stand."""
 
 
 def finite(field: str, value: object, remedy: str = "") -> float:
@@ -77,10 +79,20 @@ def choice(field: str, value: object, allowed: Iterable[str]) -> str:
 
 
 def nearest(given: object, allowed: Iterable[str], count: int = 3) -> str:
-    """A remedy that names the allowed words nearest to the given one, or an empty text."""
+    """A remedy that names the allowed words nearest to the given one, or an empty text.
+
+    Near are words that the given one begins ("fermi" of "fermi_level"), and words that differ in few letters.
+    """
     words = list(allowed)
     if not isinstance(given, str) or not words:
         return ""
-    by_lower = {w.lower(): w for w in words}
-    close = difflib.get_close_matches(given[:80].lower(), by_lower, n=count, cutoff=0.5)
-    return "did you mean " + " or ".join(f"'{by_lower[c]}'" for c in close) + "?" if close else ""
+    by_lower, start = {w.lower(): w for w in words}, given[:80].lower()
+    begun = [w for w in by_lower if len(start) >= SHORTEST_START and w.startswith(start)]
+    close = begun[:count] or difflib.get_close_matches(start, by_lower, n=count, cutoff=ALIKE)
+    return did_you_mean([by_lower[c] for c in close])
+
+
+def did_you_mean(words: Iterable[str]) -> str:
+    """A question that names the words; an empty text where there are none."""
+    named = " or ".join(f"'{word}'" for word in words)
+    return f"did you mean {named}?" if named else ""

@@ -6,8 +6,8 @@ from typing import Any
 
 from wiresolve.describe.materials import Material
 from wiresolve.describe.potential import Potential
-from wiresolve.describe.section import ADMITTED, HARD_WALL, Layer, Patch, Section
-from wiresolve.describe.shapes import Polygon, Shape
+from wiresolve.describe.section import HARD_WALL, Layer, Patch, Section
+from wiresolve.describe.shapes import Circle, Cornered, Polygon, Shape
 from wiresolve.units import format_quantity
 
 LENGTH_KEYS = {
@@ -42,10 +42,9 @@ def _of_shape(shape: Shape) -> dict[str, Any]:
             found[key] = format_quantity(value, "length")
     if isinstance(shape, Polygon):
         found |= {"unit": "nm", "points": [list(point) for point in shape.points_nm]}
-    radius = getattr(shape, "corner_radius_nm", 0.0)
-    if radius:
-        found["corner_radius"] = format_quantity(radius, "length")
-    if shape.rotation_deg:
+    if isinstance(shape, Cornered):
+        found["corner_radius"] = format_quantity(shape.corner_radius_nm, "length")
+    if not isinstance(shape, Circle):
         found["rotation"] = format_quantity(shape.rotation_deg, "angle")
     return found
 
@@ -63,8 +62,7 @@ def _of_patch(patch: Patch) -> dict[str, Any]:
 
 
 def _of_options(part: Layer | Patch) -> dict[str, Any]:
-    found = {} if part.carriers == ADMITTED else {"carriers": part.carriers}
-    return found | ({"offset": format_quantity(part.offset_eV, "energy")} if part.offset_eV else {})
+    return {"carriers": part.carriers, "offset": format_quantity(part.offset_eV, "energy")}
 
 
 def of_material(material: Material) -> dict[str, Any]:
@@ -81,8 +79,7 @@ def of_material(material: Material) -> dict[str, Any]:
         found["permittivity"] = material.permittivity
     if material.electron_affinity_eV is not None:
         found["electron_affinity"] = format_quantity(material.electron_affinity_eV, "energy")
-    if material.valley_degeneracy != 1:
-        found["valley_degeneracy"] = material.valley_degeneracy
+    found["valley_degeneracy"] = material.valley_degeneracy
     if material.source:
         found["source"] = material.source
     return found

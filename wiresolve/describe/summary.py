@@ -4,10 +4,11 @@ from __future__ import annotations
 
 import math
 
+from wiresolve.describe import drawing
 from wiresolve.describe.materials import Material
 from wiresolve.describe.plain import LENGTH_KEYS
 from wiresolve.describe.problem import Problem
-from wiresolve.describe.section import ADMITTED, Piece
+from wiresolve.describe.section import ADMITTED, VOID, Piece, Section
 from wiresolve.describe.shapes import Cornered, Polygon, Shape
 from wiresolve.units import KB, format_quantity
 
@@ -18,15 +19,14 @@ def describe(problem: Problem) -> list[tuple[str, str]]:
     pieces = section.pieces()
     by_name = {piece.name: piece for piece in pieces}
     rows = [("title", problem.title), ("section.shape", _shape(section.shape))]
+    rows += _whole(section)
     loop = section.shape.loop()
-    rows.append(
-        ("section.area", f"{loop.area:.6g} nm^2, as a circle of {2 * math.sqrt(loop.area / math.pi):.6g} nm diameter")
-    )
-    rows.append(("section.perimeter", _nm(loop.perimeter)))
-    rows.append(("section.smallest_feature", _nm(section.shape.smallest_feature_nm)))
+    rows.append(("section.core.area", _area(loop.area)))
+    rows.append(("section.core.perimeter", _nm(loop.perimeter)))
+    rows.append(("section.core.smallest_feature", _nm(section.shape.smallest_feature_nm)))
     corners = sorted({round(math.degrees(angle), 1) for _, angle in loop.corners()})
     if corners:
-        rows.append(("section.corners", ", ".join(f"{angle:g}" for angle in corners) + " deg inside"))
+        rows.append(("section.core.corners", ", ".join(f"{angle:g}" for angle in corners) + " deg inside"))
     rows.append(("section.core", _piece(by_name["core"])))
     for k, layer in enumerate(section.layers, 1):
         sides = "".join(f", {_nm(t)} on '{edge}'" for edge, t in layer.sides or ())
@@ -59,6 +59,29 @@ def describe(problem: Problem) -> list[tuple[str, str]]:
     return rows
 
 
+def _whole(section: Section) -> list[tuple[str, str]]:
+    """What the core, the layers and the patches are together."""
+    pieces = section.pieces()
+    width, height = drawing.reach(pieces)
+    holes = ", holes included" if any(piece.material == VOID for piece in section.visible()) else ""
+    rows = [("section.size", f"{_nm(width)} wide, {_nm(height)} high")]
+    rows.append(("section.area", _area(drawing.area(pieces)) + holes))
+    coats = [
+        (thickness, k)
+        for k, layer in enumerate(section.layers, 1)
+        for thickness in (layer.thickness_nm, *(t for _, t in layer.sides or ()))
+        if thickness > 0
+    ]
+    if coats:
+        thin, k = min(coats)
+        rows.append(("section.thinnest_layer", f"{_nm(thin)} (layer {k})"))
+    return rows
+
+
+def _area(value: float) -> str:
+    return f"{value:.6g} nm^2, as a circle of {2 * math.sqrt(value / math.pi):.6g} nm diameter"
+
+
 def _nm(value: float) -> str:
     return format_quantity(value, "length", digits=6)
 
@@ -80,7 +103,7 @@ def _shape(shape: Shape) -> str:
 
 
 def _piece(piece: Piece) -> str:
-    if piece.material == "void":
+    if piece.material == VOID:
         return "void"
     offset = f", edge shifted by {_meV(piece.offset_eV)}" if piece.offset_eV else ""
     return f"{piece.material}, carriers {ADMITTED if piece.carriers else 'excluded'}{offset}"

@@ -27,6 +27,33 @@ LATER = {
 }
 """Keys of the wire file that this version knows but does not model, and what they stand for."""
 
+SLIPS: Mapping[str, tuple[tuple[str, ...], ...]] = {
+    "radius": (("diameter",), ("corner_radius",)),
+    "diameter": (("across_flats", "across_corners"), ("side",), ("width", "height")),
+    "size": (("diameter",), ("across_flats", "across_corners"), ("side",), ("width", "height")),
+    "width": (("diameter",), ("across_flats", "across_corners"), ("base",), ("bottom", "top")),
+    "height": (("diameter",), ("across_flats",)),
+    "side": (("diameter",), ("across_corners",), ("width", "height"), ("bottom", "top")),
+    "angle": (("rotation",),),
+    "temp": (("temperature",), ("lattice_temperature",)),
+    "mass": (("electron_mass",),),
+    "states": (("subbands",),),
+}
+"""Keys that are written by mistake, and what may be meant: the first row of keys that the table all allows."""
+TWICE = {("radius", "diameter"), ("side", "across_corners")}
+"""Slips whose length is half of the one meant."""
+HOMES: Mapping[str, str] = {
+    "layers": "[[section.layers]]",
+    "patches": "[[section.patches]]",
+    "shape": "[section]",
+    "material": "[section]",
+    "outside": "[section]",
+    "temperature": "[carriers]",
+    "fermi_level": "[carriers]",
+    "subbands": "[accuracy]",
+}
+"""Where keys belong that stand in another table, or above all tables."""
+
 
 @dataclass(frozen=True)
 class Table:
@@ -49,10 +76,24 @@ class Table:
             if key in LATER:
                 rule = f"this version does not model {LATER[key]} yet"
                 raise InputError(self.at(key), rule, remedy="take the key out, or wait for a version that does")
-            near = checks.nearest(key, words)
+            near = self._meant(key, words)
+            near += " " if near.endswith("?") else "; " if near else ""
             known = ("allowed are " if near else "its keys are ") + ", ".join(words)
             rule = f"is no key of {of or (f'[{self.path}]' if self.path else 'a wire file')}"
-            raise InputError(self.at(key)[:120], rule, remedy=f"{near} {known}".strip())
+            raise InputError(self.at(key)[:120], rule, remedy=near + known)
+
+    def _meant(self, key: str, allowed: tuple[str, ...]) -> str:
+        """What is proposed for a key that may not stand here, or an empty text."""
+        if key == "title":
+            return "write it above the first table"
+        if key in HOMES:
+            home = HOMES[key]
+            return f"write {home}" if home.startswith("[[") else f"it belongs in {home}"
+        for meant in SLIPS.get(key, ()):
+            if all(word in allowed for word in meant):
+                twice = f" (twice the {key})" if (key, meant[0]) in TWICE else ""
+                return checks.did_you_mean(meant) + twice
+        return checks.nearest(key, allowed)
 
     def __contains__(self, key: str) -> bool:
         return key in self.data

@@ -20,7 +20,7 @@ from wiresolve.describe.shapes import Circle, Ellipse, Hexagon, Polygon, Rectang
 from wiresolve.describe.summary import describe
 from wiresolve.describe.tables import Table
 from wiresolve.errors import InputError
-from wiresolve.units import UNITS, parse_quantity
+from wiresolve.units import UNITS, parse_quantity, same_quantity
 
 __all__ = ["describe", "dump", "parse", "read"]
 
@@ -78,6 +78,7 @@ def parse(text: str, folder: str | Path | None = None, name: str = "wire file") 
     `folder` is what paths in the file are relative to (no key of this version holds a path); `name` is the file's, for
     messages and for the title of a file without one. Raises `InputError` for anything that cannot be used.
     """
+    data: dict[str, Any] = {}
     try:
         if len(text) > LARGEST_FILE:
             raise InputError("", "is too large for a wire file", remedy=f"at most {LARGEST_FILE / 1e6:g} MB")
@@ -85,10 +86,26 @@ def parse(text: str, folder: str | Path | None = None, name: str = "wire file") 
             raise InputError(
                 "", "is empty", remedy='a wire file needs at least [section] and [carriers]; see "geometries"'
             )
-        return _problem(Table("", _toml(text)), name)
+        data = _toml(text)
+        return _problem(Table("", data), name)
     except InputError as error:
         field = f"{name}: {error.field}" if error.field else name
-        raise InputError(field, _printable(error.rule), error.given, _printable(error.remedy)) from None
+        given = _as_written(data, error.field, error.given)
+        raise InputError(field, _printable(error.rule), given, _printable(error.remedy)) from None
+
+
+def _as_written(data: Any, field: str, given: object) -> object:
+    """The quantity that an error shows, in the unit in which the file gives it."""
+    value = data
+    for key, number in re.findall(r"([^.\[\]]+)|\[(\d{1,6})\]", field):
+        if isinstance(value, dict) and key in value:
+            value = value[key]
+        elif isinstance(value, list) and number and 1 <= int(number) <= len(value):
+            value = value[int(number) - 1]
+        else:
+            return given
+    texts = [text for text in (value if isinstance(value, list) else [value]) if isinstance(text, str)]
+    return next((t for t in texts if isinstance(given, str) and same_quantity(t, given)), given)
 
 
 def _printable(text: str) -> str:
