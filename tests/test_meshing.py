@@ -14,7 +14,7 @@ from wiresolve.describe.wirefile import read
 from wiresolve.errors import InputError, MeshError
 from wiresolve.fem import meshing
 from wiresolve.fem.corners import exponents, gradings, singular_corners
-from wiresolve.fem.mesh import Ear, ears, folded, without
+from wiresolve.fem.mesh import folded
 from wiresolve.fem.meshing import Mesher, SizeField
 from wiresolve.fem.space import Space
 
@@ -48,31 +48,6 @@ def test_thin_shells_do_not_fold(thickness: float) -> None:
     found = area(Section(Circle(diameter_nm=30), "a", layers=(Layer(thickness, "b"),)), 20.0)
     assert found["layer 1"] == pytest.approx(np.pi * ((15 + thickness) ** 2 - 225), rel=1e-7)
     assert found["core"] == pytest.approx(np.pi * 225, rel=1e-7)
-
-
-def test_an_ear_is_swapped() -> None:
-    """A cell with two edges on one smooth curve has no angle at its vertex; a swap mends it, area and nodes stay."""
-    with Mesher(Section(Rectangle(width_nm=20, height_nm=12, corner_radius_nm=1), "a").pieces()) as mesher:
-        mesh, _ = mesher.mesh(SizeField(20.0))
-    straight = Section(Rectangle(width_nm=20, height_nm=12, corner_radius_nm=1), "a")
-    # Swap a healthy pair of cells to make an ear where an arc meets its side, then mend it.
-    found = None
-    for cell in range(len(mesh.cells)):
-        for vertex in range(3):
-            ends = np.delete(mesh.cells[cell, :3], vertex)
-            across = np.flatnonzero(np.isin(mesh.cells[:, :3], ends).sum(axis=1) == 2)
-            across = across[across != cell]
-            if len(across) == 1:
-                far = int(np.flatnonzero(~np.isin(mesh.cells[across[0], :3], ends))[0])
-                broken = without(mesh, [Ear(cell, vertex, int(across[0]), far)])
-                bent = folded(broken)
-                mended = without(broken, ears(broken, bent)) if bent.any() else None
-                if mended is not None and not folded(mended).any():
-                    found = mended
-    assert found is not None
-    area = straight.pieces()[0].loop.area
-    assert Space(found).area_nm2 == pytest.approx(area, rel=1e-6)
-    assert np.array_equal(np.unique(found.cells), np.unique(mesh.cells))
 
 
 def test_patches_share_their_edges() -> None:

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from wiresolve.describe.curves import Arc, EllipseArc, Line, Loop, Spline
 from wiresolve.describe.section import Piece
 from wiresolve.errors import InputError, MeshError
-from wiresolve.fem.mesh import Mesh, Region, blended, ears, folded, oriented, without
+from wiresolve.fem.mesh import Mesh, Region, blended, folded, oriented
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -168,10 +168,6 @@ class Mesher:
         for _ in range(6):
             coarse, fine = self._generate(size)
             bent = folded(coarse) | folded(fine)
-            if bent.any():
-                swaps = ears(coarse, bent)
-                coarse, fine = without(coarse, swaps), without(fine, swaps)
-                bent = folded(coarse) | folded(fine)
             if not bent.any():
                 return coarse, fine
             most = most or 10 * len(coarse.cells) + 2000

@@ -202,6 +202,8 @@ def certify(
                 continue
             best, made = _refine(mesher, size, corners, operator_of, wanted, accuracy_eV, passes, tell)
         passes += made
+        if barrier is not None and barrier.region not in [r.name for r in best.pencil.space.mesh.regions]:
+            barrier = None  # patches cover it
         effect = None if barrier is None else wall_effect(best, barrier, wanted)
         if barrier is None or effect is None or not barrier.extendable:
             break
@@ -333,14 +335,19 @@ def _further(solved: Solved, effect: Array, barrier: Barrier, wanted: int, accur
 
 
 def _counted(solved: Solved, wanted: int) -> tuple[Solved, int]:
-    """The count of the states below the first clear gap above the wanted ones, against those found."""
-    for _ in range(4):
+    """The count of the states below the first clear gap above the wanted ones, against those found.
+
+    A spectrum denser than its bars has no gap that is clear: the widest one of the discrete problem then serves, whose
+    energies are known far more closely than the bars tell.
+    """
+    for attempt in range(4):
         energy, bar = solved.energy_eV, solved.bar_eV
-        gaps = [i for i in range(wanted - 1, len(energy) - 1) if energy[i + 1] - energy[i] > bar[i] + bar[i + 1]]
-        if gaps:
-            found = gaps[0] + 1
-            between = (energy[found - 1] + energy[found]) / 2
-            missed = eigen.count_below(solved.pencil.h0, solved.pencil.mass, float(between)) - found
+        widths = np.diff(energy[wanted - 1 :])
+        clear = np.flatnonzero(widths > bar[wanted - 1 : -1] + bar[wanted:])
+        if len(clear) or attempt:
+            last = wanted - 1 + int(clear[0] if len(clear) else np.argmax(widths))
+            between = float(energy[last] + energy[last + 1]) / 2
+            missed = eigen.count_below(solved.pencil.h0, solved.pencil.mass, between) - (last + 1)
             if missed == 0:
                 return solved, 0
         # A level without a clear end, or a state that the iteration passed over: solve for more.
