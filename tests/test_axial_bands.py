@@ -137,7 +137,7 @@ def test_reduced_space_is_as_good_as_it_says() -> None:
     assert bands.error_bound_eV <= 1e-6
     for j in (7, 23, 38, 52):
         energy, _ = eigen.lowest(pencil.at(float(bands.k_per_nm[j])), pencil.mass, 6, found.solved.shift_eV)
-        above = bands.energy_eV[:, j] - energy[:4]
+        above = np.sort(bands.energy_eV[:, j]) - energy[:4]  # rows follow bands, which may cross
         assert (above > -1e-12).all()
         assert (above <= 2 * bands.error_bound_eV + 1e-12).all()
 

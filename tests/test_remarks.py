@@ -4,9 +4,12 @@ from __future__ import annotations
 
 from pathlib import Path
 
+import numpy as np
 import pytest
 
 from wiresolve.describe.wirefile import parse
+from wiresolve.errors import InputError
+from wiresolve.physics.fermi import fermi_integral
 from wiresolve.result import Result
 from wiresolve.solve import solve
 
@@ -79,3 +82,54 @@ def test_only_what_matters_is_listed_as_left_out() -> None:
     assert any(text.startswith("strain") for text in layered.not_modelled)
     assert "indirect-gap" in codes(layered)
     assert "indirect-gap" not in codes(alone)
+
+
+CROSSING = """
+title = "two boxes of unlike mass"
+[section]
+shape = "rectangle"
+width = "10 nm"
+height = "10 nm"
+material = "light"
+[[section.patches]]
+shape = "rectangle"
+width = "3 nm"
+height = "3 nm"
+center = ["20 nm", "0 nm"]
+material = "heavy"
+[materials.light]
+electron_mass = 0.067
+conduction_edge = "0 eV"
+[materials.heavy]
+electron_mass = 1.0
+conduction_edge = "0.08 eV"
+[carriers]
+temperature = "300 K"
+fermi_level = "0.25 eV"
+[accuracy]
+subbands = 3
+"""
+
+
+def test_bands_of_unlike_mass_keep_their_carriers_where_they_cross() -> None:
+    """Closed form: two separate boxes, sums of squares, each band a parabola of its own mass."""
+    result = solve(parse(CROSSING, Path()))
+    unit, thermal = 0.0380998211096858, 8.617333262e-5 * 300
+    waves = np.arange(1, 13)
+    total, found = 0.0, []
+    for mass, side, edge in ((0.067, 10.0, 0.0), (1.0, 3.0, 0.08)):
+        levels = edge + unit / mass * (np.pi / side) ** 2 * (waves[:, None] ** 2 + waves[None] ** 2)
+        states = 2 * np.sqrt(mass * thermal / (4 * np.pi * unit))
+        density = states * fermi_integral(-0.5, (0.25 - levels.ravel()) / thermal)
+        total += float(density.sum())
+        found += list(zip(levels.ravel(), density, strict=True))
+    assert result.line_density_per_nm == pytest.approx(total, rel=1e-3)
+    for subband, (energy, density) in zip(result.subbands, sorted(found), strict=False):
+        assert subband.energy_eV == pytest.approx(energy, abs=1e-4)
+        assert subband.line_density_per_nm == pytest.approx(density, rel=5e-3)
+
+
+def test_unlike_valley_degeneracies_are_refused() -> None:
+    text = CROSSING.replace("electron_mass = 1.0", "electron_mass = 1.0\nvalley_degeneracy = 6")
+    with pytest.raises(InputError, match="valley_degeneracy differs"):
+        solve(parse(text, Path()))

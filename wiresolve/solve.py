@@ -68,6 +68,7 @@ def solve(problem: Problem, on_progress: Progress | None = None) -> Result:
     # More BLAS threads only get in each other's way at these sizes.
     with threadpool_limits(limits=1, user_api="blas"):
         wire = Wire(problem)
+        wire.check_valleys()
         with clock("subbands"):
             certified = certify(
                 wire.draw,

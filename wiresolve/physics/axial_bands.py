@@ -12,6 +12,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.optimize import linear_sum_assignment
 
 from wiresolve.errors import ConvergenceError
 from wiresolve.fem import eigen
@@ -113,7 +114,7 @@ class AxialBands:
     Attributes
     ----------
     k_per_nm : (p,) from 0 on.
-    energy_eV : (m, p), ascending at each k.
+    energy_eV : (m, p), a row a band: bands of unlike mass cross.
     error_bound_eV : the largest estimate, over states and k, of how far the reduced space lies above the full one.
     """
 
@@ -157,13 +158,20 @@ def dispersion(
 
 
 def _reduced(pencil: Pencil, space: NDArray[Any], k_per_nm: Array, count: int) -> tuple[Array, list[NDArray[Any]]]:
+    """E(k) in the reduced space, each band followed through crossings by the overlap of its states from k to k."""
     parts = [_sandwich(h, space) for h in (pencil.h0, pencil.h1, pencil.h2)]
-    table, coordinates = np.empty((count, len(k_per_nm))), []
+    table = np.empty((count, len(k_per_nm)))
+    coordinates: list[NDArray[Any]] = []
     for i, k in enumerate(k_per_nm):
         small = parts[0] + k * parts[1] + k**2 * parts[2]
         values, vectors = np.linalg.eigh((small + small.conj().T) / 2)
-        table[:, i] = values[:count]
-        coordinates.append(vectors[:, :count])
+        if coordinates:
+            alike = np.abs(coordinates[-1].conj().T @ vectors) ** 2
+            picked = linear_sum_assignment(alike, maximize=True)[1]
+        else:
+            picked = np.arange(count)
+        table[:, i] = values[picked]
+        coordinates.append(vectors[:, picked])
     return table, coordinates
 
 

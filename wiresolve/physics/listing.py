@@ -157,7 +157,8 @@ def spectrum_of(wire: Wire, certified: Certified, found: Listing) -> Spectrum:
         energy = np.concatenate([energy, above[known:count]])
         bar = np.concatenate([bar, rough[: count - known]])
         states = np.hstack([states, solved.pencil.spread(vectors[:, known:count])])
-        mass = np.concatenate([mass, np.full(count - known, HBAR2_OVER_2M0 / stiffness)])
+        axial = np.diag(solved.pencil.expected(2, vectors[:, known:count])).real
+        mass = np.concatenate([mass, HBAR2_OVER_2M0 / axial])
     unknown = ~(np.isfinite(mass) & (mass > 0))
     unknown[:wanted] &= found.parabolic
     mass = np.where(unknown, HBAR2_OVER_2M0 / stiffness, mass)
@@ -182,7 +183,7 @@ def spectrum_of(wire: Wire, certified: Certified, found: Listing) -> Spectrum:
         band_eV=None if table is None else table[order],
         tail_energy_eV=tail_energy,
         tail_count=tail,
-        tail_axial_mass=float(HBAR2_OVER_2M0 / stiffness),
+        tail_axial_mass=_tail_mass(solved, float(tail_energy[0]), ceiling),
         direction_energy_eV=None if directions is None else directions[order],
         direction_names=names,
     )
@@ -194,6 +195,22 @@ def _mean_stiffness(wire: Wire, solved: Solved) -> float:
     by_region = np.array([float(c.quadratic[2, 2, 0, 0].real) for c in solved.operator.by_region])
     weights = space.quadrature_weights.sum(axis=1)
     return float(np.average(by_region[space.mesh.region[space.cells]], weights=weights))
+
+
+def _tail_mass(solved: Solved, low_eV: float, high_eV: float) -> float:
+    """Axial mass in m0 of the states counted by area: sqrt(m) averaged as they come, since a density goes like it."""
+    space = solved.pencil.space
+    weights = space.quadrature_weights.sum(axis=1)
+    region = space.mesh.region[space.cells]
+    middle = 0.5 * (low_eV + max(high_eV, low_eV + 1e-3))
+    share, root = 0.0, 0.0
+    for index, c in enumerate(solved.operator.by_region):
+        area = float(weights[region == index].sum())
+        in_plane = float(np.sqrt(np.linalg.det(c.quadratic[:2, :2, 0, 0].real)))
+        states = area * max(middle - float(c.constant[0, 0].real), 0.0) / in_plane
+        share += states
+        root += states * float(np.sqrt(HBAR2_OVER_2M0 / c.quadratic[2, 2, 0, 0].real))
+    return (root / share) ** 2 if share > 0 else 1.0
 
 
 def _directions(wire: Wire, solved: Solved, states: NDArray[Any]) -> tuple[Array | None, tuple[str, ...]]:

@@ -269,7 +269,8 @@ def _occupied(piece: _Piece, lowest_eV: float, fermi: Array, kT: Array) -> Array
             return _occupied_by_shared_panels(piece, count, low, high, fermi, float(kT[0]))
     full_to = piece.wave_number(low, _ROUGH if kT.min() > 0 else _EXACT)
     length = np.abs(full_to - piece.at_low_per_nm)
-    window = high > low
+    # At T = 0 nothing is left between the two, but for rounding.
+    window = (high > low) & (kT > 0)
     if window.any():
         fermi, kT = fermi[window, None], kT[window, None]
         k, weight = _panels(full_to[window], piece.wave_number(high[window], _ROUGH), _PANELS)

@@ -46,6 +46,26 @@ class Wire:
         """The drawn pieces in painting order, without a material that goes on outside."""
         return self.problem.section.pieces()
 
+    def check_valleys(self) -> None:
+        """Refuse materials whose states stand for unlike numbers of valleys.
+
+        Raises
+        ------
+        InputError
+            Two materials that admit carriers differ in `valley_degeneracy`.
+        """
+        used = {p.material for p in self.problem.section.visible() if p.carriers}
+        outside = self.problem.section.outside
+        used |= {outside} if outside is not None else set()
+        valleys = {name: self.materials[name].valley_degeneracy for name in sorted(used)}
+        if len(set(valleys.values())) > 1:
+            raise InputError(
+                "materials",
+                "valley_degeneracy differs between materials that admit carriers, so states cannot be counted",
+                ", ".join(f"{name}: {count}" for name, count in valleys.items()),
+                "solve each kind of valley by itself",
+            )
+
     def draw(self, distance_nm: float) -> tuple[Piece, ...]:
         """The pieces in painting order, the outside one reaching so far."""
         outside = self.problem.section.outside
