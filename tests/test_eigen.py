@@ -127,11 +127,11 @@ def test_a_state_that_the_solver_drops_is_caught(monkeypatch: pytest.MonkeyPatch
     wire = Wire(parse(ROUND, Path()))
     honest, calls = eigen.lowest, []
 
-    def forgetful(hamiltonian: Any, mass: Any, count: int, shift: float, start: Any = None) -> Any:
+    def forgetful(hamiltonian: Any, mass: Any, count: int, shift: float) -> Any:
         calls.append(count)
         if len(calls) > 1:
-            return honest(hamiltonian, mass, count, shift, start)
-        energy, states = honest(hamiltonian, mass, count + 1, shift, start)
+            return honest(hamiltonian, mass, count, shift)
+        energy, states = honest(hamiltonian, mass, count + 1, shift)
         return np.delete(energy, lost), np.delete(states, lost, axis=1)
 
     monkeypatch.setattr(subbands.eigen, "lowest", forgetful)
@@ -147,8 +147,8 @@ def test_a_state_that_stays_lost_is_an_error(monkeypatch: pytest.MonkeyPatch) ->
     wire = Wire(parse(ROUND, Path()))
     honest = eigen.lowest
 
-    def blind(hamiltonian: Any, mass: Any, count: int, shift: float, start: Any = None) -> Any:
-        energy, states = honest(hamiltonian, mass, count + 1, shift, start)
+    def blind(hamiltonian: Any, mass: Any, count: int, shift: float) -> Any:
+        energy, states = honest(hamiltonian, mass, count + 1, shift)
         return np.delete(energy, 1), np.delete(states, 1, axis=1)
 
     monkeypatch.setattr(subbands.eigen, "lowest", blind)

@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 from wiresolve.describe.problem import Problem
 from wiresolve.physics import remarks, statistics, transport, verdict
 from wiresolve.physics.axial_bands import AxialBands
-from wiresolve.physics.listing import Listing, listing, spectrum_of
+from wiresolve.physics.listing import SPIN, Listing, listing, spectrum_of
 from wiresolve.physics.spectrum import Spectrum
 from wiresolve.physics.subbands import Certified, certify
 from wiresolve.physics.wire import Wire
@@ -39,8 +39,6 @@ Progress = Callable[[str, float, str], None]
 
 _NEAR_STEP = np.array([-8.0, -5.0, -3.0, -2.0, -1.0, 0.0, 1.0, 2.0, 3.0, 5.0, 8.0])
 """Places around a step, in kT, at which curves have points."""
-SPIN = 2
-"""Both spins share each effective-mass state."""
 
 
 def solve(problem: Problem, on_progress: Progress | None = None) -> Result:

@@ -117,13 +117,12 @@ def count_below(hamiltonian: Any, mass: Any, energy: float) -> int:
     raise ConvergenceError(f"the states below {energy:.6g} eV could not be counted")
 
 
-def lowest(hamiltonian: Any, mass: Any, count: int, shift: float, start: Any = None) -> tuple[Array, NDArray[Any]]:
+def lowest(hamiltonian: Any, mass: Any, count: int, shift: float) -> tuple[Array, NDArray[Any]]:
     """The `count` states nearest above `shift`, which must lie below the spectrum or in a gap.
 
     Parameters
     ----------
     hamiltonian, mass : (n, n) sparse Hermitian matrices, `mass` positive definite.
-    start : (n,) start vector; a fixed one by default, so that the same input gives the same bytes.
 
     Returns
     -------
@@ -136,17 +135,16 @@ def lowest(hamiltonian: Any, mass: Any, count: int, shift: float, start: Any = N
         values, vectors = dense.eigh(hamiltonian.toarray(), mass.toarray(), subset_by_index=(0, count - 1))
         return values, vectors
     if count <= 2 * _SLICE:
-        _, vectors = _nearest(hamiltonian, mass, factor(hamiltonian, mass, shift), count, start)
+        _, vectors = _nearest(hamiltonian, mass, factor(hamiltonian, mass, shift), count)
     else:
         vectors = _sliced(hamiltonian, mass, count, shift)
     return ritz(hamiltonian, mass, vectors)
 
 
-def _nearest(hamiltonian: Any, mass: Any, inverse: Factor, count: int, start: Any = None) -> tuple[Array, NDArray[Any]]:
+def _nearest(hamiltonian: Any, mass: Any, inverse: Factor, count: int) -> tuple[Array, NDArray[Any]]:
     """The `count` states nearest to the factor's shift on either side, ascending."""
     n, kind = hamiltonian.shape[0], np.result_type(hamiltonian.dtype, mass.dtype)
     operator = sparse_linalg.LinearOperator((n, n), matvec=inverse.solve, dtype=kind)
-    start = _start(n, kind) if start is None else start
     try:
         values, vectors = sparse_linalg.eigsh(
             hamiltonian,
@@ -154,7 +152,7 @@ def _nearest(hamiltonian: Any, mass: Any, inverse: Factor, count: int, start: An
             M=mass,
             sigma=inverse.shift,
             OPinv=operator,
-            v0=start,
+            v0=_start(n, kind),
             tol=_TOLERANCE,
             ncv=min(n, 2 * count + 8),
         )

@@ -21,6 +21,7 @@ from wiresolve.units import HBAR2_OVER_2M0, KB
 Array = NDArray[np.float64]
 
 SPIN = 2
+"""Both spins share each effective-mass state."""
 _THERMAL_REACH = 12.0
 """States are solved up to this many kT above the lowest (20 above the Fermi level); above, they are counted by area."""
 _FERMI_REACH = 20.0
@@ -82,7 +83,7 @@ def listing(wire: Wire, certified: Certified) -> Listing:
         energy, bar, k_min, mass, error = _off_centre(
             solved, bands, np.flatnonzero(below), energy, bar, k_min, mass, error
         )
-    material = wire.materials[_carrying(wire).material]
+    material = wire.materials[carrying_piece(wire).material]
     parabola = solved.energy_eV[: certified.wanted, None] + coarse[: certified.wanted, None] * k**2
     parabolic = bool(np.isfinite(coarse).all() and np.abs(bands.energy_eV - parabola).max() < 1e-9)
     return Listing(
@@ -91,12 +92,8 @@ def listing(wire: Wire, certified: Certified) -> Listing:
     )  # fmt: skip
 
 
-def carrying_piece(wire: Wire) -> str:
-    """Name of the piece with the lowest band edge that admits carriers."""
-    return _carrying(wire).name
-
-
-def _carrying(wire: Wire) -> Piece:
+def carrying_piece(wire: Wire) -> Piece:
+    """The piece with the lowest band edge that admits carriers."""
     pieces = [p for p in reversed(wire.problem.section.visible()) if p.carriers]
     return min(pieces, key=lambda p: wire.edge_eV(p.material, p.offset_eV))
 

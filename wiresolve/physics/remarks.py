@@ -115,7 +115,7 @@ def _mass_range(wire: Wire, found: Listing) -> tuple[list[Warning_], list[str]]:
 
     E. O. Kane, J. Phys. Chem. Solids 1, 249 (1957), for a hard wall; the estimate is for the size of the error only.
     """
-    piece = next(p for p in wire.inner if p.name == carrying_piece(wire))
+    piece = carrying_piece(wire)
     material = wire.materials[piece.material]
     mass, gap = material.electron_mass, material.gap_eV
     if mass is None or gap is None:

@@ -315,7 +315,7 @@ def wall_effect(solved: Solved, barrier: Barrier, wanted: int) -> Array:
     """How far each energy falls when the outer hard wall is left free, (wanted,) in eV."""
     space = solved.pencil.space
     region = [r.name for r in space.mesh.regions].index(barrier.region)
-    free = replace(solved.pencil, kept=build(space, solved.operator, space.rim_of(region)).kept)
+    free = build(space, solved.operator, space.rim_of(region))
     energy, _ = eigen.lowest(free.h0, free.mass, wanted + 2, solved.shift_eV)
     return np.asarray(solved.energy_eV[:wanted] - energy[:wanted])
 
