@@ -146,7 +146,7 @@ def test_every_part_of_a_problem_changes_its_digest() -> None:
         replace(one, accuracy=Accuracy(9)),
         replace(one, accuracy=Accuracy(10, 1e-5)),
         replace(one, materials=()),
-        replace(one, materials=(replace(WELL, inverse_mass=BARRIER.inverse_mass),)),
+        replace(one, materials=(replace(WELL, valleys=BARRIER.valleys),)),
         replace(one, orientation=Orientation((1, 1, 0), (0, 0, 1))),
         replace(one, potential=Potential(field_V_per_nm=(0.01, 0))),
         replace(one, potential=Potential(harmonic_eV=(0.01, 0))),
@@ -200,8 +200,8 @@ def test_orientation_proposes_the_nearest_up() -> None:
     assert Orientation((1, 1, 0), (0, 0, 1)).up == (0, 0, 1)
     # By hand: up less its part along the axis is (-1, -1, 2) / 3 and (-1, 1, 0) / 2.
     for axis, up, better in (((1, 1, 1), (0, 0, 1), (-1, -1, 2)), ((1, 1, 0), (0, 1, 0), (-1, 1, 0))):
-        with pytest.raises(InputError, match="right angles to the axis") as caught:
-            Orientation(axis, up)
+        with pytest.raises(InputError, match="^orientation.up: must be at right angles to the axis") as caught:
+            replace(wire("GaAs"), orientation=Orientation(axis, up))
         assert f"the nearest is up = {list(better)}" in str(caught.value)
     with pytest.raises(InputError, match="axis: must not be zero"):
         Orientation((0, 0, 0), (0, 0, 1))

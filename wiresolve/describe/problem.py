@@ -5,13 +5,20 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 from typing import Any
 
-from wiresolve.describe import checks, crystal, plain
-from wiresolve.describe.materials import GIVEN_SCALE, Material, look_up, table_names, unknown
+from wiresolve.describe import checks, crystal, input_files, plain
+from wiresolve.describe.crystal_phase import with_phase_note
+from wiresolve.describe.input_files import InputFile
+from wiresolve.describe.material import ANY_VALLEY, Material, Valley
+from wiresolve.describe.material_changes import resolved
+from wiresolve.describe.materials import look_up, table_names, unknown
+from wiresolve.describe.mesh_shape import ImportedMesh
+from wiresolve.describe.offsets import on_common_scale
+from wiresolve.describe.outline import Outline
 from wiresolve.describe.potential import Potential
-from wiresolve.describe.section import VOID, Section
+from wiresolve.describe.section import VOID, Piece, Section
 from wiresolve.errors import InputError
 from wiresolve.units import format_quantity
 
@@ -20,21 +27,28 @@ __all__ = ["Accuracy", "Carriers", "Orientation", "Potential", "Problem"]
 MOST_SUBBANDS = 500
 MOST_TEMPERATURES = 20
 FINEST_ENERGY_eV, COARSEST_ENERGY_eV = 1e-9, 1.0
+PARABOLIC, NONPARABOLIC = "parabolic", "nonparabolic"
+_LISTS = {"layer": "layers", "patch": "patches"}
 NO_HOLES = "holes cannot be solved yet: their bands mix, and one mass per material would give wrong subbands"
 
 
 @dataclass(frozen=True)
 class Carriers:
-    """Which carriers, at which temperatures in K (one or several), and their Fermi level from the energy zero."""
+    """Which carriers, at which temperatures in K (one or several), and their Fermi level from the energy zero.
+
+    `model` is "nonparabolic" (masses grow with energy wherever it is known how) or "parabolic" (they do not).
+    """
 
     kind: str = "electrons"
     temperature_K: tuple[float, ...] = field(kw_only=True)
     fermi_level_eV: float | None = None
+    model: str = NONPARABOLIC
 
     def __post_init__(self) -> None:
         if self.kind == "holes":
             raise InputError("kind", NO_HOLES, remedy='write kind = "electrons"')
         checks.choice("kind", self.kind, ("electrons",))
+        checks.choice("model", self.model, (NONPARABOLIC, PARABOLIC))
         given: Any = self.temperature_K
         row = tuple(given) if isinstance(given, Sequence) and not isinstance(given, str) else (given,)
         if not 1 <= len(row) <= MOST_TEMPERATURES:
@@ -63,7 +77,10 @@ class Accuracy:
 
 @dataclass(frozen=True)
 class Orientation:
-    """Crystal directions along the wire (`axis`, z) and along y (`up`), at right angles; x is up x axis."""
+    """Crystal directions along the wire (`axis`, z) and along y (`up`), at right angles; x is up x axis.
+
+    Cubic: of the cube's edges. Wurtzite: of the hexagonal lattice, c the third.
+    """
 
     axis: crystal.Direction
     up: crystal.Direction
@@ -71,7 +88,6 @@ class Orientation:
     def __post_init__(self) -> None:
         object.__setattr__(self, "axis", crystal.direction("axis", self.axis))
         object.__setattr__(self, "up", crystal.direction("up", self.up))
-        crystal.orthogonal(self.axis, self.up)
 
 
 @dataclass(frozen=True)
@@ -96,15 +112,23 @@ class Problem:
         for name, kind in wanted.items():
             if not isinstance(getattr(self, name), kind):
                 raise InputError(name, f"must be a {kind.__name__}", getattr(self, name))
-        own = tuple(
-            replace(m, edge_scale=None if m.conduction_edge_eV is None else GIVEN_SCALE) for m in self.materials
-        )
+        own = tuple(m.as_given() for m in self.materials)
         object.__setattr__(self, "materials", own)
         names = [m.name for m in own]
         for name in names:
             if names.count(name) > 1 or name == VOID:
                 raise InputError("materials", "must have names of their own", name)
-        self.resolved_materials()
+        self._check_valleys()
+
+    def _check_cover(self) -> None:
+        """InputError where a potential's file does not cover the section."""
+        if self.potential is not None and self.potential.file is not None:
+            try:
+                energy = self.potential.file.over(self.section.shape)
+                for piece in self.section.pieces():
+                    energy(*piece.loop.sample(32 if len(piece.loop.segments) > 4 else 256).T)
+            except InputError as error:
+                raise error.under("potential") from None
 
     @property
     def lattice_temperature_K(self) -> float:
@@ -119,7 +143,10 @@ class Problem:
         """
         own = {m.name: m for m in self.materials}
         section, kelvin = self.section, self.lattice_temperature_K
-        used: dict[str, str] = {section.material: "section.material"}
+        if section.groups:
+            used = {g.material: f"section.group_materials.{g.name}" for g in reversed(section.groups)}
+        else:
+            used = {section.material: "section.material"}
         used |= {n: f"section.layers[{k}].material" for k, n in _fresh((p.material for p in section.layers), used)}
         used |= {n: f"section.patches[{k}].material" for k, n in _fresh((p.material for p in section.patches), used)}
         if section.outside is not None:
@@ -129,62 +156,143 @@ class Problem:
             if name == VOID:
                 continue
             try:
-                found[name] = own[name] if name in own else look_up(name, kelvin)
+                found[name] = resolved(own[name], kelvin) if name in own else look_up(name, kelvin)
             except InputError as error:
                 if error.field == "lattice_temperature":
                     raise error.under("section") from None
+                if error.field.startswith("materials."):
+                    raise
                 if own and name not in table_names() and error.rule.endswith("known material"):
                     error = unknown(name, tuple(own))
                 raise InputError(where, error.rule, error.given, error.remedy) from None
-        admitted = list(dict.fromkeys(p.material for p in section.visible() if p.carriers))
-        if section.outside is not None and section.outside not in admitted:
-            admitted.append(section.outside)
-        for name in admitted:
-            if not found[name].inverse_mass:
+        for name in self._admitted():
+            if not found[name].valleys:
                 rule = "admits carriers, but its material has no mass"
-                remedy = 'give it an electron_mass, or write carriers = "excluded" there'
-                raise InputError(used[name].rsplit(".", 1)[0], rule, name, remedy)
-        if len(admitted) == 1:
-            only = found[admitted[0]]
-            if only.conduction_edge_eV is None:
-                found[only.name] = replace(only, conduction_edge_eV=0.0)
-        else:
-            _common_scale([found[name] for name in admitted])
-        return found
+                where = self._place_admitting(name)
+                other = 'outside = "hard wall"' if where.endswith("outside") else 'carriers = "excluded" there'
+                raise InputError(where, rule, name, f"give it an electron_mass, or write {other}")
+        found = on_common_scale(found, self._admitted())
+        if self.orientation is None:
+            return found
+        table = {name for name in found if name not in own}
+        return {n: with_phase_note(m, self.orientation.axis) if n in table else m for n, m in found.items()}
+
+    def _admitted(self) -> list[str]:
+        """Names of the materials that admit carriers, from the core outwards."""
+        names = [piece.material for piece in self._carrying()]
+        return list(dict.fromkeys(names if self.section.outside is None else [*names, self.section.outside]))
+
+    def _carrying(self) -> list[Piece]:
+        """The pieces that admit carriers, from the core outwards, then the patches."""
+
+        def rank(piece: Piece) -> tuple[bool, bool, int]:
+            kind, _, number = piece.name.partition(" ")
+            layer = int(number) if kind == "layer" and number.isdecimal() else 0
+            return kind == "patch", piece.name != "core", layer
+
+        return sorted((piece for piece in self.section.visible() if piece.carriers), key=rank)
+
+    def _place_admitting(self, material: str) -> str:
+        """The table or key that puts carriers into a material."""
+        section = self.section
+        name = next((p.name for p in section.visible() if p.carriers and p.material == material), "outside")
+        kind, _, number = name.partition(" ")
+        if section.groups and name in [group.name for group in section.groups]:
+            return f"section.group_materials.{name}"
+        return {"core": "section", "outside": "section.outside"}.get(kind, f"section.{_LISTS.get(kind)}[{number}]")
+
+    def shared_valleys(self) -> tuple[str, ...]:
+        """Names of the valleys that every material that admits carriers has.
+
+        A valley named "any" (an insulator's) continues all of its neighbours', and is named only where it is alone.
+        """
+        materials = self.resolved_materials()
+        used = [materials[name] for name in self._admitted()]
+        names = dict.fromkeys(v.name for m in used for v in m.valleys)
+        shared = tuple(n for n in names if all(m.valley_named(n) is not None for m in used))
+        return tuple(n for n in shared if n != ANY_VALLEY) or shared
+
+    def _check_valleys(self) -> None:
+        """InputError where no valley is common, or where the crystal's directions in the wire are wanted."""
+        materials, shared = self.resolved_materials(), self.shared_valleys()
+        used = [materials[name] for name in self._admitted()]
+        if not shared:
+            each = "; ".join(f"{m.name} has {', '.join(v.name for v in m.valleys)}" for m in used)
+            remedy = 'describe one of them under [materials.NAME] with valleys of the same names, or one named "any"'
+            raise InputError("section", f"its materials have no valley in common: {each}", remedy=remedy)
+        hexagonal = [m for m in used if m.crystal == "wurtzite"]
+        valleys = [(m, v) for m in used for name in shared if (v := m.valley_named(name)) is not None]
+        cubic = [m for m, v in valleys if v.needs_orientation and m.crystal != "wurtzite"]
+        if hexagonal and cubic:
+            rule = f"{hexagonal[0].name} is wurtzite and {cubic[0].name} is cubic: one [orientation] cannot place both"
+            remedy = "give the valleys of one of them as an inverse_mass, in the wire's frame"
+            raise InputError("section", rule, remedy=remedy)
+        _, _, name, valley, _ = self._lowest()
+        if self.orientation is not None:
+            _check_directions(self.orientation, hexagonal)
+        elif hexagonal or valley.needs_orientation:
+            why = f"the {valley.name} valleys of {name}, its lowest, differ by their direction"
+            why = f"{hexagonal[0].name} is wurtzite" if hexagonal else why
+            up, axis = ([1, 0, 0], [0, 0, 1]) if hexagonal else ([0, 0, 1], [1, 1, 0])
+            remedy = f"write [orientation] with the crystal's directions along the wire and along y: axis = {axis}"
+            raise InputError("orientation", f"is missing: {why}", remedy=f"{remedy} and up = {up}, for example")
+
+    def _lowest(self) -> tuple[float, str, str, Valley, float]:
+        """The lowest edge over the shared valleys: edge in eV, place, material, valley and the place's offset."""
+        materials, section, shared = self.resolved_materials(), self.section, self.shared_valleys()
+        places = [(p.name, p.material, p.offset_eV) for p in self._carrying()]
+        if section.outside is not None:
+            places.append(("outside", section.outside, 0.0))
+        edges = [
+            ((materials[name].conduction_edge_eV or 0.0) + offset + valley.height_eV, place, name, valley, offset)
+            for place, name, offset in places
+            for valley in materials[name].valleys
+            if valley.name in shared or valley.name == ANY_VALLEY
+        ]
+        return min(edges, key=lambda edge: edge[0])  # of equally low ones the first
 
     def energy_zero(self) -> tuple[str, float | None]:
         """What energies are counted from, and its value on the scale that the materials share (None: no scale)."""
-        materials, section = self.resolved_materials(), self.section
-        # From the core outwards, then the patches: of equally low edges the first is named.
-        painted = sorted(section.visible(), key=lambda p: (p.name.startswith("patch"), p.name != "core"))
-        edges = [(p.name, p.material, p.offset_eV) for p in painted if p.carriers]
-        if section.outside is not None:
-            edges.append(("outside", section.outside, 0.0))
-
-        def height(edge: tuple[str, str, float]) -> float:
-            return (materials[edge[1]].conduction_edge_eV or 0.0) + edge[2]
-
-        lowest = min(edges, key=height)
-        place, name, offset = lowest
+        edge, place, name, valley, offset = self._lowest()
+        material = self.resolved_materials()[name]
+        kind = f"{valley.name} edge" if valley.height_eV else "conduction edge"
         shifted = f", shifted by {offset:g} eV" if offset else ""
-        scale = materials[name].edge_scale
-        return f"conduction edge of {name} ({place}){shifted}", None if scale is None else height(lowest)
+        return f"{kind} of {name} ({place}){shifted}", None if material.edge_scale is None else edge
 
-    def plain(self) -> dict[str, Any]:
-        """The problem in the words of the wire file, defaults filled in, quantities as exact texts."""
+    @property
+    def files(self) -> tuple[tuple[str, bytes], ...]:
+        """What the problem needs of files: their paths beside the wire file, as `plain` names them, and content."""
+        shapes = (self.section.shape, *(patch.shape for patch in self.section.patches))
+        found = [shape.file for shape in shapes if isinstance(shape, ImportedMesh | Outline)]
+        if self.potential is not None and self.potential.file is not None:
+            found.append(self.potential.file.file)
+        named = input_files.places(found)
+        return tuple((named[file.digest], file.content) for file in dict.fromkeys(found))
+
+    def plain(self, by_content: bool = False) -> dict[str, Any]:
+        """The problem in the words of the wire file, defaults filled in, quantities as exact texts.
+
+        `by_content`: with the digests of files in place of their names.
+        """
+        paths = {hashlib.sha256(content).hexdigest(): path for path, content in self.files}
+
+        def named(file: InputFile) -> str:
+            return file.digest if by_content else paths[file.digest]
+
         found: dict[str, Any] = {"title": self.title}
-        found["section"] = plain.of_section(self.section, self.lattice_temperature_K)
+        found["section"] = plain.of_section(self.section, self.lattice_temperature_K, named)
         if self.orientation is not None:
             found["orientation"] = {"axis": list(self.orientation.axis), "up": list(self.orientation.up)}
         if self.materials:
             found["materials"] = {m.name: plain.of_material(m) for m in self.materials}
-        if self.potential is not None and (given := plain.of_potential(self.potential)):
+        if self.potential is not None and (given := plain.of_potential(self.potential, named)):
             found["potential"] = given
         carriers, accuracy = self.carriers, self.accuracy
         kelvin = [format_quantity(t, "temperature") for t in carriers.temperature_K]
         found["carriers"] = {"kind": carriers.kind, "temperature": kelvin}
         if carriers.fermi_level_eV is not None:
             found["carriers"]["fermi_level"] = format_quantity(carriers.fermi_level_eV, "energy")
+        found["carriers"]["model"] = carriers.model
         found["accuracy"] = {"subbands": accuracy.subbands, "energy": format_quantity(accuracy.energy_eV, "energy")}
         return found
 
@@ -195,12 +303,33 @@ class Problem:
         table = {
             name: [[v.quantity, v.value] for v in material.values]
             for name, material in self.resolved_materials().items()
-            if name not in own
+            if name not in own or material.extends
         }
-        content: dict[str, Any] = {"input": self.plain(), "table": table}
+        content: dict[str, Any] = {"input": self.plain(by_content=True), "table": table}
         if self.potential is not None and self.potential.function is not None:
             content["function"] = self.potential.function_digest
         return hashlib.sha256(json.dumps(content, sort_keys=True).encode()).hexdigest()
+
+
+def _check_directions(given: Orientation, hexagonal: Sequence[Material]) -> None:
+    """InputError where the orientation's directions are not at right angles in the wire's crystal."""
+    if not hexagonal:
+        _under_orientation(given, None, None)
+        return
+    unknown_c = [m for m in hexagonal if m.c_over_a is None]
+    if unknown_c and (crystal.is_slanted(given.axis) or crystal.is_slanted(given.up)):
+        missing = "lattice_constant" if unknown_c[0].lattice_constant_nm is None else "lattice_constant_c"
+        rule = "is missing: directions that are neither along c nor across it need c/a"
+        raise InputError(f"materials.{unknown_c[0].name}.{missing}", rule)
+    for material in hexagonal:
+        _under_orientation(given, "wurtzite", material.c_over_a)
+
+
+def _under_orientation(given: Orientation, kind: str | None, c_over_a: float | None) -> None:
+    try:
+        crystal.orthogonal(given.axis, given.up, kind, c_over_a)
+    except InputError as error:
+        raise error.under("orientation") from None
 
 
 def _fresh(names: Any, known: dict[str, str]) -> list[tuple[int, str]]:
@@ -210,19 +339,3 @@ def _fresh(names: Any, known: dict[str, str]) -> list[tuple[int, str]]:
         if name not in known:
             first.setdefault(name, k)
     return [(k, name) for name, k in first.items()]
-
-
-def _common_scale(materials: list[Material]) -> None:
-    """InputError where the conduction edges of these materials cannot be compared."""
-    for material in materials:
-        if material.conduction_edge_eV is None:
-            others = ", ".join(m.name for m in materials if m is not material)
-            rule = f"is missing: {material.name} and {others} admit carriers, so their edges must stand on one scale"
-            remedy = "give a conduction_edge to each of them under [materials.NAME]"
-            raise InputError(f"materials.{material.name}.conduction_edge", rule, remedy=remedy)
-    scales = {m.edge_scale: m.name for m in materials}
-    if len(scales) > 1:
-        (one, a), (two, b), *_ = scales.items()
-        rule = f"no common offset scale: the edge of {a} stands on the scale '{one}', that of {b} on '{two}'"
-        remedy = "describe all of them under [materials.NAME], each with a conduction_edge"
-        raise InputError("section", rule, remedy=remedy)
