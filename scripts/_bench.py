@@ -220,7 +220,7 @@ def one(size: float) -> None:
     from wiresolve.fem import eigen
     from wiresolve.fem.meshing import Mesher, SizeField
     from wiresolve.physics.pencil import Operator
-    from wiresolve.physics.subbands import solve_on
+    from wiresolve.physics.solved import solve_on
 
     begun = time.perf_counter()
     with Mesher(Section(Circle(diameter_nm=20), "p").pieces()) as mesher:

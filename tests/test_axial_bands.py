@@ -84,7 +84,7 @@ def round_level(angular: int, k: float) -> float:
 def certified(text: str) -> tuple[Wire, Certified]:
     wire = Wire(parse(text, Path()))
     accuracy = wire.problem.accuracy
-    return wire, certify(wire.draw, wire.operator, accuracy.subbands, accuracy.energy_eV, wire.barrier)
+    return wire, certify(wire.draw, wire.channels, accuracy.subbands, accuracy.energy_eV)
 
 
 def test_dispersion_of_a_round_well_with_a_mass_jump() -> None:
@@ -115,28 +115,28 @@ def test_second_order_terms_are_those_of_the_dispersion() -> None:
     """Axis-plane terms that jump: the mass from perturbation theory against a fine difference of direct solves."""
     wire, found = certified(SKEW)
     masses = listing(wire, found)
-    pencil, step = found.solved.pencil, 0.01
-    energy, _ = eigen.lowest(pencil.at(step), pencil.mass, 8, found.solved.shift_eV)
-    half = (energy[:4] - found.solved.energy_eV[:4]) / step**2
+    pencil, step = found.solved[0].pencil, 0.01
+    energy, _ = eigen.lowest(pencil.at(step), pencil.mass, 8, found.solved[0].shift_eV)
+    half = (energy[:4] - found.solved[0].energy_eV[:4]) / step**2
     finite = HBAR2_OVER_2M0 / half
-    level = found.solved.level[:4]
+    level = found.solved[0].level[:4]
     for number in np.unique(level):
         pick = level == number
         np.testing.assert_allclose(
             np.sort(masses.axial_mass[:4][pick]), np.sort(finite[pick]), rtol=2e-3, err_msg=f"level {number}"
         )
-    without = HBAR2_OVER_2M0 / np.diag(pencil.expected(2, found.solved.unknown_states))[:4].real
+    without = HBAR2_OVER_2M0 / np.diag(pencil.expected(2, found.solved[0].unknown_states))[:4].real
     assert (masses.axial_mass[:4] > 1.02 * without).all()
 
 
 def test_reduced_space_is_as_good_as_it_says() -> None:
     """E(k) of the reduced space lies above direct solves by no more than its bound, also between its points."""
     wire, found = certified(SKEW)
-    bands = listing(wire, found).bands
-    pencil = found.solved.pencil
+    bands = listing(wire, found).by_channel[0].bands
+    pencil = found.solved[0].pencil
     assert bands.error_bound_eV <= 1e-6
     for j in (7, 23, 38, 52):
-        energy, _ = eigen.lowest(pencil.at(float(bands.k_per_nm[j])), pencil.mass, 6, found.solved.shift_eV)
+        energy, _ = eigen.lowest(pencil.at(float(bands.k_per_nm[j])), pencil.mass, 6, found.solved[0].shift_eV)
         above = np.sort(bands.energy_eV[:, j]) - energy[:4]  # rows follow bands, which may cross
         assert (above > -1e-12).all()
         assert (above <= 2 * bands.error_bound_eV + 1e-12).all()

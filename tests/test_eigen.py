@@ -13,7 +13,7 @@ import scipy.sparse as sparse
 from wiresolve.describe.wirefile import parse
 from wiresolve.errors import ConvergenceError
 from wiresolve.fem import eigen
-from wiresolve.physics import subbands
+from wiresolve.physics import solved
 from wiresolve.physics.subbands import certify
 from wiresolve.physics.wire import Wire
 
@@ -134,13 +134,13 @@ def test_a_state_that_the_solver_drops_is_caught(monkeypatch: pytest.MonkeyPatch
         energy, states = honest(hamiltonian, mass, count + 1, shift)
         return np.delete(energy, lost), np.delete(states, lost, axis=1)
 
-    monkeypatch.setattr(subbands.eigen, "lowest", forgetful)
-    found = certify(wire.draw, wire.operator, 6, 1e-4)
+    monkeypatch.setattr(solved.eigen, "lowest", forgetful)
+    found = certify(wire.draw, wire.channels, 6, 1e-4)
     assert len(calls) == 2
     assert found.missed == 0
     monkeypatch.undo()
-    whole = certify(wire.draw, wire.operator, 6, 1e-4)
-    np.testing.assert_allclose(found.solved.energy_eV[:6], whole.solved.energy_eV[:6], rtol=1e-12)
+    whole = certify(wire.draw, wire.channels, 6, 1e-4)
+    np.testing.assert_allclose(found.energy_eV, whole.energy_eV, rtol=1e-12)
 
 
 def test_a_state_that_stays_lost_is_an_error(monkeypatch: pytest.MonkeyPatch) -> None:
@@ -151,6 +151,6 @@ def test_a_state_that_stays_lost_is_an_error(monkeypatch: pytest.MonkeyPatch) ->
         energy, states = honest(hamiltonian, mass, count + 1, shift)
         return np.delete(energy, 1), np.delete(states, 1, axis=1)
 
-    monkeypatch.setattr(subbands.eigen, "lowest", blind)
+    monkeypatch.setattr(solved.eigen, "lowest", blind)
     with pytest.raises(ConvergenceError, match="missing"):
-        certify(wire.draw, wire.operator, 6, 1e-4)
+        certify(wire.draw, wire.channels, 6, 1e-4)

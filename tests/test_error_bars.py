@@ -153,7 +153,7 @@ CASES: dict[str, Case] = {
 
 def certified(case: Case, accuracy_eV: float, count: int = COUNT) -> Certified:
     ready = Wire(case.problem(accuracy_eV, count))
-    return certify(ready.draw, ready.operator, count, accuracy_eV, ready.barrier)
+    return certify(ready.draw, ready.channels, count, accuracy_eV)
 
 
 @lru_cache(maxsize=32)
@@ -165,14 +165,14 @@ def studied(name: str) -> tuple[Array, Array]:
     else:
         reference = certified(case, REFERENCE_eV)
         assert reference.met
-        truth, blur = reference.solved.energy_eV[:COUNT], reference.solved.bar_eV[:COUNT]
+        truth, blur = reference.solved[0].energy_eV[:COUNT], reference.solved[0].bar_eV[:COUNT]
     errors, bars = [], []
     for accuracy in ACCURACIES_eV:
         found = certified(case, accuracy)
         assert found.met and found.missed == 0
-        bar = found.solved.bar_eV[:COUNT]
+        bar = found.solved[0].bar_eV[:COUNT]
         assert (bar <= accuracy).all()
-        errors.append(np.maximum(np.abs(found.solved.energy_eV[:COUNT] - truth), 1e-16))
+        errors.append(np.maximum(np.abs(found.solved[0].energy_eV[:COUNT] - truth), 1e-16))
         bars.append(bar + blur)
     return np.concatenate(errors), np.concatenate(bars)
 
@@ -194,7 +194,7 @@ def test_ninety_nine_of_a_hundred_bars_hold() -> None:
 
 def test_entries_of_a_level_share_one_bar() -> None:
     # The pairs of a regular pentagon are pairs by symmetry, which no mesh of triangles respects.
-    found = certified(CASES["pentagon"], 1e-4).solved
+    found = certified(CASES["pentagon"], 1e-4).solved[0]
     assert found.level[:COUNT].tolist() == [1, 2, 2, 3, 3]
     assert found.bar_eV[1] == found.bar_eV[2] and found.bar_eV[3] == found.bar_eV[4]
     assert abs(found.energy_eV[2] - found.energy_eV[1]) <= 2 * found.bar_eV[1]
@@ -209,9 +209,9 @@ def test_bars_see_a_kink_of_the_potential() -> None:
     exact = certified(Case(hard(box, beyond), potential=valley), REFERENCE_eV)
     assert exact.met
     for accuracy in ACCURACIES_eV:
-        found = certified(Case(hard(box), potential=valley), accuracy).solved
-        bar = found.bar_eV[:COUNT] + exact.solved.bar_eV[:COUNT]
-        error = np.abs(found.energy_eV[:COUNT] - exact.solved.energy_eV[:COUNT])
+        found = certified(Case(hard(box), potential=valley), accuracy).solved[0]
+        bar = found.bar_eV[:COUNT] + exact.solved[0].bar_eV[:COUNT]
+        error = np.abs(found.energy_eV[:COUNT] - exact.solved[0].energy_eV[:COUNT])
         assert (error <= 2 * bar).all(), (accuracy, error, bar)
 
 

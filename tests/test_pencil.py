@@ -18,7 +18,8 @@ from wiresolve.fem.mesh import Mesh
 from wiresolve.fem.meshing import Mesher, SizeField
 from wiresolve.fem.space import Space
 from wiresolve.physics.pencil import Operator, build
-from wiresolve.physics.subbands import certify, solve_on
+from wiresolve.physics.solved import solve_on
+from wiresolve.physics.subbands import Channel, certify
 from wiresolve.physics.wire import Wire
 
 WIDTH, HEIGHT = 11.0, 7.0
@@ -155,7 +156,7 @@ def solved(section: Section, tensors: dict[str, np.ndarray], edge: dict[str, flo
         inverse = inverse if sheared else without_common_shear(inverse)
         return Operator(tuple(coefficients(w, edge[r.material]) for w, r in zip(inverse, mesh.regions, strict=True)))
 
-    return certify(lambda distance: section.pieces(), operator, 4, 1e-6).solved
+    return certify(lambda distance: section.pieces(), [Channel("zone centre", "zone centre", 1, operator)], 4, 1e-6).solved[0]
 
 
 def test_axis_plane_terms_of_one_material_go_into_the_axial_mass() -> None:

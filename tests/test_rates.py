@@ -14,7 +14,8 @@ from tests.truth._wires import LAPLACE, wire
 from wiresolve.describe.section import Section
 from wiresolve.describe.shapes import Circle, Ellipse, Hexagon, Polygon, Shape
 from wiresolve.fem.meshing import Mesher, SizeField
-from wiresolve.physics.subbands import certify, solve_on
+from wiresolve.physics.solved import solve_on
+from wiresolve.physics.subbands import certify
 from wiresolve.physics.wire import Wire
 
 Array = NDArray[np.float64]
@@ -70,7 +71,7 @@ def graded(name: str, accuracies: Sequence[float] = (1e-2, 1e-3, 1e-4, 1e-5, 1e-
     unknowns, errors = [], []
     for accuracy in accuracies:
         ready = problem(shape, accuracy)
-        solved = certify(ready.draw, ready.operator, COUNT, accuracy, ready.barrier).solved
+        solved = certify(ready.draw, ready.channels, COUNT, accuracy).solved[0]
         unknowns.append(len(solved.pencil.kept))
         errors.append(float(np.abs(solved.energy_eV[:COUNT] / exact[:COUNT] - 1).max()))
     return np.array(unknowns), np.array(errors)

@@ -13,7 +13,8 @@ from wiresolve.describe.problem import Problem
 from wiresolve.describe.section import Section
 from wiresolve.describe.shapes import Circle
 from wiresolve.physics.axial_bands import dispersion
-from wiresolve.physics.subbands import Certified, certify, certify_at
+from wiresolve.physics.solved import certify_at
+from wiresolve.physics.subbands import Certified, certify
 from wiresolve.physics.wire import Wire
 from wiresolve.solve import solve
 
@@ -80,20 +81,20 @@ def entries(table: list[tuple[str, int]]) -> list[float]:
 @lru_cache(maxsize=2)
 def certified(wall: Wall, count: int, accuracy_eV: float) -> Certified:
     ready = Wire(wall.problem(count, accuracy_eV))
-    found = certify(ready.draw, ready.operator, count, accuracy_eV, ready.barrier)
+    found = certify(ready.draw, ready.channels, count, accuracy_eV)
     assert found.met
     return found
 
 
 def in_motion(wall: Wall, k_per_nm: float, count: int, accuracy_eV: float) -> Any:
     """Energies at one k: the pencil at that k, solved."""
-    solved = certified(wall, count, accuracy_eV).solved
+    solved = certified(wall, count, accuracy_eV).solved[0]
     return certify_at(solved, k_per_nm, count).energy_eV[:count]
 
 
 def in_reduced_space(wall: Wall, k_per_nm: float, count: int, accuracy_eV: float) -> Any:
     """The same from the space that a few solved k span, as E(k) is found for a result."""
-    solved = certified(wall, count, accuracy_eV).solved
+    solved = certified(wall, count, accuracy_eV).solved[0]
     k = k_per_nm * (np.arange(14) / 10)
     bands = dispersion(solved.pencil, solved.energy_eV, solved.unknown_states, k, solved.shift_eV, accuracy_eV, count)
     return bands.energy_eV[:, 10]

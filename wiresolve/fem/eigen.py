@@ -117,12 +117,15 @@ def count_below(hamiltonian: Any, mass: Any, energy: float) -> int:
     raise ConvergenceError(f"the states below {energy:.6g} eV could not be counted")
 
 
-def lowest(hamiltonian: Any, mass: Any, count: int, shift: float) -> tuple[Array, NDArray[Any]]:
+def lowest(
+    hamiltonian: Any, mass: Any, count: int, shift: float, tolerance: float = _TOLERANCE
+) -> tuple[Array, NDArray[Any]]:
     """The `count` states nearest above `shift`, which must lie below the spectrum or in a gap.
 
     Parameters
     ----------
     hamiltonian, mass : (n, n) sparse Hermitian matrices, `mass` positive definite.
+    tolerance : of the iteration, relative; vectors are as exact, energies as its square.
 
     Returns
     -------
@@ -135,13 +138,15 @@ def lowest(hamiltonian: Any, mass: Any, count: int, shift: float) -> tuple[Array
         values, vectors = dense.eigh(hamiltonian.toarray(), mass.toarray(), subset_by_index=(0, count - 1))
         return values, vectors
     if count <= 2 * _SLICE:
-        _, vectors = _nearest(hamiltonian, mass, factor(hamiltonian, mass, shift), count)
+        _, vectors = _nearest(hamiltonian, mass, factor(hamiltonian, mass, shift), count, tolerance)
     else:
         vectors = _sliced(hamiltonian, mass, count, shift)
     return ritz(hamiltonian, mass, vectors)
 
 
-def _nearest(hamiltonian: Any, mass: Any, inverse: Factor, count: int) -> tuple[Array, NDArray[Any]]:
+def _nearest(
+    hamiltonian: Any, mass: Any, inverse: Factor, count: int, tolerance: float = _TOLERANCE
+) -> tuple[Array, NDArray[Any]]:
     """The `count` states nearest to the factor's shift on either side, ascending."""
     n, kind = hamiltonian.shape[0], np.result_type(hamiltonian.dtype, mass.dtype)
     operator = sparse_linalg.LinearOperator((n, n), matvec=inverse.solve, dtype=kind)
@@ -153,7 +158,7 @@ def _nearest(hamiltonian: Any, mass: Any, inverse: Factor, count: int) -> tuple[
             sigma=inverse.shift,
             OPinv=operator,
             v0=_start(n, kind),
-            tol=_TOLERANCE,
+            tol=tolerance,
             ncv=min(n, 2 * count + 8),
         )
     except sparse_linalg.ArpackNoConvergence as fault:

@@ -22,6 +22,8 @@ Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 Local = Callable[[Space, slice | Ints], NDArray[Any]]
 """Element matrices of an operator on some cells of a space, shape (cells, nodes x bands, nodes x bands)."""
+Piece = tuple[slice, Ints, NDArray[Any], NDArray[Any]]
+"""Some cells: which, their rows (c, n), element matrices (c, n, n), and loads (c, n, m)."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -139,33 +141,53 @@ class _Parts:
 
 def _inverse_iteration(parts: _Parts, block: NDArray[Any], shift: float) -> NDArray[Any]:
     """(H - shift M)^-1 M applied to a block on all nodes, zero on the walls."""
-    space, bands = parts.space, parts.bands
+
+    def pieces() -> Iterator[Piece]:
+        for chunk, dofs, h, w in parts:
+            yield chunk, dofs, h - shift * w, w @ block[dofs]
+
+    return condensed_solve(parts.space, parts.bands, pieces, block.shape[1])
+
+
+def condensed_solve(
+    space: Space, bands: int, pieces: Callable[[], Iterator[Piece]], columns: int
+) -> NDArray[Any]:
+    """Solve S y = load for `columns` loads on all nodes, zero on the walls, inner nodes condensed cell by cell.
+
+    Parameters
+    ----------
+    pieces : makes an iterator over the cells in chunks, called twice: the chunk, its rows, and its element matrices of
+        S, Hermitian positive definite, and loads.
+    """
     element = triangle(space.mesh.degree)
     outer = (element.count - element.inner) * bands
     unknown = np.zeros(len(space.nodes), dtype=bool)
     unknown[space.dofs[:, : element.count - element.inner]] = True
     unknown &= ~space.wall
     unknown = np.repeat(unknown, bands)
-    number = np.full(len(block), -1, dtype=np.int32)
+    number = np.full(len(unknown), -1, dtype=np.int32)
     number[unknown] = np.arange(unknown.sum(), dtype=np.int32)
-    kind = np.result_type(block.dtype, next(iter(parts))[2].dtype)
-    condensed = np.empty((len(space.cells), outer, outer), dtype=kind)
-    right = np.zeros((int(unknown.sum()) + 1, block.shape[1]), dtype=kind)
-    for chunk, dofs, h, w in parts:
-        s, load = h - shift * w, w @ block[dofs]
+    condensed: Any = None
+    right: Any = None
+    for chunk, dofs, s, load in pieces():
+        if condensed is None:
+            kind = np.result_type(load.dtype, s.dtype)
+            condensed = np.empty((len(space.cells), outer, outer), dtype=kind)
+            right = np.zeros((int(unknown.sum()) + 1, columns), dtype=kind)
         pulled, given = _condensation(s, load, outer)
         condensed[chunk] = s[:, :outer, :outer] - s[:, :outer, outer:] @ pulled
         # Rows on the walls have the number -1: they end in a last row that is dropped.
         np.add.at(right, number[dofs[:, :outer]], load[:, :outer] - s[:, :outer, outer:] @ given)
     rim = number[with_bands(space.dofs[:, : element.count - element.inner], bands)]
     matrix = _gathered(condensed, rim, int(unknown.sum()))
+    kind = condensed.dtype
     del condensed
     solved = solve_definite(matrix, right[:-1])
     del matrix, right
-    out = np.zeros((len(block), block.shape[1]), dtype=kind)
+    out = np.zeros((len(unknown), columns), dtype=kind)
     out[unknown] = solved
-    for _, dofs, h, w in parts:
-        pulled, given = _condensation(h - shift * w, w @ block[dofs], outer)
+    for _, dofs, s, load in pieces():
+        pulled, given = _condensation(s, load, outer)
         out[dofs[:, outer:]] = given - pulled @ out[dofs[:, :outer]]
     return out
 

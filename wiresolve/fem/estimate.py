@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from wiresolve.fem.corners import Corner
 from wiresolve.fem.enrich import Enriched
 from wiresolve.fem.meshing import SizeField
+from wiresolve.fem.space import Space
 
 Array = NDArray[np.float64]
 
@@ -33,18 +34,24 @@ def bar_factor(corners: Sequence[Corner]) -> float:
     return float(max(BAR_FACTOR, 1.15 / (1 - (4 / 6) ** (4 * lowest))))
 
 
-def bars(enriched: Enriched, factor: float, levels: NDArray[np.int64] | None = None) -> Array:
-    """Error bars (m,) of the degree-4 energies: the fall times a factor; entries of one level share the widest."""
+def bars(enriched: Enriched, factor: float) -> Array:
+    """Error bars (m,) of the degree-4 energies: the fall times a factor."""
     # Errors of geometry and of the functions can cancel in the fall, but not in the cells' shares.
     fall = np.maximum(np.abs(enriched.fall_eV), 0.5 * enriched.indicator_eV.sum(axis=0))
-    bar = np.asarray(factor * fall + BAR_FLOOR * np.abs(enriched.energy_eV).max())
-    if levels is not None:
-        for level in np.unique(levels):
-            bar[levels == level] = bar[levels == level].max()
-    return bar
+    return np.asarray(factor * fall + BAR_FLOOR * np.abs(enriched.energy_eV).max())
 
 
-def finer(enriched: Enriched, before: SizeField, corners: Sequence[Corner], target_eV: float, wanted: int) -> SizeField:
+def shared(bar: Array, levels: NDArray[np.int64]) -> Array:
+    """Bars (m,) of which the entries of one level share the widest."""
+    widest = np.array(bar)
+    for level in np.unique(levels):
+        widest[levels == level] = bar[levels == level].max()
+    return widest
+
+
+def finer(
+    space: Space, share_eV: Array, before: SizeField, corners: Sequence[Corner], target_eV: float
+) -> SizeField:
     """The size field at which the fall of each wanted state would be `target_eV`.
 
     A cell's share of the fall goes like size^(2 p + 2) at degree p = 4, or like size^(2 a) beside a corner of exponent
@@ -52,11 +59,11 @@ def finer(enriched: Enriched, before: SizeField, corners: Sequence[Corner], targ
 
     Parameters
     ----------
+    share_eV : (c, m) each cell's share of the fall of every wanted state, on the space's cells.
     corners : the singular corners of the drawing, at which cells may shrink by much more than elsewhere.
     """
-    mesh, cells = enriched.space.mesh, enriched.space.cells
-    share = enriched.indicator_eV[:, :wanted]
-    worst = share.max(axis=1)
+    mesh, cells = space.mesh, space.cells
+    worst = share_eV.max(axis=1)
     worst = np.maximum(worst, 1e-10 * worst.max() + 1e-300)
     power = 2 * 4 + 2
     each = (target_eV / (worst ** (2 / power)).sum()) ** (power / (power - 2))

@@ -6,7 +6,7 @@ functions of neighbouring cells match by construction. Quadrature and the refere
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from functools import cache, cached_property
 from typing import Any
@@ -51,12 +51,25 @@ def _composite_rule(order: int) -> tuple[Array, Array]:
 
 
 @cache
+def _tabulated(degree: int, order: int, composite: bool) -> tuple[Array, Array]:
+    at, weights = _composite_rule(12) if composite else _rule(order)
+    return weights, _reference_parts(triangle(degree), at)
+
+
+@cache
 def _reference_tensor(degree: int) -> Array:
     """int (d_a phi_i)(d_b phi_j) over the reference triangle, shape (9, n, n), with a, b = x, y, 1."""
     at, weights = _rule(2 * degree)
     parts = _reference_parts(triangle(degree), at)
     tensor = np.einsum("q,aqi,bqj->abij", weights, parts, parts, optimize=True)
     return np.asarray(tensor.reshape(9, parts.shape[2], -1))
+
+
+@cache
+def reference_mass(degree: int) -> Array:
+    """int phi_i phi_j over the reference triangle, shape (n, n)."""
+    count = triangle(degree).count
+    return np.asarray(_reference_tensor(degree)[8].reshape(count, count))
 
 
 def _reference_parts(element: LagrangeTriangle, at: Array) -> Array:
@@ -158,6 +171,11 @@ class Space:
     def _varying_rule(self) -> tuple[Array, Array]:
         return _composite_rule(12) if self.composite else _rule(self.quadrature_order)
 
+    @property
+    def tabulated(self) -> tuple[Array, Array]:
+        """Weights (q,) of the rule for varying fields; reference derivatives and values there, (3, q, functions)."""
+        return _tabulated(self.mesh.degree, self.quadrature_order, self.composite)
+
     @cached_property
     def quadrature_points(self) -> Array:
         """(c, q, 2) points in nm at which a varying field is wanted."""
@@ -254,11 +272,27 @@ class Space:
 
     def matrix(self, form: Form) -> sparse.csr_array:
         """The form on all `nodes` (walls included), shape (n, n)."""
-        dofs = self.dofs.astype(np.int32)
+        return self.gathered(lambda space, cells: space.elements(form, cells))
+
+    def gathered(
+        self, local: Callable[[Space, slice | Ints], NDArray[Any]], only: Flags | None = None
+    ) -> sparse.csr_array:
+        """The sum of element matrices on all `nodes` (walls included), shape (n, n).
+
+        Parameters
+        ----------
+        local : makes the element matrices (k, nodes, nodes) of some of the space's cells.
+        only : (c,) cells that count, or None for all.
+        """
+        numbers = np.arange(len(self.cells)) if only is None else np.flatnonzero(only)
+        dofs = self.dofs[numbers].astype(np.int32)
         n, count = len(self.nodes), dofs.shape[1]
-        data = np.empty((len(dofs), count, count))
-        for chunk in self.chunks():
-            data[chunk] = self.elements(form, chunk)
+        data: NDArray[Any] = np.empty((len(dofs), count, count))
+        for start in range(0, len(numbers), _CHUNK):
+            made = local(self, numbers[start : start + _CHUNK])
+            if np.iscomplexobj(made) and not np.iscomplexobj(data):
+                data = data.astype(complex)
+            data[start : start + _CHUNK] = made
         rows = np.broadcast_to(dofs[:, :, None], data.shape).ravel()
         columns = np.broadcast_to(dofs[:, None, :], data.shape).ravel()
         return sparse.csr_array((data.ravel(), (rows, columns)), shape=(n, n))

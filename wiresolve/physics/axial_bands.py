@@ -12,7 +12,6 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.optimize import linear_sum_assignment
 
 from wiresolve.errors import ConvergenceError
 from wiresolve.fem import eigen
@@ -159,6 +158,8 @@ def dispersion(
 
 def _reduced(pencil: Pencil, space: NDArray[Any], k_per_nm: Array, count: int) -> tuple[Array, list[NDArray[Any]]]:
     """E(k) in the reduced space, each band followed through crossings by the overlap of its states from k to k."""
+    from scipy.optimize import linear_sum_assignment
+
     parts = [_sandwich(h, space) for h in (pencil.h0, pencil.h1, pencil.h2)]
     table = np.empty((count, len(k_per_nm)))
     coordinates: list[NDArray[Any]] = []

@@ -1,20 +1,19 @@
-"""The solved states as they are listed: canonical modes, shares, axial masses, E(k), and the spectrum with its tail."""
+"""The solved states as they are listed: canonical modes, shares, axial masses and E(k), channel by channel."""
 
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe.section import Piece
-from wiresolve.fem import eigen
-from wiresolve.physics import modes
+from wiresolve.physics import local_axial, modes
 from wiresolve.physics.axial_bands import AxialBands, curvature, dispersion
-from wiresolve.physics.spectrum import Spectrum
-from wiresolve.physics.subbands import Certified, Solved, certify_at, levels
+from wiresolve.physics.solved import Solved, certify_at
+from wiresolve.physics.subbands import Certified
 from wiresolve.physics.wire import Wire
 from wiresolve.units import HBAR2_OVER_2M0, KB
 
@@ -22,26 +21,25 @@ Array = NDArray[np.float64]
 
 SPIN = 2
 """Both spins share each effective-mass state."""
-_THERMAL_REACH = 12.0
+THERMAL_REACH = 12.0
 """States are solved up to this many kT above the lowest (20 above the Fermi level); above, they are counted by area."""
-_FERMI_REACH = 20.0
-_ROUGH = 0.02
-"""States above the listed ones are used while their error is below this many kT."""
-_MOST_THERMAL = 80
-_K_POINTS = 61
+K_POINTS = 61
 _AXIAL_eV = 1e-6
 """E(k) between the minima is never asked for more closely than this: the mesh is made for k = 0."""
 
 
 @dataclass(frozen=True, eq=False)
-class Listing:
-    """What is known of each solved state, the wanted ones first (m states, m at least the wanted number).
+class Listed:
+    """What is known of the solved states of one channel, the listed ones first (m states).
 
     Attributes
     ----------
     energy_eV, bar_eV, k_min_per_nm : (m,) minimum over k, its bar, and where it lies.
     axial_mass, axial_mass_error : (m,) in m0 at the minimum; NaN where E(k) starts linearly.
     states : (nodes, m) canonical envelope functions at k = 0.
+    shares : probability by region, (m,) each.
+    bands : E(k) of the listed states (at least of one).
+    closed : E(k) is a parabola, or follows one relation of energy and k^2 that holds all over the section.
     """
 
     energy_eV: Array
@@ -52,44 +50,161 @@ class Listing:
     states: NDArray[Any]
     shares: Mapping[str, Array]
     bands: AxialBands
-    parabolic: bool
-    valley: str
-    valley_degeneracy: int
+    closed: bool
+
+
+@dataclass(frozen=True, eq=False)
+class Listing:
+    """The wanted entries of all channels, by energy (n of them).
+
+    Attributes
+    ----------
+    energy_eV, bar_eV, k_min_per_nm, axial_mass, axial_mass_error, shares : (n,), as in `Listed`.
+    states : (nodes, n).
+    valley, valley_kind, valley_degeneracy : of each entry: the group's label, its kind, and for how many it stands.
+    by_channel : each channel's own.
+    """
+
+    energy_eV: Array
+    bar_eV: Array
+    k_min_per_nm: Array
+    axial_mass: Array
+    axial_mass_error: Array
+    states: NDArray[Any]
+    shares: Mapping[str, Array]
+    valley: tuple[str, ...]
+    valley_kind: tuple[str, ...]
+    valley_degeneracy: tuple[int, ...]
+    by_channel: tuple[Listed, ...]
 
 
 def listing(wire: Wire, certified: Certified) -> Listing:
     """Everything that is listed of the certified states."""
-    solved = certified.solved
+    reach = _energy_reach(wire, certified)
+    each = tuple(
+        _listed(wire, solved, n, reach) for solved, n in zip(certified.solved, certified.listed, strict=True)
+    )
+    entries = certified.entries
+
+    def gathered(name: str) -> Array:
+        return np.array([getattr(each[c], name)[i] for c, i in entries])
+
+    channels = [certified.channels[c] for c, _ in entries]
+    regions = {name for one in each for name in one.shares}
+    energy = gathered("energy_eV")
+    # A minimum that lies off k = 0 may bring entries into another order than their energies at k = 0 have.
+    order = np.argsort(energy, kind="stable")
+    return Listing(
+        energy_eV=energy[order],
+        bar_eV=gathered("bar_eV")[order],
+        k_min_per_nm=gathered("k_min_per_nm")[order],
+        axial_mass=gathered("axial_mass")[order],
+        axial_mass_error=gathered("axial_mass_error")[order],
+        states=np.column_stack([each[c].states[:, i] for c, i in entries[order]]),
+        shares={
+            name: np.array([each[c].shares[name][i] if name in each[c].shares else 0.0 for c, i in entries[order]])
+            for name in sorted(regions)
+        },
+        valley=tuple(channels[i].label for i in order),
+        valley_kind=tuple(channels[i].valley for i in order),
+        valley_degeneracy=tuple(channels[i].degeneracy for i in order),
+        by_channel=each,
+    )
+
+
+def _listed(wire: Wire, solved: Solved, listed: int, reach_eV: float) -> Listed:
+    """One channel's states; without a listed one, E(k) is taken for a parabola."""
     whole = int(solved.level[-1])
     unknowns = modes.canonical(solved.pencil, solved.unknown_states, solved.level, whole)
     states = solved.pencil.spread(unknowns)
-    coarse = curvature(solved.pencil, solved.energy_eV, unknowns, solved.level, solved.shift_eV)
+    shares = modes.shares(solved.pencil.space, states)
+    if not listed:
+        return _unlisted(solved, unknowns, states, shares)
+    count = listed
+    if solved.relation is None:
+        return _locally(solved, unknowns, states, shares, count, reach_eV)
+    relation, pencil = solved.relation, solved.pencil
+    coarse = curvature(pencil, solved.value_eV, unknowns, solved.level, solved.shift_eV)
     # The same at degree 6 shows what the mesh still does to the mass.
     fine_states = solved.enriched.states[solved.enriched_pencil.kept]
     fine = curvature(solved.enriched_pencil, solved.enriched.energy_eV, fine_states, solved.level, solved.shift_eV)
-    mass = HBAR2_OVER_2M0 / coarse
-    error = solved.bar_factor * np.abs(HBAR2_OVER_2M0 / fine - mass) + 1e-12 * np.abs(mass)
+    heavier = 1 / relation.slope(solved.energy_eV)
+    mass = HBAR2_OVER_2M0 / coarse * heavier
+    error = solved.bar_factor * np.abs(HBAR2_OVER_2M0 / fine * heavier - mass) + 1e-12 * np.abs(mass)
+    growth = relation.alpha_per_eV * solved.bar_eV
+    error = error + 2 * growth / heavier * np.abs(mass)
 
-    reach = _energy_reach(wire, certified)
     stiffness = np.nanmedian(np.abs(coarse)) if np.isfinite(coarse).any() else HBAR2_OVER_2M0
-    k = np.linspace(0, np.sqrt(reach / stiffness), _K_POINTS)
-    bands = dispersion(
-        solved.pencil, solved.energy_eV, unknowns, k, solved.shift_eV,
-        max(0.1 * wire.problem.accuracy.energy_eV, _AXIAL_eV), certified.wanted,
-    )  # fmt: skip
+    lowest = solved.energy_eV[:1]
+    far = float((relation.value(lowest + reach_eV) - relation.value(lowest))[0])
+    k = np.linspace(0, np.sqrt(far / stiffness), K_POINTS)
+    accuracy = max(0.1 * wire.problem.accuracy.energy_eV, _AXIAL_eV)
+    bands = dispersion(pencil, solved.value_eV, unknowns, k, solved.shift_eV, accuracy, count)
+    parabola = solved.value_eV[:count, None] + coarse[:count, None] * k**2
+    closed = bool(np.isfinite(coarse).all() and np.abs(bands.energy_eV - parabola).max() < 1e-9)
+    bands = replace(bands, energy_eV=relation.energy(bands.energy_eV))
     energy, bar, k_min = solved.energy_eV.copy(), solved.bar_eV.copy(), np.zeros(len(solved.energy_eV))
-    below = energy[: certified.wanted] - bands.energy_eV.min(axis=1) > bar[: certified.wanted]
-    if below.any():
-        energy, bar, k_min, mass, error = _off_centre(
-            solved, bands, np.flatnonzero(below), energy, bar, k_min, mass, error
-        )
-    material = wire.materials[carrying_piece(wire).material]
-    parabola = solved.energy_eV[: certified.wanted, None] + coarse[: certified.wanted, None] * k**2
-    parabolic = bool(np.isfinite(coarse).all() and np.abs(bands.energy_eV - parabola).max() < 1e-9)
-    return Listing(
-        energy, bar, k_min, mass, error, states, modes.shares(solved.pencil.space, states), bands, parabolic,
-        material.valley, material.valley_degeneracy,
-    )  # fmt: skip
+    below = energy[:count] - bands.energy_eV.min(axis=1) > bar[:count]
+    for i in np.flatnonzero(below):
+        k_min[i], bottom = _minimum(bands, int(i))
+        there = certify_at(solved, float(k_min[i]), int(i) + 1)
+        energy[i], bar[i] = there.energy_eV[i], there.bar_eV[i]
+        mass[i], error[i] = _mass_there(bands, int(i), bottom, bar[i])
+    return Listed(energy, bar, k_min, mass, error, states, shares, bands, closed)
+
+
+def _unlisted(
+    solved: Solved, unknowns: NDArray[Any], states: NDArray[Any], shares: Mapping[str, Array]
+) -> Listed:
+    """States that are there for thermal sums only: masses without what terms linear in k add."""
+    along = np.diag(solved.pencil.expected(2, unknowns)).real
+    slope = 1.0 if solved.relation is None else solved.relation.slope(solved.energy_eV)
+    mass = HBAR2_OVER_2M0 / (along * slope)
+    none = AxialBands(np.linspace(0, 1e-3, 4), np.zeros((0, 4)), 0.0)
+    zeros = np.zeros(len(mass))
+    return Listed(solved.energy_eV, solved.bar_eV, zeros, mass, 0.1 * mass, states, shares, none, closed=True)
+
+
+def _locally(
+    solved: Solved, unknowns: NDArray[Any], states: NDArray[Any], shares: Mapping[str, Array], count: int, reach: float
+) -> Listed:
+    """The same where masses grow with energy differently from place to place."""
+    family, energy = solved.local_mass, solved.energy_eV.copy()
+    assert family is not None
+    bar, k_min = solved.bar_eV.copy(), np.zeros(len(energy))
+    along = np.diag(solved.pencil.expected(2, unknowns)).real
+    k = np.linspace(0, np.sqrt(1.5 * reach / np.median(along)), K_POINTS)
+    bands = local_axial.dispersion(family, energy, unknowns, k, solved.phase_space, count)
+    if family.sheared:
+        inner = (bands.energy_eV[:, 1] - bands.energy_eV[:, 0]) / k[1] ** 2
+        coarse = np.concatenate([inner, along[count:]])
+    else:
+        coarse = local_axial.curvature(family, energy, unknowns, solved.level)
+    mass = HBAR2_OVER_2M0 / coarse
+    fine = np.diag(
+        solved.enriched_pencil.expected(2, solved.enriched.states[solved.enriched_pencil.kept])
+    ).real  # fmt: skip
+    error = 2 * solved.bar_factor * np.abs(fine / along - 1) * np.abs(mass) + 1e-9 * np.abs(mass)
+    for i in np.flatnonzero(energy[:count] - bands.energy_eV.min(axis=1) > bar[:count]):
+        k_min[i], bottom = _minimum(bands, int(i))
+        energy[i] = bottom[2]
+        bar[i] += bands.error_bound_eV
+        mass[i], error[i] = _mass_there(bands, int(i), bottom, bar[i])
+    return Listed(energy, bar, k_min, mass, error, states, shares, bands, closed=False)
+
+
+def _minimum(bands: AxialBands, i: int) -> tuple[float, Array]:
+    """Where a band is lowest, and the parabola (from its own origin there: curvature, 0, energy) through it."""
+    k = bands.k_per_nm
+    j = int(np.clip(np.argmin(bands.energy_eV[i]), 1, len(k) - 2))
+    a, b, c = np.polyfit(k[j - 1 : j + 2] - k[j], bands.energy_eV[i, j - 1 : j + 2], 2)
+    return float(k[j] - b / (2 * a)), np.array([a, 0.0, c - b * b / (4 * a)])
+
+
+def _mass_there(bands: AxialBands, i: int, bottom: Array, bar: float) -> tuple[float, float]:
+    mass = HBAR2_OVER_2M0 / bottom[0]
+    step = bands.k_per_nm[1] - bands.k_per_nm[0]
+    return mass, abs(mass) * (4 * (bar + bands.error_bound_eV) / (bottom[0] * step**2) + 1e-3)
 
 
 def carrying_piece(wire: Wire) -> Piece:
@@ -100,120 +215,6 @@ def carrying_piece(wire: Wire) -> Piece:
 
 def _energy_reach(wire: Wire, certified: Certified) -> float:
     """How far up E(k) is wanted: the listed span, and 12 kT."""
-    energy = certified.solved.energy_eV[: certified.wanted]
+    energy = certified.energy_eV
     hottest = max(wire.problem.carriers.temperature_K)
-    return float(max(energy[-1] - energy[0], _THERMAL_REACH * KB * hottest, 0.02 * abs(energy[0]), 1e-3))
-
-
-def _off_centre(
-    solved: Solved,
-    bands: AxialBands,
-    which: NDArray[np.int64],
-    energy: Array,
-    bar: Array,
-    k_min: Array,
-    mass: Array,
-    error: Array,
-) -> tuple[Array, Array, Array, Array, Array]:
-    """Minima that lie off k = 0: where they are, and their energies solved there with bars of their own."""
-    k = bands.k_per_nm
-    for i in which:
-        j = int(np.clip(np.argmin(bands.energy_eV[i]), 1, len(k) - 2))
-        parabola = np.polyfit(k[j - 1 : j + 2] - k[j], bands.energy_eV[i, j - 1 : j + 2], 2)
-        k_min[i] = k[j] - parabola[1] / (2 * parabola[0])
-        there = certify_at(solved, float(k_min[i]), i + 1)
-        energy[i], bar[i] = there.energy_eV[i], there.bar_eV[i]
-        mass[i] = HBAR2_OVER_2M0 / parabola[0]
-        error[i] = abs(mass[i]) * (4 * (bar[i] + bands.error_bound_eV) / (parabola[0] * (k[1] - k[0]) ** 2) + 1e-3)
-    return energy, bar, k_min, mass, error
-
-
-def spectrum_of(wire: Wire, certified: Certified, found: Listing) -> Spectrum:
-    """The listed subbands, the states above them that temperature can reach, and a semiclassical tail."""
-    solved, wanted = certified.solved, certified.wanted
-    degeneracy = SPIN * found.valley_degeneracy
-    hottest = KB * max(*wire.problem.carriers.temperature_K, 1.0)
-    fermi = wire.problem.carriers.fermi_level_eV
-    lowest = float(solved.energy_eV[0])
-    ceiling = lowest + _THERMAL_REACH * hottest
-    if fermi is not None:
-        ceiling = max(ceiling, fermi + _FERMI_REACH * KB * wire.problem.carriers.temperature_K[0])
-    known = len(solved.energy_eV)
-    expected = int(solved.phase_space.count(np.array(ceiling))) + 4
-    count = min(max(known, expected), max(known, _MOST_THERMAL), len(solved.pencil.kept) // 4)
-    energy, bar, states = found.energy_eV, found.bar_eV, found.states
-    stiffness = _mean_stiffness(wire, solved)
-    mass = found.axial_mass
-    if count > known:
-        above, vectors = eigen.lowest(solved.pencil.h0, solved.pencil.mass, count, solved.shift_eV)
-        # Unrefined states: the error of a smooth state of degree 4 grows like E^5.
-        height = np.maximum((above[known:] - solved.shift_eV) / (energy[-1] - solved.shift_eV), 1.0)
-        rough = bar[-1] * height**5
-        # Where these errors would count against kT, the count by area is the better one.
-        count = known + int(np.searchsorted(rough, _ROUGH * hottest))
-        energy = np.concatenate([energy, above[known:count]])
-        bar = np.concatenate([bar, rough[: count - known]])
-        states = np.hstack([states, solved.pencil.spread(vectors[:, known:count])])
-        axial = np.diag(solved.pencil.expected(2, vectors[:, known:count])).real
-        mass = np.concatenate([mass, HBAR2_OVER_2M0 / axial])
-    unknown = ~(np.isfinite(mass) & (mass > 0))
-    unknown[:wanted] &= found.parabolic
-    mass = np.where(unknown, HBAR2_OVER_2M0 / stiffness, mass)
-    order = np.argsort(energy, kind="stable")
-    directions, names = _directions(wire, solved, states)
-    tail_energy = np.linspace(energy.max() + 1e-9, max(energy.max(), ceiling) + 40 * hottest, 257)
-    tail = solved.phase_space.count(tail_energy)
-    tail = degeneracy * np.maximum.accumulate(np.maximum(tail - len(energy), 0.0))
-    tail[0] = 0.0  # what the solved states are short of the smooth count joins in the first interval
-    table = None if found.parabolic else np.full((len(energy), len(found.bands.k_per_nm)), np.nan)
-    if table is not None:
-        table[:wanted] = found.bands.energy_eV
-    level = levels(energy[order], bar[order])
-    return Spectrum(
-        energy_eV=energy[order],
-        error_eV=bar[order],
-        axial_mass=np.where(np.isfinite(mass) & (mass > 0), mass, np.nan)[order],
-        degeneracy=np.full(len(energy), degeneracy),
-        level=level,
-        listed=wanted,
-        k_per_nm=None if table is None else found.bands.k_per_nm,
-        band_eV=None if table is None else table[order],
-        tail_energy_eV=tail_energy,
-        tail_count=tail,
-        tail_axial_mass=_tail_mass(solved, float(tail_energy[0]), ceiling),
-        direction_energy_eV=None if directions is None else directions[order],
-        direction_names=names,
-    )
-
-
-def _mean_stiffness(wire: Wire, solved: Solved) -> float:
-    """hbar^2/2m along the axis, averaged over the section."""
-    space = solved.pencil.space
-    by_region = np.array([float(c.quadratic[2, 2, 0, 0].real) for c in solved.operator.by_region])
-    weights = space.quadrature_weights.sum(axis=1)
-    return float(np.average(by_region[space.mesh.region[space.cells]], weights=weights))
-
-
-def _tail_mass(solved: Solved, low_eV: float, high_eV: float) -> float:
-    """Axial mass in m0 of the states counted by area: sqrt(m) averaged as they come, since a density goes like it."""
-    space = solved.pencil.space
-    weights = space.quadrature_weights.sum(axis=1)
-    region = space.mesh.region[space.cells]
-    middle = 0.5 * (low_eV + max(high_eV, low_eV + 1e-3))
-    share, root = 0.0, 0.0
-    for index, c in enumerate(solved.operator.by_region):
-        area = float(weights[region == index].sum())
-        in_plane = float(np.sqrt(np.linalg.det(c.quadratic[:2, :2, 0, 0].real)))
-        states = area * max(middle - float(c.constant[0, 0].real), 0.0) / in_plane
-        share += states
-        root += states * float(np.sqrt(HBAR2_OVER_2M0 / c.quadratic[2, 2, 0, 0].real))
-    return (root / share) ** 2 if share > 0 else 1.0
-
-
-def _directions(wire: Wire, solved: Solved, states: NDArray[Any]) -> tuple[Array | None, tuple[str, ...]]:
-    axes = wire.separating_axes
-    if axes is None:
-        return None, ()
-    found = modes.direction_energies(solved.pencil, states, axes, wire.axis_parts)
-    # The band edge belongs to no direction.
-    return found, ("width", "height")
+    return float(max(energy[-1] - energy[0], THERMAL_REACH * KB * hottest, 0.02 * abs(energy[0]), 1e-3))

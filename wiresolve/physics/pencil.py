@@ -8,7 +8,7 @@ of its own.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Any
 
@@ -17,6 +17,7 @@ import scipy.sparse as sparse
 from numpy.typing import NDArray
 
 from wiresolve.bands.coefficients import Coefficients
+from wiresolve.bands.nonparabolic import Relation
 from wiresolve.fem.space import Field, Form, Space
 
 Array = NDArray[np.float64]
@@ -42,11 +43,17 @@ class Operator:
     by_region : one entry a region of the mesh.
     potential : energy in eV at points (x, y) in nm, the same for all bands; None for none.
     coupling : further constant terms, each a function of (x, y) times an N x N Hermitian matrix.
+    nonparabolicity_per_eV : alpha of each region (one band only), or () for constant masses.
+    mass_energy_eV : the energy at which masses are taken: m (1 + alpha (E - edge - potential)); None for the edge's.
+    smooth : the potential is known to have no kink inside a region, so that one rule a cell integrates it.
     """
 
     by_region: tuple[Coefficients, ...]
     potential: Callable[[Array, Array], Array] | None = None
     coupling: tuple[tuple[Callable[[Array, Array], Array], NDArray[Any]], ...] = ()
+    nonparabolicity_per_eV: tuple[float, ...] = ()
+    mass_energy_eV: float | None = None
+    smooth: bool = False
 
     @property
     def bands(self) -> int:
@@ -58,8 +65,41 @@ class Operator:
         """Whether a field varies inside the regions."""
         return self.potential is not None or bool(self.coupling)
 
+    @property
+    def nonparabolic(self) -> bool:
+        """Whether masses grow with energy."""
+        return any(self.nonparabolicity_per_eV)
+
+    @property
+    def relation(self) -> Relation | None:
+        """The one relation between energies and constant-mass eigenvalues that holds in all regions, if there is one."""
+        if not self.nonparabolic:
+            return Relation(0.0, 0.0)
+        edges = {float(c.constant[0, 0].real) for c in self.by_region}
+        alphas = set(self.nonparabolicity_per_eV)
+        if self.varies or len(edges) > 1 or len(alphas) > 1:
+            return None
+        return Relation(edges.pop(), alphas.pop())
+
+    def at(self, energy_eV: float) -> Operator:
+        """The operator with every mass taken at one energy."""
+        return replace(self, mass_energy_eV=energy_eV)
+
+    def mass_ratio(self, space: Space, energy_eV: float) -> Field:
+        """m(E)/m, (c,) where it is constant in cells, else (c, q)."""
+        alpha = space.field(self.nonparabolicity_per_eV)
+        edge = space.field([float(c.constant[0, 0].real) for c in self.by_region])
+        if self.potential is None:
+            return np.asarray(1 + alpha * (energy_eV - edge))
+        at = space.quadrature_points
+        higher = np.asarray(self.potential(at[..., 0], at[..., 1]), dtype=float)
+        return np.asarray(1 + alpha[:, None] * (energy_eV - edge[:, None] - higher))
+
     def terms(self, space: Space) -> tuple[Term, ...]:
         """The operator as terms on a space; equal matrices share one form."""
+        lighter: Field | None = None
+        if self.mass_energy_eV is not None and self.nonparabolic:
+            lighter = 1 / self.mass_ratio(space, self.mass_energy_eV)
         gathered: dict[tuple[int, bytes], tuple[dict[tuple[str, str], Field], NDArray[Any]]] = {}
 
         def add(order: int, slot: tuple[str, str], field: Field, matrix: NDArray[Any]) -> None:
@@ -81,16 +121,19 @@ class Operator:
             if not np.any(space.mesh.region[space.cells] == index):
                 continue
             here = space.field(np.arange(len(self.by_region)) == index)
+            moving = here
+            if lighter is not None:
+                moving = here * lighter if lighter.ndim == 1 else here[:, None] * lighter
             for i, a in enumerate(_AXES):
                 for j, b in enumerate(_AXES):
-                    add(0, (a, b), here, c.quadratic[i, j])
+                    add(0, (a, b), moving, c.quadratic[i, j])
                 add(0, ("1", a), here, -0.5j * c.linear[i])
                 add(0, (a, "1"), here, 0.5j * c.linear[i])
-                add(1, (a, "1"), here, 1j * c.quadratic[i, 2])
-                add(1, ("1", a), here, -1j * c.quadratic[2, i])
+                add(1, (a, "1"), moving, 1j * c.quadratic[i, 2])
+                add(1, ("1", a), moving, -1j * c.quadratic[2, i])
             add(0, ("1", "1"), here, c.constant)
             add(1, ("1", "1"), here, c.linear[2])
-            add(2, ("1", "1"), here, c.quadratic[2, 2])
+            add(2, ("1", "1"), moving, c.quadratic[2, 2])
         varying = list(self.coupling)
         if self.potential is not None:
             varying.append((self.potential, np.eye(self.bands)))
@@ -172,6 +215,9 @@ class Pencil:
                 if term.order == 0 or k_per_nm:
                     block = space.elements(term.form, cells) * k_per_nm**term.order
                     total = total + (block * term.matrix[0, 0] if self.bands == 1 else np.kron(block, term.matrix))
+            if np.ndim(total) == 0:  # no part of this order
+                shape = space.dofs[cells].shape
+                return np.zeros((shape[0], shape[1] * self.bands, shape[1] * self.bands))
             return np.asarray(total)
 
         return elements
@@ -201,6 +247,8 @@ class Pencil:
         """<i|H_order|j> of states (n, m) of the pencil, (m, m), cell by cell: no large matrix is made for it."""
         full = self.spread(states)
         total: Any = np.zeros((states.shape[1], states.shape[1]))
+        if not states.shape[1]:
+            return np.asarray(total)
         for chunk in self.space.chunks():
             dofs = self.space.dofs[chunk]
             if self.bands > 1:

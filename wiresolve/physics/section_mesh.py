@@ -39,14 +39,14 @@ def mesh(problem: Problem, on_progress: Callable[[str, float, str], None] | None
 
     wire, accuracy = Wire(problem), problem.accuracy
     with threadpool_limits(limits=1, user_api="blas"):
-        done = certify(wire.draw, wire.operator, accuracy.subbands, accuracy.energy_eV, wire.barrier, on_progress)
-    space = done.solved.pencil.space
+        done = certify(wire.draw, wire.channels, accuracy.subbands, accuracy.energy_eV, on_progress)
+    space = done.space
     names = [region.name for region in space.mesh.regions]
     count = np.bincount(space.mesh.region, minlength=len(names))
     area = np.bincount(space.mesh.region[space.cells], space.quadrature_weights.sum(axis=1), minlength=len(names))
     return SectionMesh(
         mesh=space.mesh,
-        unknowns=len(done.solved.pencil.kept),
+        unknowns=len(done.solved[0].pencil.kept),
         cells=dict(zip(names, count.tolist(), strict=True)),
         areas_nm2=dict(zip(names, area.tolist(), strict=True)),
         met=done.met,

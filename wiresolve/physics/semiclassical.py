@@ -2,7 +2,8 @@
 
 N(E) = integral of m (E - V)+ / (2 pi hbar^2) over the section, less (length of the walls) x sqrt(2 m (E - V)) /
 (4 pi hbar) averaged over the section (H. Weyl's law with its boundary term; M. Kac, Am. Math. Mon. 73, 1 (1966)), with
-m = 1/sqrt(det W) from the in-plane inverse mass W.
+m = 1/sqrt(det W) from the in-plane inverse mass W; where the mass grows with energy, m (E - V) stands for
+m (E - V)(1 + alpha (E - V)).
 """
 
 from __future__ import annotations
@@ -26,21 +27,28 @@ class PhaseSpace:
     ----------
     area_nm2, edge_eV, stiffness_eV_nm2 : (p,) each piece's area, lowest energy, and hbar^2/2m = sqrt(det A).
     wall_nm : length of the walls.
+    alpha_per_eV : (p,) how the mass grows with energy.
     """
 
     area_nm2: Array
     edge_eV: Array
     stiffness_eV_nm2: Array
     wall_nm: float
+    alpha_per_eV: Array
 
     @property
     def bottom_eV(self) -> float:
         """Lowest energy in the section."""
         return float(self.edge_eV.min())
 
+    def wave_numbers_squared(self, energy_eV: Array) -> Array:
+        """In 1/nm^2, in each piece (last axis) at each energy; 0 where the energy lies below its edge."""
+        above = np.maximum(np.asarray(energy_eV)[..., None] - self.edge_eV, 0)
+        return np.asarray(above * (1 + self.alpha_per_eV * above) / self.stiffness_eV_nm2)
+
     def count(self, energy_eV: Array) -> Array:
         """Orbital states below each energy (same shape), never negative."""
-        above = np.maximum(np.asarray(energy_eV)[..., None] - self.edge_eV, 0) / self.stiffness_eV_nm2
+        above = self.wave_numbers_squared(energy_eV)
         inside = (self.area_nm2 * above).sum(axis=-1) / (4 * np.pi)
         share = self.area_nm2 / self.area_nm2.sum()
         return np.asarray(np.maximum(inside - self.wall_nm * (share * np.sqrt(above)).sum(axis=-1) / (4 * np.pi), 0))
@@ -60,13 +68,14 @@ def phase_space(space: Space, operator: Operator) -> PhaseSpace:
     edge = np.array([float(c.constant[0, 0].real) for c in operator.by_region])[region]
     stiffness = np.array([np.sqrt(np.linalg.det(c.quadratic[:2, :2, 0, 0].real)) for c in operator.by_region])[region]
     weights = space.quadrature_weights
+    alpha = np.array(operator.nonparabolicity_per_eV or [0.0] * len(operator.by_region))[region]
     if operator.potential is None:
         # Without a varying potential a region is one piece.
         regions = np.unique(region)
         area = np.array([weights[region == r].sum() for r in regions])
         first = [int(np.argmax(region == r)) for r in regions]
-        return PhaseSpace(area, edge[first], stiffness[first], space.wall_length_nm)
+        return PhaseSpace(area, edge[first], stiffness[first], space.wall_length_nm, alpha[first])
     at = space.quadrature_points
     energy = edge[:, None] + operator.potential(at[..., 0], at[..., 1])
-    spread = np.broadcast_to(stiffness[:, None], weights.shape)
-    return PhaseSpace(weights.ravel(), energy.ravel(), spread.ravel(), space.wall_length_nm)
+    spread, growth = (np.broadcast_to(by_cell[:, None], weights.shape).ravel() for by_cell in (stiffness, alpha))
+    return PhaseSpace(weights.ravel(), energy.ravel(), spread, space.wall_length_nm, growth)

@@ -9,8 +9,10 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
+from wiresolve.bands.nonparabolic import Relation
 from wiresolve.errors import InputError
-from wiresolve.physics.tabulated_band import TabulatedBand, tabulated_band
+from wiresolve.physics.tabulated_band import TabulatedBand, growing_band, tabulated_band
+from wiresolve.units import HBAR2_OVER_2M0
 
 Array = NDArray[np.float64]
 
@@ -28,8 +30,10 @@ class Spectrum:
     degeneracy : (n,) whole, spin times valley.
     level : (n,) whole, from 1, not falling: entries of one number are equal within their bars.
     listed : the first so many entries are the certified ones that are reported; the rest are there for thermal sums.
-    k_per_nm, band_eV : (m,) from 0 up and (n, m): axial dispersion, even in k, from the same energy zero. A row of NaN,
-        and k beyond the table, stand for the parabola with the axial mass.
+    k_per_nm, band_eV : (m,) or (n, m) from 0 up and (n, m): axial dispersion, even in k, from the same energy zero. A
+        row of NaN stands for the closed form, and k beyond the table for the parabola with the axial mass.
+    edge_eV, nonparabolicity_per_eV : (n,) or None: the closed form is e (1 + alpha e) = value + hbar^2 k^2 / 2m, with e
+        counted from the band edge; alpha = 0, or None, is the parabola.
     tail_energy_eV, tail_count : (q,) ascending energies, from the same zero and not below the last of `energy_eV`, and
         the semiclassical number of further subbands (times their degeneracies) with minima up to there, from 0 on.
     tail_axial_mass : their mass in m0.
@@ -50,6 +54,8 @@ class Spectrum:
     listed: int
     k_per_nm: Array | None = None
     band_eV: Array | None = None
+    edge_eV: Array | None = None
+    nonparabolicity_per_eV: Array | None = None
     tail_energy_eV: Array | None = None
     tail_count: Array | None = None
     tail_axial_mass: float | None = None
@@ -57,7 +63,8 @@ class Spectrum:
     direction_names: tuple[str, ...] = ()
 
     def __post_init__(self) -> None:
-        for name in ("energy_eV", "error_eV", "axial_mass", "k_per_nm", "band_eV", "tail_energy_eV", "tail_count"):
+        given = ("energy_eV", "error_eV", "axial_mass", "k_per_nm", "band_eV", "edge_eV", "nonparabolicity_per_eV")
+        for name in (*given, "tail_energy_eV", "tail_count"):
             value = getattr(self, name)
             if value is not None:
                 object.__setattr__(self, name, np.asarray(value, dtype=float))
@@ -95,14 +102,20 @@ class Spectrum:
         tabulated: NDArray[np.bool_] = np.zeros(self.energy_eV.size, dtype=bool)
         if self.band_eV is not None:
             k = self.k_per_nm
-            _require("k_per_nm", k is not None and k.ndim == 1 and k.size >= 4, "must have four values or more")
+            _require("k_per_nm", k is not None and k.ndim in (1, 2) and k.shape[-1] >= 4, "must have four values or more")
             assert k is not None
-            _require("k_per_nm", k[0] == 0 and bool((np.diff(k) > 0).all()), "must ascend from 0")
-            expected = (self.energy_eV.size, k.size)
+            _require("k_per_nm", bool((k[..., 0] == 0).all() and (np.diff(k) > 0).all()), "must ascend from 0")
+            expected = (self.energy_eV.size, k.shape[-1])
+            if k.ndim == 2:
+                _require("k_per_nm", k.shape == expected, f"must have the shape {expected}", k.shape)
             _require("band_eV", self.band_eV.shape == expected, f"must have the shape {expected}", self.band_eV.shape)
             tabulated = np.asarray(np.isfinite(self.band_eV).all(axis=1))
         unknown = np.isnan(self.axial_mass) & ~tabulated
         _require("axial_mass", not unknown.any(), "must be known where there is no table of the band")
+        for name in ("edge_eV", "nonparabolicity_per_eV"):
+            given = getattr(self, name)
+            shape = self.energy_eV.shape
+            _require(name, given is None or given.shape == shape, f"must have the shape {shape}")
 
     def _check_tail(self) -> None:
         energy, count = self.tail_energy_eV, self.tail_count
@@ -125,13 +138,28 @@ class Spectrum:
 
     @cached_property
     def bands(self) -> tuple[TabulatedBand | None, ...]:
-        """For each subband its tabulated E(k), or None where it is the parabola with the axial mass."""
-        if self.band_eV is None or self.k_per_nm is None:
-            return (None,) * self.energy_eV.size
-        return tuple(
-            tabulated_band(self.k_per_nm, row, float(energy), float(mass)) if np.isfinite(row).all() else None
-            for row, energy, mass in zip(self.band_eV, self.energy_eV, self.axial_mass, strict=True)
-        )
+        """For each subband its E(k), or None where it is the parabola with the axial mass."""
+        found: list[TabulatedBand | None] = []
+        for i, (energy, mass) in enumerate(zip(self.energy_eV, self.axial_mass, strict=True)):
+            row = None if self.band_eV is None else self.band_eV[i]
+            alpha = 0.0 if self.nonparabolicity_per_eV is None else float(self.nonparabolicity_per_eV[i])
+            if row is not None and self.k_per_nm is not None and np.isfinite(row).all():
+                k = self.k_per_nm if self.k_per_nm.ndim == 1 else self.k_per_nm[i]
+                found.append(tabulated_band(k, row, float(energy), float(mass)))
+            elif alpha:
+                edge = 0.0 if self.edge_eV is None else float(self.edge_eV[i])
+                found.append(growing_band(float(energy), float(mass), Relation(edge, alpha)))
+            else:
+                found.append(None)
+        return tuple(found)
+
+    def band_energies(self, k_per_nm: Array) -> Array:
+        """E(k) of the listed subbands, (listed, m), at wave numbers (m,) from 0 up."""
+        k = np.asarray(k_per_nm, dtype=float)
+        rows = []
+        for energy, mass, band in zip(self.energy_eV[: self.listed], self.axial_mass, self.bands, strict=False):
+            rows.append(energy + HBAR2_OVER_2M0 / mass * k**2 if band is None else band.energy(k))
+        return np.array(rows)
 
     @cached_property
     def parabolic(self) -> NDArray[np.bool_]:

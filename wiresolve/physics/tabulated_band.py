@@ -1,4 +1,4 @@
-"""A subband whose E(k) is a table: its monotone pieces, and sums over its states."""
+"""A subband whose E(k) is no parabola, a table or a closed form: its monotone pieces, and sums over its states."""
 
 from __future__ import annotations
 
@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import expit
 
+from wiresolve.bands.nonparabolic import Relation
 from wiresolve.errors import InputError
 from wiresolve.units import HBAR2_OVER_2M0, KB
 
@@ -70,6 +71,15 @@ class TabulatedBand:
     lowest_eV: float
     k_min_per_nm: float
 
+    def energy(self, k_per_nm: Array) -> Array:
+        """E(k) at wave numbers from 0 up, in their shape."""
+        k = np.asarray(k_per_nm, dtype=float)
+        out = np.empty(k.shape)
+        for piece in self.pieces:
+            here = (k >= piece.start_per_nm) & (k <= piece.end_per_nm)
+            out[here] = piece.energy(k[here])
+        return out
+
     def occupied_length(self, fermi_eV: Array, temperature_K: Array) -> Array:
         """Integral of the Fermi function over k from 0 to infinity in 1/nm; the arguments broadcast, T = 0 is exact."""
         fermi, temperature = np.broadcast_arrays(fermi_eV, temperature_K)
@@ -94,6 +104,27 @@ class TabulatedBand:
             weight += w.sum(axis=1)
             mean += (w * x).sum(axis=1)
         return weight, mean
+
+
+def growing_band(lowest_eV: float, axial_mass: float, relation: Relation) -> TabulatedBand:
+    """The band of a mass that grows with energy by one relation all over the section, from its minimum up.
+
+    Parameters
+    ----------
+    axial_mass : in m0, at the minimum.
+    """
+    bottom = float(relation.value(np.array(lowest_eV)))
+    # At the minimum dE = slope d(value): the mass there holds the slope already.
+    stiffness = HBAR2_OVER_2M0 / axial_mass / float(relation.slope(np.array(lowest_eV)))
+
+    def energy(k: Array) -> Array:
+        return relation.energy(bottom + stiffness * np.asarray(k) ** 2)
+
+    def wave_number(energy: Array, passes: int) -> Array:
+        return np.asarray(np.sqrt(np.maximum(relation.value(energy) - bottom, 0.0) / stiffness))
+
+    piece = _Piece(0.0, np.inf, lowest_eV, np.inf, True, energy, wave_number)
+    return TabulatedBand((piece,), np.array([lowest_eV]), np.array([1.0]), np.array([True]), lowest_eV, 0.0)
 
 
 def tabulated_band(k_per_nm: Array, band_eV: Array, lowest_eV: float, axial_mass: float) -> TabulatedBand | None:

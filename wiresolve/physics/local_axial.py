@@ -1,0 +1,143 @@
+"""Motion along the wire where masses grow with energy: axial mass and E(k) from T(E, k)."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+import scipy.linalg as dense
+from numpy.typing import NDArray
+
+from wiresolve.physics.axial_bands import AxialBands
+from wiresolve.physics.local_mass import LocalMass, reduced
+from wiresolve.physics.semiclassical import PhaseSpace
+
+Array = NDArray[np.float64]
+
+_ENERGIES = 96
+"""Energies at which all k of the bands are found; between them k^2(E) is smooth."""
+_ABOVE = 6
+"""States solved beyond the listed ones where k is large: bands that have crossed the listed ones may lie lower there."""
+_K_POINTS = 17
+"""Wave numbers at which bands with terms linear in k are found."""
+
+
+def curvature(family: LocalMass, energies: Array, states: NDArray[Any], levels: NDArray[np.int64]) -> Array:
+    """Half of d2E/dk2 at k = 0 in eV nm^2, (m,), of an operator without terms linear in k.
+
+    <H2(E)> / N, N = -d<T(E) - E M>/dE: the implicit derivative of T(E) x + k^2 H2(E) x = E M x.
+    """
+    norms = family.norms(energies, states)
+    images = [None if z is None else z @ states for z in family.axial_matrices(2)]
+    out = np.empty(len(energies))
+    for level in np.unique(levels):
+        pick = np.flatnonzero(levels == level)
+        weights = family.weights(float(energies[pick].mean()))
+        block = sum(
+            w * (states[:, pick].conj().T @ image[:, pick])
+            for w, image in zip(weights, images, strict=True)
+            if image is not None
+        )
+        scale = np.sqrt(np.outer(norms[pick], norms[pick]))
+        out[pick] = np.linalg.eigvalsh((block + block.conj().T) / 2 / scale)
+    return out
+
+
+def dispersion(
+    family: LocalMass, energies: Array, states: NDArray[Any], k_per_nm: Array, cells: PhaseSpace, count: int
+) -> AxialBands:
+    """E(k) of the lowest `count` states at all `k_per_nm` (p,), from the space of states at three wave numbers."""
+    end = float(k_per_nm[-1])
+    blocks, at_end = [states], None
+    for k in (0.6 * end, end):
+        found = family.moved(k).lowest(count + _ABOVE, cells, polished=False)
+        blocks.append(found.states)
+        at_end = found.energy_eV
+    assert at_end is not None
+    space = _orthonormal(np.hstack(blocks), family.mass)
+    orders = [_small(space, family.matrices), *(_small(space, family.axial_matrices(o)) for o in (1, 2))]
+    if family.sheared:
+        table = _by_wave_number(family, orders, energies, k_per_nm, count)
+    else:
+        table = _by_energy(family, orders, energies, k_per_nm, count)
+    # Bands are followed through crossings: those that end above the solved energies have nothing to be held against.
+    ends = table[table[:, -1] <= at_end[-1], -1]
+    bound = float(np.abs(ends[:, None] - at_end).min(axis=1).max()) if len(ends) else 0.0
+    return AxialBands(k_per_nm, table, bound)
+
+
+def _small(space: NDArray[Any], matrices: tuple[Any | None, ...]) -> list[NDArray[Any]]:
+    d = space.shape[1]
+    return [np.zeros((d, d)) if m is None else np.asarray(space.conj().T @ (m @ space)) for m in matrices]
+
+
+def _sum(weights: Array, parts: list[NDArray[Any]]) -> NDArray[Any]:
+    return np.asarray(sum(w * p for w, p in zip(weights, parts, strict=True)))
+
+
+def _by_energy(
+    family: LocalMass, orders: list[list[NDArray[Any]]], energies: Array, k_per_nm: Array, count: int
+) -> Array:
+    """At a fixed energy k^2 is the eigenvalue of a linear problem, (E - T(E)) x = k^2 H2(E) x, for all bands at once."""
+    from scipy.interpolate import CubicSpline
+    from scipy.optimize import linear_sum_assignment
+
+    still, moving = orders[0], orders[2]
+    d, end = len(still[0]), float(k_per_nm[-1]) ** 2
+    low = float(energies[0])
+    reach = 1.2 * float(energies[count - 1] - low) + 1e-3
+    for _ in range(12):
+        grid = low + reach * np.linspace(0, 1, _ENERGIES) ** 1.5
+        squares = np.empty((count, len(grid)))
+        before = None
+        for i, energy in enumerate(grid):
+            weights = family.weights(float(energy))
+            metric = _sum(weights, moving)
+            values, vectors = dense.eigh(energy * np.eye(d) - _sum(weights, still), (metric + metric.conj().T) / 2)
+            values, vectors = values[::-1], vectors[:, ::-1]
+            if before is None:
+                picked = np.arange(count)
+            else:
+                # Bands of unlike mass cross: each is followed by its states.
+                picked = linear_sum_assignment(np.abs(before.conj().T @ metric @ vectors) ** 2, maximize=True)[1]
+            squares[:, i], before = values[picked], vectors[:, picked]
+        if squares[:, -1].min() >= end:
+            break
+        reach *= 1.6
+    table = np.empty((count, len(k_per_nm)))
+    starts = np.array([np.interp(0.0, row, grid) for row in squares])
+    for row, start in enumerate(np.argsort(starts, kind="stable")):
+        at = np.unique(np.append(np.flatnonzero(np.abs(grid - energies[row]) > 1e-3 * reach / _ENERGIES), []))
+        at = at.astype(int)
+        x, y = np.append(squares[start, at], 0.0), np.append(grid[at], energies[row])
+        order = np.argsort(x)
+        table[row] = CubicSpline(x[order], y[order])(k_per_nm**2)
+    return table
+
+
+def _by_wave_number(
+    family: LocalMass, orders: list[list[NDArray[Any]]], energies: Array, k_per_nm: Array, count: int
+) -> Array:
+    """Band after band at a few wave numbers, followed by the overlap of states, and a spline through them."""
+    from scipy.interpolate import CubicSpline
+    from scipy.optimize import linear_sum_assignment
+
+    points = np.linspace(0, float(k_per_nm[-1]), _K_POINTS)
+    found, before = np.empty((count, len(points))), None
+    more = min(count + 2, len(orders[0][0]))
+    values = np.full(more, float(energies[0]))
+    for i, k in enumerate(points):
+        parts = [a + k * b + k**2 * c for a, b, c in zip(*orders, strict=True)]
+        values, vectors = reduced(parts, family.weights, family.slopes, more, values)
+        picked = np.arange(count)
+        if before is not None:
+            picked = linear_sum_assignment(np.abs(before.conj().T @ vectors) ** 2, maximize=True)[1]
+        found[:, i], before = values[picked], vectors[:, picked]
+    return np.array([CubicSpline(points, row, bc_type=("clamped", "not-a-knot"))(k_per_nm) for row in found])
+
+
+def _orthonormal(block: NDArray[Any], mass: Any) -> NDArray[Any]:
+    gram = block.conj().T @ (mass @ block)
+    values, vectors = np.linalg.eigh((gram + gram.conj().T) / 2)
+    kept = values > 1e-11 * values[-1]
+    return np.asarray(block @ (vectors[:, kept] / np.sqrt(values[kept])))

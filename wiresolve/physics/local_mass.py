@@ -1,0 +1,374 @@
+"""A mass that grows with energy and differs from place to place: T(E) psi = E M psi, solved to its residual and counted.
+
+m(E) = m (1 + alpha (E - V(x, y))), V being band edge and potential (E. O. Kane, J. Phys. Chem. Solids 1, 249 (1957); in
+a heterostructure G. Bastard, Phys. Rev. B 24, 5693 (1981)). The n-th eigenvalue of T(E) falls with E, so it meets E
+once, and the n-th state is where it does (H. Voss, BIT 44, 387 (2004), on the min-max rule of such problems);
+T(E) - E M has as many negative pivots as there are states below E.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, replace
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+import scipy.linalg as dense
+from numpy.typing import NDArray
+
+from wiresolve.bands.coefficients import Coefficients
+from wiresolve.errors import ConvergenceError, InputError
+from wiresolve.fem import eigen
+from wiresolve.fem.enrich import Local
+from wiresolve.fem.space import Space
+from wiresolve.physics.pencil import Operator, Pencil, build
+from wiresolve.physics.semiclassical import PhaseSpace
+
+Array = NDArray[np.float64]
+Weights = Callable[[float], Array]
+
+RESIDUAL = 1e-9
+"""States are solved until |T(E) x - E M x| is below this times |(E - shift) M x|."""
+_INTERPOLATED = 1e-11
+"""Relative error of T(E) between the energies at which it is worked out, where a potential varies inside cells."""
+_FEWEST, _MOST = 4, 20
+"""Numbers of such energies."""
+_NEWTON = 30
+_ROUNDS = 6
+_SPARE = 3
+_FIRST = 1e-6
+"""Tolerance of the first blocks: the small problem and the polish do the rest."""
+_REFERENCES = (0.1, 0.5, 1.0)
+"""Shares of the wanted states at whose energies the first blocks are solved: together they hold all states closely."""
+
+
+@dataclass(frozen=True, eq=False)
+class Part:
+    """A part of T(E): element matrices on some cells ((c,) flags, None for all), times a weight that depends on E."""
+
+    local: Local
+    cells: NDArray[np.bool_] | None
+
+
+@dataclass(frozen=True, eq=False)
+class Found:
+    """States of T(E): energies (m,), states on the unknowns (n, m) with int |psi|^2 = 1, and the largest residual."""
+
+    energy_eV: Array
+    states: NDArray[Any]
+    residual: float
+
+
+@dataclass(frozen=True, eq=False)
+class LocalMass:
+    """T(E) on one space: a sum of fixed matrices with weights that depend on E.
+
+    Attributes
+    ----------
+    kept : unknowns among the space's nodes.
+    parts : the sum at k = 0 as element matrices.
+    axial : pencils whose orders 1 and 2 in k go with the same weights (None: nothing).
+    weights, slopes : of the parts at an energy, (p,), and their derivatives.
+    mass : of the inner product.
+    middle_eV : the energy at which the first block of states is solved.
+    shift_eV : an energy below all states.
+    """
+
+    space: Space
+    operator: Operator
+    kept: NDArray[np.int64]
+    parts: tuple[Part, ...]
+    weights: Weights
+    slopes: Weights
+    axial: tuple[Pencil | None, ...]
+    middle_eV: float
+    shift_eV: float
+    k_per_nm: float = 0.0
+
+    @cached_property
+    def matrices(self) -> tuple[Any, ...]:
+        """The parts as sparse matrices on the unknowns."""
+        found = []
+        for i, part in enumerate(self.parts):
+            total = self.space.gathered(part.local, part.cells)[self.kept][:, self.kept]
+            for order in (1, 2):
+                moving = self.axial_matrices(order)[i] if self.k_per_nm else None
+                if moving is not None:
+                    total = total + self.k_per_nm**order * moving
+            found.append(total)
+        return tuple(found)
+
+    def axial_matrices(self, order: int) -> tuple[Any | None, ...]:
+        """What k (order 1) or k^2 (order 2) multiplies in each part, None where nothing."""
+        return tuple(None if p is None else (p.h1 if order == 1 else p.h2) for p in self.axial)
+
+    @property
+    def sheared(self) -> bool:
+        """Whether terms linear in k are there."""
+        return any(p is not None and p.has(1) for p in self.axial)
+
+    def moved(self, k_per_nm: float) -> LocalMass:
+        """T(E) at a wave number along the wire."""
+        return replace(self, k_per_nm=k_per_nm)
+
+    @cached_property
+    def mass(self) -> Any:
+        """The matrix of the inner product on the unknowns."""
+        return self.space.mass[self.kept][:, self.kept]
+
+    def at(self, energy_eV: float) -> Any:
+        """T(E) on the unknowns."""
+        total: Any = 0
+        for weight, matrix in zip(self.weights(energy_eV), self.matrices, strict=True):
+            total = total + weight * matrix
+        return total
+
+    def slope(self, energy_eV: float) -> Any:
+        """dT/dE on the unknowns."""
+        total: Any = 0
+        for weight, matrix in zip(self.slopes(energy_eV), self.matrices, strict=True):
+            if weight:
+                total = total + weight * matrix
+        return total
+
+    def count_below(self, energy_eV: float) -> int:
+        """Number of states below an energy (of the discrete problem)."""
+        return eigen.count_below(self.at(energy_eV), self.mass, energy_eV)
+
+    def spread(self, states: NDArray[Any]) -> NDArray[Any]:
+        """States (n, m) of the unknowns on all nodes, zero on the walls."""
+        full = np.zeros((len(self.space.nodes), states.shape[1]), dtype=states.dtype)
+        full[self.kept] = states
+        return full
+
+    def norms(self, energies: Array, states: NDArray[Any]) -> Array:
+        """-d<T(E) - E M>/dE of each state, (m,): 1 where masses do not depend on energy."""
+        found = np.empty(len(energies))
+        images = [matrix @ states for matrix in self.matrices]
+        own = [np.einsum("im,im->m", states.conj(), image).real for image in images]
+        for i, energy in enumerate(energies):
+            found[i] = 1 - sum(w * o[i] for w, o in zip(self.slopes(float(energy)), own, strict=True))
+        return found
+
+    def residuals(self, energies: Array, states: NDArray[Any]) -> tuple[NDArray[Any], Array]:
+        """T(E) x - E M x, (n, m), and its size beside (E - shift) M x, (m,)."""
+        images = [matrix @ states for matrix in self.matrices]
+        weighted = self.mass @ states
+        rest = -weighted * energies
+        for i, energy in enumerate(energies):
+            for w, image in zip(self.weights(float(energy)), images, strict=True):
+                rest[:, i] += w * image[:, i]
+        size = np.linalg.norm(rest, axis=0) / (
+            np.linalg.norm(weighted, axis=0) * np.maximum(energies - self.shift_eV, 1e-12)
+        )
+        return rest, size
+
+    def lowest(self, count: int, cells: PhaseSpace, polished: bool = True) -> Found:
+        """The `count` lowest states; without the last polish their energies have nine digits rather than all."""
+        # A level that is cut at the end converges badly: a few states more are carried along.
+        more = min(count + _SPARE, len(self.kept) // 2)
+        block: Any = None
+        for share in _REFERENCES:
+            at = cells.energy_of(max(share * more, 0.5))
+            _, found = eigen.lowest(self.at(at), self.mass, more, self.shift_eV, _FIRST)
+            block = found if block is None else np.hstack([block, found])
+        block = _orthonormal(block, self.mass)
+        small = [block.conj().T @ (matrix @ block) for matrix in self.matrices]
+        guess = cells.energy_of(1) + np.zeros(more)
+        energies, turn = reduced(small, self.weights, self.slopes, more, guess)
+        states = block @ turn
+        if polished:
+            energies, states = self._polished(energies, states, count)
+        _, size = self.residuals(energies[:count], states[:, :count])
+        if polished and size.max() > RESIDUAL:
+            raise ConvergenceError(f"a state whose mass grows with energy did not converge (residual {size.max():.1g})")
+        return Found(energies[:count], states[:, :count], float(size.max()))
+
+    def _polished(self, energies: Array, states: NDArray[Any], count: int) -> tuple[Array, NDArray[Any]]:
+        """States improved by inverse iteration, each level with the factor of T(E) - E M at its own energy.
+
+        They are improved until the residuals of the first `count` are small.
+        """
+        span = max(float(energies[-1]) - self.shift_eV, 1e-9)
+        for _ in range(_ROUNDS):
+            _, size = self.residuals(energies, states)
+            if size[:count].max() <= RESIDUAL:
+                break
+            blocks = []
+            edges = np.flatnonzero(np.diff(energies) > 1e-6 * span) + 1
+            for pick in np.split(np.arange(len(energies)), edges):
+                block = states[:, pick]
+                if size[pick].max() > 0.1 * RESIDUAL:
+                    at = float(energies[pick[0]]) - 1e-7 * span
+                    inverse, slope = eigen.factor(self.at(at), self.mass, at), self.slope(at)
+                    for _ in range(2):
+                        block = inverse.solve(self.mass @ block - slope @ block)
+                        block = block / np.linalg.norm(block, axis=0)
+                blocks.append(block)
+            # One small problem for all: neighbours that came to the same state are told apart by the old ones.
+            basis = _orthonormal(np.hstack(blocks), self.mass)
+            if basis.shape[1] < len(energies):
+                basis = _orthonormal(np.hstack([*blocks, states]), self.mass)
+            small = [basis.conj().T @ (matrix @ basis) for matrix in self.matrices]
+            energies, turn = reduced(small, self.weights, self.slopes, len(energies), energies)
+            states = basis @ turn
+        return energies, states
+
+
+def reduced(
+    parts: list[NDArray[Any]], weights: Weights, slopes: Weights, count: int, guess: Array
+) -> tuple[Array, NDArray[Any]]:
+    """The lowest states of a small T(E) in an orthonormal basis: energies (count,) and combinations (d, count).
+
+    Newton's method on each eigenvalue of T(E) less E, which falls with E faster than -E does.
+    """
+    energies, turn = np.empty(count), np.empty((len(parts[0]), count), dtype=parts[0].dtype)
+    for n in range(count):
+        energy = float(guess[n])
+        for _ in range(_NEWTON):
+            matrix = sum(w * part for w, part in zip(weights(energy), parts, strict=True))
+            value, vector = dense.eigh((matrix + matrix.conj().T) / 2, subset_by_index=(n, n))
+            fall = sum(w * part for w, part in zip(slopes(energy), parts, strict=True))
+            norm = 1 - float(np.real(vector[:, 0].conj() @ fall @ vector[:, 0]))
+            step = (float(value[0]) - energy) / norm
+            energy += step
+            if abs(step) <= 1e-14 * max(abs(energy), 1e-3):
+                break
+        energies[n], turn[:, n] = energy, vector[:, 0]
+    # Equal energies: two solves may give one state twice, so the states of a level are taken from one.
+    apart = np.flatnonzero(np.diff(energies) > 1e-9 * max(float(np.ptp(energies)), 1e-3)) + 1
+    for pick in np.split(np.arange(count), apart):
+        if len(pick) > 1:
+            matrix = sum(w * part for w, part in zip(weights(float(energies[pick].mean())), parts, strict=True))
+            ends = (int(pick[0]), int(pick[-1]))
+            _, turn[:, pick] = dense.eigh((matrix + matrix.conj().T) / 2, subset_by_index=ends)
+    return energies, turn
+
+
+def _orthonormal(block: NDArray[Any], mass: Any) -> NDArray[Any]:
+    gram = block.conj().T @ (mass @ block)
+    values, vectors = np.linalg.eigh((gram + gram.conj().T) / 2)
+    kept = values > 1e-12 * values[-1]
+    return np.asarray(block @ (vectors[:, kept] / np.sqrt(values[kept])))
+
+
+def family(
+    space: Space,
+    operator: Operator,
+    cells: PhaseSpace,
+    count: int,
+    released: NDArray[np.bool_] | None = None,
+) -> LocalMass:
+    """T(E) of an operator on a space, for its `count` lowest states.
+
+    Parameters
+    ----------
+    released : (n,) wall nodes at which the boundary is left free.
+
+    Raises
+    ------
+    InputError
+        In some region the mass is not positive at the energies of the states: outside the model.
+    """
+    bottom = cells.bottom_eV
+    top = cells.energy_of(count)
+    middle = bottom + 0.5 * (top - bottom)
+    _check(space, operator, bottom + 0.02 * (top - bottom))
+    kept = np.flatnonzero(~(space.wall if released is None else space.wall & ~released))
+    # T(E) is below its value at the lowest energy, and above the edge.
+    shift = bottom - 1e-3 * (top - bottom)
+    if operator.varies:
+        made = _interpolated(space, operator, kept, bottom, top + 0.25 * (top - bottom))
+    else:
+        made = _by_region(space, operator, kept)
+    return LocalMass(space, operator, kept, *made, middle, shift)
+
+
+def _check(space: Space, operator: Operator, energy_eV: float) -> None:
+    ratio = operator.mass_ratio(space, energy_eV)
+    if float(ratio.min()) > 0:
+        return
+    flat = ratio if ratio.ndim == 1 else ratio.min(axis=1)
+    region = space.mesh.regions[int(space.mesh.region[space.cells[int(flat.argmin())]])]
+    raise InputError(
+        "carriers.model",
+        f"the mass of {region.material} ({region.name}) that grows with energy is not positive at the energies of the"
+        " states, far below its band edge: outside this model",
+        f"{region.material}, nonparabolicity {max(operator.nonparabolicity_per_eV):g} 1/eV",
+        'write model = "parabolic" under [carriers], or carriers = "excluded" there',
+    )
+
+
+_Made = tuple[tuple[Part, ...], Weights, Weights, tuple[Pencil | None, ...]]
+
+
+def _by_region(space: Space, operator: Operator, kept: NDArray[np.int64]) -> _Made:
+    """The kinetic energy of regions with one edge and alpha each, and the edges."""
+    edge = np.array([float(c.constant[0, 0].real) for c in operator.by_region])
+    alpha = np.array(operator.nonparabolicity_per_eV)
+    region = space.mesh.region[space.cells]
+    pairs, number = np.unique(np.column_stack([edge, alpha]), axis=0, return_inverse=True)
+    used = [g for g in range(len(pairs)) if np.any(number.ravel()[region] == g)]
+    moving = replace(
+        operator,
+        by_region=tuple(replace(c, constant=np.zeros_like(c.constant)) for c in operator.by_region),
+        nonparabolicity_per_eV=(),
+    )
+    still = replace(
+        operator,
+        by_region=tuple(
+            Coefficients(np.zeros_like(c.quadratic), np.zeros_like(c.linear), c.constant) for c in operator.by_region
+        ),
+        nonparabolicity_per_eV=(),
+    )
+    local, edges = build(space, moving).local(), build(space, still).local()
+    parts = [Part(local, number.ravel()[region] == g) for g in used]
+    axial = [replace(build(space, _only(moving, number.ravel() == g)), kept=kept) for g in used]
+    edge, alpha = pairs[used].T
+
+    def weights(energy: float) -> Array:
+        return np.append(1 / (1 + alpha * (energy - edge)), 1.0)
+
+    def slopes(energy: float) -> Array:
+        return np.append(-alpha / (1 + alpha * (energy - edge)) ** 2, 0.0)
+
+    return (*parts, Part(edges, None)), weights, slopes, (*axial, None)
+
+
+def _only(operator: Operator, regions: NDArray[np.bool_]) -> Operator:
+    """The operator in some regions, nothing elsewhere."""
+    return replace(
+        operator,
+        by_region=tuple(
+            c if here else Coefficients(np.zeros_like(c.quadratic), c.linear, c.constant)
+            for c, here in zip(operator.by_region, regions, strict=True)
+        ),
+    )
+
+
+def _interpolated(
+    space: Space, operator: Operator, kept: NDArray[np.int64], low_eV: float, high_eV: float
+) -> _Made:
+    """T(E) at a few energies of the window; between them by the polynomial through them."""
+    middle, half = (low_eV + high_eV) / 2, (high_eV - low_eV) / 2
+    # 1/m(E) has a pole where the mass vanishes: polynomials converge like the sum of the half axes of the ellipse
+    # about the window that goes through it (L. N. Trefethen, Approximation Theory and Approximation Practice, ch. 8).
+    room = float(operator.mass_ratio(space, middle).min()) / max(operator.nonparabolicity_per_eV) / half
+    axes = room + np.sqrt(max(room**2 - 1, 1e-6))
+    points = int(np.clip(np.ceil(np.log(1 / _INTERPOLATED) / np.log(axes)), _FEWEST, _MOST))
+    turn = np.cos(np.pi * (np.arange(points) + 0.5) / points)
+    pencils = tuple(replace(build(space, operator.at(middle + half * t)), kept=kept) for t in turn)
+    parts = tuple(Part(p.local(), None) for p in pencils)
+    # Chebyshev coefficients of the Lagrange polynomials of these points.
+    table = np.polynomial.chebyshev.chebvander(turn, points - 1)
+    into = np.linalg.inv(table)
+    falling = np.polynomial.chebyshev.chebder(into, axis=0) / half
+
+    def weights(energy: float) -> Array:
+        return np.asarray(np.polynomial.chebyshev.chebval((energy - middle) / half, into))
+
+    def slopes(energy: float) -> Array:
+        return np.asarray(np.polynomial.chebyshev.chebval((energy - middle) / half, falling))
+
+    return parts, weights, slopes, pencils

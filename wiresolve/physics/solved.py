@@ -1,0 +1,223 @@
+"""The states of one operator on one pair of meshes, each energy with its bar."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, replace
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from wiresolve.bands.nonparabolic import Relation
+from wiresolve.errors import ConvergenceError
+from wiresolve.fem import eigen, estimate
+from wiresolve.fem.enrich import Enriched, enrich
+from wiresolve.fem.mesh import Mesh
+from wiresolve.fem.space import Space
+from wiresolve.physics import local_enrich, local_mass
+from wiresolve.physics.local_mass import LocalMass
+from wiresolve.physics.pencil import Operator, Pencil, build
+from wiresolve.physics.semiclassical import PhaseSpace, phase_space
+
+Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
+OperatorOf = Callable[[Mesh], Operator]
+"""The operator over a mesh's regions."""
+
+SPARE = 4
+"""States solved beyond the wanted ones, so that a level at the end is seen whole."""
+
+
+@dataclass(frozen=True, eq=False)
+class Solved:
+    """States of one operator on one mesh with their bars.
+
+    Attributes
+    ----------
+    pencil : of constant masses, or with every mass at the energy of the middle of the wanted states (`local_mass`).
+    energy_eV, bar_eV, level : (m,) ascending, m at least the wanted number; levels from 1.
+    value_eV : (m,) the pencil's eigenvalues, of which the energies follow by `relation`; the energies themselves where
+        masses differ from place to place in how they grow (`relation` None).
+    states : (nodes x bands, m) on all nodes of the space; orthonormal in the mass matrix, or each normalised where
+        `relation` is None.
+    shift_eV : a value below all eigenvalues of the pencil.
+    bar_factor : how many falls wide the bars are.
+    local_mass : the operator at every energy, where `relation` is None.
+    """
+
+    pencil: Pencil
+    operator: Operator
+    energy_eV: Array
+    bar_eV: Array
+    level: Ints
+    value_eV: Array
+    states: NDArray[Any]
+    enriched: Enriched
+    enriched_pencil: Pencil
+    shift_eV: float
+    phase_space: PhaseSpace
+    bar_factor: float
+    relation: Relation | None
+    local_mass: LocalMass | None = None
+
+    @property
+    def unknown_states(self) -> NDArray[Any]:
+        """The states on the pencil's unknowns."""
+        return np.asarray(self.states[self.pencil.kept])
+
+    @property
+    def share_eV(self) -> Array:
+        """(c, m) each cell's share of the fall of each energy."""
+        slope = 1.0 if self.relation is None else self.relation.slope(self.energy_eV)
+        return np.asarray(self.enriched.indicator_eV * slope)
+
+    def count_below(self, energy_eV: float) -> int:
+        """Number of states of the discrete problem below an energy."""
+        if self.relation is None:
+            assert self.local_mass is not None
+            return self.local_mass.count_below(energy_eV)
+        return eigen.count_below(self.pencil.h0, self.pencil.mass, float(self.relation.value(np.array(energy_eV))))
+
+    def lowest(self, count: int) -> tuple[Array, NDArray[Any]]:
+        """(count,) energies of the lowest states and (unknowns, count) states, without bars."""
+        if self.relation is None:
+            assert self.local_mass is not None
+            found = self.local_mass.lowest(count, self.phase_space, polished=False)
+            return found.energy_eV, found.states
+        values, states = eigen.lowest(self.pencil.h0, self.pencil.mass, count, self.shift_eV)
+        return self.relation.energy(values), states
+
+
+def levels(energy_eV: Array, bar_eV: Array) -> Ints:
+    """Clusters of neighbouring energies that are equal within their bars, numbered from 1, shape (m,)."""
+    apart = np.diff(energy_eV) > bar_eV[:-1] + bar_eV[1:]
+    return np.asarray(1 + np.concatenate([[0], np.cumsum(apart)])[: len(energy_eV)], dtype=np.int64)
+
+
+def spaces(coarse: Mesh, fine: Mesh, operator: Operator) -> tuple[Space, Space]:
+    """Spaces of degree 4 and 6 on a pair of meshes, for an operator and others with the same potential."""
+    return Space(coarse), Space(fine, composite=operator.varies and not operator.smooth)
+
+
+def solve_on(
+    coarse: Mesh, fine: Mesh, operator_of: OperatorOf, count: int, factor: float = estimate.BAR_FACTOR
+) -> Solved:
+    """States and bars (`factor` falls wide) on a pair of meshes (degree 4 and 6 over the same triangles)."""
+    operator = operator_of(coarse)
+    return solve_in(*spaces(coarse, fine, operator), operator, count, factor)
+
+
+def solve_in(
+    coarse: Space, fine: Space, operator: Operator, count: int, factor: float = estimate.BAR_FACTOR
+) -> Solved:
+    """States and bars (`factor` falls wide) on a pair of spaces (degree 4 and 6 over the same triangles)."""
+    cells = phase_space(coarse, operator)
+    relation = operator.relation
+    if relation is None:
+        return _solve_local(coarse, fine, operator, count, factor, cells)
+    pencil, above = build(coarse, operator), build(fine, operator)
+    unknowns = len(pencil.kept)
+    check_count(count, unknowns)
+    bottom, top = (float(relation.value(np.array(e))) for e in (cells.bottom_eV, cells.energy_of(count)))
+    shift = bottom - 1e-3 * (top - bottom)
+    value, states = eigen.lowest(pencil.h0, pencil.mass, count, shift)
+    full = pencil.spread(states)
+    if unknowns >= eigen.SINGLE_FROM:
+        pencil.forget()
+    enriched = enrich(
+        coarse,
+        fine,
+        value,
+        full,
+        (pencil.local(), above.local()),
+        above.local_mass,
+        shift,
+        operator.bands,
+        operator.varies,
+    )
+    energy, bar, level = _with_bars(value, enriched, factor, relation)
+    return Solved(
+        pencil, operator, energy, bar, level, value, full, enriched, above, shift, cells, factor, relation
+    )  # fmt: skip
+
+
+def lowest_energy(space: Space, operator: Operator) -> float:
+    """The lowest energy of an operator on a space, without a bar: it lies above the true one."""
+    cells = phase_space(space, operator)
+    relation = operator.relation
+    if relation is None:
+        return float(local_mass.family(space, operator, cells, 1).lowest(1, cells, polished=False).energy_eV[0])
+    pencil = build(space, operator)
+    shift = float(relation.value(np.array(cells.bottom_eV))) - 1e-6
+    value, _ = eigen.lowest(pencil.h0, pencil.mass, 1, shift)
+    return float(relation.energy(value)[0])
+
+
+def check_count(count: int, unknowns: int) -> None:
+    """ConvergenceError where a mesh is too small for so many states."""
+    if count > unknowns // 2:
+        raise ConvergenceError(f"{count} states were asked of a mesh with {unknowns} unknowns")
+
+
+def _with_bars(value: Array, enriched: Enriched, factor: float, relation: Relation) -> tuple[Array, Array, Ints]:
+    """Energies, bars, one for each level, and the levels that these bars make."""
+    energy = relation.energy(value)
+    slope = relation.slope(energy)
+    alone = estimate.bars(enriched, factor) * slope
+    bar = estimate.shared(alone, levels(energy, alone))
+    return energy, bar, levels(energy, bar)
+
+
+def _solve_local(
+    coarse: Space, fine: Space, operator: Operator, count: int, factor: float, cells: PhaseSpace
+) -> Solved:
+    """The same where masses grow with energy, differently from place to place."""
+    family = local_mass.family(coarse, operator, cells, count)
+    check_count(count, len(family.kept))
+    found = family.lowest(count, cells)
+    finer = local_mass.family(fine, operator, cells, count)
+    enriched = local_enrich.enrich(family, finer, found)
+    alone = estimate.bars(enriched, factor)
+    bar = estimate.shared(alone, levels(found.energy_eV, alone))
+    middle = family.middle_eV
+    return Solved(
+        pencil=build(coarse, operator.at(middle)),
+        operator=operator,
+        energy_eV=found.energy_eV,
+        bar_eV=bar,
+        level=levels(found.energy_eV, bar),
+        value_eV=found.energy_eV,
+        states=family.spread(found.states),
+        enriched=enriched,
+        enriched_pencil=build(fine, operator.at(middle)),
+        shift_eV=family.shift_eV,
+        phase_space=cells,
+        bar_factor=factor,
+        relation=None,
+        local_mass=family,
+    )
+
+
+def certify_at(solved: Solved, k_per_nm: float, count: int) -> Solved:
+    """The states at another k on the same meshes, with bars of their own (for one relation in all regions)."""
+    relation = solved.relation
+    assert relation is not None
+    pencil = solved.pencil
+    value, states = eigen.lowest(pencil.at(k_per_nm), pencil.mass, count + SPARE, solved.shift_eV)
+    full = pencil.spread(states)
+    enriched = enrich(
+        pencil.space,
+        solved.enriched.space,
+        value,
+        full,
+        (pencil.local(k_per_nm), solved.enriched_pencil.local(k_per_nm)),
+        solved.enriched_pencil.local_mass,
+        solved.shift_eV,
+        solved.operator.bands,
+        solved.operator.varies,
+    )
+    energy, bar, level = _with_bars(value, enriched, solved.bar_factor, relation)
+    return replace(
+        solved, energy_eV=energy, bar_eV=bar, level=level, value_eV=value, states=full, enriched=enriched
+    )  # fmt: skip
