@@ -64,16 +64,16 @@ def masses(case: tuple[float, float, float]) -> list[float]:
     return [band.axial_mass or 0.0 for band in hard(*case).subbands]
 
 
-def finite(well: tuple[float, float], barrier: tuple[float, float], step_eV: float, radius_nm: float, count: int) -> Any:
+def finite(
+    well: tuple[float, float], barrier: tuple[float, float], step_eV: float, radius_nm: float, count: int
+) -> Any:
     """Energies of a round wire in a material that goes on; masses and gaps of both, the gap being 1/alpha."""
-    inside = Material.given(
-        "inside", electron_mass=well[0], nonparabolicity_per_eV=1 / well[1], conduction_edge_eV=0.0
-    )
+    inside = Material.given("inside", electron_mass=well[0], nonparabolicity_per_eV=1 / well[1], conduction_edge_eV=0.0)
     outside = Material.given(
         "outside", electron_mass=barrier[0], nonparabolicity_per_eV=1 / barrier[1], conduction_edge_eV=step_eV
     )
     section = Section(shape=Circle(diameter_nm=2 * radius_nm), material="inside", outside="outside")
-    return checked(solve(wire(section, [inside, outside], count, 5e-9))).energies_eV
+    return checked(solve(wire(section, [inside, outside], count, 1.5e-8))).energies_eV
 
 
 TRUTH: list[dict[str, Any]] = [
@@ -120,7 +120,7 @@ TRUTH: list[dict[str, Any]] = [
         "digits": 8,
         "scale": 1.0,
         "source": FINITE,
-        "tolerance_reason": "5e-9 eV are asked for; the wall that ends the barrier stays below that",
+        "tolerance_reason": "1.5e-8 eV are asked for, which is a bar of twice the error; the wall that ends the barrier stays below that",
         "compute": lambda: finite((0.067, 1.519), (0.092, 1.89), 0.25, 6.0, 6),
     },
     {
@@ -130,7 +130,7 @@ TRUTH: list[dict[str, Any]] = [
         "digits": 8,
         "scale": 1.0,
         "source": FINITE,
-        "tolerance_reason": "5e-9 eV are asked for; the wall that ends the barrier stays below that",
+        "tolerance_reason": "1.5e-8 eV are asked for, which is a bar of twice the error; the wall that ends the barrier stays below that",
         "compute": lambda: finite((0.026, 0.417), (0.0795, 1.4236), 0.52, 8.0, 14),
     },
 ]

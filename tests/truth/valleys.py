@@ -35,7 +35,12 @@ RADIUS_nm = 3.0
 UPRIGHT = ["18.063083311", "30.394859898", "47.212683575", "60.721174296", "68.773324076", "80.214097561"]
 OBLIQUE = ["24.364484364", "54.155594307", "69.446598187", "97.416087562", "110.777466122", "141.875880113"]
 """Levels of the [001] and of the [100] and [010] valleys of a round silicon wire along [110], in hbar^2/(2 m0 R^2)."""
-ACROSS: dict[Direction, Direction] = {(1, 0, 0): (0, 0, 1), (1, 1, 0): (0, 0, 1), (1, 1, 1): (1, -1, 0), (1, 1, -2): (1, -1, 0)}
+ACROSS: dict[Direction, Direction] = {
+    (1, 0, 0): (0, 0, 1),
+    (1, 1, 0): (0, 0, 1),
+    (1, 1, 1): (1, -1, 0),
+    (1, 1, -2): (1, -1, 0),
+}
 
 
 def problem(valley: Valley, axis: Direction, count: int = 4) -> Problem:

@@ -62,6 +62,8 @@ class Listing:
     energy_eV, bar_eV, k_min_per_nm, axial_mass, axial_mass_error, shares : (n,), as in `Listed`.
     states : (nodes, n).
     valley, valley_kind, valley_degeneracy : of each entry: the group's label, its kind, and for how many it stands.
+    entries : (n, 2) channel and state of each entry.
+    wall_effect_eV : (n,) of each entry, NaN where it has none; None where no channel has an outer barrier.
     by_channel : each channel's own.
     """
 
@@ -75,15 +77,15 @@ class Listing:
     valley: tuple[str, ...]
     valley_kind: tuple[str, ...]
     valley_degeneracy: tuple[int, ...]
+    entries: NDArray[np.int64]
+    wall_effect_eV: Array | None
     by_channel: tuple[Listed, ...]
 
 
 def listing(wire: Wire, certified: Certified) -> Listing:
     """Everything that is listed of the certified states."""
     reach = _energy_reach(wire, certified)
-    each = tuple(
-        _listed(wire, solved, n, reach) for solved, n in zip(certified.solved, certified.listed, strict=True)
-    )
+    each = tuple(_listed(wire, solved, n, reach) for solved, n in zip(certified.solved, certified.listed, strict=True))
     entries = certified.entries
 
     def gathered(name: str) -> Array:
@@ -108,6 +110,8 @@ def listing(wire: Wire, certified: Certified) -> Listing:
         valley=tuple(channels[i].label for i in order),
         valley_kind=tuple(channels[i].valley for i in order),
         valley_degeneracy=tuple(channels[i].degeneracy for i in order),
+        entries=entries[order],
+        wall_effect_eV=None if certified.wall_effect_eV is None else certified.wall_effect_eV[order],
         by_channel=each,
     )
 
@@ -153,9 +157,7 @@ def _listed(wire: Wire, solved: Solved, listed: int, reach_eV: float) -> Listed:
     return Listed(energy, bar, k_min, mass, error, states, shares, bands, closed)
 
 
-def _unlisted(
-    solved: Solved, unknowns: NDArray[Any], states: NDArray[Any], shares: Mapping[str, Array]
-) -> Listed:
+def _unlisted(solved: Solved, unknowns: NDArray[Any], states: NDArray[Any], shares: Mapping[str, Array]) -> Listed:
     """States that are there for thermal sums only: masses without what terms linear in k add."""
     along = np.diag(solved.pencil.expected(2, unknowns)).real
     slope = 1.0 if solved.relation is None else solved.relation.slope(solved.energy_eV)
