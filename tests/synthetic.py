@@ -176,6 +176,7 @@ def core_shell_result(count: int = 10, **changes: Any) -> Result:
         "energy_zero_on_common_scale_eV": 0.0,
         "states_missed": 0,
         "accuracy_met": True,
+        "sensitivities": (),
         "dispersion": Dispersion(k, energies[:, None] + HBAR2_OVER_2M0 / MASS * k**2, 4e-8),
         "density_of_states": DensityOfStates(edges, np.diff(below) / np.diff(edges), np.unique(energies.round(12))),
         "conductance": tuple(ThermalCurve(t, fermi, special.expit(x).sum(axis=1)) for t, x in thermal),

@@ -161,9 +161,7 @@ def gamma_and_l(gap_eV: float) -> Material:
 def test_kinds_of_valleys_compete_in_a_small_wire() -> None:
     """The zone centre is lowest in bulk, the L valleys in a thin wire: confinement lifts a light mass more."""
     orientation = Orientation((1, 1, 1), (1, -1, 0))
-    wide, thin = (
-        solve(problem(Circle(diameter_nm=d), (gamma_and_l(0.3),), orientation, count=4)) for d in (20.0, 3.5)
-    )
+    wide, thin = (solve(problem(Circle(diameter_nm=d), (gamma_and_l(0.3),), orientation, count=4)) for d in (20.0, 3.5))
     assert wide.subbands[0].valley == "zone centre"
     assert thin.subbands[0].valley.startswith("L ")
     assert thin.subbands[0].valley_degeneracy in (1, 3)
@@ -223,3 +221,43 @@ def test_build_keeps_the_relation_to_one_edge_and_alpha() -> None:
     assert operator.relation is not None
     assert operator.relation.alpha_per_eV == 0.0
     assert build(Space(mesh), operator).uniform_axial_eV_nm2 == pytest.approx(2 * HBAR2_OVER_2M0 / (LONG + ACROSS))
+
+
+def turned_problem(angle_deg: float, nonparabolicity: float | None = None) -> Problem:
+    """An ellipse of two materials whose valleys lean against all axes, section and tensors turned about the wire."""
+    c, s = np.cos(np.radians(angle_deg)), np.sin(np.radians(angle_deg))
+    turn = np.array([[c, -s, 0], [s, c, 0], [0, 0, 1]])
+    ready = Wire(problem(Circle(diameter_nm=6.0), orientation=Orientation((1, 1, -2), (1, -1, 0))))
+    valleys = tuple(
+        Valley(
+            f"valley {i + 1}",
+            inverse_mass=tuple(tuple(row) for row in (turn @ g.inverse_mass["silicon"] @ turn.T).tolist()),
+            degeneracy=g.degeneracy,
+            nonparabolicity_per_eV=nonparabolicity,
+        )
+        for i, g in enumerate(ready.groups)
+    )
+    material = Material("turned", valleys=valleys, conduction_edge_eV=0.0)
+    shape = Ellipse(width_nm=8.0, height_nm=5.0, rotation_deg=angle_deg)
+    return problem(shape, (material,), None, count=8, accuracy=2e-9)
+
+
+@pytest.mark.parametrize("nonparabolicity", [None, 0.5])
+def test_section_and_crystal_turned_together_by_any_angle(nonparabolicity: float | None) -> None:
+    upright = solve(turned_problem(0.0, nonparabolicity))
+    for angle in (17.3, 101.0):
+        turned = solve(turned_problem(angle, nonparabolicity))
+        np.testing.assert_allclose(turned.energies_eV, upright.energies_eV, atol=1e-9)
+        masses = [[s.axial_mass for s in r.subbands] for r in (upright, turned)]
+        np.testing.assert_allclose(masses[1], masses[0], rtol=1e-9)
+        assert [s.valley for s in turned.subbands] == [s.valley for s in upright.subbands]
+
+
+def test_a_tensor_mass_is_a_stretched_section() -> None:
+    """x -> x sqrt(m_x): a circle with masses m_x, m_y is an ellipse with one mass, to 1e-8 of each energy."""
+    tensor = ((1 / 0.2, 0.0, 0.0), (0.0, 1 / 0.8, 0.0), (0.0, 0.0, 1 / 0.5))
+    leaning = Material("a", valleys=(Valley("zone centre", inverse_mass=tensor),), conduction_edge_eV=0.0)
+    round_one = solve(problem(Circle(diameter_nm=6.0), (leaning,), None, accuracy=1e-9))
+    plain = Material("b", valleys=(Valley.isotropic(0.2),), conduction_edge_eV=0.0)
+    stretched = solve(problem(Ellipse(width_nm=6.0, height_nm=12.0), (plain,), None, accuracy=1e-9))
+    np.testing.assert_allclose(round_one.energies_eV, stretched.energies_eV, rtol=1e-8)

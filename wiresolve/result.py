@@ -12,6 +12,7 @@ from numpy.typing import ArrayLike, NDArray
 from wiresolve.describe.problem import Problem
 from wiresolve.fem.mesh import Mesh
 from wiresolve.physics import statistics, transport
+from wiresolve.physics.sensitivity import Sensitivity
 from wiresolve.physics.spectrum import Spectrum
 
 Array = NDArray[np.float64]
@@ -131,6 +132,7 @@ class Result:
     conductance: tuple[ThermalCurve, ...]
     density: tuple[ThermalCurve, ...]
     line_density_per_nm: float | None
+    sensitivities: tuple[Sensitivity, ...]
     verdict: Verdict
     warnings: tuple[Warned, ...]
     not_modelled: tuple[str, ...]
@@ -189,7 +191,9 @@ class Result:
             },
             "mesh": asdict(self.summary),
             "subbands": [{**asdict(s), "shares": dict(s.shares)} for s in self.subbands],
-            "sensitivities": [],
+            "sensitivities": [
+                {"of": s.of, "unit": s.unit, "values": np.asarray(s.values).tolist()} for s in self.sensitivities
+            ],
             "gates": [],
             "line_density_per_nm": self.line_density_per_nm,
             "states_missed": self.states_missed,

@@ -16,10 +16,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe.problem import Problem
-from wiresolve.physics import remarks, statistics, transport, verdict
-from wiresolve.physics.axial_bands import AxialBands
-from wiresolve.physics.listing import SPIN, Listing, listing, spectrum_of
+from wiresolve.fem.outline import outline_edges
+from wiresolve.physics import carrying, remarks, statistics, transport, verdict
+from wiresolve.physics.ladder import spectrum_of
+from wiresolve.physics.listing import SPIN, Listing, listing
 from wiresolve.physics.spectrum import Spectrum
+from wiresolve.physics.outline_motion import outline_motion
+from wiresolve.physics.sensitivity import Sensitivity, merged, sensitivities
+from wiresolve.physics.solved import levels
 from wiresolve.physics.subbands import Certified, certify
 from wiresolve.physics.wire import Wire
 from wiresolve.result import (
@@ -66,36 +70,51 @@ def solve(problem: Problem, on_progress: Progress | None = None) -> Result:
     # More BLAS threads only get in each other's way at these sizes.
     with threadpool_limits(limits=1, user_api="blas"):
         wire = Wire(problem)
-        wire.check_valleys()
         with clock("subbands"):
             certified = certify(
-                wire.draw,
-                wire.operator,
-                problem.accuracy.subbands,
-                problem.accuracy.energy_eV,
-                wire.barrier,
-                on_progress,
+                wire.draw, wire.channels, problem.accuracy.subbands, problem.accuracy.energy_eV, on_progress
             )
         with clock("axial"):
             found = listing(wire, certified)
         with clock("above"):
             spectrum = spectrum_of(wire, certified, found)
+        with clock("sensitivities"):
+            moved = _sensitivities(wire, certified, found)
     with clock("measured"):
-        return _assembled(wire, certified, found, spectrum, clock)
+        return _assembled(wire, certified, found, spectrum, moved, clock)
 
 
-def _assembled(wire: Wire, certified: Certified, found: Listing, spectrum: Spectrum, clock: _Clock) -> Result:
-    problem, space = wire.problem, certified.solved.pencil.space
+def _sensitivities(wire: Wire, certified: Certified, found: Listing) -> tuple[Sensitivity, ...]:
+    """How every listed energy moves with each dimension, mass and band edge."""
+    motion = outline_motion(wire.problem.section, outline_edges(certified.space.mesh))
+    groups = {group.label: group for group in wire.groups}
+    each = [
+        sensitivities(motion, solved, wire.materials, groups[channel.label], n) if n else ()
+        for channel, solved, n in zip(certified.channels, certified.solved, certified.listed, strict=True)
+    ]
+    return merged(each, found.entries)
+
+
+def _assembled(
+    wire: Wire,
+    certified: Certified,
+    found: Listing,
+    spectrum: Spectrum,
+    moved: tuple[Sensitivity, ...],
+    clock: _Clock,
+) -> Result:
+    problem, space = wire.problem, certified.space
     temperatures = problem.carriers.temperature_K
     fermi = problem.carriers.fermi_level_eV
     by_subband = None if fermi is None else statistics.line_density_by_subband(spectrum, fermi, temperatures[0])
     total = None if fermi is None else float(statistics.line_density(spectrum, fermi, temperatures[0]))
-    subbands = _subbands(wire, certified, found, None if by_subband is None else np.ravel(by_subband))
-    warnings, said = remarks.on(wire, certified, found)
-    judged = verdict.judge(spectrum, temperatures, fermi, said)
+    outcome = remarks.Outcome(wire, certified, found, spectrum, total)
+    subbands = _subbands(certified, found, outcome.bound, None if by_subband is None else np.ravel(by_subband))
+    remarked = remarks.on(outcome)
+    judged = verdict.judge(spectrum, temperatures, fermi, (carrying.sentence(found, certified), *remarked.said))
     zero_text, zero_value = problem.energy_zero()
     points = np.zeros((len(space.mesh.points), certified.wanted), dtype=found.states.dtype)
-    points[space.nodes] = found.states[:, : certified.wanted]
+    points[space.nodes] = found.states
     mesh = space.mesh
     edges = _edges(spectrum)
     density_of_states = statistics.density_of_states(spectrum, edges)
@@ -107,48 +126,51 @@ def _assembled(wire: Wire, certified: Certified, found: Listing, spectrum: Spect
         subbands=subbands,
         spectrum=spectrum,
         summary=MeshSummary(
-            len(mesh.cells), len(certified.solved.pencil.kept), mesh.degree, space.area_nm2, certified.passes
+            len(mesh.cells), len(certified.solved[0].pencil.kept), mesh.degree, space.area_nm2, certified.passes
         ),
         energy_zero_text=zero_text,
         energy_zero_on_common_scale_eV=zero_value,
         states_missed=certified.missed,
-        accuracy_met=certified.met,
-        dispersion=_dispersion(found.bands, certified.wanted),
+        accuracy_met=certified.met and bool((found.bar_eV <= problem.accuracy.energy_eV).all()),
+        dispersion=_dispersion(found, spectrum, certified),
         density_of_states=DensityOfStates(edges, density_of_states.per_eV_nm, density_of_states.singular_at_eV),
         conductance=_curves(spectrum, temperatures, transport.conductance),
         density=_curves(spectrum, temperatures, statistics.line_density),
         line_density_per_nm=total,
+        sensitivities=moved,
         verdict=Verdict(judged.text, judged.single_subband, judged.steps, judged.effective_dimension),
-        warnings=tuple(Warned(*w) for w in warnings),
-        not_modelled=remarks.not_modelled(wire),
+        warnings=tuple(Warned(*w) for w in remarked.warnings),
+        not_modelled=remarked.not_modelled,
         versions=_versions(),
         timings_s=clock.seconds,
     )
 
 
-def _subbands(wire: Wire, certified: Certified, found: Listing, density: Array | None) -> tuple[Subband, ...]:
-    listed, barrier, effect = [], wire.barrier, certified.wall_effect_eV
+def _subbands(
+    certified: Certified, found: Listing, bound: tuple[bool | None, ...], density: Array | None
+) -> tuple[Subband, ...]:
+    listed, effect = [], found.wall_effect_eV
+    level = levels(found.energy_eV, found.bar_eV)
     for i in range(certified.wanted):
         shares = {name: float(share[i]) for name, share in found.shares.items()}
-        layer = max(shares, key=lambda name: shares[name])
-        energy = float(found.energy_eV[i])
         mass, mass_error = found.axial_mass[i], found.axial_mass_error[i]
+        moved = None if effect is None or not np.isfinite(effect[i]) else float(effect[i])
         listed.append(
             Subband(
                 index=i + 1,
-                level=int(certified.solved.level[i]),
-                valley=found.valley,
-                energy_eV=energy,
+                level=int(level[i]),
+                valley=found.valley[i],
+                energy_eV=float(found.energy_eV[i]),
                 error_eV=float(found.bar_eV[i]),
                 k_min_per_nm=float(found.k_min_per_nm[i]),
                 axial_mass=float(mass) if np.isfinite(mass) else None,
                 axial_mass_error=float(mass_error) if np.isfinite(mass) else None,
                 spin_degeneracy=SPIN,
-                valley_degeneracy=found.valley_degeneracy,
-                layer=layer,
+                valley_degeneracy=found.valley_degeneracy[i],
+                layer=max(shares, key=lambda name: shares[name]),
                 shares=shares,
-                bound=None if barrier is None else bool(energy < barrier.edge_eV),
-                wall_effect_eV=None if effect is None else float(effect[i]),
+                bound=bound[i],
+                wall_effect_eV=moved,
                 line_density_per_nm=None if density is None else float(density[i]),
             )
         )
@@ -156,18 +178,26 @@ def _subbands(wire: Wire, certified: Certified, found: Listing, density: Array |
 
 
 def _cell_fields(wire: Wire, certified: Certified) -> dict[str, Array]:
-    mesh = certified.solved.pencil.space.mesh
+    """The axial mass and the band edge of the lowest valleys, by cell."""
+    mesh, group = certified.space.mesh, wire.groups[0]
     mass, edge = [], []
     for region in mesh.regions:
-        material = wire.materials[region.material]
-        mass.append(1 / material.inverse_mass[2][2] if material.inverse_mass else np.nan)
-        known = region.carriers and material.conduction_edge_eV is not None
-        edge.append(wire.edge_eV(region.material, region.offset_eV) if known else np.nan)
+        known = region.carriers and region.material in group.inverse_mass
+        mass.append(1 / group.inverse_mass[region.material][2, 2] if known else np.nan)
+        edge.append(wire.edge_eV(region.material, region.offset_eV, group) if known else np.nan)
     return {"mass_m0": np.array(mass)[mesh.region], "band_edge_eV": np.array(edge)[mesh.region]}
 
 
-def _dispersion(bands: AxialBands, wanted: int) -> Dispersion:
-    return Dispersion(bands.k_per_nm, bands.energy_eV[:wanted], bands.error_bound_eV)
+def _dispersion(found: Listing, spectrum: Spectrum, certified: Certified) -> Dispersion:
+    """E(k) of all listed subbands at the wave numbers of the channel of the lowest one."""
+    first = int(found.entries[0, 0])
+    k = found.by_channel[first].bands.k_per_nm
+    bound = max(
+        own.bands.error_bound_eV
+        for own, n in zip(found.by_channel, certified.listed, strict=True)
+        if n
+    )  # fmt: skip
+    return Dispersion(k, spectrum.band_energies(k), bound)
 
 
 def _curves(

@@ -14,7 +14,8 @@ from typing import Any
 
 import numpy as np
 
-from wiresolve.describe.materials import GIVEN
+from wiresolve.describe.valley import ZONE_CENTRE
+from wiresolve.physics.sensitivity import PER_LENGTH, Sensitivity
 from wiresolve.result import Result, Subband
 from wiresolve.units import KB
 
@@ -24,6 +25,10 @@ WIDTH = 96
 """Characters a line that running text is wrapped to."""
 MOST_ROWS = 40
 """Subbands that the printed table shows; `subbands.csv` has all."""
+MOST_LEVELS, MOST_DIMENSIONS = 5, 8
+"""Levels and dimensions that the printed table of sensitivities shows; `result.json` has all."""
+_LEAST_meV_per_nm = 0.02
+"""Dimensions that move all of these levels by less are left out there."""
 MOST_TEMPERATURES = 3
 """Temperatures that the printed tables have columns for; `result.json` has all."""
 
@@ -127,7 +132,8 @@ COLUMNS = (
 
 
 def subbands_csv(result: Result, status: str = DONE) -> str:
-    """The text of `subbands.csv`: a line a subband under the names that `result.json` uses, then a share a layer.
+    """The text of `subbands.csv`: a line a subband under the names that `result.json` uses, then a share a layer, then
+    how its energy moves with each dimension.
 
     Lines in front that start with `#` say what it is, the energy zero and the digest of the input. What does not apply
     is empty.
@@ -138,9 +144,12 @@ def subbands_csv(result: Result, status: str = DONE) -> str:
     lines.write(f"# energies from {' '.join(result.energy_zero_text.split())}; masses in units of m0\n")
     lines.write(f"# status {status}; input digest {result.problem.digest}\n")
     table = csv.writer(lines, lineterminator="\n")
-    table.writerow([*COLUMNS, *(f"share_{place.replace(' ', '_')}" for place in places)])
-    for s in result.subbands:
+    moved = _by_length(result)
+    head = [*COLUMNS, *(f"share_{place.replace(' ', '_')}" for place in places)]
+    table.writerow([*head, *(f"by_{re.sub('[^A-Za-z0-9]+', '_', s.of).strip('_')}_{s.unit}" for s in moved)])
+    for number, s in enumerate(result.subbands):
         row = [getattr(s, name) for name in COLUMNS] + [s.shares.get(place, 0.0) for place in places]
+        row += [float(by.values[number]) for by in moved]
         table.writerow([_cell(value) for value in row])
     return lines.getvalue()
 
@@ -204,6 +213,9 @@ def subband_table(result: Result) -> list[str]:
     unit = ["subband", "level", "meV", "meV", *(f"kT at {t:g} K" for t in temperatures), "mass", "layer", "valley"]
     if asked_bound:
         head, unit = [*head, ""], [*unit, "bound"]
+    several = any(s.valley != ZONE_CENTRE for s in result.subbands)
+    if several:
+        head, unit = [*head, ""], [*unit, "valleys"]
     rows = [head, unit]
     energies = iter(_on_the_point([with_bar(1e3 * s.energy_eV, 1e3 * s.error_eV) for s in result.subbands]))
     groups = levels(result.subbands)
@@ -219,8 +231,11 @@ def subband_table(result: Result) -> list[str]:
             row += [layer, f"{s.spin_degeneracy} x {s.valley_degeneracy}"]
             if asked_bound:
                 row.append({True: "yes", False: "no", None: ""}[s.bound])
+            if several:
+                row.append(s.valley)
             rows.append(row)
-    lines = aligned(rows[: MOST_ROWS + 2], left={5 + len(temperatures)})
+    texts = {5 + len(temperatures), len(unit) - 1} if several else {5 + len(temperatures)}
+    lines = aligned(rows[: MOST_ROWS + 2], left=texts)
     hidden = len(result.subbands) - MOST_ROWS
     if hidden > 0:
         lines.append(f"and {hidden} more, see subbands.csv")
@@ -261,14 +276,57 @@ def step_table(result: Result) -> list[str]:
     return [*lines, more] if more else lines
 
 
-def from_memory(result: Result) -> str:
-    """The material values that no text was checked for, by material; empty where there are none."""
-    found: dict[str, list[str]] = {}
+def _by_length(result: Result) -> list[Sensitivity]:
+    return [s for s in result.sensitivities if s.unit == PER_LENGTH]
+
+
+def sensitivity_table(result: Result) -> list[str]:
+    """How the first `MOST_LEVELS` levels move with the dimensions, as aligned lines; empty where none is known.
+
+    The `MOST_DIMENSIONS` that move them most are shown, in meV for each nm. A level that the dimension splits has both
+    of its ends.
+    """
+    numbers = [s.level for s in result.subbands]
+    level = np.array(numbers) - min(numbers)
+    shown = np.unique(level)[:MOST_LEVELS]
+    found = _by_length(result)
+    size = [float(np.abs(s.values[level <= shown[-1]]).max()) for s in found]
+    kept = [n for n in range(len(found)) if 1e3 * size[n] >= _LEAST_meV_per_nm]
+    kept = sorted(sorted(kept, key=lambda n: -size[n])[:MOST_DIMENSIONS])
+    if not kept:
+        return []
+    rows = [["meV for each nm of", *(f"level {n + 1}" for n in shown)]]
+    for n in kept:
+        ends = [1e3 * found[n].values[level == number][[0, -1]] for number in shown]
+        rows.append([found[n].of.removeprefix("section."), *(_range(float(a), float(b)) for a, b in ends)])
+    lines = aligned(rows, left={0})
+    hidden = len(found) - len(kept)
+    return [*lines, f"and {hidden} more, see result.json"] if hidden else lines
+
+
+def _range(low: float, high: float) -> str:
+    """One value, or both ends of values that differ in the digits shown."""
+    one, other = (f"{value:+.3f}" if abs(value) < 1 else f"{significant(value, 4):>}" for value in (low, high))
+    one, other = (text if text[0] in "+-" else f"+{text}" for text in (one, other))
+    return one if abs(high - low) <= 0.01 * max(abs(low), abs(high)) else f"{one} to {other}"
+
+
+def from_memory(result: Result, provenance: str = "memory") -> str:
+    """The material values of a provenance ("memory", "conflict"), by material; empty where there are none.
+
+    A valley of which everything is so is named once.
+    """
+    found = []
     for material in result.problem.resolved_materials().values():
-        for value in material.values:
-            if not value.checked and not value.source.startswith(GIVEN):
-                found.setdefault(material.name, []).append(value.quantity.replace("_", " "))
-    return "; ".join(f"{name}: {', '.join(names)}" for name, names in found.items())
+        names = {v.quantity.replace("_", " "): v.provenance == provenance for v in material.values}
+        said: dict[str, None] = {}
+        for name in (n for n, unsure in names.items() if unsure):
+            valley = next((v.name for v in material.valleys if name.startswith(f"{v.name} ")), None)
+            whole = valley is not None and all(names[n] for n in names if n.startswith(f"{valley} "))
+            said[f"all of {valley}" if whole else name] = None
+        if said:
+            found.append(f"{material.name}: {', '.join(said)}")
+    return "; ".join(found)
 
 
 def _on_the_point(texts: Sequence[str]) -> list[str]:
@@ -284,6 +342,8 @@ def summary(result: Result, folder: str | Path | None = None, status: str = DONE
     lines += [*paragraphs(result.verdict.text), "", *subband_table(result), ""]
     if steps := step_table(result):
         lines += [*steps, ""]
+    if moved := sensitivity_table(result):
+        lines += [*moved, ""]
     size = result.summary
     lines += paragraphs(
         f"Energies count from the {result.energy_zero_text}, ± the error bar of the discretisation;"
@@ -302,6 +362,8 @@ def summary(result: Result, folder: str | Path | None = None, status: str = DONE
         lines += paragraphs(warning.remedy, indent="    ")
     if remembered := from_memory(result):
         lines += ["", *paragraphs(f"Values from memory, not checked against a text: {remembered}.")]
+    if differing := from_memory(result, "conflict"):
+        lines += ["", *paragraphs(f"Values on which sources differ: {differing}.")]
     if result.not_modelled:
         lines += ["", *paragraphs(f"Not modelled: {'; '.join(result.not_modelled)}.")]
     if status != DONE:

@@ -167,7 +167,10 @@ def _joined(rows: Sequence[_Rows], wanted: int, tail_energy: Array, tail: Array,
     known = [r.direction_eV for r in rows if r.direction_eV is not None]
     directions = None
     if known:
-        blank = [np.full((n, 2), np.nan) if r.direction_eV is None else r.direction_eV for r, n in zip(rows, shape, strict=True)]
+        blank = [
+            np.full((n, 2), np.nan) if r.direction_eV is None else r.direction_eV
+            for r, n in zip(rows, shape, strict=True)
+        ]
         directions = np.vstack(blank)[order]
     names = next((r.names for r in rows if r.names), ())
     return Spectrum(

@@ -42,7 +42,9 @@ def enrich(coarse: LocalMass, fine: LocalMass, found: Found) -> Enriched:
     values, vectors = np.linalg.eigh(gram)
     kept = values > 1e-12 * values[-1]
     turn = vectors[:, kept] / np.sqrt(values[kept])
-    improved, mix = reduced([turn.T @ part @ turn for part in small], fine.weights, fine.slopes, len(energies), energies)
+    improved, mix = reduced(
+        [turn.T @ part @ turn for part in small], fine.weights, fine.slopes, len(energies), energies
+    )
     mix = turn @ mix
     after = basis @ mix
     # Inside a level the two blocks may be turned against each other: the difference is taken to the projection.

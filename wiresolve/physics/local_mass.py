@@ -8,7 +8,7 @@ T(E) - E M has as many negative pivots as there are states below E.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Any
@@ -37,9 +37,9 @@ _FEWEST, _MOST = 4, 20
 _NEWTON = 30
 _ROUNDS = 6
 _SPARE = 3
-_FIRST = 1e-6
+_FIRST = 1e-4
 """Tolerance of the first blocks: the small problem and the polish do the rest."""
-_REFERENCES = (0.1, 0.5, 1.0)
+_REFERENCES, _MORE_REFERENCES = (0.2, 0.9), (0.05, 0.3, 0.6, 1.0)
 """Shares of the wanted states at whose energies the first blocks are solved: together they hold all states closely."""
 
 
@@ -164,12 +164,28 @@ class LocalMass:
         )
         return rest, size
 
-    def lowest(self, count: int, cells: PhaseSpace, polished: bool = True) -> Found:
-        """The `count` lowest states; without the last polish their energies have nine digits rather than all."""
+    def lowest(self, count: int, cells: PhaseSpace, polished: bool = True, start: NDArray[Any] | None = None) -> Found:
+        """The `count` lowest states; without the last polish their energies have nine digits rather than all.
+
+        Parameters
+        ----------
+        start : (n, m) states that come close, such as those with another outer boundary.
+        """
+        found = self._solved(count, cells, polished, _REFERENCES if start is None else _REFERENCES[-1:], start)
+        if polished and found.residual > RESIDUAL:
+            found = self._solved(count, cells, polished, _MORE_REFERENCES, start)
+        if polished and found.residual > RESIDUAL:
+            rule = f"a state whose mass grows with energy did not converge (residual {found.residual:.1g})"
+            raise ConvergenceError(rule)
+        return found
+
+    def _solved(
+        self, count: int, cells: PhaseSpace, polished: bool, references: Sequence[float], start: NDArray[Any] | None
+    ) -> Found:
         # A level that is cut at the end converges badly: a few states more are carried along.
         more = min(count + _SPARE, len(self.kept) // 2)
-        block: Any = None
-        for share in _REFERENCES:
+        block = start
+        for share in references:
             at = cells.energy_of(max(share * more, 0.5))
             _, found = eigen.lowest(self.at(at), self.mass, more, self.shift_eV, _FIRST)
             block = found if block is None else np.hstack([block, found])
@@ -181,8 +197,6 @@ class LocalMass:
         if polished:
             energies, states = self._polished(energies, states, count)
         _, size = self.residuals(energies[:count], states[:, :count])
-        if polished and size.max() > RESIDUAL:
-            raise ConvergenceError(f"a state whose mass grows with energy did not converge (residual {size.max():.1g})")
         return Found(energies[:count], states[:, :count], float(size.max()))
 
     def _polished(self, energies: Array, states: NDArray[Any], count: int) -> tuple[Array, NDArray[Any]]:
@@ -347,9 +361,7 @@ def _only(operator: Operator, regions: NDArray[np.bool_]) -> Operator:
     )
 
 
-def _interpolated(
-    space: Space, operator: Operator, kept: NDArray[np.int64], low_eV: float, high_eV: float
-) -> _Made:
+def _interpolated(space: Space, operator: Operator, kept: NDArray[np.int64], low_eV: float, high_eV: float) -> _Made:
     """T(E) at a few energies of the window; between them by the polynomial through them."""
     middle, half = (low_eV + high_eV) / 2, (high_eV - low_eV) / 2
     # 1/m(E) has a pole where the mass vanishes: polynomials converge like the sum of the half axes of the ellipse

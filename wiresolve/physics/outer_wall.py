@@ -33,7 +33,7 @@ def wall_effect(solved: Solved, barrier: Barrier, count: int) -> Array:
     released = space.rim_of(region)
     if solved.relation is None:
         free = local_mass.family(space, solved.operator, solved.phase_space, count + 2, released)
-        energy = free.lowest(count + 2, solved.phase_space).energy_eV
+        energy = free.lowest(count + 2, solved.phase_space, start=solved.states[free.kept, : count + 2]).energy_eV
     else:
         pencil = build(space, solved.operator, released)
         value, _ = eigen.lowest(pencil.h0, pencil.mass, count + 2, solved.shift_eV)
@@ -77,4 +77,3 @@ def further(energy_eV: Array, effect_eV: Array, barrier: Barrier, accuracy_eV: f
     depth = barrier.edge_eV - np.minimum(energy_eV, (2 * energy_eV - effect_eV) / 2)
     decay = np.sqrt(np.maximum(depth, 1e-6) / barrier.stiffness_eV_nm2)
     return float((np.log(np.maximum(effect_eV[bound], 1e-300) / wish) / (2 * decay[bound])).max() * 1.15)
-

@@ -108,9 +108,7 @@ def solve_on(
     return solve_in(*spaces(coarse, fine, operator), operator, count, factor)
 
 
-def solve_in(
-    coarse: Space, fine: Space, operator: Operator, count: int, factor: float = estimate.BAR_FACTOR
-) -> Solved:
+def solve_in(coarse: Space, fine: Space, operator: Operator, count: int, factor: float = estimate.BAR_FACTOR) -> Solved:
     """States and bars (`factor` falls wide) on a pair of spaces (degree 4 and 6 over the same triangles)."""
     cells = phase_space(coarse, operator)
     relation = operator.relation

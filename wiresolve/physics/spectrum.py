@@ -102,7 +102,9 @@ class Spectrum:
         tabulated: NDArray[np.bool_] = np.zeros(self.energy_eV.size, dtype=bool)
         if self.band_eV is not None:
             k = self.k_per_nm
-            _require("k_per_nm", k is not None and k.ndim in (1, 2) and k.shape[-1] >= 4, "must have four values or more")
+            _require(
+                "k_per_nm", k is not None and k.ndim in (1, 2) and k.shape[-1] >= 4, "must have four values or more"
+            )
             assert k is not None
             _require("k_per_nm", bool((k[..., 0] == 0).all() and (np.diff(k) > 0).all()), "must ascend from 0")
             expected = (self.energy_eV.size, k.shape[-1])

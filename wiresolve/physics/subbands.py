@@ -213,9 +213,7 @@ def _certified(
     energy, bar, entries = _merged([(s.energy_eV[:n], s.bar_eV[:n]) for _, s, n, _ in used])
     alone = levels(energy, bar)
     bar = estimate.shared(bar, alone)
-    effect_of = [
-        np.full(n, np.nan) if effect is None else effect for _, _, n, effect in used
-    ]
+    effect_of = [np.full(n, np.nan) if effect is None else effect for _, _, n, effect in used]
     some = any(effect is not None for _, _, _, effect in used)
     return Certified(
         channels=tuple(c for c, _, _, _ in used),
