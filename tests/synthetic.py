@@ -13,6 +13,7 @@ from wiresolve.describe.problem import Accuracy, Carriers, Problem
 from wiresolve.describe.section import Layer, Section
 from wiresolve.describe.shapes import Circle, Rectangle
 from wiresolve.fem.mesh import Mesh, Region
+from wiresolve.physics.sensitivity import OutlineSensitivity
 from wiresolve.physics.spectrum import Spectrum
 from wiresolve.result import DensityOfStates, Dispersion, MeshSummary, Result, Subband, ThermalCurve, Verdict, Warned
 from wiresolve.units import HBAR2_OVER_2M0, KB
@@ -177,6 +178,7 @@ def core_shell_result(count: int = 10, **changes: Any) -> Result:
         "states_missed": 0,
         "accuracy_met": True,
         "sensitivities": (),
+        "outline_sensitivity": OutlineSensitivity(np.zeros((0, 2, 2)), np.zeros(0), None),
         "dispersion": Dispersion(k, energies[:, None] + HBAR2_OVER_2M0 / MASS * k**2, 4e-8),
         "density_of_states": DensityOfStates(edges, np.diff(below) / np.diff(edges), np.unique(energies.round(12))),
         "conductance": tuple(ThermalCurve(t, fermi, special.expit(x).sum(axis=1)) for t, x in thermal),

@@ -16,7 +16,11 @@ from wiresolve.describe.problem import Accuracy, Carriers, Problem
 from wiresolve.describe.section import Layer, Section
 from wiresolve.describe.shapes import Circle, Hexagon, Rectangle
 from wiresolve.errors import InputError
+from wiresolve.fem.meshing import Mesher, SizeField
+from wiresolve.fem.space import Space
 from wiresolve.physics import local_mass
+from wiresolve.physics.pencil import build
+from wiresolve.physics.semiclassical import phase_space
 from wiresolve.physics.subbands import Certified, certify
 from wiresolve.physics.wire import Wire
 from wiresolve.result import Result
@@ -76,7 +80,9 @@ def test_axial_mass_is_the_curvature_of_the_matching_condition() -> None:
     for index, order in ((0, 0), (1, 1)):
         energy = round_wire().subbands[index].energy_eV
         above = matched(order, step, energy - 1e-3, energy + 2e-2) - matched(order, 0.0, energy - 1e-3, energy + 1e-3)
-        half = matched(order, step / 2, energy - 1e-3, energy + 2e-2) - matched(order, 0.0, energy - 1e-3, energy + 1e-3)
+        half = matched(order, step / 2, energy - 1e-3, energy + 2e-2) - matched(
+            order, 0.0, energy - 1e-3, energy + 1e-3
+        )
         curvature = (16 * half - above) / (3 * step**2)
         assert round_wire().subbands[index].axial_mass == pytest.approx(HBAR2_OVER_2M0 / curvature, rel=1e-5)
 
@@ -98,7 +104,14 @@ def test_states_are_solved_to_their_residual_and_counted() -> None:
 
 
 def test_bars_hold_against_the_matching_condition() -> None:
-    truth = [0.070231555504965, 0.15879479580921, 0.15879479580921, 0.25329054071043, 0.25329054071043, 0.28370299638673]
+    truth = [
+        0.070231555504965,
+        0.15879479580921,
+        0.15879479580921,
+        0.25329054071043,
+        0.25329054071043,
+        0.28370299638673,
+    ]
     for accuracy in (1e-3, 1e-4, 1e-5):
         found = certified(accuracy=accuracy)
         error = np.abs(found.energy_eV - truth)
@@ -172,3 +185,30 @@ def test_a_mass_below_zero_is_outside_the_model() -> None:
 def test_an_unknown_model_is_refused() -> None:
     with pytest.raises(InputError, match="model"):
         Carriers(temperature_K=(300.0,), model="quadratic")
+
+
+def test_the_operator_follows_every_energy_where_a_potential_varies() -> None:
+    """T(E) as a sum of fixed matrices against the operator assembled at that energy, far up and close to its end."""
+    section = Section(Circle(diameter_nm=16.0), "core", (Layer(3.0, "shell"),))
+    materials = [material("core", 0.023, 2.0), material("shell", 0.08, 0.7, 0.6)]
+    wire = Wire(problem(section, materials, 4, 1e-4, potential=Potential(field_V_per_nm=(0.01, 0.004))))
+    with Mesher(wire.draw(0.0)) as mesher:
+        mesh, _ = mesher.mesh(SizeField(3.0, turn_cells=10))
+    operator, space = wire.operator(mesh), Space(mesh)
+    cells = phase_space(space, operator)
+    family = local_mass.family(space, operator, cells, 4)
+    lowest = max(family.floor_eV, cells.bottom_eV + 0.2 * (cells.energy_of(1) - cells.bottom_eV))
+    for energy in (lowest, 0.07, 0.4, 3.0):
+        exact = build(space, operator.at(energy)).h0
+        assert abs(family.at(energy) - exact).max() <= 1e-9 * abs(exact).max()
+
+
+def test_a_hot_narrow_gap_wire_in_a_field_is_solved() -> None:
+    """Heat reaches far above the listed states: the operator must be right there too."""
+    section = Section(Circle(diameter_nm=60.0), "a")
+    carriers = Carriers(temperature_K=(300.0,), fermi_level_eV=0.1)
+    field = Potential(field_V_per_nm=(0.003, 0.0))
+    few = solve(Problem("hot", section, carriers, Accuracy(2, 1e-4), (material("a", 0.0135, 4.1),), potential=field))
+    assert few.accuracy_met
+    assert few.dispersion.error_bound_eV < 1e-4
+    assert few.line_density_per_nm is not None

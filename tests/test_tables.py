@@ -180,6 +180,9 @@ def test_the_summary_tells_each_step_and_what_is_from_memory() -> None:
         assert row.endswith(f"{step['kind']} {math.floor(100 * step['contrast'])} %")
         assert row.split()[0] == str(step["level"])
     assert [float(row.split()[5]) for row in rows[2:]] == [1, 3, 5, 6]
-    assert "GaAs: valence edge" in from_memory(result)
+    # The gap and the valence edge of GaAs, and all that is known of its X and L valleys, stand there from memory.
+    expected = "GaAs: zone centre gap, all of X, all of L, valence edge, conduction edge;"
+    assert from_memory(result).startswith(expected)
     assert "permittivity" not in from_memory(result)
+    assert "Al0.3Ga0.7As: zone centre gap" in from_memory(result, "conflict")
     assert "Values from memory" in summary(result)

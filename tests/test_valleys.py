@@ -10,6 +10,7 @@ from wiresolve.describe.problem import Accuracy, Carriers, Orientation, Problem
 from wiresolve.describe.section import Layer, Section
 from wiresolve.describe.shapes import Circle, Ellipse, Hexagon, Rectangle, Shape
 from wiresolve.describe.valley import Valley
+from wiresolve.errors import InputError
 from wiresolve.fem import eigen
 from wiresolve.fem.meshing import Mesher, SizeField
 from wiresolve.fem.space import Space
@@ -261,3 +262,28 @@ def test_a_tensor_mass_is_a_stretched_section() -> None:
     plain = Material("b", valleys=(Valley.isotropic(0.2),), conduction_edge_eV=0.0)
     stretched = solve(problem(Ellipse(width_nm=6.0, height_nm=12.0), (plain,), None, accuracy=1e-9))
     np.testing.assert_allclose(round_one.energies_eV, stretched.energies_eV, rtol=1e-8)
+
+
+UNLIKE = Valley("X", longitudinal_mass=0.9, transverse_mass=0.2, axis=(1, 0, 0))
+
+
+@pytest.mark.parametrize(
+    "other",
+    [
+        Valley("X", longitudinal_mass=0.9, transverse_mass=0.2, axis=(1, 0, 0), zone_boundary=True),
+        Valley("X", longitudinal_mass=0.9, transverse_mass=0.2, axis=(1, 1, 1)),
+        Valley("X", longitudinal_mass=0.3, transverse_mass=0.3),
+        Valley("X", inverse_mass=((5.0, 0.0, 0.0), (0.0, 1.0, 0.0), (0.0, 0.0, 5.0))),
+    ],
+)
+def test_unlike_valleys_of_one_name_are_refused(other: Valley) -> None:
+    first = Material("first", valleys=(UNLIKE,), conduction_edge_eV=0.0, crystal="diamond")
+    second = Material("second", valleys=(other,), conduction_edge_eV=0.3, crystal="diamond")
+    wire = Wire(problem(Circle(diameter_nm=6.0), (first, second), layers=(Layer(2.0, "second"),)))
+    with pytest.raises(InputError, match=r"(unlike|differs)"):
+        _ = wire.groups
+
+
+def test_a_valley_that_continues_all_others_has_no_direction() -> None:
+    with pytest.raises(InputError, match="no direction of its own"):
+        Valley("any", longitudinal_mass=0.9, transverse_mass=0.2, axis=(1, 0, 0))

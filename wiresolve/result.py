@@ -12,7 +12,7 @@ from numpy.typing import ArrayLike, NDArray
 from wiresolve.describe.problem import Problem
 from wiresolve.fem.mesh import Mesh
 from wiresolve.physics import statistics, transport
-from wiresolve.physics.sensitivity import Sensitivity
+from wiresolve.physics.sensitivity import OutlineSensitivity, Sensitivity
 from wiresolve.physics.spectrum import Spectrum
 
 Array = NDArray[np.float64]
@@ -133,6 +133,7 @@ class Result:
     density: tuple[ThermalCurve, ...]
     line_density_per_nm: float | None
     sensitivities: tuple[Sensitivity, ...]
+    outline_sensitivity: OutlineSensitivity
     verdict: Verdict
     warnings: tuple[Warned, ...]
     not_modelled: tuple[str, ...]

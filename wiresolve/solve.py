@@ -17,13 +17,19 @@ from numpy.typing import NDArray
 
 from wiresolve.describe.problem import Problem
 from wiresolve.fem.outline import outline_edges
-from wiresolve.physics import carrying, remarks, statistics, transport, verdict
+from wiresolve.physics import carrying, remarks, spread, statistics, transport, verdict
 from wiresolve.physics.ladder import spectrum_of
 from wiresolve.physics.listing import SPIN, Listing, listing
-from wiresolve.physics.spectrum import Spectrum
 from wiresolve.physics.outline_motion import outline_motion
-from wiresolve.physics.sensitivity import Sensitivity, merged, sensitivities
+from wiresolve.physics.sensitivity import (
+    OutlineSensitivity,
+    Sensitivity,
+    merged,
+    outline_sensitivity,
+    sensitivities,
+)
 from wiresolve.physics.solved import levels
+from wiresolve.physics.spectrum import Spectrum
 from wiresolve.physics.subbands import Certified, certify
 from wiresolve.physics.wire import Wire
 from wiresolve.result import (
@@ -84,15 +90,18 @@ def solve(problem: Problem, on_progress: Progress | None = None) -> Result:
         return _assembled(wire, certified, found, spectrum, moved, clock)
 
 
-def _sensitivities(wire: Wire, certified: Certified, found: Listing) -> tuple[Sensitivity, ...]:
-    """How every listed energy moves with each dimension, mass and band edge."""
+def _sensitivities(
+    wire: Wire, certified: Certified, found: Listing
+) -> tuple[tuple[Sensitivity, ...], OutlineSensitivity]:
+    """How every listed energy moves with each dimension, mass and band edge, and the first two with each outline."""
     motion = outline_motion(wire.problem.section, outline_edges(certified.space.mesh))
     groups = {group.label: group for group in wire.groups}
     each = [
         sensitivities(motion, solved, wire.materials, groups[channel.label], n) if n else ()
         for channel, solved, n in zip(certified.channels, certified.solved, certified.listed, strict=True)
     ]
-    return merged(each, found.entries)
+    level = levels(found.energy_eV, found.bar_eV)
+    return merged(each, found.entries), outline_sensitivity(motion, certified.solved, found.entries, level)
 
 
 def _assembled(
@@ -100,7 +109,7 @@ def _assembled(
     certified: Certified,
     found: Listing,
     spectrum: Spectrum,
-    moved: tuple[Sensitivity, ...],
+    moved: tuple[tuple[Sensitivity, ...], OutlineSensitivity],
     clock: _Clock,
 ) -> Result:
     problem, space = wire.problem, certified.space
@@ -111,7 +120,13 @@ def _assembled(
     outcome = remarks.Outcome(wire, certified, found, spectrum, total)
     subbands = _subbands(certified, found, outcome.bound, None if by_subband is None else np.ravel(by_subband))
     remarked = remarks.on(outcome)
-    judged = verdict.judge(spectrum, temperatures, fermi, (carrying.sentence(found, certified), *remarked.said))
+    level = levels(found.energy_eV, found.bar_eV)
+    said = (
+        carrying.sentence(found, certified),
+        spread.sentence(problem.section, moved[0], level, temperatures[0]),
+        *remarked.said,
+    )
+    judged = verdict.judge(spectrum, temperatures, fermi, (text for text in said if text))
     zero_text, zero_value = problem.energy_zero()
     points = np.zeros((len(space.mesh.points), certified.wanted), dtype=found.states.dtype)
     points[space.nodes] = found.states
@@ -137,7 +152,8 @@ def _assembled(
         conductance=_curves(spectrum, temperatures, transport.conductance),
         density=_curves(spectrum, temperatures, statistics.line_density),
         line_density_per_nm=total,
-        sensitivities=moved,
+        sensitivities=moved[0],
+        outline_sensitivity=moved[1],
         verdict=Verdict(judged.text, judged.single_subband, judged.steps, judged.effective_dimension),
         warnings=tuple(Warned(*w) for w in remarked.warnings),
         not_modelled=remarked.not_modelled,

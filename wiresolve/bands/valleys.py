@@ -106,18 +106,12 @@ class _Member:
 
 def _members(kinds: Mapping[str, tuple[Material, Valley]], directions: Directions | None) -> list[_Member]:
     """Every valley of one kind with its tensors in all materials."""
-    turned = [(m, v) for m, v in kinds.values() if v.axis is not None and v.name != ANY_VALLEY]
-    fixed = {name: v.degeneracy for name, (_, v) in kinds.items() if v.axis is None and v.name != ANY_VALLEY}
+    kept = {name: (m, v) for name, (m, v) in kinds.items() if v.name != ANY_VALLEY}
+    _check_alike(kept)
+    turned = [(m, v) for m, v in kept.values() if v.axis is not None]
     if not turned or directions is None:
-        counts = set(fixed.values())
-        if len(counts) > 1:
-            raise InputError(
-                "materials",
-                "valley_degeneracy differs between materials that admit carriers, so states cannot be counted",
-                ", ".join(f"{name}: {count}" for name, count in fixed.items()),
-                "solve each kind of valley by itself",
-            )
-        return [_Member(None, counts.pop() or 1 if counts else 1, {n: _tensor(*k, None, None) for n, k in kinds.items()})]
+        counts = {v.degeneracy or 1 for _, v in kept.values() if v.axis is None}
+        return [_Member(None, counts.pop() if counts else 1, {n: _tensor(*k, None, None) for n, k in kinds.items()})]
     material, valley = turned[0]
     assert valley.axis is not None
     centre = valley.name == ZONE_CENTRE
@@ -130,6 +124,32 @@ def _members(kinds: Mapping[str, tuple[Material, Valley]], directions: Direction
         )
         for direction, count in equals
     ]
+
+
+def _check_alike(kinds: Mapping[str, tuple[Material, Valley]]) -> None:
+    """InputError where one name stands for unlike valleys: carriers pass between materials within one valley only."""
+    meant = {}
+    for name, (_, v) in kinds.items():
+        if v.axis is not None:
+            across = "" if v.name == ZONE_CENTRE else ", zone boundary" if v.zone_boundary else ""
+            meant[name] = f"{sorted((abs(i) for i in v.axis), reverse=True)}{across}"
+        else:
+            meant[name] = "1 without a direction" if (v.degeneracy or 1) == 1 else f"{v.degeneracy} without a direction"
+    if len(set(meant.values())) > 1 and not all(v.name == ZONE_CENTRE for _, v in kinds.values()):
+        raise InputError(
+            "materials",
+            "one valley has unlike directions or numbers in materials that admit carriers, so states cannot be counted",
+            "; ".join(f"{name}: {text}" for name, text in meant.items()),
+            "give unlike valleys unlike names",
+        )
+    counts = {name: v.degeneracy for name, (_, v) in kinds.items() if v.axis is None}
+    if len(set(counts.values())) > 1:
+        raise InputError(
+            "materials",
+            "valley_degeneracy differs between materials that admit carriers, so states cannot be counted",
+            ", ".join(f"{name}: {count}" for name, count in counts.items()),
+            "solve each kind of valley by itself",
+        )
 
 
 def _tensor(
@@ -157,7 +177,9 @@ def _equal(one: Mapping[str, Array], other: Mapping[str, Array], symmetry: Symme
 def _carries(turn: Array, sign: float, first: Sequence[Array], second: Sequence[Array]) -> bool:
     whole = np.eye(3)
     whole[:2, :2], whole[2, 2] = turn, sign
-    return all(np.abs(whole @ a @ whole.T - b).max() <= _ALIKE * np.abs(a).max() for a, b in zip(first, second, strict=True))
+    return all(
+        np.abs(whole @ a @ whole.T - b).max() <= _ALIKE * np.abs(a).max() for a, b in zip(first, second, strict=True)
+    )
 
 
 def _turns(first: Sequence[Array], second: Sequence[Array]) -> list[Array]:

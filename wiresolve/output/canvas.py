@@ -225,7 +225,7 @@ def mark_fermi(axes: Axes, result: Result, along: str) -> None:
         axes.annotate("Fermi level", (0, part), shift, ha="left", va=side, zorder=4, **style)
 
 
-_ENDS = ("#00395c", "#2f8fca", "#ffffff", "#ee8647", "#7d3200")
+ENDS = ("#00395c", "#2f8fca", "#ffffff", "#ee8647", "#7d3200")
 
 
 def coloured(values: Any) -> Any:
@@ -236,7 +236,7 @@ def coloured(values: Any) -> Any:
     half = 96
     inside = np.isfinite(values)
     t = np.where(inside, values, 0.0) / (np.nanmax(np.abs(values), initial=0.0) or 1.0)
-    stops, colours = np.linspace(-half, half, len(_ENDS)), np.array([to_rgb(c) for c in _ENDS])
+    stops, colours = np.linspace(-half, half, len(ENDS)), np.array([to_rgb(c) for c in ENDS])
     steps = np.arange(-half, half + 1)
     table = np.full((2 * half + 2, 4), 255, dtype=np.uint8)
     for channel in range(3):

@@ -44,6 +44,7 @@ from wiresolve.output.canvas import (
     styled,
     thermal_colour,
 )
+from wiresolve.output.outline_figure import sensitivity
 from wiresolve.output.raster import edges, outermost, outlines, raster
 from wiresolve.result import Result, Subband
 from wiresolve.units import CONDUCTANCE_QUANTUM_SIEMENS, KB
@@ -361,6 +362,7 @@ FIGURES = MappingProxyType(
         "density_of_states": density_of_states,
         "dispersion": dispersion,
         "conductance": conductance,
+        "sensitivity": sensitivity,
     }
 )
 

@@ -10,13 +10,14 @@ from collections.abc import Iterator
 from contextlib import contextmanager, suppress
 from pathlib import Path
 
-from wiresolve.describe import wirefile
+from wiresolve.describe import input_files, wirefile
 from wiresolve.errors import InputError
 from wiresolve.output import tables, vtk
 from wiresolve.result import Result
 
 INPUT, RESULT, SUBBANDS, MODES, FIGURES = "input.toml", "result.json", "subbands.csv", "modes.vtu", "figures"
-DRAWN = ("section", "modes", "levels", "density_of_states", "dispersion", "conductance")
+INPUTS = input_files.FOLDER
+DRAWN = ("section", "modes", "levels", "density_of_states", "dispersion", "conductance", "sensitivity")
 """Names of the figures, known here without loading what draws them."""
 
 
@@ -30,6 +31,8 @@ def write(
     field: str = "folder",
 ) -> Path:
     """Write a result into a folder: `input.toml`, `result.json`, `subbands.csv`, `modes.vtu` and `figures/`.
+
+    Files that the wire file names (meshes, outlines, potentials) are copied into `inputs/`, where `input.toml` looks.
 
     Everything goes into a fresh hidden folder beside the target, which is then renamed; whatever stops it on the way
     leaves no part of a result, and an older one as it was. What else lies in the folder of an older result (notes, a
@@ -56,6 +59,9 @@ def write(
     target = check_target(folder, replace=replace, field=field)
     with _readable(target, field), _parents(target), _fresh_beside(target) as fresh:
         (fresh / INPUT).write_text(wirefile.dump(result.problem), encoding="utf-8")
+        for path, content in result.problem.files:
+            (fresh / path).parent.mkdir(exist_ok=True)
+            (fresh / path).write_bytes(content)
         tables.write_json(result, fresh / RESULT, status)
         tables.write_subbands(result, fresh / SUBBANDS, status)
         vtk.write_modes(result, fresh / MODES)
@@ -198,7 +204,7 @@ def _put_in_place(fresh: Path, target: Path) -> None:
     own: list[Path] = []
     try:
         if target.exists():
-            own = _own_entries(target)
+            own = _own_entries(target, fresh)
             os.replace(target, old)
         os.replace(fresh, target)
         for entry in own:
@@ -216,9 +222,15 @@ def _put_in_place(fresh: Path, target: Path) -> None:
     shutil.rmtree(old, ignore_errors=True)
 
 
-def _own_entries(folder: Path) -> list[Path]:
-    """Relative paths of what lies in a result folder and is none of what this program writes there."""
-    own = [Path(p.name) for p in folder.iterdir() if p.name not in (INPUT, RESULT, SUBBANDS, MODES, FIGURES)]
+def _own_entries(folder: Path, fresh: Path) -> list[Path]:
+    """Relative paths of what lies in a result folder and is none of what this program writes there.
+
+    Copies of input files are known by their names only: those that `fresh` does not bring along stay.
+    """
+    own = [Path(p.name) for p in folder.iterdir() if p.name not in (INPUT, RESULT, SUBBANDS, MODES, FIGURES, INPUTS)]
+    copies = folder / INPUTS
+    if copies.is_dir() and not copies.is_symlink():
+        own += [Path(INPUTS, p.name) for p in copies.iterdir() if not (fresh / INPUTS / p.name).exists()]
     drawn, pictures = {f"{name}.{kind}" for name in DRAWN for kind in ("png", "svg")}, folder / FIGURES
     if pictures.is_dir() and not pictures.is_symlink():
         own += [Path(FIGURES, p.name) for p in pictures.iterdir() if p.name not in drawn]

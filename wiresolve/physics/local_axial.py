@@ -8,6 +8,7 @@ import numpy as np
 import scipy.linalg as dense
 from numpy.typing import NDArray
 
+from wiresolve.errors import ConvergenceError
 from wiresolve.physics.axial_bands import AxialBands
 from wiresolve.physics.local_mass import LocalMass, reduced
 from wiresolve.physics.semiclassical import PhaseSpace
@@ -44,26 +45,36 @@ def curvature(family: LocalMass, energies: Array, states: NDArray[Any], levels: 
 
 
 def dispersion(
-    family: LocalMass, energies: Array, states: NDArray[Any], k_per_nm: Array, cells: PhaseSpace, count: int
+    family: LocalMass,
+    energies: Array,
+    states: NDArray[Any],
+    k_per_nm: Array,
+    cells: PhaseSpace,
+    count: int,
 ) -> AxialBands:
     """E(k) of the lowest `count` states at all `k_per_nm` (p,), from the space of states at three wave numbers."""
-    end = float(k_per_nm[-1])
-    blocks, at_end = [states], None
-    for k in (0.6 * end, end):
-        found = family.moved(k).lowest(count + _ABOVE, cells, polished=False)
+    blocks, held = [states], []
+    for j in (round(0.6 * (len(k_per_nm) - 1)), len(k_per_nm) - 1):
+        found = family.moved(float(k_per_nm[j])).lowest(count + _ABOVE, cells, polished=False)
         blocks.append(found.states)
-        at_end = found.energy_eV
-    assert at_end is not None
+        held.append((j, found.energy_eV))
     space = _orthonormal(np.hstack(blocks), family.mass)
     orders = [_small(space, family.matrices), *(_small(space, family.axial_matrices(o)) for o in (1, 2))]
     if family.sheared:
         table = _by_wave_number(family, orders, energies, k_per_nm, count)
     else:
         table = _by_energy(family, orders, energies, k_per_nm, count)
-    # Bands are followed through crossings: those that end above the solved energies have nothing to be held against.
-    ends = table[table[:, -1] <= at_end[-1], -1]
-    bound = float(np.abs(ends[:, None] - at_end).min(axis=1).max()) if len(ends) else 0.0
+    bound = max(_distance(table[:, j], energy) for j, energy in held)
     return AxialBands(k_per_nm, table, bound)
+
+
+def _distance(followed: Array, solved: Array) -> float:
+    """How far followed bands lie from the nearest solved energies.
+
+    Bands are followed through crossings: those above the solved energies have nothing to be held against.
+    """
+    known = followed[followed <= solved[-1]]
+    return float(np.abs(known[:, None] - solved).min(axis=1).max()) if len(known) else 0.0
 
 
 def _small(space: NDArray[Any], matrices: tuple[Any | None, ...]) -> list[NDArray[Any]]:
@@ -85,8 +96,10 @@ def _by_energy(
     still, moving = orders[0], orders[2]
     d, end = len(still[0]), float(k_per_nm[-1]) ** 2
     low = float(energies[0])
-    reach = 1.2 * float(energies[count - 1] - low) + 1e-3
-    for _ in range(12):
+    # Where the lightest of the bands would be at the end, if its mass did not grow.
+    stiffest = max(float(np.linalg.eigvalsh(_sum(family.weights(low), moving))[-1]), 0.0)
+    reach = 1.2 * float(energies[count - 1] - low) + 0.3 * min(stiffest * end, 1.0) + 1e-3
+    for _ in range(24):
         grid = low + reach * np.linspace(0, 1, _ENERGIES) ** 1.5
         squares = np.empty((count, len(grid)))
         before = None
@@ -104,6 +117,8 @@ def _by_energy(
         if squares[:, -1].min() >= end:
             break
         reach *= 1.6
+    else:
+        raise ConvergenceError("the motion along the wire could not be followed up to the wave numbers that heat reaches")
     table = np.empty((count, len(k_per_nm)))
     starts = np.array([np.interp(0.0, row, grid) for row in squares])
     for row, start in enumerate(np.argsort(starts, kind="stable")):

@@ -31,9 +31,11 @@ Weights = Callable[[float], Array]
 RESIDUAL = 1e-9
 """States are solved until |T(E) x - E M x| is below this times |(E - shift) M x|."""
 _INTERPOLATED = 1e-11
-"""Relative error of T(E) between the energies at which it is worked out, where a potential varies inside cells."""
-_FEWEST, _MOST = 4, 20
-"""Numbers of such energies."""
+"""Relative error of 1/m(E) between the potentials at which it is worked out, where a potential varies inside cells."""
+_FEWEST, _MOST = 3, 48
+"""Numbers of such potentials."""
+_NEAREST = 1e-3
+"""Masses smaller than this part of the edge's are not worked with: that near below lies the end of the model."""
 _NEWTON = 30
 _ROUNDS = 6
 _SPARE = 3
@@ -73,6 +75,7 @@ class LocalMass:
     mass : of the inner product.
     middle_eV : the energy at which the first block of states is solved.
     shift_eV : an energy below all states.
+    floor_eV : the energy above which all masses are positive; all states lie above it.
     """
 
     space: Space
@@ -84,6 +87,7 @@ class LocalMass:
     axial: tuple[Pencil | None, ...]
     middle_eV: float
     shift_eV: float
+    floor_eV: float
     k_per_nm: float = 0.0
 
     @cached_property
@@ -186,12 +190,12 @@ class LocalMass:
         more = min(count + _SPARE, len(self.kept) // 2)
         block = start
         for share in references:
-            at = cells.energy_of(max(share * more, 0.5))
+            at = max(cells.energy_of(max(share * more, 0.5)), self.floor_eV)
             _, found = eigen.lowest(self.at(at), self.mass, more, self.shift_eV, _FIRST)
             block = found if block is None else np.hstack([block, found])
         block = _orthonormal(block, self.mass)
         small = [block.conj().T @ (matrix @ block) for matrix in self.matrices]
-        guess = cells.energy_of(1) + np.zeros(more)
+        guess = np.full(more, max(cells.energy_of(1), self.floor_eV))
         energies, turn = reduced(small, self.weights, self.slopes, more, guess)
         states = block @ turn
         if polished:
@@ -285,27 +289,33 @@ def family(
     InputError
         In some region the mass is not positive at the energies of the states: outside the model.
     """
-    bottom = cells.bottom_eV
-    top = cells.energy_of(count)
-    middle = bottom + 0.5 * (top - bottom)
-    _check(space, operator, bottom + 0.02 * (top - bottom))
+    bottom, top = cells.bottom_eV, cells.energy_of(count)
+    floor = _floor(space, operator)
     kept = np.flatnonzero(~(space.wall if released is None else space.wall & ~released))
+    made = _parts(space, operator, kept, max(floor, bottom + 0.2 * (cells.energy_of(1) - bottom)))
     # T(E) is below its value at the lowest energy, and above the edge.
     shift = bottom - 1e-3 * (top - bottom)
-    if operator.varies:
-        made = _interpolated(space, operator, kept, bottom, top + 0.25 * (top - bottom))
-    else:
-        made = _by_region(space, operator, kept)
-    return LocalMass(space, operator, kept, *made, middle, shift)
+    middle = max(bottom + 0.5 * (top - bottom), floor + 0.1 * (top - bottom))
+    found = LocalMass(space, operator, kept, *made, middle, shift, floor)
+    if floor > bottom and found.count_below(floor) > 0:
+        raise _outside(space, operator, floor)
+    return found
 
 
-def _check(space: Space, operator: Operator, energy_eV: float) -> None:
+def _floor(space: Space, operator: Operator) -> float:
+    """The energy above which every mass is positive, with a small margin."""
+    alpha = space.field(operator.nonparabolicity_per_eV)
+    growing = alpha > 0
+    ratio = operator.mass_ratio(space, 0.0)[growing]
+    ratio = ratio if ratio.ndim == 1 else ratio.min(axis=1)
+    return float(((_NEAREST - ratio) / alpha[growing]).max())
+
+
+def _outside(space: Space, operator: Operator, energy_eV: float) -> InputError:
     ratio = operator.mass_ratio(space, energy_eV)
-    if float(ratio.min()) > 0:
-        return
     flat = ratio if ratio.ndim == 1 else ratio.min(axis=1)
     region = space.mesh.regions[int(space.mesh.region[space.cells[int(flat.argmin())]])]
-    raise InputError(
+    return InputError(
         "carriers.model",
         f"the mass of {region.material} ({region.name}) that grows with energy is not positive at the energies of the"
         " states, far below its band edge: outside this model",
@@ -317,16 +327,21 @@ def _check(space: Space, operator: Operator, energy_eV: float) -> None:
 _Made = tuple[tuple[Part, ...], Weights, Weights, tuple[Pencil | None, ...]]
 
 
-def _by_region(space: Space, operator: Operator, kept: NDArray[np.int64]) -> _Made:
-    """The kinetic energy of regions with one edge and alpha each, and the edges."""
+def _parts(space: Space, operator: Operator, kept: NDArray[np.int64], lowest_eV: float) -> _Made:
+    """The kinetic energy of regions with one edge and alpha each, and what does not depend on the energy.
+
+    Where a potential varies, 1/(1 + alpha (E - edge - V)) is the polynomial in V through a few potentials V_j: its
+    weights 1/(1 + alpha (E - edge - V_j)) follow every energy exactly.
+    """
     edge = np.array([float(c.constant[0, 0].real) for c in operator.by_region])
     alpha = np.array(operator.nonparabolicity_per_eV)
     region = space.mesh.region[space.cells]
     pairs, number = np.unique(np.column_stack([edge, alpha]), axis=0, return_inverse=True)
-    used = [g for g in range(len(pairs)) if np.any(number.ravel()[region] == g)]
+    number = number.ravel()
     moving = replace(
         operator,
         by_region=tuple(replace(c, constant=np.zeros_like(c.constant)) for c in operator.by_region),
+        potential=None,
         nonparabolicity_per_eV=(),
     )
     still = replace(
@@ -336,18 +351,79 @@ def _by_region(space: Space, operator: Operator, kept: NDArray[np.int64]) -> _Ma
         ),
         nonparabolicity_per_eV=(),
     )
-    local, edges = build(space, moving).local(), build(space, still).local()
-    parts = [Part(local, number.ravel()[region] == g) for g in used]
-    axial = [replace(build(space, _only(moving, number.ravel() == g)), kept=kept) for g in used]
-    edge, alpha = pairs[used].T
+    whole = build(space, moving).local()
+    parts, axial, alphas, centres = [], [], [], []
+    for g, (own_edge, own_alpha) in enumerate(pairs):
+        cells = number[region] == g
+        if not cells.any():
+            continue
+        mine = _only(moving, number == g)
+        points = _potentials(space, operator, cells, float(own_edge), float(own_alpha), lowest_eV)
+        if points is None:
+            parts.append(Part(whole, cells))
+            axial.append(replace(build(space, mine), kept=kept))
+            points = np.zeros(1)
+        else:
+            for j in range(len(points)):
+                scaled = replace(mine, kinetic_scale=_lagrange(operator, points, j))
+                pencil = replace(build(space, scaled), kept=kept)
+                parts.append(Part(pencil.local(), cells))
+                axial.append(pencil)
+        alphas += [float(own_alpha)] * len(points)
+        centres += (own_edge + points).tolist()
+    slope, centre = np.array(alphas), np.array(centres)
 
     def weights(energy: float) -> Array:
-        return np.append(1 / (1 + alpha * (energy - edge)), 1.0)
+        return np.append(1 / (1 + slope * (energy - centre)), 1.0)
 
     def slopes(energy: float) -> Array:
-        return np.append(-alpha / (1 + alpha * (energy - edge)) ** 2, 0.0)
+        return np.append(-slope / (1 + slope * (energy - centre)) ** 2, 0.0)
 
-    return (*parts, Part(edges, None)), weights, slopes, (*axial, None)
+    return (*parts, Part(build(space, still).local(), None)), weights, slopes, (*axial, None)
+
+
+def _potentials(
+    space: Space, operator: Operator, cells: NDArray[np.bool_], edge: float, alpha: float, lowest_eV: float
+) -> Array | None:
+    """Chebyshev points of the potential in some cells, as many as 1/m needs at the lowest energy; None where one does."""
+    if operator.potential is None or alpha == 0:
+        return None
+    at = space.quadrature_points[cells]
+    values = np.asarray(operator.potential(at[..., 0], at[..., 1]), dtype=float)
+    low, high = float(values.min()), float(values.max())
+    middle, half = (low + high) / 2, max((high - low) / 2, 1e-9)
+    probes = middle + half * np.cos(np.pi * np.linspace(0, 1, 201))
+
+    def lighter(potential: Array) -> Array:
+        return np.asarray(1 / (1 + alpha * (lowest_eV - edge - potential)))
+
+    for count in range(_FEWEST, _MOST + 1):
+        points = middle + half * np.cos(np.pi * (np.arange(count) + 0.5) / count)
+        guess = lighter(points) @ _polynomials(points, probes)
+        if np.abs(guess / lighter(probes) - 1).max() < _INTERPOLATED:
+            break
+    return points
+
+
+def _polynomials(points: Array, at: Array) -> Array:
+    """Lagrange polynomials (p, n) of the points, at n places."""
+    spread, centre = float(np.ptp(points)) / 2 or 1.0, float(points.max() + points.min()) / 2
+    table = np.polynomial.chebyshev.chebvander((points - centre) / spread, len(points) - 1)
+    there = np.polynomial.chebyshev.chebvander((at - centre) / spread, len(points) - 1)
+    return np.asarray(np.linalg.solve(table.T, np.moveaxis(there, -1, 0).reshape(len(points), -1)))
+
+
+def _lagrange(operator: Operator, points: Array, j: int) -> Callable[[Space], Array]:
+    """The j-th polynomial of the potential, as a field on a space."""
+
+    def field(space: Space) -> Array:
+        assert operator.potential is not None
+        at = space.quadrature_points
+        values = np.asarray(operator.potential(at[..., 0], at[..., 1]), dtype=float)
+        inside = np.clip(values, points.min() - 0.1 * np.ptp(points), points.max() + 0.1 * np.ptp(points))
+        return np.asarray(_polynomials(points, inside.ravel())[j].reshape(values.shape))
+
+    return field
 
 
 def _only(operator: Operator, regions: NDArray[np.bool_]) -> Operator:
@@ -359,28 +435,3 @@ def _only(operator: Operator, regions: NDArray[np.bool_]) -> Operator:
             for c, here in zip(operator.by_region, regions, strict=True)
         ),
     )
-
-
-def _interpolated(space: Space, operator: Operator, kept: NDArray[np.int64], low_eV: float, high_eV: float) -> _Made:
-    """T(E) at a few energies of the window; between them by the polynomial through them."""
-    middle, half = (low_eV + high_eV) / 2, (high_eV - low_eV) / 2
-    # 1/m(E) has a pole where the mass vanishes: polynomials converge like the sum of the half axes of the ellipse
-    # about the window that goes through it (L. N. Trefethen, Approximation Theory and Approximation Practice, ch. 8).
-    room = float(operator.mass_ratio(space, middle).min()) / max(operator.nonparabolicity_per_eV) / half
-    axes = room + np.sqrt(max(room**2 - 1, 1e-6))
-    points = int(np.clip(np.ceil(np.log(1 / _INTERPOLATED) / np.log(axes)), _FEWEST, _MOST))
-    turn = np.cos(np.pi * (np.arange(points) + 0.5) / points)
-    pencils = tuple(replace(build(space, operator.at(middle + half * t)), kept=kept) for t in turn)
-    parts = tuple(Part(p.local(), None) for p in pencils)
-    # Chebyshev coefficients of the Lagrange polynomials of these points.
-    table = np.polynomial.chebyshev.chebvander(turn, points - 1)
-    into = np.linalg.inv(table)
-    falling = np.polynomial.chebyshev.chebder(into, axis=0) / half
-
-    def weights(energy: float) -> Array:
-        return np.asarray(np.polynomial.chebyshev.chebval((energy - middle) / half, into))
-
-    def slopes(energy: float) -> Array:
-        return np.asarray(np.polynomial.chebyshev.chebval((energy - middle) / half, falling))
-
-    return parts, weights, slopes, pencils
