@@ -66,8 +66,9 @@ CASES: dict[str, tuple[str, str, tuple[str, ...]]] = {
     "no shape": ('shape = "circle"\n', "", ("section.shape", "is missing")),
     "shape is a number": ('"circle"', "7", ("section.shape", "got 7")),
     "no size": ('diameter = "10 nm"\n', "", ("section.diameter", "is missing", 'diameter = "10 nm"')),
-    "outline": (CIRCLE, 'shape = "outline"\nfile = "a.csv"', ("section.shape", "later version")),
-    "mesh": (CIRCLE, 'shape = "mesh"', ("section.shape", "later version")),
+    "outline of nowhere": (CIRCLE, 'shape = "outline"\nfile = "a.csv"', ("section.file", "no folder to look in")),
+    "mesh of a material": (CIRCLE, 'shape = "mesh"', ("section.material", "no key of a mesh")),
+    "potential of nowhere": ("[potential]", '[potential]\nfile = "v.csv"', ("potential.file", "no folder to look in")),
     "bare number": ('"10 nm"', "10", ("section.diameter", "needs its unit", 'diameter = "10 nm"')),
     "bare energy": ('"0.1 meV"', "0.1", ("accuracy.energy", 'energy = "0.1 meV"')),
     "unitless accuracy": ('"0.1 meV"', '"0.1"', ("accuracy.energy", 'energy = "0.1 meV"')),
@@ -179,8 +180,6 @@ CASES: dict[str, tuple[str, str, tuple[str, ...]]] = {
 }
 # Keys that later versions will know: never silently ignored.
 LATER = {
-    "valleys": ("electron_mass = 0.05", "valleys = []"),
-    "nonparabolicity": ("electron_mass = 0.05", "electron_mass = 0.05\nnonparabolicity = 1.2"),
     "gates": ("[potential]", '[[gates]]\nname = "wrap"\n[potential]'),
     "surfaces": ("[potential]", "[[surfaces]]\n[potential]"),
     "surroundings": ("[potential]", "[surroundings]\n[potential]"),
@@ -188,7 +187,6 @@ LATER = {
     "transport": ("[potential]", "[transport]\n[potential]"),
     "donors": ('thickness = "2 nm"', 'thickness = "2 nm"\ndonors = "1e18 cm^-3"'),
     "acceptors": (CIRCLE, f'{CIRCLE}\nacceptors = "1e18 cm^-3"'),
-    "file": ("[potential]", '[potential]\nfile = "v.csv"'),
 }
 
 

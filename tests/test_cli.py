@@ -366,14 +366,43 @@ def test_check_prints_units_and_solves_nothing(here: Path, monkeypatch: pytest.M
 def test_materials_come_with_their_sources() -> None:
     listing = run("materials")
     assert listing.exit_code == 0
-    for name in ("GaAs", "InAs", "InSb", "In0.53Ga0.47As"):
+    for name in ("Si", "GaAs", "InAs", "InSb", "GaN", "SiO2", "In0.53Ga0.47As", "Si0.7Ge0.3"):
         assert name in listing.stdout
+    assert "6 Delta" in listing.stdout
+    assert "0.9163 along, 0.1905 across" in listing.stdout
     values = run("materials", "Al0.2Ga0.8As", "--temperature", "77 K")
     assert values.exit_code == 0
-    assert "gap" in values.stdout
-    assert "77 K" in values.stdout
-    assert "from memory" in values.stdout or "yes" in values.stdout
-    assert "[1] " in values.stdout
+    for part in ("zone_centre_gap", "77 K", "from memory", "sources differ", "checked", "[1] ", "X_transverse_mass"):
+        assert part in values.stdout
+    inas = run("materials", "InAs").stdout
+    for part in ("luttinger_1", "elastic_C44", "kane_energy", "0.022 to 0.027", "shear_deformation_001"):
+        assert part in inas
+    assert "warning alloy-range" in run("materials", "Al0.5Ga0.5As").stdout
+
+
+def test_materials_as_json() -> None:
+    (silicon,) = json.loads(run("materials", "Si", "--json").stdout)
+    assert silicon["valleys"][0]["name"] == "Delta"
+    assert silicon["crystal"] == "diamond"
+    mass = next(v for v in silicon["values"] if v["quantity"] == "Delta_longitudinal_mass")
+    assert (mass["value"], mass["low"], mass["high"], mass["provenance"]) == (0.9163, 0.903, 0.98, "checked")
+    assert {entry["name"] for entry in json.loads(run("materials", "--json").stdout)} >= {"Si", "GaN", "vacuum"}
+
+
+def test_materials_of_a_users_file(here: Path) -> None:
+    text = '[ours]\nextends = "InAs"\nelectron_mass = 0.0235\nsource = "invented"\n'
+    Path("lab.toml").write_text(text, encoding="utf-8")
+    assert "ours" in run("materials", "--file", "lab.toml").stdout
+    one = run("materials", "ours", "--file", "lab.toml")
+    assert "given in lab.toml, replaces 0.024: invented" in " ".join(one.stdout.split())
+    assert run("materials", "InAs", "--file", "lab.toml").exit_code == 0
+    unknown = run("materials", "our", "--file", "lab.toml")
+    assert (unknown.exit_code, "'ours'" in unknown.stderr) == (2, True)
+    Path("lab.toml").write_text(text.replace("0.0235", "0"), encoding="utf-8")
+    bad = run("materials", "--file", "lab.toml")
+    assert (bad.exit_code, bad.stdout) == (2, "")
+    assert "--file: lab.toml: ours.electron_mass: must be positive" in bad.stderr
+    assert "there is no such file" in run("materials", "--file", "none.toml").stderr
 
 
 def test_a_missing_library_is_named_with_its_package() -> None:

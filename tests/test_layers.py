@@ -24,7 +24,7 @@ LAYERS: tuple[frozenset[str], ...] = tuple(
             {"fem"},
             {"bands"},
             {"physics"},
-            {"result", "solve"},
+            {"result", "solve", "loading"},
             {"output"},
             {"survey"},
             {"cli", "doctor", "known_wires", "__main__"},
@@ -35,7 +35,8 @@ MAY_PRINT = {"wiresolve.cli", "wiresolve.__main__"}
 # Libraries that only one module may import.
 ONLY_IMPORTER = {
     "gmsh": "wiresolve.fem.meshing",
-    "meshio": "wiresolve.fem.imported_mesh",
+    # In the description, because an imported mesh is a shape: it is read while the problem is being checked.
+    "meshio": "wiresolve.describe.imported_mesh",
     "skfem": "wiresolve.fem.space",
 }
 # What neither `import wiresolve` nor `wiresolve --help` may wait for.

@@ -156,7 +156,9 @@ def solved(section: Section, tensors: dict[str, np.ndarray], edge: dict[str, flo
         inverse = inverse if sheared else without_common_shear(inverse)
         return Operator(tuple(coefficients(w, edge[r.material]) for w, r in zip(inverse, mesh.regions, strict=True)))
 
-    return certify(lambda distance: section.pieces(), [Channel("zone centre", "zone centre", 1, operator)], 4, 1e-6).solved[0]
+    return certify(
+        lambda distance: section.pieces(), [Channel("zone centre", "zone centre", 1, operator)], 4, 1e-6
+    ).solved[0]
 
 
 def test_axis_plane_terms_of_one_material_go_into_the_axial_mass() -> None:

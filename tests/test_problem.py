@@ -86,6 +86,7 @@ def test_energy_zero_is_the_lowest_shifted_edge() -> None:
         (lambda: wire("GaAs", Layer(2, "bare"), materials=(BARE,)), "materials.bare.conduction_edge", "one scale"),
         (lambda: wire("oxide", materials=(OXIDE,)), "section", "no mass"),
         (lambda: wire("GaAs", Layer(2, "oxide"), materials=(OXIDE,)), r"section.layers\[1\]", "no mass"),
+        (lambda: wire("GaAs", materials=(OXIDE,), outside="oxide"), r"section\.outside", "no mass.*hard wall"),
         (lambda: wire("well", materials=(WELL, WELL)), "materials", "names of their own"),
         (lambda: wire("InSb", lattice_temperature_K=1900.0), "section.lattice_temperature", "closes"),
         (lambda: Problem("", Section(Circle(9), "GaAs"), COLD), "title", "empty"),

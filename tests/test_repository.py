@@ -14,7 +14,7 @@ import click
 import pytest
 
 import wiresolve.cli
-from wiresolve.describe import wirefile
+from wiresolve.describe import material_file, plain, shape_tables, wirefile
 from wiresolve.doctor import GMSH_LIBRARIES
 
 REPOSITORY = Path(__file__).resolve().parents[1]
@@ -36,6 +36,7 @@ TOP_LEVEL = {
     "scripts",
 }
 LONGEST_MODULE = 450
+FILE_KEYS = (shape_tables.MESH_KEYS, shape_tables.OUTLINE_KEYS, shape_tables.POTENTIAL_FILE_KEYS, ("outline", "mesh"))
 
 
 def tracked() -> list[str]:
@@ -126,10 +127,14 @@ def test_wire_file_of_the_readme_is_valid() -> None:
 
 
 def test_all_keys_of_the_wire_file_are_documented() -> None:
-    tables = (wirefile.SECTION_KEYS, wirefile.LAYER_KEYS, wirefile.PATCH_KEYS, wirefile.MATERIAL_KEYS)
-    keys = {key for table in (*tables, *wirefile.LENGTH_KEYS.values()) for key in table}
+    tables = (wirefile.SECTION_KEYS, wirefile.LAYER_KEYS, wirefile.PATCH_KEYS, material_file.MATERIAL_KEYS)
+    keys = {key for table in (*tables, *plain.LENGTH_KEYS.values(), *FILE_KEYS) for key in table} | {
+        *material_file.VALLEY_KEYS
+    }
     reference = README.partition("## The wire file")[2].partition("## Command line")[0]
-    assert sorted(key for key in keys | set(wirefile.SHAPES) if not re.search(rf"[`.\[]{key}[` \]]", reference)) == []
+    assert (
+        sorted(key for key in keys | set(shape_tables.SHAPES) if not re.search(rf"[`.\[]{key}[` \]]", reference)) == []
+    )
 
 
 def test_script_of_the_readme_runs(tmp_path: Path) -> None:

@@ -8,7 +8,8 @@ from collections.abc import Callable
 import numpy as np
 import pytest
 
-from wiresolve.describe.section import Layer, Patch, Piece, Section, outside_loop
+from wiresolve.describe.outside import outside_loop
+from wiresolve.describe.section import Layer, Patch, Piece, Section
 from wiresolve.describe.shapes import Circle, Ellipse, Hexagon, Polygon, Rectangle, Triangle
 from wiresolve.errors import InputError
 
@@ -132,6 +133,34 @@ def test_outside_of_a_round_wire_is_a_circle() -> None:
     assert outside_loop(core_shell().pieces(), 7).is_circle == ((0, 0), 25)
     sticks_out = Section(Circle(10), "GaAs", patches=(Patch(Circle(4), "InAs", (5, 0)),))
     assert outside_loop(sticks_out.pieces(), 7).is_circle is None
+
+
+@pytest.mark.parametrize("gap", [-5e-5, 0.0, 1e-5, 5e-5])
+def test_outlines_that_touch_without_crossing_are_refused(gap: float) -> None:
+    """A circle in a circle, a circle in an ellipse, a hexagon around a circle: within a tenth of a picometre."""
+    for core, patch, x in (
+        (Circle(20), Circle(8), 6 - gap),
+        (Ellipse(20, 12), Circle(12 - 2 * gap), 0),
+        (Circle(20 - 2 * gap), Hexagon(across_flats_nm=20), 0),
+        (Circle(20), Circle(8), 14 + gap),
+    ):
+        with pytest.raises(InputError, match=r"patches\[1\]: its outline touches that of core without crossing it"):
+            Section(core, "GaAs", patches=(Patch(patch, "InAs", (x, 0)),))
+
+
+def test_outlines_that_meet_cleanly_are_drawn() -> None:
+    """What is clearly apart or overlaps, sides on top of each other, and tangents that end in a corner."""
+    sheet = Rectangle(20, 10)
+    stadium = Section(sheet, "GaAs", patches=(Patch(Circle(10), "GaAs", (10, 0)), Patch(Circle(10), "GaAs", (-10, 0))))
+    assert len(stadium.visible()) == 3
+    for core, patch, x in (
+        (Circle(20), Circle(8), 6.01),
+        (Circle(20), Circle(8), 5.99),
+        (Circle(20), Circle(20), 0),
+        (Rectangle(20, 10, 2), Rectangle(20, 10, 2), 1),
+        (Circle(20), Hexagon(across_corners_nm=20), 0),
+    ):
+        Section(core, "GaAs", patches=(Patch(patch, "InAs", (x, 0)),))
 
 
 def distance_between(points: np.ndarray, others: np.ndarray) -> float:

@@ -8,7 +8,7 @@ from pathlib import Path
 
 import pytest
 
-from wiresolve.describe import drawing, wirefile
+from wiresolve.describe import drawing, shape_tables, wirefile
 from wiresolve.describe.materials import Material
 from wiresolve.describe.problem import Accuracy, Carriers, Orientation, Potential, Problem
 from wiresolve.describe.section import Layer, Patch, Section
@@ -152,9 +152,12 @@ def test_shapes_come_back_exactly(shape: Circle) -> None:
 
 
 @pytest.mark.parametrize("path", GEOMETRIES, ids=[p.stem for p in GEOMETRIES])
-def test_geometries_are_read_and_come_back(path: Path) -> None:
+def test_geometries_are_read_and_come_back(path: Path, tmp_path: Path) -> None:
     problem = wirefile.read(path)
-    again = wirefile.parse(wirefile.dump(problem))
+    for name, content in problem.files:
+        (tmp_path / name).parent.mkdir(exist_ok=True)
+        (tmp_path / name).write_bytes(content)
+    again = wirefile.parse(wirefile.dump(problem), tmp_path)
     assert again.digest == problem.digest
     assert wirefile.dump(again) == wirefile.dump(problem)
     assert path.read_text(encoding="utf-8").startswith("# ")
@@ -163,7 +166,7 @@ def test_geometries_are_read_and_come_back(path: Path) -> None:
 
 def test_every_shape_has_a_geometry() -> None:
     used = {wirefile.read(path).section.shape.kind for path in GEOMETRIES}
-    assert used == set(wirefile.SHAPES)
+    assert used == {*shape_tables.SHAPES, "outline", "mesh"}
     assert len({wirefile.read(path).title for path in GEOMETRIES}) == len(GEOMETRIES) >= 15
 
 
@@ -219,7 +222,7 @@ def test_describe_tells_everything_with_units() -> None:
     assert "around it" in rows["section.outside"]
     assert rows["orientation.axis"] == "1 1 1"
     assert rows["potential.field"] == "0.01 V/nm and 0.01 V/nm"
-    assert "(not checked: given in the wire file" in rows["materials.wall.electron_mass"]
+    assert "(given in the wire file" in rows["materials.wall.electron_mass"]
     core = dict(wirefile.describe(wirefile.parse(wirefile.dump(Problem("a", Section(Circle(10), "GaAs"), COLD)))))
     assert "78.5398 nm^2" in core["section.core.area"]
     assert "on the common scale" in core["energy_zero"]
@@ -294,7 +297,7 @@ temperature = "4.2 K"
     assert section == rectangle | corners | part | around
     assert layer == {"thickness": "2.0 nm", "material": "own"} | part
     assert patch == {"shape": "circle", "diameter": "3.0 nm", "center": ["0.0 nm", "0.0 nm"], "material": "own"} | part
-    assert written["carriers"] == {"kind": "electrons", "temperature": ["4.2 K"]}
+    assert written["carriers"] == {"kind": "electrons", "temperature": ["4.2 K"], "model": "nonparabolic"}
     assert written["accuracy"] == {"subbands": 10, "energy": "0.0001 eV"}
     assert written["materials"]["own"] == {"electron_mass": 0.05, "valley_degeneracy": 1}
 

@@ -23,8 +23,9 @@ if TYPE_CHECKING:
     from wiresolve.describe.materials import Material
     from wiresolve.describe.problem import Accuracy, Carriers, Orientation, Potential, Problem
     from wiresolve.describe.section import Layer, Patch, Section
-    from wiresolve.describe.wirefile import read as load
+    from wiresolve.describe.valley import Valley
     from wiresolve.errors import WiresolveError
+    from wiresolve.loading import load
     from wiresolve.output import figures
     from wiresolve.output.folder import write
     from wiresolve.physics.section_mesh import mesh
@@ -42,6 +43,7 @@ __all__ = [
     "Problem",
     "Result",
     "Section",
+    "Valley",
     "WiresolveError",
     "figures",
     "load",
@@ -63,9 +65,10 @@ _HOMES = {
     "Problem": "wiresolve.describe.problem:Problem",
     "Result": "wiresolve.result:Result",
     "Section": "wiresolve.describe.section:Section",
+    "Valley": "wiresolve.describe.valley:Valley",
     "WiresolveError": "wiresolve.errors:WiresolveError",
     "figures": "wiresolve.output.figures:",
-    "load": "wiresolve.describe.wirefile:read",
+    "load": "wiresolve.loading:load",
     "mesh": "wiresolve.physics.section_mesh:mesh",
     "shapes": "wiresolve.describe.shapes:",
     "solve": "wiresolve.solve:solve",

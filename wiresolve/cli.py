@@ -154,9 +154,9 @@ def _progress(shown: bool) -> Iterator[Callable[[str, float, str], None] | None]
 def _read(file: Path, accuracy: str | None = None) -> Problem:
     from dataclasses import replace
 
-    from wiresolve.describe.wirefile import read
+    from wiresolve.loading import load
 
-    problem = read(file)
+    problem = load(file)
     if accuracy is not None:
         from wiresolve.units import parse_quantity
 
@@ -297,42 +297,51 @@ def check(file: Path) -> None:
     """
     from wiresolve.describe.wirefile import describe
     from wiresolve.output.tables import described
+    from wiresolve.physics import carrying
+    from wiresolve.physics.wire import Wire
 
-    _print("\n".join(described(describe(_read(file)))))
+    problem = _read(file)
+    _print("\n".join(described(describe(problem) + carrying.described(Wire(problem)))))
 
 
 @program.command()
 @click.argument("name", required=False)
 @click.option("--temperature", default="300 K", show_default=True, help="Lattice temperature of the values.")
-def materials(name: str | None, temperature: str) -> None:
+@click.option("--file", "own", type=click.Path(path_type=Path), help="Also the materials of this TOML file.")
+@click.option("--json", "as_json", is_flag=True, help="Print the materials as JSON.")
+def materials(name: str | None, temperature: str, own: Path | None, as_json: bool) -> None:
     """List materials, or all values of one.
 
-    NAME is one of the list or an alloy as a plain formula, like Al0.3Ga0.7As.
+    NAME is one of the list or an alloy as a plain formula, like Al0.3Ga0.7As. Each value comes with what the literature
+    spans, its source, and whether it was checked against it, is from memory, or differs between sources.
     """
-    from wiresolve.describe.materials import look_up, table_names
-    from wiresolve.output.tables import aligned, paragraphs
+    from wiresolve.describe import material_file
+    from wiresolve.describe.material_changes import resolved
+    from wiresolve.describe.materials import look_up, table_names, table_values
+    from wiresolve.output import material_lists
+    from wiresolve.output.tables import paragraphs
     from wiresolve.units import parse_quantity
 
     lattice_K = parse_quantity(temperature, "temperature", "--temperature")
+    given = material_file.read("--file", own, Path()) if own is not None else ()
+    found = {material.name: resolved(material, lattice_K) for material in given}
     if name is None:
-        rows = [["name", "electron mass", "conduction edge", "gap", "permittivity"], ["", "m0", "eV", "eV", ""]]
-        for material in (look_up(entry, lattice_K) for entry in table_names()):
-            numbers = (material.electron_mass, material.conduction_edge_eV, material.gap_eV, material.permittivity)
-            rows.append([material.name, *("" if n is None else f"{n:.4g}" for n in numbers)])
-        _print("\n".join(aligned(rows, left={0})))
-        _print(f"at {lattice_K:g} K; 'wiresolve materials NAME' shows where a value is from")
+        found |= {entry: look_up(entry, lattice_K) for entry in table_names() if entry not in found}
+        if as_json:
+            _print(material_lists.as_json([(material, material.values) for material in found.values()]))
+            return
+        _print("\n".join(material_lists.listing(list(found.values()))))
+        _print(f"at {lattice_K:g} K; unsure are values from memory and values on which sources differ")
+        _print("'wiresolve materials NAME' shows where each is from")
         return
-    found = look_up(name, lattice_K).values
-    sources = list(dict.fromkeys(value.source for value in found))
-    rows = [["quantity", "value", "unit", "at", "source", "checked against it"]]
-    for value in found:
-        at = "" if value.temperature_K is None else f"{value.temperature_K:g} K"
-        checked = "yes" if value.checked else "no, from memory"
-        source = f"[{sources.index(value.source) + 1}]"
-        rows.append([value.quantity, f"{value.value:.6g}", value.unit, at, source, checked])
-    _print("\n".join(aligned(rows, left={0, 2, 5})))
-    for number, source in enumerate(sources, 1):
-        _print("\n".join(paragraphs(f"[{number}] {source}")))
+    material = found[name] if name in found else look_up(name, lattice_K, tuple(found))
+    values = material.values if name in found else table_values(name, lattice_K)
+    if as_json:
+        _print(material_lists.as_json([(material, values)]))
+        return
+    _print("\n".join(material_lists.value_table(values)))
+    for code, text, remedy in material.notes:
+        _print("\n".join(["", *paragraphs(f"warning {code}: {text}"), *paragraphs(remedy, indent="    ")]))
 
 
 @program.command()

@@ -41,6 +41,11 @@ def in_range(field: str, value: object, low: float, high: float, unit: str = "",
     return number
 
 
+def optional(field: str, value: object, low: float, high: float, unit: str = "") -> float | None:
+    """None, or a number within [low, high]."""
+    return None if value is None else in_range(field, value, low, high, unit)
+
+
 def length(field: str, value: object, low: float = SHORTEST_nm, high: float = LONGEST_nm) -> float:
     """A length in nm that a section can have."""
     return in_range(field, value, low, high, "nm")

@@ -10,6 +10,9 @@ from functools import cache
 import numpy as np
 from numpy.typing import NDArray
 
+from wiresolve.describe import rays
+from wiresolve.describe.rays import cos_sin as cos_sin  # for those who take curves from here
+
 Array = NDArray[np.float64]
 Point = tuple[float, float]
 CORNER_rad = 1e-3
@@ -22,18 +25,17 @@ def _gauss(count: int) -> tuple[Array, Array]:
     return (nodes + 1) / 2, weights / 2
 
 
+def _panels(knots: Array, count: int = 4) -> tuple[Array, Array]:
+    """Nodes, `count` of them between each two knots, with their weights."""
+    nodes, weights = _gauss(count)
+    steps = np.diff(knots)
+    return (knots[:-1, None] + steps[:, None] * nodes).ravel(), (steps[:, None] * weights).ravel()
+
+
 def turn(point: Point, angle: float) -> Point:
     """`point` turned about the origin; quarter turns are exact."""
     cosine, sine = cos_sin(angle)
     return cosine * point[0] - sine * point[1], sine * point[0] + cosine * point[1]
-
-
-def cos_sin(angle: float) -> tuple[float, float]:
-    """Cosine and sine, exact at whole quarter turns, so that turned sides stay on top of each other."""
-    quarters = angle / (math.pi / 2)
-    if abs(quarters - round(quarters)) < 1e-14 * max(1.0, abs(quarters)):
-        return ((1.0, 0.0), (0.0, 1.0), (-1.0, 0.0), (0.0, -1.0))[round(quarters) % 4]
-    return math.cos(angle), math.sin(angle)
 
 
 @dataclass(frozen=True)
@@ -76,17 +78,18 @@ class _Conic:
     sweep: float
     name: str
 
-    def _axes(self) -> tuple[float, float, float]:
+    def conic(self) -> tuple[float, float, float]:
+        """Semi-axes, and the angle by which they are turned."""
         raise NotImplementedError
 
     def _at(self, s: Array) -> Array:
-        a, b, tilt = self._axes()
+        a, b, tilt = self.conic()
         cosine, sine = cos_sin(tilt)
         x, y = a * np.cos(s), b * np.sin(s)
         return np.column_stack([self.center[0] + cosine * x - sine * y, self.center[1] + sine * x + cosine * y])
 
     def _single(self, s: float) -> Point:
-        a, b, tilt = self._axes()
+        a, b, tilt = self.conic()
         c, d = cos_sin(s)
         x, y = turn((a * c, b * d), tilt)
         return self.center[0] + x, self.center[1] + y
@@ -107,7 +110,7 @@ class _Conic:
 
     def tangent(self, t: Array) -> Array:
         """Derivative of `point` by `t`, shape (m, 2)."""
-        a, b, tilt = self._axes()
+        a, b, tilt = self.conic()
         cosine, sine = cos_sin(tilt)
         s = self.start_angle + self.sweep * np.atleast_1d(np.asarray(t, dtype=float))
         x, y = -a * np.sin(s) * self.sweep, b * np.cos(s) * self.sweep
@@ -124,7 +127,8 @@ class Arc(_Conic):
     sweep: float
     name: str
 
-    def _axes(self) -> tuple[float, float, float]:
+    def conic(self) -> tuple[float, float, float]:
+        """The radius twice, and no turn."""
         return self.radius, self.radius, 0.0
 
     def moved(self, dx: float, dy: float) -> Arc:
@@ -152,7 +156,8 @@ class EllipseArc(_Conic):
     sweep: float
     name: str
 
-    def _axes(self) -> tuple[float, float, float]:
+    def conic(self) -> tuple[float, float, float]:
+        """Semi-axes, and the angle by which they are turned."""
         return self.semi_x, self.semi_y, self.tilt
 
     def moved(self, dx: float, dy: float) -> EllipseArc:
@@ -207,6 +212,14 @@ class Spline:
         """Derivative of `point` by `t`, shape (m, 2)."""
         return np.asarray(self._curve()[0](np.atleast_1d(np.asarray(t, dtype=float)), 1))
 
+    def poles(self) -> tuple[Array, Array]:
+        """Control points, shape (m, 2), and distinct knots of the same curve as a B-spline with clamped ends."""
+        from scipy.interpolate import make_interp_spline
+
+        curve, knots = self._curve()
+        at_ends = [[(1, curve(t, 1))] for t in (0.0, 1.0)]
+        return np.asarray(make_interp_spline(knots, np.array(self.points), 3, bc_type=at_ends).c), knots
+
     def moved(self, dx: float, dy: float) -> Spline:
         """The same curve elsewhere."""
         return Spline(tuple((x + dx, y + dy) for x, y in self.points), self.name)
@@ -217,46 +230,70 @@ class Spline:
 
     def quadrature(self) -> tuple[Array, Array]:
         """Nodes and weights on [0, 1], four to each interval of the spline."""
-        knots = self._curve()[1]
-        nodes, weights = _gauss(4)
-        steps = np.diff(knots)
-        return (knots[:-1, None] + steps[:, None] * nodes).ravel(), (steps[:, None] * weights).ravel()
+        return _panels(self._curve()[1])
 
 
-Segment = Line | Arc | EllipseArc | Spline
+@dataclass(frozen=True)
+class Parabolas:
+    """A smooth chain of parabolic arcs: what second-order edges are.
+
+    `points` (2 m + 1 of them) are the nodes: each arc goes from an even one through the odd one, at the middle of its
+    parameter, to the next even one.
+    """
+
+    points: tuple[Point, ...]
+    name: str
+
+    @property
+    def start(self) -> Point:
+        """First point."""
+        return self.points[0]
+
+    @property
+    def end(self) -> Point:
+        """Last point."""
+        return self.points[-1]
+
+    def poles(self) -> tuple[Array, Array]:
+        """Control points, shape (2 m + 1, 2), and distinct knots of the chain as a B-spline: the arcs' own ones."""
+        nodes = np.array(self.points)
+        poles = nodes.copy()
+        poles[1::2] = 2 * nodes[1::2] - (nodes[:-1:2] + nodes[2::2]) / 2
+        reach = np.concatenate([[0.0], np.cumsum(np.hypot(*np.diff(nodes[::2], axis=0).T))])
+        return poles, reach / reach[-1]
+
+    def _arc(self, t: Array) -> tuple[Array, Array, Array]:
+        """For each parameter its arc's three control points, the place within the arc, and the knots' step."""
+        poles, knots = self.poles()
+        t = np.atleast_1d(np.asarray(t, dtype=float))
+        arc = np.clip(np.searchsorted(knots, t, side="right") - 1, 0, len(knots) - 2)
+        step = knots[arc + 1] - knots[arc]
+        return np.stack([poles[2 * arc + k] for k in range(3)]), ((t - knots[arc]) / step)[:, None], step[:, None]
+
+    def point(self, t: Array) -> Array:
+        """Points at `t` in [0, 1], shape (m, 2)."""
+        (a, b, c), s, _ = self._arc(t)
+        return np.asarray((1 - s) ** 2 * a + 2 * s * (1 - s) * b + s**2 * c)
+
+    def tangent(self, t: Array) -> Array:
+        """Derivative of `point` by `t`, shape (m, 2)."""
+        (a, b, c), s, step = self._arc(t)
+        return np.asarray(2 * ((1 - s) * (b - a) + s * (c - b)) / step)
+
+    def moved(self, dx: float, dy: float) -> Parabolas:
+        """The same chain elsewhere."""
+        return Parabolas(tuple((x + dx, y + dy) for x, y in self.points), self.name)
+
+    def rotated(self, angle: float) -> Parabolas:
+        """The same chain turned about the origin."""
+        return Parabolas(tuple(turn(p, angle) for p in self.points), self.name)
+
+    def quadrature(self) -> tuple[Array, Array]:
+        """Nodes and weights on [0, 1], eight to each arc: an arc may bend sharply."""
+        return _panels(self.poles()[1], 8)
 
 
-def _rays_line(
-    x0: float | Array, y0: float | Array, x1: float | Array, y1: float | Array, x: Array, y: Array
-) -> NDArray[np.bool_]:
-    """Which rays from (x, y) towards +x cross the line (or each of several, by broadcasting)."""
-    crosses = (y0 <= y) != (y1 <= y)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        at = x0 + (y - y0) / (y1 - y0) * (x1 - x0)
-    return np.asarray(crosses & (np.where(crosses, at, -np.inf) > x))
-
-
-def _rays_conic(arc: Arc | EllipseArc, y_start: float, y_end: float, x: Array, y: Array) -> NDArray[np.bool_]:
-    """Whether the rays from (x, y) towards +x cross the arc an odd number of times: exact, piece by monotone piece."""
-    a, b, tilt = arc._axes()
-    cosine, sine = cos_sin(tilt)
-    # y(s) = cy + height cos(s - phase) rises or falls between the multiples of pi from the phase.
-    height, phase = math.hypot(a * sine, b * cosine), math.atan2(b * cosine, a * sine)
-    low, high = sorted((arc.start_angle, arc.start_angle + arc.sweep))
-    first, last = math.floor((low - phase) / math.pi), math.ceil((high - phase) / math.pi)
-    breaks = [low, *(phase + k * math.pi for k in range(first, last + 1) if low < phase + k * math.pi < high), high]
-    heights = [arc.center[1] + height * math.cos(s - phase) for s in breaks]
-    heights[0], heights[-1] = (y_start, y_end) if arc.sweep > 0 else (y_end, y_start)
-    odd = np.zeros(x.shape, dtype=bool)
-    for s0, s1, y0, y1 in zip(breaks, breaks[1:], heights, heights[1:], strict=False):
-        crosses = (y0 <= y) != (y1 <= y)
-        if not crosses.any():
-            continue
-        k = math.floor(((s0 + s1) / 2 - phase) / math.pi)
-        u = np.clip((y - arc.center[1]) / height * (1 if k % 2 == 0 else -1), -1, 1)
-        at = arc._at(phase + k * math.pi + np.arccos(u))[:, 0]
-        odd ^= crosses & (at > x)
-    return odd
+Segment = Line | Arc | EllipseArc | Spline | Parabolas
 
 
 @dataclass(frozen=True)
@@ -311,25 +348,30 @@ class Loop:
         return tuple(found)
 
     def contains(self, points: Array) -> NDArray[np.bool_]:
-        """Which of the points, shape (m, 2), lie inside: exact for lines and arcs, to 1e-6 of the size for splines."""
+        """Which of the points, shape (m, 2), lie inside: exact but for splines, there to 1e-6 of the size."""
         x, y = np.asarray(points, dtype=float).reshape(-1, 2).T
         inside = np.zeros(x.shape, dtype=bool)
         following: Sequence[Segment] = (*self.segments[1:], self.segments[0])
+        straight: list[Array] = []
         for segment, after in zip(self.segments, following, strict=True):
             # The next segment's start, not the own end: rounding must leave no gap between the two for a ray.
             (x0, y0), (x1, y1) = segment.start, after.start
             if isinstance(segment, Line):
-                inside ^= _rays_line(x0, y0, x1, y1, x, y)
+                straight.append(np.array([[x0, y0, x1, y1]]))
             elif isinstance(segment, Spline):
                 dense = segment.point(np.linspace(0, 1, 8 * len(segment.points)))
                 dense[-1] = x1, y1
-                for part in range(0, len(x), 500):  # bounds the memory of points x pieces
-                    some = slice(part, part + 500)
-                    ahead, ray_x, ray_y = dense[1:], x[some, None], y[some, None]
-                    hits = _rays_line(dense[:-1, 0], dense[:-1, 1], ahead[:, 0], ahead[:, 1], ray_x, ray_y)
-                    inside[some] ^= hits.sum(axis=1) % 2 == 1
+                straight.append(np.hstack([dense[:-1], dense[1:]]))
+            elif isinstance(segment, Parabolas):
+                inside ^= rays.parabolas(segment.poles()[0], after.start, x, y)
             else:
-                inside ^= _rays_conic(segment, y0, y1, x, y)
+                inside ^= rays.conic(segment, segment.conic(), (y0, y1), x, y)
+        if straight:
+            lines = np.vstack(straight).T
+            for part in range(0, len(x), 500):  # bounds the memory of points x pieces
+                some = slice(part, part + 500)
+                hits = rays.line(lines[0], lines[1], lines[2], lines[3], x[some, None], y[some, None])
+                inside[some] ^= hits.sum(axis=1) % 2 == 1
         return inside
 
     def moved(self, dx: float, dy: float) -> Loop:

@@ -8,7 +8,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe.curves import Arc, Array, Line, Loop, Segment
-from wiresolve.describe.section import Piece
+from wiresolve.describe.planar_map import outlines
+from wiresolve.describe.section import GAP, Piece
 
 BESIDE = 1e-10
 """How far beside an outline, as a part of the drawing's size, it is asked what lies there."""
@@ -28,9 +29,13 @@ def reach(pieces: Sequence[Piece]) -> tuple[float, float]:
 def area(pieces: Sequence[Piece]) -> float:
     """Area in nm^2 of the union of the pieces, holes painted as void included."""
     # The outermost layer is painted first: its outline is around the core and all layers.
-    loops = [pieces[0].loop, *(piece.loop for piece in pieces if piece.name.startswith("patch"))]
-    if len(loops) == 1:
-        return loops[0].area
+    loops = [pieces[0].loop]
+    if pieces[0].holes is not None:
+        loops = outlines([(piece.loop, piece.holes or ()) for piece in pieces if piece.name != GAP])
+    last = max((k for k, piece in enumerate(pieces) if piece.holes is not None), default=0)
+    loops += [piece.loop for piece in pieces[last + 1 :] if piece.name.startswith("patch")]
+    if len(loops) == 1 or last == len(pieces) - 1:
+        return sum(loop.area for loop in loops)
     beside = BESIDE * max(reach(pieces))
     segments = [segment for loop in loops for segment in loop.segments]
     marks = np.vstack([s.point(_even(s)[: 1 if isinstance(s, Line) else -1]) for s in segments])

@@ -1,4 +1,4 @@
-"""A potential given from outside: a uniform field, a harmonic well, or a Python function."""
+"""A potential given from outside: a uniform field, a harmonic well, a file, or a Python function."""
 
 from __future__ import annotations
 
@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe import checks
+from wiresolve.describe.potential_file import PotentialFile
 from wiresolve.errors import InputError
 
 Array = NDArray[np.float64]
@@ -24,14 +25,15 @@ class Potential:
 
     `field_V_per_nm` is the electric field F (an electron's energy rises by e F.r from the origin); `harmonic_eV` are
     the level spacings along x and y for the lowest valley's masses at the origin (0 in a direction without a well);
-    `function` maps arrays x, y in nm to energies in eV. A function is known by its `name`, or by its code where it has
-    no name and depends on nothing but numbers, texts and arrays.
+    `file` gives energies at points. `function` maps arrays x, y in nm to energies in eV. A function is known by its
+    `name`, or by its code where it has no name and depends on nothing but numbers, texts and arrays.
     """
 
     field_V_per_nm: tuple[float, float] | None = None
     harmonic_eV: tuple[float, float] | None = None
     function: Callable[[Array, Array], Array] | None = None
     name: str = field(default="")
+    file: PotentialFile | None = None
 
     def __post_init__(self) -> None:
         set_ = object.__setattr__
@@ -54,8 +56,15 @@ class Potential:
                 raise InputError("function", "must be a function of x and y", self.function)
             if not self.name:
                 code_digest(self.function)
-        if self.field_V_per_nm is None and self.harmonic_eV is None and self.function is None:
+        if self.file is not None and not isinstance(self.file, PotentialFile):
+            raise InputError("file", "must be a PotentialFile", self.file)
+        if self.field_V_per_nm is None and self.harmonic_eV is None and self.function is None and self.file is None:
             raise InputError("potential", "is empty", remedy="give a field or a harmonic well, or leave it out")
+
+    @property
+    def file_error_eV(self) -> float | None:
+        """How far the energies between a file's points may be off; None without a file."""
+        return None if self.file is None else self.file.error_eV
 
     @property
     def function_digest(self) -> str | None:

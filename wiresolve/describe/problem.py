@@ -119,6 +119,7 @@ class Problem:
             if names.count(name) > 1 or name == VOID:
                 raise InputError("materials", "must have names of their own", name)
         self._check_valleys()
+        self._check_cover()
 
     def _check_cover(self) -> None:
         """InputError where a potential's file does not cover the section."""

@@ -2,21 +2,23 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from functools import cached_property
-from itertools import pairwise
 
 import numpy as np
 
-from wiresolve.describe import checks
-from wiresolve.describe.curves import Arc, Line, Loop, Point, Segment, Spline, circle
+from wiresolve.describe import checks, contacts
+from wiresolve.describe.curves import Loop, Parabolas, Point, Spline
+from wiresolve.describe.mesh_shape import ImportedMesh
+from wiresolve.describe.outline import Outline
 from wiresolve.describe.shapes import Shape
 from wiresolve.errors import InputError
 
 VOID = "void"
 """The material of a hole."""
+GAP = "gap"
+"""What lies between the faces of an imported mesh: painted as void."""
 ADMITTED, EXCLUDED = "admitted", "excluded"
 HARD_WALL = "hard wall"
 MOST_LAYERS, MOST_PATCHES = 50, 200
@@ -37,9 +39,12 @@ def _offset(value: object) -> float:
 
 @dataclass(frozen=True)
 class Layer:
-    """A shell of constant thickness; `sides` gives edges of a polygon ("bottom", "side 2") a thickness of their own."""
+    """A shell of constant thickness; `sides` gives edges of a polygon ("bottom", "side 2") a thickness of their own.
 
-    thickness_nm: float
+    Without a thickness (None) it reaches to the next curve of an imported outline.
+    """
+
+    thickness_nm: float | None
     material: str
     carriers: str = ADMITTED
     offset_eV: float = 0.0
@@ -47,7 +52,10 @@ class Layer:
 
     def __post_init__(self) -> None:
         set_ = object.__setattr__
-        set_(self, "thickness_nm", checks.length("thickness", self.thickness_nm, checks.THINNEST_nm))
+        if self.thickness_nm is not None:
+            set_(self, "thickness_nm", checks.length("thickness", self.thickness_nm, checks.THINNEST_nm))
+        elif self.sides is not None:
+            raise InputError("sides", "needs a thickness for the other sides", remedy='write e.g. thickness = "5 nm"')
         set_(self, "material", checks.text("material", self.material, 60))
         _carriers(self.carriers)
         set_(self, "offset_eV", _offset(self.offset_eV))
@@ -98,14 +106,35 @@ class Patch:
 
 
 @dataclass(frozen=True)
+class Group:
+    """What a named group of an imported mesh's cells is made of ("void": a hole)."""
+
+    name: str
+    material: str
+    carriers: str = ADMITTED
+    offset_eV: float = 0.0
+
+    def __post_init__(self) -> None:
+        checks.text("group", self.name, 60)
+        checks.text("material", self.material, 60)
+        _carriers(self.carriers)
+        object.__setattr__(self, "offset_eV", _offset(self.offset_eV))
+
+
+@dataclass(frozen=True)
 class Piece:
-    """One painted region: its outline, what it is made of, whether carriers may be in it, and its edge's shift."""
+    """One painted region: its outline, what it is made of, whether carriers may be in it, and its edge's shift.
+
+    Pieces of an imported mesh are faces that share their curves: they know the `holes` that others fill or nothing
+    does. Several of them may have one name: they are parts of one group.
+    """
 
     name: str
     loop: Loop
     material: str
     carriers: bool
     offset_eV: float
+    holes: tuple[Loop, ...] | None = None
 
 
 @dataclass(frozen=True)
@@ -113,22 +142,28 @@ class Section:
     """A cross-section, from the core's shape outwards.
 
     `layers` go outwards; `patches` are painted in their order. `outside` is None for a hard wall around everything, or
-    a material that goes on. `carriers` and `offset_eV` are the core's. Raises `InputError` where the parts do not fit.
+    a material that goes on. `carriers` and `offset_eV` are the core's. An imported mesh has `groups` in place of these
+    and of `material` (which then is that of its largest group). Raises `InputError` where the parts do not fit.
     """
 
     shape: Shape
-    material: str
+    material: str = ""
     layers: tuple[Layer, ...] = ()
     patches: tuple[Patch, ...] = ()
     outside: str | None = None
     carriers: str = ADMITTED
     offset_eV: float = 0.0
     lattice_temperature_K: float | None = None
+    groups: tuple[Group, ...] = ()
 
     def __post_init__(self) -> None:
         set_ = object.__setattr__
         if not isinstance(self.shape, Shape):
             raise InputError("shape", "must be a shape such as Circle(diameter_nm=10)", self.shape)
+        if isinstance(self.shape, ImportedMesh):
+            self._check_groups(self.shape)
+        elif self.groups:
+            raise InputError("group_materials", f"belongs to a mesh, and a {self.shape.kind} has no groups")
         set_(self, "material", checks.text("material", self.material, 60))
         for name, kind in (("layers", Layer), ("patches", Patch)):
             given = getattr(self, name)
@@ -154,10 +189,11 @@ class Section:
         xs, ys = np.vstack([piece.loop.sample(8) for piece in pieces]).T
         size = float(max(np.ptp(xs), np.ptp(ys)))
         for k, layer in enumerate(self.layers, 1):
-            thin = min([layer.thickness_nm, *(t for _, t in layer.sides or () if t > 0)])
+            thin = min([t for _, t in (("", layer.thickness_nm), *(layer.sides or ())) if t], default=size)
             if thin < FINEST * size:
                 rule = f"is too thin for a section {size:.3g} nm wide"
                 raise InputError(f"layers[{k}].thickness", rule, f"{thin:g} nm", f"at least {FINEST * size:.2g} nm")
+        self._check_contacts(pieces)
         if not any(piece.carriers for piece in pieces):
             rule = "nothing is left for carriers: every part is void or keeps them out"
             raise InputError("material", rule, remedy="admit carriers in the core, a layer or a patch")
@@ -165,41 +201,109 @@ class Section:
             rule = "the patches leave nothing for carriers"
             raise InputError("patches", rule, remedy="make them smaller, or admit carriers in one of them")
 
+    def _check_contacts(self, pieces: tuple[Piece, ...]) -> None:
+        """InputError for a patch whose outline touches another one without crossing it."""
+        begin = len(pieces) - len(self.patches)
+        if (hit := contacts.first([piece.loop for piece in pieces], max(begin, 1))) is not None:
+            one, other, (x, y) = hit
+            k = other - begin + 1
+            rule = f"its outline touches that of {pieces[one].name} without crossing it, at ({x:.4g}, {y:.4g}) nm"
+            raise InputError(f"patches[{k}]", rule, remedy="move it or change its size by a thousandth of a nm or more")
+
+    def _check_groups(self, mesh: ImportedMesh) -> None:
+        """InputError unless each group of the mesh has a material; sets `material`."""
+        set_, given, field = object.__setattr__, tuple(self.groups), "group_materials"
+        if not all(isinstance(group, Group) for group in given):
+            raise InputError("groups", "must be a list of Group", self.groups)
+        set_(self, "groups", given)
+        by_name = {group.name: group for group in given}
+        if len(by_name) < len(given):
+            raise InputError(field, "names a group twice")
+        for name in by_name:
+            if name not in mesh.group_names:
+                remedy = checks.nearest(name, mesh.group_names) or f"it has {_named(mesh.group_names)}"
+                raise InputError(f"{field}.{name}", "the mesh has no cells in a group of this name", remedy=remedy)
+        if missing := [name for name in mesh.group_names if name not in by_name]:
+            remedy = f'write "{missing[0]}" = "MATERIAL" there ("void" for a hole)'
+            raise InputError(field, f"gives no material to {mesh.listed(missing)}", remedy=remedy)
+        taken = {f"layer {k}" for k in range(1, len(self.layers) + 1)} | ({"outside"} if self.outside else set())
+        taken |= {f"patch {k}" for k in range(1, len(self.patches) + 1)}
+        for name in mesh.group_names:
+            if name in taken:
+                raise InputError(field, "a group is named like a part of the section", name, "rename the group")
+        if self.carriers != ADMITTED or self.offset_eV != 0:
+            key = "carriers" if self.carriers != ADMITTED else "offset"
+            raise InputError(key, "of a mesh is given group by group", remedy="write it in group_materials")
+        largest = max(
+            (g for g in given if g.material != VOID),
+            key=lambda g: (g.carriers == ADMITTED, sum(f.area_nm2 for f in mesh.faces() if f.group == g.name)),
+            default=None,
+        )
+        set_(self, "material", VOID if largest is None else largest.material)
+
     def pieces(self) -> tuple[Piece, ...]:
         """What is painted, later over earlier: the outermost layer first, inwards to the core, then the patches."""
         return self._pieces
 
     @cached_property
     def _pieces(self) -> tuple[Piece, ...]:
-        core = Piece(
-            "core", self.shape.loop(), self.material, self._admits(self.material, self.carriers), self.offset_eV
-        )
-        painted = [core]
-        widest = float(np.max(np.ptp(core.loop.sample(8), axis=0))) if self.layers else 0.0
+        painted = self._core()
+        widest = float(np.max(np.ptp(painted[0].loop.sample(8), axis=0))) if self.layers else 0.0
+        curves = self.shape.curve_count if isinstance(self.shape, Outline) else 1
         through, coats = 0.0, {side: 0.0 for side in self.shape.edge_names() if side.startswith("side ")}
-        single = False
+        single, curve = False, 0
         for k, layer in enumerate(self.layers, 1):
-            if layer.thickness_nm > THICKEST * widest:
-                rule = f"is more than {THICKEST:g} times the core's size"
-                given = f"{layer.thickness_nm:g} nm"
-                raise InputError(f"layers[{k}].thickness", rule, given, "a thinner layer confines just as well")
-            through += layer.thickness_nm
             try:
-                own = layer.coats(self.shape)
-                if own and coats and not any(own.get(side, layer.thickness_nm) for side in coats):
-                    raise InputError("sides", "leaves no thickness on any side")
-                single = single or bool(layer.sides)
-                coats = {side: done + own.get(side, layer.thickness_nm) for side, done in coats.items()}
-                loop = self.shape.coated(through, coats if single else {})
+                if layer.thickness_nm is None:
+                    curve, through = curve + 1, 0.0
+                    if curve >= curves:
+                        rule = "is missing" if curves == 1 else f"is missing: the outline has only {curves} curves"
+                        raise InputError("thickness", rule, remedy='write e.g. thickness = "5 nm"')
+                    assert isinstance(self.shape, Outline)
+                    loop = self.shape.curve(curve)
+                else:
+                    if layer.thickness_nm > THICKEST * widest:
+                        rule = f"is more than {THICKEST:g} times the core's size"
+                        given = f"{layer.thickness_nm:g} nm"
+                        raise InputError("thickness", rule, given, "a thinner layer confines just as well")
+                    through += layer.thickness_nm
+                    own = layer.coats(self.shape)
+                    if own and coats and not any(own.get(side, layer.thickness_nm) for side in coats):
+                        raise InputError("sides", "leaves no thickness on any side")
+                    single = single or bool(layer.sides)
+                    coats = {side: done + own.get(side, layer.thickness_nm) for side, done in coats.items()}
+                    if isinstance(self.shape, Outline):
+                        loop = self.shape.grown_from(curve, through)
+                        if curve + 1 < curves and any(later.thickness_nm is None for later in self.layers[k:]):
+                            rule = "stands between curves of the outline, whose layers have none"
+                            raise InputError("thickness", rule, remedy="leave it out, or draw all curves")
+                    else:
+                        loop = self.shape.coated(through, coats if single else {})
             except InputError as error:
                 raise error.under(f"layers[{k}]") from None
             admits = self._admits(layer.material, layer.carriers)
             painted.insert(0, Piece(f"layer {k}", loop, layer.material, admits, layer.offset_eV))
+        if curve + 1 < curves:
+            rule = f"has {curves} curves, and {curves - 1} layers without a thickness are wanted, one for each shell"
+            raise InputError("layers", f"the outline {rule}", f"{curve} of them")
         for k, patch in enumerate(self.patches, 1):
             admits = self._admits(patch.material, patch.carriers)
             loop = patch.shape.loop().moved(*patch.center_nm)
             painted.append(Piece(f"patch {k}", loop, patch.material, admits, patch.offset_eV))
         return tuple(painted)
+
+    def _core(self) -> list[Piece]:
+        """The core as one piece, or the faces of a mesh and the gaps between them, larger outlines first."""
+        if not isinstance(self.shape, ImportedMesh):
+            admits = self._admits(self.material, self.carriers)
+            return [Piece("core", self.shape.loop(), self.material, admits, self.offset_eV)]
+        by_name = {group.name: group for group in self.groups}
+        painted = [Piece(GAP, loop, VOID, False, 0.0, ()) for loop in self.shape.map.gaps]
+        for face in self.shape.faces():
+            group = by_name[face.group]
+            admits = self._admits(group.material, group.carriers)
+            painted.append(Piece(face.group, face.outer, group.material, admits, group.offset_eV, face.holes))
+        return sorted(painted, key=lambda piece: -piece.loop.area)
 
     @staticmethod
     def _admits(material: str, carriers: str) -> bool:
@@ -226,90 +330,30 @@ class Section:
 
     @property
     def outermost(self) -> str:
-        """Name of the outermost layer: "outside" where a material goes on, else the last layer, else "core"."""
+        """Name of the outermost layer: "outside" where a material goes on, else the last layer, else "core".
+
+        Of an imported mesh the group with the longest part of the outer boundary stands for the core.
+        """
         if self.outside is not None:
             return "outside"
+        if isinstance(self.shape, ImportedMesh) and not self.layers:
+            return self.shape.outermost_group
         return f"layer {len(self.layers)}" if self.layers else "core"
+
+
+def _named(names: Sequence[str]) -> str:
+    """The first few names, in quotes."""
+    return ", ".join(f"'{name}'" for name in names[:8]) + (", ..." if len(names) > 8 else "")
 
 
 def _beside(loop: Loop, distance: float) -> np.ndarray:
     """Points close to both sides of an outline, denser towards the ends of its segments, where pockets are left."""
     rows, ends = [], np.array([1e-5, 1e-4, 1e-3, 1e-2])
     for segment in loop.segments:
-        whole = isinstance(segment, Spline) or len(loop.segments) < 3
+        whole = isinstance(segment, Spline | Parabolas) or len(loop.segments) < 3
         count = 64 if whole else 16
         t = np.concatenate([(np.arange(count) + 0.5) / count, ends, 1 - ends])
         points, along = segment.point(t), segment.tangent(t)
         outward = np.column_stack([along[:, 1], -along[:, 0]]) / np.hypot(*along.T)[:, None]
         rows += [points - distance * outward, points + distance * outward]
     return np.vstack(rows)
-
-
-def outside_loop(pieces: Sequence[Piece], distance_nm: float) -> Loop:
-    """An outline at least `distance_nm` outside all pieces, for a material that goes on outside.
-
-    A circle where the outermost outline is one; otherwise the convex hull of lines and of the tangents of curves,
-    grown with round corners.
-    """
-    distance = checks.length("distance", distance_nm, 1e-3)
-    ring = pieces[0].loop.is_circle
-    if ring is not None:
-        (x, y), radius = ring
-        others = [piece.loop.sample(16) - (x, y) for piece in pieces[1:]]
-        if all(float(np.hypot(*points.T).max()) <= radius * (1 + 1e-9) for points in others):
-            return circle(radius + distance, "outside", (x, y))
-    return _round_grown(_hull([p for piece in pieces for s in piece.loop.segments for p in _around(s)]), distance)
-
-
-def _around(segment: Segment) -> list[Point]:
-    """Corners of an open polygon that encloses the segment from its outer side, with turns of 45 degrees at most."""
-    if isinstance(segment, Line):
-        return [segment.start, segment.end]
-    parts = 8 if not isinstance(segment, Arc) else max(1, math.ceil(abs(segment.sweep) / (math.pi / 4) - 1e-9))
-    if isinstance(segment, Spline):
-        parts = 16
-    t = np.linspace(0, 1, parts + 1)
-    points, along = segment.point(t), segment.tangent(t)
-    found: list[Point] = [(float(points[0, 0]), float(points[0, 1])), (float(points[-1, 0]), float(points[-1, 1]))]
-    for (p, q), (u, v) in zip(pairwise(points), pairwise(along), strict=True):
-        cross = u[0] * v[1] - u[1] * v[0]
-        if abs(cross) < 1e-9 * math.hypot(*u) * math.hypot(*v):
-            continue
-        s = ((q[0] - p[0]) * v[1] - (q[1] - p[1]) * v[0]) / cross
-        found.append((float(p[0] + s * u[0]), float(p[1] + s * u[1])))
-    return found
-
-
-def _hull(points: list[Point]) -> list[Point]:
-    """Corners of the convex hull, counter-clockwise (Andrew's monotone chain), without those of straight sides."""
-    ordered = sorted(set(points))
-    size = max(max(abs(x), abs(y)) for x, y in ordered)
-
-    def chain(row: Sequence[Point]) -> list[Point]:
-        kept: list[Point] = []
-        for point in row:
-            while len(kept) > 1:
-                (ax, ay), (bx, by) = kept[-2], kept[-1]
-                if (bx - ax) * (point[1] - ay) - (by - ay) * (point[0] - ax) > 1e-9 * size * math.dist(kept[-2], point):
-                    break
-                kept.pop()
-            kept.append(point)
-        return kept[:-1]
-
-    return chain(ordered) + chain(ordered[::-1])
-
-
-def _round_grown(corners: list[Point], distance: float) -> Loop:
-    normals = []
-    for a, b in zip(corners, corners[1:] + corners[:1], strict=True):
-        long = math.dist(a, b)
-        normals.append(((b[1] - a[1]) / long, (a[0] - b[0]) / long))
-    segments: list[Segment] = []
-    for k, (x, y) in enumerate(corners):
-        (ux, uy), (vx, vy) = normals[k - 1], normals[k]
-        sweep = math.atan2(ux * vy - uy * vx, ux * vx + uy * vy)
-        segments.append(Arc((x, y), distance, math.atan2(uy, ux), sweep, "outside"))
-        bx, by = corners[(k + 1) % len(corners)]
-        start, end = (x + distance * vx, y + distance * vy), (bx + distance * vx, by + distance * vy)
-        segments.append(Line(start, end, "outside"))
-    return Loop(tuple(segments))

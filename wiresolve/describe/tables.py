@@ -11,10 +11,6 @@ from wiresolve.errors import InputError
 from wiresolve.units import parse_quantity
 
 LATER = {
-    "valleys": "valleys off the zone centre",
-    "nonparabolicity": "nonparabolic bands",
-    "zone_boundary": "valleys off the zone centre",
-    "crystal": "crystals other than zincblende",
     "gates": "gates",
     "surfaces": "surface charge",
     "surroundings": "surroundings of the wire",
@@ -23,7 +19,6 @@ LATER = {
     "donors": "doping",
     "acceptors": "doping",
     "ionisation": "doping",
-    "file": "potentials from a file",
 }
 """Keys of the wire file that this version knows but does not model, and what they stand for."""
 
@@ -112,9 +107,9 @@ class Table:
         """A quantity in internal units, or None where the key is missing."""
         return parse_quantity(self.data[key], dimension, self.at(key)) if key in self.data else None
 
-    def text(self, key: str, sample: str = "") -> str:
+    def text(self, key: str, sample: str = "", longest: int = 200) -> str:
         """A required text."""
-        return checks.text(self.at(key), self.required(key, sample))
+        return checks.text(self.at(key), self.required(key, sample), longest)
 
     def row(self, key: str, count: int, what: str) -> list[Any]:
         """A required list with `count` entries."""

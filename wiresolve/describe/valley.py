@@ -42,6 +42,9 @@ class Valley:
 
     def __post_init__(self) -> None:
         checks.text("name", self.name, 60)
+        if self.name == ANY_VALLEY and self.axis is not None:
+            rule = f'a valley named "{ANY_VALLEY}" continues those of its neighbours and has no direction of its own'
+            raise InputError("axis", rule, list(self.axis), "take the axis out, or give the valley another name")
         self._set("height_eV", checks.in_range("edge", self.height_eV, -100, 100, "eV"))
         if not isinstance(self.inverse_mass, tuple) or self.inverse_mass:
             if any(value is not None for value in (self.longitudinal_mass, self.transverse_mass, self.axis)):

@@ -4,49 +4,31 @@ from __future__ import annotations
 
 import json
 import re
-import tomllib
-from collections.abc import Callable
-from functools import partial
 from pathlib import Path
-from typing import Any, TypeVar
+from typing import Any
 
-from wiresolve.describe import checks
-from wiresolve.describe.materials import Material
-from wiresolve.describe.plain import LENGTH_KEYS
+from wiresolve.describe import checks, material_file, toml_text
+from wiresolve.describe.material import Material
 from wiresolve.describe.potential import Potential
-from wiresolve.describe.problem import Accuracy, Carriers, Orientation, Problem
-from wiresolve.describe.section import HARD_WALL, VOID, Layer, Patch, Section
-from wiresolve.describe.shapes import Circle, Ellipse, Hexagon, Polygon, Rectangle, Shape, Trapezoid, Triangle
+from wiresolve.describe.problem import NONPARABOLIC, Accuracy, Carriers, Orientation, Problem
+from wiresolve.describe.section import Layer, Patch, Section
+from wiresolve.describe.shape_tables import POTENTIAL_FILE_KEYS, DrawFile, Files, groups, potential_file, shape, under
 from wiresolve.describe.summary import describe
 from wiresolve.describe.tables import Table
 from wiresolve.errors import InputError
-from wiresolve.units import UNITS, parse_quantity, same_quantity
+from wiresolve.units import parse_quantity, same_quantity
 
 __all__ = ["describe", "dump", "parse", "read"]
 
 LARGEST_FILE = 1_000_000
-TOP_KEYS = ("title", "section", "orientation", "materials", "potential", "carriers", "accuracy")
-SHAPES: dict[str, Callable[..., Shape]] = {
-    "circle": Circle,
-    "ellipse": Ellipse,
-    "rectangle": Rectangle,
-    "hexagon": Hexagon,
-    "triangle": Triangle,
-    "trapezoid": Trapezoid,
-    "polygon": Polygon,
-}
-LATER_SHAPES = ("outline", "mesh")
-SAMPLE_LENGTHS = {"diameter": '"10 nm"', "width": '"20 nm"', "height": '"10 nm"', "bottom": '"20 nm"', "top": '"10 nm"'}
+TOP_KEYS = ("title", "materials_file", "section", "orientation", "materials", "potential", "carriers", "accuracy")
 SECTION_KEYS = ("material", "outside", "layers", "patches", "carriers", "offset", "lattice_temperature")
 LAYER_KEYS = ("thickness", "material", "sides", "carriers", "offset")
 PATCH_KEYS = ("material", "center", "carriers", "offset")
-MATERIAL_KEYS: tuple[str, ...] = ("electron_mass", "inverse_mass", "valley_degeneracy", "conduction_edge")
-MATERIAL_KEYS += ("permittivity", "electron_affinity", "source")
-_LONG_KEY = re.compile(r"(?:\.[ \t]*[\w\"'-]+[ \t]*){40}")
 
 
-def read(path: str | Path) -> Problem:
-    """The problem that a wire file describes.
+def read(path: str | Path, draw: DrawFile | None = None) -> Problem:
+    """The problem that a wire file describes; `draw` is what meshes a geometry (STEP and the like) that it names.
 
     Raises `InputError`, in one line that names the file and the key, for anything that cannot be used.
     """
@@ -69,14 +51,16 @@ def read(path: str | Path) -> Problem:
         text = content.decode("utf-8-sig")
     except UnicodeDecodeError as fault:
         raise InputError(shown, f"is not UTF-8 text (byte {fault.start + 1})", remedy="save it as UTF-8") from None
-    return parse(text, file.parent, shown)
+    return parse(text, file.parent, shown, draw)
 
 
-def parse(text: str, folder: str | Path | None = None, name: str = "wire file") -> Problem:
+def parse(
+    text: str, folder: str | Path | None = None, name: str = "wire file", draw: DrawFile | None = None
+) -> Problem:
     """The problem that the text of a wire file describes.
 
-    `folder` is what paths in the file are relative to (no key of this version holds a path); `name` is the file's, for
-    messages and for the title of a file without one. Raises `InputError` for anything that cannot be used.
+    `folder` is what paths in the file are relative to; `name` is the file's, for messages and for the title of a file
+    without one. Raises `InputError` for anything that cannot be used.
     """
     data: dict[str, Any] = {}
     try:
@@ -86,8 +70,8 @@ def parse(text: str, folder: str | Path | None = None, name: str = "wire file") 
             raise InputError(
                 "", "is empty", remedy='a wire file needs at least [section] and [carriers]; see "geometries"'
             )
-        data = _toml(text)
-        return _problem(Table("", data), name)
+        data = toml_text.parse(text)
+        return _problem(Table("", data), name, Files(folder, draw))
     except InputError as error:
         field = f"{name}: {error.field}" if error.field else name
         given = _as_written(data, error.field, error.given)
@@ -113,65 +97,33 @@ def _printable(text: str) -> str:
     return "".join(c if c.isprintable() else "?" for c in text)
 
 
-def _toml(text: str) -> dict[str, Any]:
-    if _LONG_KEY.search(text):  # the time that tomllib needs for a dotted key grows with its square
-        raise InputError("", "has a key of more than 40 parts")
-    try:
-        data = tomllib.loads(text)
-    except RecursionError:
-        raise InputError("", "is nested too deeply") from None
-    except ValueError as fault:
-        reason = re.sub(r"\s+", " ", str(fault))[:200]
-        raise InputError("", f"is not TOML: {reason}", remedy="texts stand in quotes, tables in [brackets]") from None
-    _small_numbers(data)
-    return data
-
-
-def _small_numbers(value: object) -> None:
-    if isinstance(value, dict):
-        for part in value.values():
-            _small_numbers(part)
-    elif isinstance(value, list):
-        for part in value:
-            _small_numbers(part)
-    elif isinstance(value, int) and abs(value) >= 2**63:
-        raise InputError("", "holds a whole number beyond the 64 bits that TOML allows")
-
-
-_Made = TypeVar("_Made")
-
-
-def _under(path: str, build: Callable[[], _Made]) -> _Made:
-    """What `build` makes; an InputError that it raises gets the table's path before its field."""
-    try:
-        return build()
-    except InputError as error:
-        raise error.under(path) from None
-
-
-def _problem(top: Table, name: str) -> Problem:
+def _problem(top: Table, name: str, files: Files) -> Problem:
     top.only(TOP_KEYS)
     for key in ("section", "carriers"):
         if key not in top:
             raise InputError(key, "is missing", remedy=f"a wire file needs a table [{key}]")
     title = top.text("title") if "title" in top else Path(name).stem or "wire"
-    materials = _materials(top.table("materials")) if "materials" in top else ()
-    section = _section(top.table("section"))
+    materials = _materials(top, files.folder)
+    section = _section(top.table("section"), files)
     orientation = _orientation(top.table("orientation")) if "orientation" in top else None
-    potential = _potential(top.table("potential")) if "potential" in top else None
+    potential = _potential(top.table("potential"), files) if "potential" in top else None
     carriers = _carriers(top.table("carriers"))
     accuracy = _accuracy(top.table("accuracy")) if "accuracy" in top else Accuracy()
     return Problem(title, section, carriers, accuracy, materials, orientation, potential)
 
 
-def _section(table: Table) -> Section:
-    shape = _shape(table, SECTION_KEYS)
+def _section(table: Table, files: Files) -> Section:
+    drawn = shape(table, SECTION_KEYS, files)
     layers = tuple(_layer(entry) for entry in table.tables("layers"))
-    patches = tuple(_patch(entry) for entry in table.tables("patches"))
-    material, options = _material_name(table), _options(table)
+    patches = tuple(_patch(entry, files) for entry in table.tables("patches"))
+    options = _options(table)
+    if drawn.kind == "mesh":
+        material, options["groups"] = "", groups(table)
+    else:
+        material = _material_name(table)
     options["lattice_temperature_K"] = table.optional_quantity("lattice_temperature", "temperature")
     options["outside"] = table.text("outside") if "outside" in table else None
-    return _under(table.path, lambda: Section(shape, material, layers, patches, **options))
+    return under(table.path, lambda: Section(drawn, material, layers, patches, **options))
 
 
 def _material_name(table: Table) -> str:
@@ -186,64 +138,6 @@ def _options(table: Table) -> dict[str, Any]:
     return found if offset is None else found | {"offset_eV": offset}
 
 
-def _shape(table: Table, others: tuple[str, ...]) -> Shape:
-    """The shape that a table's keys give; no keys but its own and `others` may stand there."""
-    every = {key for keys in LENGTH_KEYS.values() for key in keys} | {"points", "unit", "corner_radius", "rotation"}
-    unknown = [key for key in table.data if key not in every and key not in others and key != "shape"]
-    kind = table.data.get("shape")
-    if isinstance(kind, str) and kind in LATER_SHAPES:
-        remedy = "draw it as a polygon of points"
-        raise InputError(table.at("shape"), f'shape = "{kind}" comes in a later version', remedy=remedy)
-    if kind is None and unknown:
-        table.only(("shape", *others, *sorted(every)))
-    table.required("shape", '"circle"')
-    if not isinstance(kind, str) or kind not in SHAPES:
-        checks.choice(table.at("shape"), kind, SHAPES)
-    assert isinstance(kind, str)
-    own = LENGTH_KEYS[kind]
-    options = ("rotation",) if kind in ("circle", "ellipse") else ("corner_radius", "rotation")
-    points = ("points", "unit") if kind == "polygon" else ()
-    if "corner_radius" in table and "corner_radius" not in options:
-        raise InputError(table.at("corner_radius"), f"a {kind} has no corners to round", remedy="take the key out")
-    article = "an" if kind[0] in "aeiou" else "a"
-    table.only(("shape", *own, *points, *options, *others), f"{article} {kind}")
-    values: dict[str, Any] = {}
-    for key in own:
-        if key in table:
-            values[f"{key}_nm"] = table.quantity(key, "length")
-        elif kind not in ("hexagon", "triangle"):
-            table.required(key, SAMPLE_LENGTHS[key])
-    if kind == "polygon":
-        values["points_nm"] = _points(table)
-    radius, rotation = table.optional_quantity("corner_radius", "length"), table.optional_quantity("rotation", "angle")
-    if radius is not None:
-        values["corner_radius_nm"] = radius
-    if rotation is not None and kind == "circle":
-        checks.in_range(table.at("rotation"), rotation, -360, 360, "deg")  # allowed, and without effect
-    elif rotation is not None:
-        values["rotation_deg"] = rotation
-    return _under(table.path, lambda: SHAPES[kind](**values))
-
-
-def _points(table: Table) -> tuple[tuple[float, float], ...]:
-    rows, sample = table.required("points", "[[0, 0], [10, 0], [0, 10]]"), "write points = [[0, 0], [10, 0], [0, 10]]"
-    unit = table.text("unit", '"nm"')
-    if unit not in UNITS["length"]:
-        raise InputError(table.at("unit"), "must be a unit of length", unit, 'write unit = "nm"')
-    if not isinstance(rows, list):
-        raise InputError(table.at("points"), "must be a list of number pairs", rows, sample)
-    points = []
-    for k, row in enumerate(rows, 1):
-        where = f"{table.at('points')}[{k}]"
-        if not isinstance(row, list) or len(row) != 2:
-            raise InputError(where, "must be a pair of numbers", row, sample)
-        x, y = (checks.finite(where, v, "points are bare numbers, their unit stands once in 'unit'") for v in row)
-        if unit != "nm":
-            x, y = (parse_quantity(f"{v!r} {unit}", "length", where) for v in (x, y))
-        points.append((x, y))
-    return tuple(points)
-
-
 def _layer(table: Table) -> Layer:
     table.only(LAYER_KEYS)
     sides = None
@@ -252,13 +146,14 @@ def _layer(table: Table) -> Layer:
         sides = tuple((edge, named.quantity(edge, "length")) for edge in named.data)
         if not sides:
             raise InputError(named.path, "is empty", remedy='write e.g. sides = {bottom = "0 nm"}')
-    thickness, material = table.quantity("thickness", "length", '"5 nm"'), _material_name(table)
+    # Without a thickness a layer reaches to the next curve of an outline: the section knows whether there is one.
+    thickness, material = table.optional_quantity("thickness", "length"), _material_name(table)
     options = _options(table)
-    return _under(table.path, lambda: Layer(thickness, material, sides=sides, **options))
+    return under(table.path, lambda: Layer(thickness, material, sides=sides, **options))
 
 
-def _patch(table: Table) -> Patch:
-    shape = _shape(table, PATCH_KEYS)
+def _patch(table: Table, files: Files) -> Patch:
+    drawn = shape(table, PATCH_KEYS, files)
     center = (0.0, 0.0)
     if "center" in table:
         x, y = (
@@ -267,37 +162,34 @@ def _patch(table: Table) -> Patch:
         )
         center = (x, y)
     material, options = _material_name(table), _options(table)
-    return _under(table.path, lambda: Patch(shape, material, center, **options))
+    return under(table.path, lambda: Patch(drawn, material, center, **options))
 
 
-def _materials(tables: Table) -> tuple[Material, ...]:
-    found = []
-    for name in tables.data:
-        table = tables.table(name)
-        table.only(MATERIAL_KEYS)
-        if name in (VOID, HARD_WALL):
-            raise InputError(table.path, f"'{name}' has a meaning of its own", remedy="choose another name")
-        values: dict[str, Any] = {
-            "source": table.text("source") if "source" in table else "",
-            "electron_mass": table.data.get("electron_mass"),
-            "inverse_mass": table.data.get("inverse_mass"),
-            "conduction_edge_eV": table.optional_quantity("conduction_edge", "energy"),
-            "permittivity": table.data.get("permittivity"),
-            "electron_affinity_eV": table.optional_quantity("electron_affinity", "energy"),
-            "valley_degeneracy": table.data.get("valley_degeneracy", 1),
-        }
-        found.append(_under(table.path, partial(Material.given, name, **values)))
+def _materials(top: Table, folder: str | Path | None) -> tuple[Material, ...]:
+    """The user's own materials: those of the wire file and those of the files that it names."""
+    found = list(material_file.materials(top.table("materials"))) if "materials" in top else []
+    given = top.data.get("materials_file", [])
+    paths = given if isinstance(given, list) else [given]
+    for k, path in enumerate(paths, 1):
+        where = f"materials_file[{k}]" if isinstance(given, list) else "materials_file"
+        more = material_file.read(where, checks.text(where, path, 1000), folder)
+        for material in more:
+            twice = next((m for m in found if m.name == material.name), None)
+            if twice is not None:
+                rule = f"describes '{material.name}', which {twice.given_in} describes too"
+                raise InputError(where, rule, path, "take one of the two out, or give one another name")
+        found += more
     return tuple(found)
 
 
 def _orientation(table: Table) -> Orientation:
     table.only(("axis", "up"))
     axis, up = table.required("axis", "[1, 1, 0]"), table.required("up", "[0, 0, 1]")
-    return _under(table.path, lambda: Orientation(axis, up))
+    return under(table.path, lambda: Orientation(axis, up))
 
 
-def _potential(table: Table) -> Potential:
-    table.only(("field", "harmonic"))
+def _potential(table: Table, files: Files) -> Potential:
+    table.only(("field", "harmonic", *POTENTIAL_FILE_KEYS))
     along = spacing = None
     if "field" in table:
         row = table.row("field", 2, 'two electric fields, e.g. ["0.01 V/nm", "0 V/nm"]')
@@ -307,26 +199,30 @@ def _potential(table: Table) -> Potential:
         well = table.table("harmonic")
         well.only(("x", "y"))
         spacing = (well.quantity("x", "energy", '"5 meV"'), well.quantity("y", "energy", '"5 meV"'))
-    if along is None and spacing is None:
-        raise InputError(table.path, "is empty", remedy="give a field or a harmonic well, or leave the table out")
-    return _under(table.path, lambda: Potential(along, spacing))
+    given = potential_file(table, files)
+    if along is None and spacing is None and given is None:
+        raise InputError(
+            table.path, "is empty", remedy="give a field, a harmonic well or a file, or leave the table out"
+        )
+    return under(table.path, lambda: Potential(along, spacing, file=given))
 
 
 def _carriers(table: Table) -> Carriers:
-    table.only(("kind", "temperature", "fermi_level"))
+    table.only(("kind", "temperature", "fermi_level", "model"))
     given = table.required("temperature", '"300 K"')
     rows = given if isinstance(given, list) else [given]
     where = table.at("temperature")
     places = [f"{where}[{k}]" for k in range(1, len(rows) + 1)] if isinstance(given, list) else [where]
     kelvin = tuple(parse_quantity(t, "temperature", place) for t, place in zip(rows, places, strict=True))
     kind, level = table.data.get("kind", "electrons"), table.optional_quantity("fermi_level", "energy")
-    return _under(table.path, lambda: Carriers(kind, temperature_K=kelvin, fermi_level_eV=level))
+    model = table.data.get("model", NONPARABOLIC)
+    return under(table.path, lambda: Carriers(kind, temperature_K=kelvin, fermi_level_eV=level, model=model))
 
 
 def _accuracy(table: Table) -> Accuracy:
     table.only(("subbands", "energy"))
     energy, count = table.optional_quantity("energy", "energy"), table.data.get("subbands", 10)
-    return _under(table.path, lambda: Accuracy(count, 1e-4 if energy is None else energy))
+    return under(table.path, lambda: Accuracy(count, 1e-4 if energy is None else energy))
 
 
 def dump(problem: Problem) -> str:
@@ -346,7 +242,7 @@ def dump(problem: Problem) -> str:
         lines += ["", "# Values used from the table, at the lattice temperature:"]
         for material in cited:
             for v in material.values:
-                sure = "" if v.checked else " (not checked)"
+                sure = "" if v.checked else f" ({v.standing})"
                 lines.append(f"#   {material.name} {v.quantity} = {v.value!r} {v.unit}".rstrip() + sure)
     return "\n".join(lines).strip() + "\n"
 
@@ -378,6 +274,8 @@ def _key(key: str) -> str:
 
 
 def _value(value: object) -> str:
+    if isinstance(value, bool):
+        return str(value).lower()
     if isinstance(value, str):
         return json.dumps(value, ensure_ascii=False).replace("\x7f", "\\u007f")
     if isinstance(value, dict):

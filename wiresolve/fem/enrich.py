@@ -149,9 +149,7 @@ def _inverse_iteration(parts: _Parts, block: NDArray[Any], shift: float) -> NDAr
     return condensed_solve(parts.space, parts.bands, pieces, block.shape[1])
 
 
-def condensed_solve(
-    space: Space, bands: int, pieces: Callable[[], Iterator[Piece]], columns: int
-) -> NDArray[Any]:
+def condensed_solve(space: Space, bands: int, pieces: Callable[[], Iterator[Piece]], columns: int) -> NDArray[Any]:
     """Solve S y = load for `columns` loads on all nodes, zero on the walls, inner nodes condensed cell by cell.
 
     Parameters

@@ -49,9 +49,7 @@ def shared(bar: Array, levels: NDArray[np.int64]) -> Array:
     return widest
 
 
-def finer(
-    space: Space, share_eV: Array, before: SizeField, corners: Sequence[Corner], target_eV: float
-) -> SizeField:
+def finer(space: Space, share_eV: Array, before: SizeField, corners: Sequence[Corner], target_eV: float) -> SizeField:
     """The size field at which the fall of each wanted state would be `target_eV`.
 
     A cell's share of the fall goes like size^(2 p + 2) at degree p = 4, or like size^(2 a) beside a corner of exponent

@@ -80,14 +80,14 @@ def blended(mesh: Mesh) -> Mesh:
     nodes = mesh.points[cells]
     weights = np.column_stack([1 - triangle(mesh.degree).nodes.sum(1), triangle(mesh.degree).nodes])
     departure = nodes - np.einsum("av,cvx->cax", weights, nodes[:, :3])
-    carried = np.einsum("ie,cex->cix", _edge_extension(mesh.degree), departure[:, 3:-inner])
+    carried = np.einsum("ie,cex->cix", edge_extension(mesh.degree), departure[:, 3:-inner])
     points = mesh.points.copy()
     points[cells[:, -inner:]] = nodes[:, -inner:] - departure[:, -inner:] + carried
     return replace(mesh, points=points)
 
 
 @cache
-def _edge_extension(degree: int) -> Array:
+def edge_extension(degree: int) -> Array:
     """Departures at inner nodes from those at the inner nodes of the edges, (inner nodes, 3 (degree - 1))."""
     element = triangle(degree)
     weights = np.column_stack([1 - element.nodes.sum(1), element.nodes])[-element.inner :]

@@ -5,22 +5,26 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field, replace
 from functools import cache
-from itertools import pairwise
 from types import TracebackType
 from typing import Any, Self
 
 import numpy as np
 from numpy.typing import NDArray
 
-from wiresolve.describe.curves import Arc, EllipseArc, Line, Loop, Spline
-from wiresolve.describe.section import Piece
+from wiresolve.describe.section import VOID, Piece
 from wiresolve.errors import InputError, MeshError
 from wiresolve.fem.mesh import Mesh, Region, blended, folded, oriented
+from wiresolve.fem.sketch import draw
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-VOID = "void"
+
+def library() -> Any:
+    """The Gmsh module, loaded when it is first needed."""
+    import gmsh
+
+    return gmsh
 
 
 @dataclass(frozen=True)
@@ -68,14 +72,12 @@ class Mesher:
     _owner: dict[int, int] = field(init=False, repr=False, default_factory=dict)
 
     def __enter__(self) -> Self:
-        import gmsh
-
-        self._gmsh = gmsh
+        self._gmsh = gmsh = library()
         if gmsh.isInitialized():
             raise MeshError("Gmsh is in use in this process; call gmsh.finalize() first")
         gmsh.initialize([], readConfigFiles=False, interruptible=False)
         try:
-            for option, value in _OPTIONS.items():
+            for option, value in OPTIONS.items():
                 gmsh.option.setNumber(option, value)
             self._draw()
         except InputError:
@@ -83,7 +85,7 @@ class Mesher:
             raise
         except Exception as fault:
             gmsh.finalize()
-            raise MeshError(f"the section could not be drawn: {_short(fault)}") from fault
+            raise MeshError(f"the section could not be drawn: {short(fault)}") from fault
         except BaseException:
             gmsh.finalize()
             raise
@@ -95,60 +97,18 @@ class Mesher:
         self._gmsh.finalize()
 
     def _draw(self) -> None:
-        occ, pieces = self._gmsh.model.occ, self.pieces
-        loops = [p.loop for p in pieces]
-        if _strictly_nested(loops):
-            # Rings share their curves, which saves the Boolean operation that the general case needs.
-            curves = [self._curve_loop(loop) for loop in loops]
-            owner = {occ.addPlaneSurface(curves[i : i + 2]): i for i in range(len(curves))}
-        else:
-            surfaces = [occ.addPlaneSurface([self._curve_loop(loop)]) for loop in loops]
-            _, children = occ.fragment([(2, surfaces[0])], [(2, s) for s in surfaces[1:]])
-            owner = {tag: i for i, parts in enumerate(children) for dim, tag in parts if dim == 2}
-        holes = [tag for tag, i in owner.items() if pieces[i].material == VOID]
+        drawn, occ = draw(self._gmsh, self.pieces), self._gmsh.model.occ
+        holes = [tag for tag, i in drawn.items() if self.pieces[i].material == VOID]
         if holes:
             occ.remove([(2, tag) for tag in holes], recursive=False)
         occ.synchronize()
-        self._owner = {tag: i for tag, i in owner.items() if tag not in holes}
-        if not any(pieces[i].carriers for i in self._owner.values()):
+        self._owner = {tag: i for tag, i in drawn.items() if tag not in holes}
+        if not any(self.pieces[i].carriers for i in self._owner.values()):
             raise InputError(
                 "section",
                 "nothing is left for carriers once the layers and patches are painted",
                 remedy="make the patches smaller, or admit carriers in one of them",
             )
-
-    def _curve_loop(self, loop: Loop) -> int:
-        occ = self._gmsh.model.occ
-        circle = loop.is_circle
-        if circle is not None:
-            (x, y), radius = circle
-            return int(occ.addCurveLoop([occ.addCircle(x, y, 0, radius)]))
-        segments = loop.segments
-        ends = [occ.addPoint(*segment.start, 0) for segment in segments]
-        curves = [self._curve(s, ends[i], ends[(i + 1) % len(ends)]) for i, s in enumerate(segments)]
-        return int(occ.addCurveLoop(curves))
-
-    def _curve(self, segment: Line | Arc | EllipseArc | Spline, first: int, last: int) -> int:
-        occ = self._gmsh.model.occ
-        if isinstance(segment, Line):
-            return int(occ.addLine(first, last))
-        if isinstance(segment, Arc) and abs(segment.sweep) < 3.1:
-            center = occ.addPoint(*segment.center, 0)
-            curve = occ.addCircleArc(first, center, last)
-            occ.remove([(0, center)])
-            return int(curve)
-        if isinstance(segment, EllipseArc) and first == last:
-            major, minor, tilt = segment.semi_x, segment.semi_y, segment.tilt
-            if minor > major:
-                major, minor, tilt = minor, major, tilt + np.pi / 2
-            curve = occ.addEllipse(*segment.center, 0, major, minor)
-            occ.rotate([(1, curve)], *segment.center, 0, 0, 0, 1, tilt)
-            return int(curve)
-        knots = segment.points if isinstance(segment, Spline) else segment.point(np.linspace(0, 1, 257))
-        inner = [occ.addPoint(x, y, 0) for x, y in np.asarray(knots)[1:-1]]
-        curve = occ.addSpline([first, *inner, last])
-        occ.remove([(0, point) for point in inner])
-        return int(curve)
 
     @property
     def extent_nm(self) -> float:
@@ -192,7 +152,7 @@ class Mesher:
         except (MeshError, KeyboardInterrupt):
             raise
         except Exception as fault:
-            raise MeshError(f"the section could not be meshed: {_short(fault)}") from fault
+            raise MeshError(f"the section could not be meshed: {short(fault)}") from fault
         return meshes[0], meshes[1]
 
     def _set_size(self, size: SizeField) -> None:
@@ -247,13 +207,15 @@ class Mesher:
         gmsh, count = self._gmsh, (degree + 1) * (degree + 2) // 2
         tags, xyz, _ = gmsh.model.mesh.getNodes()
         cells, region = [], []
-        used = sorted(set(self._owner.values()), key=lambda i: _rank(self.pieces[i].name))
+        names = {i: self.pieces[i].name for i in set(self._owner.values())}
+        used = sorted({name: i for i, name in names.items()}.values(), key=lambda i: self._rank(i))
+        place = {i: [names[k] for k in used].index(name) for i, name in names.items()}
         for surface in sorted(self._owner):
             kinds, _, nodes = gmsh.model.mesh.getElements(2, surface)
             if len(kinds) != 1:
                 raise MeshError(f"a part of {self.pieces[self._owner[surface]].name!r} is too small to be meshed")
             cells.append(np.asarray(nodes[0], dtype=np.int64).reshape(-1, count))
-            region.append(np.full(len(cells[-1]), used.index(self._owner[surface])))
+            region.append(np.full(len(cells[-1]), place[self._owner[surface]]))
         by_tag = np.zeros(int(tags.max()) + 1, dtype=np.int64)
         by_tag[tags.astype(np.int64)] = np.arange(len(tags))
         old = by_tag[np.vstack(cells)]
@@ -268,6 +230,13 @@ class Mesher:
             self._balance(curve, renumber[by_tag[edges]], points, degree)
         corners = corners[corners >= 0]
         return blended(oriented(Mesh(degree, points, renumber[old], np.concatenate(region), regions, corners)))
+
+    def _rank(self, piece: int) -> tuple[int, int]:
+        """Regions are listed from the core, or a map's innermost face, outwards, then patches, then what is outside."""
+        if self.pieces[piece].holes is not None:
+            return 0, -piece
+        kind, _, number = self.pieces[piece].name.partition(" ")
+        return ("core", "layer", "patch", "outside").index(kind), int(number or 0)
 
     def _curved_edges(self, degree: int) -> Iterator[tuple[int, Ints]]:
         """Curves that are not straight, with the node tags of their edges: two ends, then the inner ones."""
@@ -314,7 +283,7 @@ def _lobatto(degree: int) -> tuple[Array, Array]:
     return at, np.asarray(carry, dtype=float)
 
 
-_OPTIONS = {
+OPTIONS = {
     "General.Terminal": 0,
     "General.Verbosity": 0,
     "General.NumThreads": 1,
@@ -330,27 +299,9 @@ _MANY = 12
 """Folded cells above which the whole mesh is sized anew; fewer are mended by spots, which leave the rest as it is."""
 
 
-def _rank(name: str) -> tuple[int, int]:
-    """Regions are listed from the core outwards, then the patches, then what goes on outside."""
-    kind, _, number = name.partition(" ")
-    return ("core", "layer", "patch", "outside").index(kind), int(number or 0)
-
-
-def _short(fault: BaseException) -> str:
+def short(fault: BaseException) -> str:
+    """What an exception says, on one line."""
     return " ".join(str(fault).split())[:160] or type(fault).__name__
-
-
-def _strictly_nested(loops: Sequence[Loop]) -> bool:
-    """Each loop strictly inside the one before it, by a clearance of a thousandth of its size."""
-    for outer, inner in pairwise(loops):
-        samples = inner.sample(24)
-        if not np.all(outer.contains(samples)):
-            return False
-        wall = outer.sample(24)
-        gap = np.sqrt(((samples[:, None] - wall[None]) ** 2).sum(-1)).min()
-        if gap < 1e-3 * np.sqrt(outer.area):
-            return False
-    return True
 
 
 def _smaller_where(mesh: Mesh, marked: NDArray[np.bool_], size: SizeField) -> SizeField:
