@@ -4,7 +4,7 @@
 
 Closed forms: with a hard wall E = hbar^2 j01^2/(2 m R^2). With a barrier of height V and mass M that goes on outside,
 J0(kr) within the core meets K0(qr) at R with equal value and slope over mass: k J1(kR) K0(qR)/m = q K1(qR) J0(kR)/M,
-where k^2 = 2 m E/hbar^2 and q^2 = 2 M (V - E)/hbar^2.
+where k^2 = 2 m E/hbar^2 and q^2 = 2 M (V - E)/hbar^2. Masses are those of the band edge.
 """
 
 import sys
@@ -22,7 +22,8 @@ CORE, BARRIER = "GaAs", "Al0.3Ga0.7As"
 
 def problem(diameter_nm: float, outside: str) -> ws.Problem:
     section = ws.Section(shape=ws.shapes.Circle(diameter_nm=diameter_nm), material=CORE, outside=outside)
-    return ws.Problem("Barrier or wall", section, ws.Carriers(temperature_K=77.0), ws.Accuracy(1, energy_eV=1e-5))
+    carriers, accuracy = ws.Carriers(temperature_K=77.0, model="parabolic"), ws.Accuracy(subbands=1, energy_eV=1e-5)
+    return ws.Problem("Barrier or wall", section, carriers, accuracy)
 
 
 def solved_meV(diameter_nm: float) -> list[float]:

@@ -124,9 +124,9 @@ CASES: dict[str, str] = {
 }
 
 
-SILICON = '[orientation]\naxis = [1, 1, 0]\nup = [0, 0, 1]\n'
-TILTED = '[orientation]\naxis = [1, 1, -2]\nup = [1, 1, 1]\n'
-CUBE = '[orientation]\naxis = [1, 0, 0]\nup = [0, 0, 1]\n'
+SILICON = "[orientation]\naxis = [1, 1, 0]\nup = [0, 0, 1]\n"
+TILTED = "[orientation]\naxis = [1, 1, -2]\nup = [1, 1, 1]\n"
+CUBE = "[orientation]\naxis = [1, 0, 0]\nup = [0, 0, 1]\n"
 
 
 def valley(name: str, edge: float, kind: str, axis: str, masses: tuple[float, float], alpha: float = 0.0) -> str:
@@ -152,6 +152,10 @@ L_IN = valley("a", 0.0, "L", "[1, 1, 1]", (1.59, 0.0815))
 L_OUT = valley("b", 0.3, "L", "[1, 1, 1]", (0.8, 0.25))
 LEFT = skewed("a", "[[12, -5, 2], [-5, 8, 1], [2, 1, 6]]", 0.0)
 RIGHT = skewed("b", "[[3, 1.5, 0.5], [1.5, 4, -1], [0.5, -1, 5]]", 0.3)
+STEEP = skewed("a", "[[11, -9, 1], [-9, 9, 0], [1, 0, 6]]", 0.0)
+STEEP += skewed("b", "[[3, 2.5, 0.5], [2.5, 4, -1], [0.5, -1, 5]]", 0.2)
+SLIT = shape("circle", "a", diameter=nm(20))
+SLIT += patch(shape("rectangle", "void", width=nm(10), height=nm(0.2)) + 'center = ["5.5 nm", "0 nm"]\n')
 INAS_INP = growing("a", 0.024, 2.1, 0.0) + growing("b", 0.0795, 0.6, 0.6)
 GAAS_ALGAAS = growing("a", 0.067, 0.6, 0.0) + growing("b", 0.092, 0.5, 0.25)
 WEAK_FIELD = '[potential]\nfield = ["0.006 V/nm", "-0.003 V/nm"]\n'
@@ -180,7 +184,11 @@ SEMICONDUCTORS: dict[str, str] = {
     "Ge rectangle": shape("rectangle", "Ge", width=nm(5), height=nm(11)) + CUBE,
     "Ge trapezoid along [112]": shape("trapezoid", "Ge", bottom=nm(9), top=nm(5), height=nm(9)) + TILTED,
     "Ge L": points(L_POINTS, "Ge") + CUBE,
-    "Delta, round core and shell": shape("circle", "a", diameter=nm(7)) + layer(3, "b") + DELTA_IN + DELTA_OUT + SILICON,
+    "Delta, round core and shell": shape("circle", "a", diameter=nm(7))
+    + layer(3, "b")
+    + DELTA_IN
+    + DELTA_OUT
+    + SILICON,
     "Delta, hexagonal core and shell": shape("hexagon", "a", across_flats=nm(7))
     + layer(3, "b")
     + DELTA_IN
@@ -197,6 +205,17 @@ SEMICONDUCTORS: dict[str, str] = {
     + patch(shape("rectangle", "a", width=nm(7), height=nm(10)) + 'center = ["0 nm", "8.5 nm"]\n')
     + LEFT
     + RIGHT,
+    "shear jump at a thin shell": shape("circle", "a", diameter=nm(12)) + layer(1, "b") + LEFT + RIGHT,
+    "shear jump, barrier goes on": shape("rectangle", "a", width=nm(8), height=nm(6))
+    + 'outside = "b"\n'
+    + LEFT
+    + RIGHT,
+    "steep tensors at a hexagonal core": shape("hexagon", "a", across_flats=nm(12)) + layer(4, "b") + STEEP,
+    "steep tensors, triangle in a disk": shape("circle", "b", diameter=nm(24))
+    + patch(shape("triangle", "a", side=nm(14)))
+    + STEEP,
+    "disk with a slit, steep tensor": SLIT + STEEP,
+    "disk with a slit, growing mass": SLIT + growing("a", 0.024, 2.1, 0.0),
     "growing mass, hexagon": shape("hexagon", "a", across_flats=nm(20)) + growing("a", 0.024, 2.1, 0.0),
     "growing mass, L": points(L_POINTS, "a") + growing("a", 0.024, 2.1, 0.0),
     "growing mass, hexagon in a field": shape("hexagon", "a", across_flats=nm(20))
@@ -291,7 +310,9 @@ def summary(title: str, parts: list[tuple[np.ndarray, np.ndarray]]) -> bool:
 def main() -> int:
     words = argparse.ArgumentParser(description=__doc__.splitlines()[0])
     words.add_argument("--quick", action="store_true", help="every fourth section only")
-    words.add_argument("names", nargs="*", metavar="NAME", help="parts of the names of the wanted sections; all if none")
+    words.add_argument(
+        "names", nargs="*", metavar="NAME", help="parts of the names of the wanted sections; all if none"
+    )
     given = words.parse_args()
 
     def chosen(cases: dict[str, str]) -> dict[str, str]:

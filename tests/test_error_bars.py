@@ -15,8 +15,10 @@ from numpy.typing import NDArray
 
 from tests.truth import annulus, ellipse, polygon, sector
 from tests.truth._wires import half_plane, regular_polygon
+from wiresolve.describe.input_files import InputFile
 from wiresolve.describe.materials import Material
-from wiresolve.describe.problem import Accuracy, Carriers, Potential, Problem
+from wiresolve.describe.outline import Outline
+from wiresolve.describe.problem import Accuracy, Carriers, Orientation, Potential, Problem
 from wiresolve.describe.section import Layer, Patch, Section
 from wiresolve.describe.shapes import Circle, Ellipse, Polygon, Rectangle, Shape, Trapezoid, Triangle
 from wiresolve.physics import subbands
@@ -40,6 +42,17 @@ HEAVY = Material.given("heavy", electron_mass=0.3, conduction_edge_eV=0.5)
 LIGHT = Material.given("light", electron_mass=0.0135, conduction_edge_eV=0.0)
 SLOW = Material.given("slow", electron_mass=0.15, conduction_edge_eV=0.0)
 SKEW = Material.given("skew", inverse_mass=[[25, -7, 0], [-7, 6, 0], [0, 0, 10]], conduction_edge_eV=0.0)
+LEAN = Material.given("lean", inverse_mass=[[12, 4, -2], [4, 5, 1], [-2, 1, 8]], conduction_edge_eV=0.0)
+UPRIGHT = Material.given("upright", inverse_mass=[[2.5, -1, 1], [-1, 6, 0], [1, 0, 4]], conduction_edge_eV=0.25)
+NARROW = Material.given("narrow", electron_mass=0.026, nonparabolicity_per_eV=2.4, conduction_edge_eV=0.0)
+WIDE = Material.given("wide", electron_mass=0.08, nonparabolicity_per_eV=0.7, conduction_edge_eV=0.5)
+GIVEN = (WELL, BARRIER, HEAVY, LIGHT, SLOW, SKEW, LEAN, UPRIGHT, NARROW, WIDE)
+SLANTED = Orientation((1, 1, -2), (1, -1, 0))
+ISLAND = InputFile("island.csv", b"-8,-6\n-1,-7\n7,-5\n9,1\n4,3\n6,8\n-2,7\n-9,2\n")
+PEBBLE = InputFile(
+    "pebble.csv",
+    "\n".join(f"{round(9 * np.cos(a))},{round(7 * np.sin(a) + np.cos(2 * a))}" for a in np.arange(40) * 0.157).encode(),
+)
 PLUS = tuple(
     (SIZE_nm * x, SIZE_nm * y)
     for x, y in (
@@ -56,6 +69,7 @@ class Case:
     section: Section
     eigenvalues: tuple[float, ...] = ()
     potential: Potential | None = None
+    orientation: Orientation | None = None
 
     def problem(self, accuracy_eV: float, count: int = COUNT) -> Problem:
         used = {piece.material for piece in self.section.pieces()} | {self.section.outside}
@@ -64,8 +78,9 @@ class Case:
             section=self.section,
             carriers=Carriers(temperature_K=(77.0,)),
             accuracy=Accuracy(subbands=count, energy_eV=accuracy_eV),
-            materials=tuple(m for m in (WELL, BARRIER, HEAVY, LIGHT, SLOW, SKEW) if m.name in used),
+            materials=tuple(m for m in GIVEN if m.name in used),
             potential=self.potential,
+            orientation=self.orientation,
         )
 
 
@@ -148,6 +163,37 @@ CASES: dict[str, Case] = {
         potential=Potential(field_V_per_nm=(-0.01, 0.02)),
     ),
     "two wells": Case(hard(Circle(diameter_nm=18.0)), potential=Potential(function=two_wells, name="two wells")),
+    # valleys whose masses depend on the direction, all of them in one list
+    "silicon ellipse": Case(hard(Ellipse(width_nm=9.0, height_nm=5.0), material="Si"), orientation=SLANTED),
+    "germanium triangle": Case(hard(Triangle(side_nm=13.0), material="Ge"), orientation=SLANTED),
+    # tensors that lean differently on the two sides of an interface
+    "tensors that jump at an ellipse": Case(
+        hard(
+            Ellipse(width_nm=12.0, height_nm=8.0, rotation_deg=20.0),
+            material="lean",
+            layers=(Layer(thickness_nm=4.0, material="upright"),),
+        )
+    ),
+    "tensors that jump at corners": Case(
+        hard(
+            Circle(diameter_nm=20.0),
+            Patch(shape=Rectangle(width_nm=9.0, height_nm=7.0, rotation_deg=15.0), material="lean"),
+            material="upright",
+        )
+    ),
+    # masses that grow with energy
+    "growing mass, pentagon in a field": Case(
+        hard(regular_polygon(5, SIZE_nm), material="narrow"), potential=Potential(field_V_per_nm=(0.004, 0.008))
+    ),
+    "growing masses, pentagonal core": Case(
+        hard(regular_polygon(5, 9.0), material="narrow", layers=(Layer(thickness_nm=4.0, material="wide"),))
+    ),
+    "growing masses, square in an endless barrier": Case(
+        Section(shape=Rectangle(width_nm=13.0, height_nm=13.0), material="narrow", outside="wide")
+    ),
+    # traced outlines: a polygon, and pixels that are smoothed
+    "island": Case(hard(Outline(ISLAND, scale_nm=1.0))),
+    "pebble": Case(hard(Outline(PEBBLE, scale_nm=1.0, pixel_nm=1.0))),
 }
 
 
@@ -165,15 +211,14 @@ def studied(name: str) -> tuple[Array, Array]:
     else:
         reference = certified(case, REFERENCE_eV)
         assert reference.met
-        truth, blur = reference.solved[0].energy_eV[:COUNT], reference.solved[0].bar_eV[:COUNT]
+        truth, blur = reference.energy_eV, reference.bar_eV
     errors, bars = [], []
     for accuracy in ACCURACIES_eV:
         found = certified(case, accuracy)
         assert found.met and found.missed == 0
-        bar = found.solved[0].bar_eV[:COUNT]
-        assert (bar <= accuracy).all()
-        errors.append(np.maximum(np.abs(found.solved[0].energy_eV[:COUNT] - truth), 1e-16))
-        bars.append(bar + blur)
+        assert (found.bar_eV <= accuracy).all()
+        errors.append(np.maximum(np.abs(found.energy_eV - truth), 1e-16))
+        bars.append(found.bar_eV + blur)
     return np.concatenate(errors), np.concatenate(bars)
 
 

@@ -10,13 +10,15 @@ import pytest
 
 from wiresolve.describe.section import Layer, Patch, Piece, Section
 from wiresolve.describe.shapes import Circle, Ellipse, Hexagon, Polygon, Rectangle
-from wiresolve.describe.wirefile import read
+from wiresolve.describe.wirefile import parse, read
 from wiresolve.errors import InputError, MeshError
 from wiresolve.fem import meshing
 from wiresolve.fem.corners import exponents, gradings, singular_corners
 from wiresolve.fem.mesh import folded
 from wiresolve.fem.meshing import Mesher, SizeField
 from wiresolve.fem.space import Space
+from wiresolve.physics.subbands import certify
+from wiresolve.physics.wire import Wire
 
 GEOMETRIES = sorted((Path(__file__).parents[1] / "geometries").glob("*.toml"))
 EYE = [np.eye(2)] * 9
@@ -152,3 +154,38 @@ def test_which_corners_are_graded() -> None:
     skew = singular_corners(mesh, inverse_mass)
     assert [corner.exponent for corner in skew] == pytest.approx([1.5, 1.5])
     assert gradings(skew, 3.0, 4.0, 0.1)[0].smallest_nm >= 0.3 - 1e-12
+
+
+@pytest.mark.parametrize("accuracy", ["1 meV", "0.1 meV"])
+def test_no_cell_of_a_thin_shell_is_turned_over_at_a_corner(accuracy: str) -> None:
+    """A cell with two edges on the shell's walls may turn over beside a vertex only, where a lattice does not look."""
+    text = f"""
+[section]
+shape = "circle"
+diameter = "16 nm"
+material = "a"
+layers = [{{thickness = "0.6 nm", material = "b"}}]
+[materials]
+a = {{electron_mass = 0.05, conduction_edge = "0 eV"}}
+b = {{electron_mass = 0.09, conduction_edge = "0.3 eV"}}
+[carriers]
+temperature = "77 K"
+[accuracy]
+subbands = 8
+energy = "{accuracy}"
+"""
+    wire = Wire(parse(text, Path()))
+    found = certify(wire.draw, wire.channels, 8, wire.problem.accuracy.energy_eV)
+    assert found.met
+    for space in (found.space, found.solved[0].enriched.space):
+        assert space.quadrature_weights.min() > 0
+
+
+def test_a_field_of_small_round_patches_is_counted() -> None:
+    """63 patches: one cell turned over gives a mass or stiffness below zero, and the count a state that is none."""
+    patches = tuple(Patch(Circle(diameter_nm=2.0), "b", (4.0 * i, 4.0 * j)) for i in range(-4, 5) for j in range(-3, 4))
+    section = Section(Rectangle(width_nm=40.0, height_nm=30.0), "a", patches=patches)
+    with Mesher(section.pieces()) as mesher:
+        for size in (2.5, 1.6):
+            for mesh in mesher.mesh(SizeField(size, turn_cells=10)):
+                assert Space(mesh).quadrature_weights.min() > 0

@@ -218,7 +218,10 @@ def ritz(hamiltonian: Any, mass: Any, block: NDArray[Any]) -> tuple[Array, NDArr
 
 def ritz_from(hamiltonian: NDArray[Any], mass: NDArray[Any]) -> tuple[Array, NDArray[Any]]:
     """Energies (m,) and combinations (m, m) of a small dense pencil."""
-    values, turn = dense.eigh(_hermitian(hamiltonian), _hermitian(mass))
+    try:
+        values, turn = dense.eigh(_hermitian(hamiltonian), _hermitian(mass))
+    except np.linalg.LinAlgError:
+        raise ConvergenceError("the solver's states are not independent; ask fewer states or a finer accuracy") from None
     return values, turn
 
 

@@ -14,6 +14,10 @@ Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
 
+_CLOSE = 0.01
+"""How close to a vertex points of the quadrature come, in lengths of the edges."""
+
+
 @dataclass(frozen=True)
 class Region:
     """A piece of the section that is left after painting, in one material."""
@@ -102,20 +106,32 @@ def edge_extension(degree: int) -> Array:
 
 
 def folded(mesh: Mesh) -> NDArray[np.bool_]:
-    """Cells whose Jacobian is not positive on a lattice of degree 8, their vertices left out.
+    """Cells whose Jacobian is not positive on a lattice of degree 8, their vertices left out, nor close to these.
 
     At a vertex between two edges on one smooth curve a cell has no angle left and its Jacobian is zero: integrals over
-    such a cell are finite, and what it costs in accuracy is in the indicators.
+    such a cell are finite, and what it costs in accuracy is in the indicators. As close to a vertex as points of the
+    quadrature come, it must be positive.
     """
     element = triangle(mesh.degree)
     result = np.zeros(len(mesh.cells), dtype=bool)
     curved = ~is_straight(mesh)
     nodes = mesh.points[mesh.cells[curved]]
-    slopes = element.gradients(triangle(8).nodes[3:])
+    slopes = element.gradients(np.vstack([triangle(8).nodes[3:], _beside_vertices()]))
     jacobian = np.einsum("rqa,cax->cqxr", slopes, nodes, optimize=True)
     det = jacobian[..., 0, 0] * jacobian[..., 1, 1] - jacobian[..., 0, 1] * jacobian[..., 1, 0]
-    result[curved] = det.min(axis=1) <= 1e-3 * det.mean(axis=1)
+    mean = det.mean(axis=1)
+    inner = triangle(8).count - 3
+    result[curved] = (det[:, :inner].min(axis=1) <= 1e-3 * mean) | (det[:, inner:].min(axis=1) <= 1e-6 * mean)
     return result
+
+
+@cache
+def _beside_vertices() -> Array:
+    """Points as far from each vertex as those of the closest quadrature rules, (15, 2)."""
+    t = np.linspace(0, 1, 5)[:, None]
+    corners = np.array([[0.0, 0.0], [1.0, 0.0], [0.0, 1.0]])
+    ways = [(corners[k], corners[(k + 1) % 3] - corners[k], corners[(k + 2) % 3] - corners[k]) for k in range(3)]
+    return np.vstack([start + _CLOSE * ((1 - t) * first + t * second) for start, first, second in ways])
 
 
 def is_straight(mesh: Mesh) -> NDArray[np.bool_]:
