@@ -45,6 +45,7 @@ class Operator:
     coupling : further constant terms, each a function of (x, y) times an N x N Hermitian matrix.
     nonparabolicity_per_eV : alpha of each region (one band only), or () for constant masses.
     mass_energy_eV : the energy at which masses are taken: m (1 + alpha (E - edge - potential)); None for the edge's.
+    kinetic_scale : what all quadratic coefficients are multiplied by on a space, in place of 1.
     smooth : the potential is known to have no kink inside a region, so that one rule a cell integrates it.
     """
 
@@ -53,6 +54,7 @@ class Operator:
     coupling: tuple[tuple[Callable[[Array, Array], Array], NDArray[Any]], ...] = ()
     nonparabolicity_per_eV: tuple[float, ...] = ()
     mass_energy_eV: float | None = None
+    kinetic_scale: Callable[[Space], Field] | None = None
     smooth: bool = False
 
     @property
@@ -97,7 +99,7 @@ class Operator:
 
     def terms(self, space: Space) -> tuple[Term, ...]:
         """The operator as terms on a space; equal matrices share one form."""
-        lighter: Field | None = None
+        lighter = None if self.kinetic_scale is None else self.kinetic_scale(space)
         if self.mass_energy_eV is not None and self.nonparabolic:
             lighter = 1 / self.mass_ratio(space, self.mass_energy_eV)
         gathered: dict[tuple[int, bytes], tuple[dict[tuple[str, str], Field], NDArray[Any]]] = {}

@@ -12,14 +12,15 @@ from numpy.typing import NDArray
 from wiresolve.bands import effective_mass
 from wiresolve.bands.valleys import ValleyGroup, valley_groups
 from wiresolve.describe.material import ANY_VALLEY, Material
+from wiresolve.describe.outside import outside_loop
 from wiresolve.describe.problem import PARABOLIC, Problem
-from wiresolve.describe.section import Piece, outside_loop
+from wiresolve.describe.section import Piece
 from wiresolve.describe.shapes import Rectangle
 from wiresolve.describe.symmetry import symmetries
 from wiresolve.errors import InputError
 from wiresolve.fem.mesh import Mesh
-from wiresolve.physics.pencil import Operator
 from wiresolve.physics.outer_wall import Barrier, least_distance
+from wiresolve.physics.pencil import Operator
 from wiresolve.physics.subbands import Channel
 from wiresolve.units import HBAR2_OVER_2M0
 
