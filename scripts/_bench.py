@@ -1,10 +1,11 @@
 """Speed and memory, never part of a test: ratios in one run, medians, one BLAS thread.
 
-    scripts/bench [cases|geometries|by-hand|growth|start] ...
+    scripts/bench [cases|geometries|by-hand|semiconductors|growth|start] ...
 
 cases       time to certified energies of ten states, each to 1e-6 of the tenth (and a little beyond)
 geometries  every file in geometries/ at its own accuracy, from solve() to the complete result
 by-hand     against two scripts as one would write them by hand, at equal error on a circle
+semiconductors  all valleys of a silicon wire, growing masses, a mesh from elsewhere, sensitivities beside their solve
 growth      time and memory of one solve with bars and count, up to 200,000 unknowns
 start       import, --help, and a cold `wiresolve solve geometries/circle.toml` with all outputs
 """
@@ -198,6 +199,98 @@ def by_hand() -> None:
         print(f"differences, {points:4d} points across {1e3 * seconds:7.0f} ms   error {error:.1e}")
 
 
+SILICON = """[section]
+shape = "circle"
+diameter = "6 nm"
+material = "Si"
+[orientation]
+axis = [1, 1, 0]
+up = [0, 0, 1]
+[carriers]
+temperature = "300 K"
+[accuracy]
+subbands = 20
+energy = "0.01 meV"
+"""
+GROWING = """[section]
+shape = "hexagon"
+across_flats = "20 nm"
+material = "InAs"
+[[section.layers]]
+thickness = "8 nm"
+material = "InP"
+[carriers]
+temperature = "77 K"
+[accuracy]
+subbands = 10
+energy = "0.1 meV"
+"""
+IMPORTED = """[section]
+shape = "mesh"
+file = "large.msh"
+unit = "nm"
+[section.group_materials]
+channel = "GaAs"
+cladding = "Al0.3Ga0.7As"
+[carriers]
+temperature = "77 K"
+[accuracy]
+subbands = 10
+energy = "0.1 meV"
+"""
+
+
+def semiconductors() -> None:
+    import wiresolve as ws
+    from wiresolve.describe.wirefile import parse
+
+    print("\nsemiconductors, solve() to the complete result; sensitivities beside the rest of the solve")
+    for name, text, limit in (("silicon, 6 nm, 20 entries", SILICON, 800), ("InAs hexagon in InP", GROWING, 0)):
+        problem = parse(text, Path("."))
+        shares = []
+
+        def work(problem=problem, shares=shares):  # type: ignore[no-untyped-def]
+            result = ws.solve(problem)
+            moved = result.timings_s["sensitivities"]
+            shares.append(moved / (result.timings_s["total"] - moved))
+            return result
+
+        whole, result = median_ms(work, 5)
+        share = statistics.median(shares[1:])
+        print(f"{name:28s} {whole:6.0f} ms{verdict(whole, limit)}   {result.summary.unknowns} unknowns", end="")
+        print(f"   sensitivities {100 * share:.1f} %{verdict(share, 0.1)}")
+    with tempfile.TemporaryDirectory() as folder:
+        cells = large_mesh(Path(folder) / "large.msh")
+        (Path(folder) / "wire.toml").write_text(IMPORTED, encoding="utf-8")
+        whole, result = median_ms(lambda: ws.solve(ws.load(Path(folder) / "wire.toml")), 3)
+    print(
+        f"mesh of {cells} second-order cells {whole:6.0f} ms{verdict(whole, 3000)}   {result.summary.unknowns} unknowns"
+    )
+
+
+def large_mesh(target: Path) -> int:
+    """A round core in a shell in 20,000 cells of second order; returns their number."""
+    import gmsh
+
+    gmsh.initialize([], readConfigFiles=False, interruptible=False)
+    try:
+        gmsh.option.setNumber("General.Terminal", 0)
+        gmsh.option.setNumber("Mesh.MeshSizeMax", 0.304)
+        inner, outer = (gmsh.model.occ.addCurveLoop([gmsh.model.occ.addCircle(0, 0, 0, r)]) for r in (8, 16))
+        core = gmsh.model.occ.addPlaneSurface([inner])
+        shell = gmsh.model.occ.addPlaneSurface([outer, inner])
+        gmsh.model.occ.synchronize()
+        gmsh.model.addPhysicalGroup(2, [core], name="channel")
+        gmsh.model.addPhysicalGroup(2, [shell], name="cladding")
+        gmsh.model.mesh.generate(2)
+        gmsh.model.mesh.setOrder(2)
+        gmsh.write(str(target))
+        _, tags, _ = gmsh.model.mesh.getElements(2)
+        return sum(len(t) for t in tags)
+    finally:
+        gmsh.finalize()
+
+
 def growth() -> None:
     print("\ngrowth: a circle, 14 states with bars, and their count")
     sizes, seconds = [], []
@@ -268,7 +361,14 @@ def start() -> None:
     print(f"wiresolve solve geometries/circle.toml        {cold:6.0f} ms{verdict(cold, 3000)}")
 
 
-PARTS = {"cases": cases, "geometries": geometries, "by-hand": by_hand, "growth": growth, "start": start}
+PARTS = {
+    "cases": cases,
+    "geometries": geometries,
+    "by-hand": by_hand,
+    "semiconductors": semiconductors,
+    "growth": growth,
+    "start": start,
+}
 
 
 def main() -> int:
