@@ -495,6 +495,7 @@ GOOD = changed(lambda arrays: None)
 BAD: dict[str, tuple[bytes, str, str]] = {
     "metres declared nm": (changed(put(slice(None), 1e-9)), "unit", "."),
     "no place": (changed(put((4, 1), np.nan)), "file", "node 5 has no finite place"),
+    "no place at all": (changed(put(slice(None), np.nan)), "file", "no node with a finite place"),
     "out of plane": (changed(put((4, 2), 1.0)), "file", "does not lie in one plane"),
     "upright": (changed(upright), "file", "plane of constant y"),
     "zero area": (changed(cells((0, 3, 6))), "file", "has no area"),

@@ -71,7 +71,10 @@ class ImportedMesh(Shape):
     def _size_is_sane(self, data: MeshData, scale: float) -> None:
         used = np.unique(np.concatenate([block.nodes.ravel() for block in data.blocks] or [np.zeros(0, dtype=int)]))
         places = data.points[used]
-        spread = np.ptp(places[np.isfinite(places).all(axis=1)], axis=0) if len(used) else np.zeros(3)
+        finite = places[np.isfinite(places).all(axis=1)]
+        if len(used) and not len(finite):
+            raise InputError("file", "has no node with a finite place", remedy="write the mesh anew")
+        spread = np.ptp(finite, axis=0) if len(finite) else np.zeros(3)
         sides = sorted(float(side) for side in spread)[1:]  # of the plane that it lies in
         if not np.isfinite(sides).all():
             raise InputError("file", "has nodes whose places are beyond all numbers", remedy="write the mesh anew")
