@@ -13,6 +13,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from scipy.integrate import quad
 
+from tests.synthetic import parabolic_tail
 from wiresolve.errors import InputError
 from wiresolve.physics.fermi import fermi_integral, occupation
 from wiresolve.physics.spectrum import Spectrum
@@ -25,6 +26,7 @@ from wiresolve.physics.statistics import (
     tail_density,
 )
 from wiresolve.physics.tabulated_band import tabulated_band
+from wiresolve.physics.tail import Tail, added
 from wiresolve.physics.thermal import boltzmann_sums
 from wiresolve.units import HBAR2_OVER_2M0, KB
 
@@ -127,7 +129,7 @@ def test_a_parabola_holds_what_quadrature_over_k_finds(temperature_K: float) -> 
 
 
 def test_absolute_zero_is_the_limit_of_low_temperature() -> None:
-    spectrum = ladder([0.05, 0.08, 0.13], tail_energy_eV=[0.13, 0.2], tail_count=[0.0, 5.0], tail_axial_mass=0.067)
+    spectrum = ladder([0.05, 0.08, 0.13], tails=(parabolic_tail([0.13, 0.2], [0.0, 5.0], 0.067),))
     fermi = np.array([0.04, 0.06, 0.1, 0.19])
     cold = line_density(spectrum, fermi, 0.0)
     assert line_density(spectrum, fermi, 1e-2) == pytest.approx(cold, rel=1e-7, abs=1e-30)
@@ -136,7 +138,7 @@ def test_absolute_zero_is_the_limit_of_low_temperature() -> None:
 
 
 def test_temperatures_and_fermi_levels_broadcast() -> None:
-    spectrum = ladder([0.05, 0.08], tail_energy_eV=[0.08, 0.2], tail_count=[0.0, 5.0], tail_axial_mass=0.067)
+    spectrum = ladder([0.05, 0.08], tails=(parabolic_tail([0.08, 0.2], [0.0, 5.0], 0.067),))
     fermi, temperatures = np.linspace(0.0, 0.2, 5), np.array([0.0, 4.2, 300.0])
     together = line_density(spectrum, fermi, temperatures[:, None])
     assert together.shape == (3, 5)
@@ -295,8 +297,8 @@ def test_tables_that_belong_to_another_band_are_refused() -> None:
 def test_the_tail_holds_what_many_subbands_hold(temperature_K: float) -> None:
     # 4000 subbands a millionth of an eV apart against their smooth count
     minima = 0.1 + (np.arange(4000) + 0.5) * 1e-5
-    tail = {"tail_energy_eV": [0.1, 0.12, 0.14], "tail_count": [0.0, 4000.0, 8000.0], "tail_axial_mass": 0.067}
-    many, smooth = ladder([0.05, *minima]), ladder([0.05], **tail)
+    tail = parabolic_tail([0.1, 0.12, 0.14], [0.0, 4000.0, 8000.0], 0.067)
+    many, smooth = ladder([0.05, *minima]), ladder([0.05], tails=(tail,))
     fermi = np.array([0.02, 0.11, 0.13, 0.2])
     found = tail_density(smooth, fermi, temperature_K)
     expected = line_density_by_subband(many, fermi, temperature_K)[1:].sum(axis=0)
@@ -314,12 +316,47 @@ def test_the_tail_holds_what_many_subbands_hold(temperature_K: float) -> None:
 def test_the_line_density_leaves_no_tail_out(distance_kT: float) -> None:
     temperature = 50.0
     start = 0.05 + distance_kT * KB * temperature
-    spectrum = ladder([0.05], tail_energy_eV=[start, start + 0.2], tail_count=[0.0, 1e9], tail_axial_mass=0.067)
+    spectrum = ladder([0.05], tails=(parabolic_tail([start, start + 0.2], [0.0, 1e9], 0.067),))
     fermi = np.array([-0.1, 0.04, 0.06])
     solved = line_density_by_subband(spectrum, fermi, temperature)[0]
     tail = tail_density(spectrum, fermi, temperature)
     assert (tail > 1e-8 * solved).all()
     assert line_density(spectrum, fermi, temperature) == pytest.approx(solved + tail, rel=1e-15)
+
+
+@pytest.mark.parametrize("temperature_K", [0.0, 77.0])
+def test_tails_add_up_whatever_their_energies_are(temperature_K: float) -> None:
+    one, other = parabolic_tail([0.1, 0.3], [0.0, 50.0], 0.067, 301), parabolic_tail([0.17, 0.5], [0.0, 9.0], 0.3, 97)
+    together = added((one, other))
+    assert together is not None
+    assert added(()) is None
+    fermi = np.array([0.05, 0.12, 0.2, 3.0])
+    assert together.line_density(fermi, temperature_K) == pytest.approx(
+        one.line_density(fermi, temperature_K) + other.line_density(fermi, temperature_K), rel=1e-12, abs=1e-30
+    )
+    assert together.mean_modes(fermi, temperature_K) == pytest.approx(
+        one.mean_modes(fermi, temperature_K) + other.mean_modes(fermi, temperature_K), rel=1e-12, abs=1e-30
+    )
+
+
+@pytest.mark.parametrize(
+    ("name", "value"),
+    [
+        ("energy_eV", [0.1]),
+        ("energy_eV", [0.1, 0.1]),
+        ("energy_eV", [0.1, np.nan]),
+        ("modes", [1.0, 2.0]),
+        ("modes", [0.0, -1.0]),
+        ("modes", [0.0, 1.0, 2.0]),
+        ("states_per_nm", [0.0, np.inf]),
+        ("states_per_nm", [0.1, 0.2]),
+    ],
+)
+def test_a_tail_that_does_not_fit_together_is_refused(name: str, value: Any) -> None:
+    sound: dict[str, Any] = {"energy_eV": [0.1, 0.2], "modes": [0.0, 3.0], "states_per_nm": [0.0, 1.0]}
+    Tail(**sound)
+    with pytest.raises(InputError, match=f"tails.{name}"):
+        Tail(**{**sound, name: value})
 
 
 # Fermi level
@@ -328,9 +365,7 @@ def test_the_line_density_leaves_no_tail_out(distance_kT: float) -> None:
 @pytest.mark.parametrize("temperature_K", [0.0, 0.05, 4.2, 300.0])
 @pytest.mark.parametrize("density_per_nm", [1e-12, 1e-5, 0.03, 0.7, 40.0])
 def test_fermi_level_and_line_density_undo_each_other(temperature_K: float, density_per_nm: float) -> None:
-    spectrum = ladder(
-        [0.05, 0.08, 0.08, 0.13], tail_energy_eV=[0.13, 0.5], tail_count=[0.0, 40.0], tail_axial_mass=0.067
-    )
+    spectrum = ladder([0.05, 0.08, 0.08, 0.13], tails=(parabolic_tail([0.13, 0.5], [0.0, 40.0], 0.067),))
     level = fermi_level(spectrum, density_per_nm, temperature_K)
     assert type(level) is float
     if temperature_K == 0 and density_per_nm == 1e-12:
@@ -452,13 +487,7 @@ def test_bad_edges_are_refused() -> None:
         ("k_per_nm", [0.1, 0.2, 0.3, 0.4]),
         ("k_per_nm", [0.0, 0.2, 0.3]),
         ("band_eV", np.zeros((2, 5))),
-        ("tail_energy_eV", [0.0, 0.1]),
-        ("tail_energy_eV", [0.1, 0.1]),
-        ("tail_energy_eV", None),
-        ("tail_count", [1.0, 2.0]),
-        ("tail_count", [0.0, -1.0]),
-        ("tail_count", [0.0, 1.0, 2.0]),
-        ("tail_axial_mass", None),
+        ("tails", (parabolic_tail([0.07, 0.2], [0.0, 3.0], 0.067),)),
         ("direction_energy_eV", np.zeros((2, 3))),
     ],
 )
@@ -467,9 +496,7 @@ def test_a_spectrum_that_does_not_fit_together_is_refused(field: str, value: Any
     sound: dict[str, Any] = {
         "k_per_nm": k,
         "band_eV": np.array([[0.05], [0.08]]) + HBAR2_OVER_2M0 / 0.067 * k**2,
-        "tail_energy_eV": [0.08, 0.2],
-        "tail_count": [0.0, 3.0],
-        "tail_axial_mass": 0.067,
+        "tails": (parabolic_tail([0.08, 0.2], [0.0, 3.0], 0.067),),
         "direction_energy_eV": np.zeros((2, 2)),
         "direction_names": ("x", "y"),
     }

@@ -9,6 +9,7 @@ import pytest
 from scipy.integrate import quad
 from scipy.optimize import brentq
 
+from tests.synthetic import parabolic_tail
 from wiresolve.errors import InputError
 from wiresolve.physics.spectrum import Spectrum
 from wiresolve.physics.transport import (
@@ -123,7 +124,7 @@ def test_a_monotonic_table_conducts_like_its_minimum() -> None:
 @pytest.mark.parametrize("temperature_K", [0.0, 300.0])
 def test_the_tail_conducts_like_the_steps_it_stands_for(temperature_K: float) -> None:
     many = wire([0.05, *(0.1 + (np.arange(2000) + 0.5) * 1e-5)])
-    tail = wire([0.05], tail_energy_eV=[0.1, 0.12], tail_count=[0.0, 4000.0], tail_axial_mass=0.067)
+    tail = wire([0.05], tails=(parabolic_tail([0.1, 0.12], [0.0, 4000.0], 0.067),))
     fermi = np.array([0.02, 0.07, 0.113, 0.2])
     expected = conductance(many, fermi, temperature_K)
     assert conductance(tail, fermi, temperature_K) == pytest.approx(expected, rel=1e-6)
@@ -131,7 +132,7 @@ def test_the_tail_conducts_like_the_steps_it_stands_for(temperature_K: float) ->
 
 def test_a_tail_just_above_the_steps_is_never_left_out() -> None:
     # a tail 20 kT up still adds the last digits
-    spectrum = wire([0.05], tail_energy_eV=[0.05 + 20 * KB * 50, 0.3], tail_count=[0.0, 1e6], tail_axial_mass=0.067)
+    spectrum = wire([0.05], tails=(parabolic_tail([0.05 + 20 * KB * 50, 0.3], [0.0, 1e6], 0.067),))
     added = conductance(spectrum, 0.0, 50.0) / conductance(wire([0.05]), 0.0, 50.0) - 1
     width = (0.25 - 20 * KB * 50) / (KB * 50)
     assert float(added) == pytest.approx(1e6 / 2 / width * np.exp(-20), rel=1e-3)

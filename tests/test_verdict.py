@@ -11,6 +11,7 @@ import pytest
 from scipy.optimize import brentq
 from scipy.special import jn_zeros
 
+from tests.synthetic import parabolic_tail
 from wiresolve.errors import InputError
 from wiresolve.physics.spectrum import Spectrum
 from wiresolve.physics.thermal import (
@@ -140,11 +141,10 @@ def test_a_tail_counts_in_shares_and_dimension() -> None:
     kept = 60
     energies = whole.energy_eV[:kept]
     thin = HBAR2_OVER_2M0 * pi**2 / mass / height**2
-    grid = energies[-1] + np.linspace(0, 0.6, 4001)
+    grid = energies[-1] + np.linspace(0, 0.6, 1001)
     count = 2 * (width / pi * np.sqrt((grid - thin) * mass / HBAR2_OVER_2M0) - 0.5)
-    short = spectrum_of(
-        energies, mass, tail_energy_eV=grid, tail_count=np.maximum(count - 2 * kept, 0), tail_axial_mass=mass
-    )
+    tail = parabolic_tail(grid, np.maximum(count - 2 * kept, 0), mass, 201)
+    short = spectrum_of(energies, mass, tails=(tail,))
     cut = spectrum_of(energies, mass)
     for temperature in (100.0, 200.0):
         exact, found = boltzmann_sums(whole, temperature), boltzmann_sums(short, temperature)

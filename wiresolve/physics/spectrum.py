@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from wiresolve.bands.nonparabolic import Relation
 from wiresolve.errors import InputError
 from wiresolve.physics.tabulated_band import TabulatedBand, growing_band, tabulated_band
+from wiresolve.physics.tail import Tail, added
 from wiresolve.units import HBAR2_OVER_2M0
 
 Array = NDArray[np.float64]
@@ -34,9 +35,7 @@ class Spectrum:
         row of NaN stands for the closed form, and k beyond the table for the parabola with the axial mass.
     edge_eV, nonparabolicity_per_eV : (n,) or None: the closed form is e (1 + alpha e) = value + hbar^2 k^2 / 2m, with e
         counted from the band edge; alpha = 0, or None, is the parabola.
-    tail_energy_eV, tail_count : (q,) ascending energies, from the same zero and not below the last of `energy_eV`, and
-        the semiclassical number of further subbands (times their degeneracies) with minima up to there, from 0 on.
-    tail_axial_mass : their mass in m0.
+    tails : further subbands, counted, one `Tail` a channel; each starts at the last of `energy_eV` or above.
     direction_energy_eV : (n, 2) or None: kinetic plus potential energy in the two confined directions where the
         section separates (rows may be NaN where it is not known).
     direction_names : their names, e.g. ("x", "y").
@@ -56,15 +55,13 @@ class Spectrum:
     band_eV: Array | None = None
     edge_eV: Array | None = None
     nonparabolicity_per_eV: Array | None = None
-    tail_energy_eV: Array | None = None
-    tail_count: Array | None = None
-    tail_axial_mass: float | None = None
+    tails: tuple[Tail, ...] = ()
     direction_energy_eV: Array | None = None
     direction_names: tuple[str, ...] = ()
 
     def __post_init__(self) -> None:
         given = ("energy_eV", "error_eV", "axial_mass", "k_per_nm", "band_eV", "edge_eV", "nonparabolicity_per_eV")
-        for name in (*given, "tail_energy_eV", "tail_count"):
+        for name in given:
             value = getattr(self, name)
             if value is not None:
                 object.__setattr__(self, name, np.asarray(value, dtype=float))
@@ -72,7 +69,10 @@ class Spectrum:
             object.__setattr__(self, name, _whole(name, getattr(self, name)))
         self._check_states()
         self._check_bands()
-        self._check_tail()
+        for tail in self.tails:
+            start = float(tail.energy_eV[0])
+            rule = "must start at the last solved state or above, from the same energy zero"
+            _require("tails.energy_eV", start >= self.energy_eV[-1] - 1e-9, rule, start)
         if self.direction_energy_eV is not None:
             object.__setattr__(self, "direction_energy_eV", np.asarray(self.direction_energy_eV, dtype=float))
             _require(
@@ -119,25 +119,6 @@ class Spectrum:
             shape = self.energy_eV.shape
             _require(name, given is None or given.shape == shape, f"must have the shape {shape}")
 
-    def _check_tail(self) -> None:
-        energy, count = self.tail_energy_eV, self.tail_count
-        if energy is None and count is None:
-            return
-        _require("tail_energy_eV", energy is not None and count is not None, "needs tail_count, and the reverse")
-        assert energy is not None and count is not None
-        _require("tail_count", energy.ndim == 1 and energy.size >= 2, "must have two energies or more", energy.shape)
-        _require("tail_count", energy.shape == count.shape, "must have one value an energy", count.shape)
-        _require("tail_energy_eV", bool((np.diff(energy) > 0).all()), "must ascend")
-        _require(
-            "tail_energy_eV",
-            bool(energy[0] >= self.energy_eV[-1] - 1e-9),
-            "must start at the last solved state or above, from the same energy zero",
-            float(energy[0]),
-        )
-        _require("tail_count", count[0] == 0 and bool((np.diff(count) >= 0).all()), "must start at 0 and not fall")
-        mass = self.tail_axial_mass
-        _require("tail_axial_mass", mass is not None and mass > 0, "must be positive where there is a tail", mass)
-
     @cached_property
     def bands(self) -> tuple[TabulatedBand | None, ...]:
         """For each subband its E(k), or None where it is the parabola with the axial mass."""
@@ -168,10 +149,15 @@ class Spectrum:
         """(n,) where the subband is a parabola."""
         return np.array([band is None for band in self.bands])
 
+    @cached_property
+    def tail(self) -> Tail | None:
+        """All further subbands together."""
+        return added(self.tails)
+
     @property
     def top_eV(self) -> float:
-        """Up to which energy the states are known: the end of the tail, or the last state."""
-        return float(self.energy_eV[-1] if self.tail_energy_eV is None else self.tail_energy_eV[-1])
+        """Up to which energy the states are known: where the first tail ends, or the last state."""
+        return float(min((t.energy_eV[-1] for t in self.tails), default=self.energy_eV[-1]))
 
     @cached_property
     def thresholds(self) -> tuple[Array, Array]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import log, pi, sqrt
+from math import log, pi
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -111,10 +111,7 @@ def line_density_by_subband(spectrum: Spectrum, fermi_eV: ArrayLike, temperature
 
 
 def tail_density(spectrum: Spectrum, fermi_eV: ArrayLike, temperature_K: ArrayLike) -> Array:
-    """Line density in 1/nm of the semiclassical tail of further subbands; the arguments broadcast.
-
-    The count of their minima is linear between the tail's points, so the integral over them is exact: one order up,
-    F_(1/2), at each point where the slope of the count changes.
+    """Line density in 1/nm of the further subbands that are counted only; the arguments broadcast, T = 0 is exact.
 
     Raises
     ------
@@ -122,29 +119,16 @@ def tail_density(spectrum: Spectrum, fermi_eV: ArrayLike, temperature_K: ArrayLi
     """
     temperature = checked_temperature(temperature_K)
     fermi, temperature = np.broadcast_arrays(np.asarray(fermi_eV, dtype=float), temperature)
-    if spectrum.tail_energy_eV is None or spectrum.tail_count is None or spectrum.tail_axial_mass is None:
-        return np.zeros(fermi.shape)
-    distance = fermi[..., None] - spectrum.tail_energy_eV
-    frozen = sqrt(spectrum.tail_axial_mass / HBAR2_OVER_2M0) / pi * np.maximum(distance, 0.0) ** 1.5 / 1.5
-    eta = reduced_level(distance, temperature[..., None])
-    cold = (eta > _FROZEN_ETA) | (temperature[..., None] == 0)
-    scale = KB * temperature * effective_states(spectrum.tail_axial_mass, 1, temperature)
-    thermal = scale[..., None] * fermi_integral(0.5, np.where(cold, 0.0, eta))
-    changes = slope_changes(spectrum.tail_energy_eV, spectrum.tail_count)
-    return np.asarray(np.maximum(np.where(cold, frozen, thermal) @ changes, 0.0))
+    tail = spectrum.tail
+    return np.zeros(fermi.shape) if tail is None else tail.line_density(fermi, temperature)
 
 
 def tail_matters(spectrum: Spectrum, fermi_eV: Array, temperature_K: Array) -> NDArray[np.bool_]:
     """Where the tail is not lost in the rounding of what the first subband holds or conducts."""
-    if spectrum.tail_energy_eV is None:
+    if spectrum.tail is None:
         return np.zeros(np.broadcast(fermi_eV, temperature_K).shape, dtype=bool)
     reached = np.maximum(fermi_eV, spectrum.energy_eV[0]) + _TAIL_REACH * KB * np.asarray(temperature_K)
-    return np.asarray(reached > spectrum.tail_energy_eV[0])
-
-
-def slope_changes(energy: Array, count: Array) -> Array:
-    """By how much the slope of the piecewise linear `count` changes at each of its points (0 outside of them)."""
-    return np.asarray(np.diff(np.diff(count) / np.diff(energy), prepend=0.0, append=0.0))
+    return np.asarray(reached > spectrum.tail.energy_eV[0])
 
 
 def line_density(spectrum: Spectrum, fermi_eV: ArrayLike, temperature_K: ArrayLike) -> Array:

@@ -57,25 +57,13 @@ def boltzmann_sums(spectrum: Spectrum, temperature_K: ArrayLike) -> BoltzmannSum
             weight[index] = spectrum.degeneracy[index] / pi * length
             axial[index] = energy / length
     weight = weight * np.exp(-above)
-    tail, tail_energy = _tail_sums(spectrum, temperature)
+    tail, tail_energy = np.zeros(temperature.shape), np.zeros(temperature.shape)
+    if spectrum.tail is not None:
+        tail, tail_energy = spectrum.tail.boltzmann(float(spectrum.energy_eV[0]), temperature)
     total = weight.sum(axis=0) + tail
     mean = ((weight * (above + axial)).sum(axis=0) + tail_energy) / total
     shape = given.shape
     return BoltzmannSums((weight / total).reshape(-1, *shape), (tail / total).reshape(shape), mean.reshape(shape))
-
-
-def _tail_sums(spectrum: Spectrum, temperature_K: Array) -> tuple[Array, Array]:
-    """Weight (t,) of the tail and weight times energy in kT: exact for a count linear between the tail's points."""
-    if spectrum.tail_energy_eV is None or spectrum.tail_count is None or spectrum.tail_axial_mass is None:
-        return np.zeros(temperature_K.shape), np.zeros(temperature_K.shape)
-    x = (spectrum.tail_energy_eV - spectrum.energy_eV[0]) / (KB * temperature_K[:, None])
-    width = np.diff(x)
-    lost = -np.expm1(-width)  # 1 - exp(-width)
-    factor = np.diff(spectrum.tail_count) * np.exp(-x[:, :-1]) / width
-    states = effective_states(spectrum.tail_axial_mass, 1, temperature_K)
-    weight = states * (factor * lost).sum(axis=1)
-    energy = states * (factor * ((x[:, :-1] + 1) * lost - width * np.exp(-width))).sum(axis=1)
-    return weight, energy + weight / 2
 
 
 def first_level_share(spectrum: Spectrum, temperature_K: ArrayLike) -> Array:

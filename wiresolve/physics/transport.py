@@ -7,9 +7,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from wiresolve.physics.fermi import checked_temperature, fermi_integral, occupation
+from wiresolve.physics.fermi import checked_temperature, occupation
 from wiresolve.physics.spectrum import Spectrum
-from wiresolve.physics.statistics import slope_changes, tail_matters
+from wiresolve.physics.statistics import tail_matters
 from wiresolve.physics.step_contrast import contrasts, falls_below_at
 from wiresolve.units import CONDUCTANCE_QUANTUM_SIEMENS, KB
 
@@ -43,12 +43,8 @@ def conductance(spectrum: Spectrum, fermi_eV: ArrayLike, temperature_K: float) -
     flat = fermi.ravel()
     total = np.asarray(modes @ occupation(energy[:, None], flat, temperature) / 2)
     matters = tail_matters(spectrum, flat, np.asarray(temperature))
-    if spectrum.tail_energy_eV is not None and spectrum.tail_count is not None and matters.any():
-        distance = flat[matters, None] - spectrum.tail_energy_eV
-        kT = KB * temperature
-        filled = kT * fermi_integral(0, distance / kT) if temperature else np.maximum(distance, 0.0)
-        tail = filled @ slope_changes(spectrum.tail_energy_eV, spectrum.tail_count) / 2
-        total[matters] += np.maximum(tail, 0.0)
+    if spectrum.tail is not None and matters.any():
+        total[matters] += spectrum.tail.mean_modes(flat[matters], temperature) / 2
     return total.reshape(fermi.shape)
 
 
