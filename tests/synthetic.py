@@ -15,6 +15,7 @@ from wiresolve.describe.shapes import Circle, Rectangle
 from wiresolve.fem.mesh import Mesh, Region
 from wiresolve.physics.sensitivity import OutlineSensitivity
 from wiresolve.physics.spectrum import Spectrum
+from wiresolve.physics.tail import Tail
 from wiresolve.result import DensityOfStates, Dispersion, MeshSummary, Result, Subband, ThermalCurve, Verdict, Warned
 from wiresolve.units import HBAR2_OVER_2M0, KB
 
@@ -55,6 +56,21 @@ class _Drawing:
 
     def __exit__(self, *_: object) -> None:
         gmsh.finalize()
+
+
+def parabolic_tail(energy_eV: Any, count: Any, axial_mass: float, points: int = 4001) -> Tail:
+    """Subbands of one mass whose number, degeneracy included, is a straight line between the energies: in closed form.
+
+    Where the slope of the number changes by c, c sqrt(m 2/hbar^2) (E - E_c)^(3/2) 2/(3 pi) states a length follow.
+    """
+    knots, number = np.asarray(energy_eV, dtype=float), np.asarray(count, dtype=float)
+    changes = np.diff(np.diff(number) / np.diff(knots), prepend=0.0, append=0.0)
+    grown = np.linspace(0, 1, points) ** 2
+    grid = np.unique(np.concatenate([knots, *(e + 1.2 * grown for e in knots[[0, -1]])]))
+    above = np.maximum(grid[:, None] - knots, 0.0)
+    states = 2 / (3 * math.pi) * math.sqrt(axial_mass / HBAR2_OVER_2M0) * (above**1.5 @ changes)
+    modes = np.interp(grid, knots, number)
+    return Tail(grid, np.maximum.accumulate(modes), np.maximum.accumulate(np.maximum(states, 0.0)))
 
 
 def round_mesh(size_nm: float = 3.0) -> Mesh:
@@ -156,7 +172,10 @@ def core_shell_result(count: int = 10, **changes: Any) -> Result:
         "problem": core_shell_problem(),
         "mesh": mesh,
         "modes": round_modes(mesh.points, orders),
-        "cell_fields": {"mass_m0": np.where(mesh.region == 0, 0.09, MASS), "band_edge_eV": barrier},
+        "cell_fields": {
+            "axial_mass_of_first_valleys_m0": np.where(mesh.region == 0, 0.09, MASS),
+            "band_edge_of_first_valleys_eV": barrier,
+        },
         "subbands": subbands,
         "spectrum": Spectrum(
             energy_eV=energies,
@@ -205,7 +224,10 @@ def rectangle_result(width_nm: float = 20.0, height_nm: float = 10.0) -> Result:
         problem=rectangle_problem(width_nm, height_nm),
         mesh=mesh,
         modes=psi[:, None],
-        cell_fields={"mass_m0": np.full(count, MASS), "band_edge_eV": np.zeros(count)},
+        cell_fields={
+            "axial_mass_of_first_valleys_m0": np.full(count, MASS),
+            "band_edge_of_first_valleys_eV": np.zeros(count),
+        },
         summary=MeshSummary(count, len(mesh.points), 4, width_nm * height_nm, 1),
         subbands=other.subbands,
     )

@@ -398,6 +398,8 @@ def test_materials_of_a_users_file(here: Path) -> None:
     assert run("materials", "InAs", "--file", "lab.toml").exit_code == 0
     unknown = run("materials", "our", "--file", "lab.toml")
     assert (unknown.exit_code, "'ours'" in unknown.stderr) == (2, True)
+    assert "--file" not in unknown.stderr
+    assert "Or name the file that describes it with --file" in " ".join(run("materials", "ours").stderr.split())
     Path("lab.toml").write_text(text.replace("0.0235", "0"), encoding="utf-8")
     bad = run("materials", "--file", "lab.toml")
     assert (bad.exit_code, bad.stdout) == (2, "")

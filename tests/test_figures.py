@@ -113,7 +113,7 @@ def words(axes: Any) -> list[str]:
 def test_titles_of_modes_have_the_bars_of_the_table() -> None:
     result = core_shell_result(2)
     sharp = replace(result, subbands=tuple(replace(s, error_eV=3e-9) for s in result.subbands))
-    table = subband_table(sharp)[2:]
+    table = subband_table(sharp)[2 : 2 + len(sharp.subbands)]
     for axes, row in zip(figures.modes(sharp).axes, table, strict=True):
         energy = axes.get_title().splitlines()[1].removesuffix(" meV")
         assert energy.endswith("± 0.000004") or energy.endswith("± 0.000003")
@@ -164,6 +164,46 @@ def test_the_dispersion_is_cut_where_levels_would_run_together() -> None:
     axes = figures.dispersion(replace(result, dispersion=wide)).axes[0]
     assert axes.get_xlim()[1] < 1.5
     assert axes.get_xlabel().endswith("(1/nm)") and axes.get_ylabel() == "Energy (meV)"
+
+
+def of_valleys(count: int) -> Any:
+    result = core_shell_result(count)
+    labels = ("L [1-11] [1-1-1]", "Delta [001]", "Delta [100] [010] [001]")
+    named = tuple(replace(s, valley=labels[s.index % 3]) for s in result.subbands)
+    return replace(result, subbands=named)
+
+
+def test_modes_name_their_valleys() -> None:
+    figure = figures.modes(of_valleys(4))
+    assert [axes.get_title().splitlines()[2] for axes in figure.axes] == [
+        "Delta [001]",
+        "Delta [100] [010] and 1 more",
+        "L [1-11] [1-1-1]",
+        "Delta [001]",
+    ]
+    assert [text.get_text() for text in figure.texts] == ["of valleys that are alike one is shown"]
+    boxes = [axes.title.get_window_extent() for axes in figure.axes]
+    assert all(box.x0 >= 0 and box.x1 <= figure.bbox.x1 and box.y1 <= figure.bbox.y1 for box in boxes)
+    plain = figures.modes(core_shell_result(4))
+    assert not plain.texts and len(plain.axes[0].get_title().splitlines()) == 2
+
+
+def test_groups_of_valleys_have_lines_of_their_own() -> None:
+    result = of_valleys(4)
+    for draw in (figures.levels, figures.dispersion):
+        figure = draw(result)
+        figure.canvas.draw()
+        (legend,) = figure.legends
+        handles = {text.get_text() for text in legend.get_texts()}
+        box = legend.get_window_extent()
+        assert box.x0 >= 0 and box.x1 <= figure.bbox.x1 and box.y0 >= 0
+        assert box.y1 <= figure.axes[0].xaxis.label.get_window_extent().y0 or draw is figures.levels
+        shown = {"L [1-11] [1-1-1]", "Delta [001]", "Delta [100] [010] and 1 more"}
+        assert shown <= handles
+    curves = [line for line in figures.dispersion(result).axes[0].lines if len(line.get_xdata()) > 3]
+    dashes = [str(line._dash_pattern) for line in curves]
+    assert dashes[0] == dashes[3] and len(set(dashes)) == 3
+    assert not figures.dispersion(core_shell_result(4)).legends
 
 
 @pytest.mark.parametrize(("fermi_eV", "seen"), [(0.05, True), (-3.0, False), (9.0, False), (None, False)])

@@ -87,7 +87,9 @@ def test_silicon_is_known_by_its_valleys() -> None:
 def test_two_bands_up_to_half() -> None:
     assert on_two_bands(np.array([0.1, 0.2]), np.array([2.4, 2.4]), ["InAs"] * 2) == []
     (note,) = on_two_bands(np.array([0.1, 0.25]), np.array([2.4, 2.4]), ["InAs"] * 2)
-    assert "from number 2 on" in note[1]
+    assert (
+        "from number 2 on, energies lie beyond the range of the two-band mass of InAs: number 2 lies 250 meV" in note[1]
+    )
 
 
 def test_misfit_of_like_crystals_only() -> None:

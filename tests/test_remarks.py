@@ -16,6 +16,7 @@ from wiresolve.cli import program
 from wiresolve.describe.potential import Potential
 from wiresolve.describe.wirefile import parse
 from wiresolve.errors import InputError
+from wiresolve.physics.charge_remarks import Ring, image_shift_eV
 from wiresolve.physics.fermi import fermi_integral
 from wiresolve.result import Result
 from wiresolve.solve import solve
@@ -135,8 +136,10 @@ def test_a_warning_stands_where_it_must_and_nowhere_else(code: str) -> None:
 
 
 def test_a_plain_wire_has_no_warnings() -> None:
-    assert codes(wire(circle(16, "GaAs"), shell(8, "Al0.3Ga0.7As"))) == set()
-    assert codes(wire(circle(20, "GaAs"))) == set()
+    assert codes(wire(circle(16, "GaAs"), shell(8, "Al0.3Ga0.7As") + SI_110)) == set()
+    assert codes(wire(circle(20, "GaAs"), SI_110)) == set()
+    # Without its crystal's directions it may have grown along [111].
+    assert codes(wire(circle(20, "GaAs"))) == {"crystal-phase"}
 
 
 def test_forced_parabolic_masses_tell_their_error() -> None:
@@ -232,6 +235,7 @@ def test_misfit_is_told_with_its_size() -> None:
     parts = said(wire(circle(20, "GaAs"), shell(5, "InAs", "excluded"), 1), "lattice-mismatch")
     shift = -7.17 * 2 * (1 - 53.8 / 118.8) * (0.60583 / 0.565325 - 1)
     assert "7.2 % larger than that of GaAs" in parts
+    assert "if GaAs took up all of it, its conduction edge would move by" in parts
     assert float(parts.split("by about ")[1].split(" meV")[0]) == pytest.approx(1e3 * shift, rel=0.02)
 
 
@@ -239,7 +243,7 @@ def test_image_charges_are_told_with_their_size() -> None:
     """Closed form for a round wire of 5 nm radius, 11.7 in 3.9: 19.899 meV (see tests/truth/image_charge.py)."""
     silicon = own("well", 0.3, "permittivity = 11.7\n") + "[materials.oxide]\npermittivity = 3.9\n"
     warned = wire(circle(10, "well"), shell(50, "oxide", "excluded") + silicon)
-    assert "falls from 11.7 to 3.9" in said(warned, "dielectric-mismatch")
+    assert "falls from 11.7 where the carriers are to 3.9 around it" in said(warned, "dielectric-mismatch")
     assert "about +20 meV" in said(warned, "dielectric-mismatch")
     assert "vacuum" not in said(warned, "dielectric-mismatch")
     bare = wire(circle(10, "well"), own("well", 0.3, "permittivity = 12.9\n"))
@@ -257,6 +261,27 @@ def test_charge_is_told_with_the_density_that_does_no_harm() -> None:
     spacing = result.subbands[1].energy_eV - result.subbands[0].energy_eV
     harmless = spacing * 12.9 / (4 * 1.4399645)
     assert f"at {harmless:.2g} per nm" in " ".join(result.not_modelled)
+    remedy = next(w.remedy for w in result.warnings if w.code == "carrier-charge")
+    level = float(remedy.split("a fermi_level below ")[1].split(" meV")[0]) / 1e3
+    held = float(result.line_density(level, 77.0))
+    assert 0.98 * harmless < held <= harmless
+    crowded = wire(circle(20, "GaAs"), carriers='temperature = "77 K"\nfermi_level = "0.9 eV"')
+    assert "e^2 n L^2 / eps of more than 1 eV (L" in said(crowded, "carrier-charge")
+
+
+def test_image_charges_of_several_layers_are_one_number() -> None:
+    """An oxide of 3.9 lifts levels and one of 22 around it lowers them; what is said of the sum agrees everywhere."""
+    oxides = "[materials.one]\npermittivity = 3.9\n[materials.two]\npermittivity = 22.0\n"
+    layers = shell(2, "one", "excluded") + shell(4, "two", "excluded")
+    result = wire(circle(8, "well"), layers + own("well", 0.3, "permittivity = 11.7\n") + oxides)
+    text = said(result, "dielectric-mismatch")
+    assert "11.7 where the carriers are and, from there outwards, 3.9, then 22" in text
+    assert "rises" not in text and "falls" not in text
+    inner, outer = Ring(4.0, 11.7, 3.9, 0.0), Ring(6.0, 3.9, 22.0, 0.0)
+    shift = 1e3 * image_shift_eV([inner, outer])
+    assert float(text.split("all levels by about ")[1].split(" meV")[0]) == pytest.approx(shift, rel=0.05)
+    words = text.split("would move all levels by ")[1].split(", and the first spacing")[0]
+    assert f"(they would move all levels by {words})" in " ".join(result.not_modelled)
 
 
 def test_valleys_that_were_not_solved_are_named() -> None:
@@ -315,13 +340,16 @@ def test_only_what_matters_is_listed_as_left_out() -> None:
     alone, layered = wire(circle(20, "GaAs")), wire(circle(20, "GaAs"), shell(5, "AlAs"))
     assert not any(left.startswith("strain") for left in alone.not_modelled)
     assert any(left.startswith("strain") for left in layered.not_modelled)
-    assert not any("none is known of" in left for left in alone.not_modelled)
-    assert any("none is known of mine" in left for left in wire(circle(20, "mine"), own("mine", 0.1)).not_modelled)
+    assert not any("growth of the mass" in left for left in alone.not_modelled)
+    assert any(
+        "growth of the mass with energy in mine" in left
+        for left in wire(circle(20, "mine"), own("mine", 0.1)).not_modelled
+    )
 
 
 def test_strict_makes_warnings_an_exit_code(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.chdir(tmp_path)
-    (tmp_path / "wire.toml").write_text(text(circle(20, "GaAs"), shell(5, "Al0.3Ga0.7As", "excluded")))
+    (tmp_path / "wire.toml").write_text(text(circle(20, "GaAs"), shell(5, "Al0.3Ga0.7As", "excluded") + SI_110))
     ran = CliRunner().invoke(program, ["solve", "wire.toml", "--strict", "--quiet", "--no-figures"])
     assert ran.exit_code == 2
     kept = json.loads((tmp_path / "results" / "wire" / "result.json").read_text())

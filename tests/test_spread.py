@@ -5,6 +5,7 @@ from __future__ import annotations
 import csv
 import io
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -50,9 +51,9 @@ def test_the_sentence_names_what_matters_most() -> None:
     ]
     text = sentence(section, found, LEVEL, 4.2)
     assert text == (
-        "Half a nanometre of height moves the first level by -4.00 meV and the first spacing by -0.150 meV;"
-        " half a nanometre of width by -0.500 meV and the first spacing by -1.50 meV; such a spread of height"
-        " (standard deviation) blurs the first step as 31 K would, more than the 4.2 K of the carriers."
+        "Half a nanometre of height moves the first level by about -4.00 meV and the first spacing by about -0.150 meV;"
+        " half a nanometre of width by about -0.500 meV and the first spacing by about -1.50 meV; such a spread of"
+        " height (standard deviation) blurs the first step as 31 K would, more than the 4.2 K of the carriers."
     )
     assert text.replace("more than the 4.2 K", "less than the 77 K") == sentence(section, found, LEVEL, 77.0)
 
@@ -60,13 +61,34 @@ def test_the_sentence_names_what_matters_most() -> None:
 def test_small_dimensions_outlines_and_nothing() -> None:
     thin = Section(Circle(16.0), "GaAs", layers=(Layer(2.0, "Al0.3Ga0.7As"),))
     text = sentence(thin, [by("section.layers[1].thickness", -5e-3)], np.array([1]), 0.0)
-    assert text.startswith("A tenth of a nanometre of thickness of layer 1 moves the first level by -0.500 meV; such")
+    assert text.startswith(
+        "A tenth of a nanometre of thickness of layer 1 moves the first level by about -0.500 meV; such"
+    )
     assert "spacing" not in text
     assert text.endswith("as 3.9 K would.")
     drawn = Section(Polygon(((0.0, 0.0), (20.0, 0.0), (4.0, 12.0))), "GaAs")
     assert "outward growth of rim moves" in sentence(drawn, [by("growth of rim", -5e-3)], np.array([1]), 0.0)
+    assert "outward growth of group 7 moves" in sentence(drawn, [by("growth of 7", -5e-3)], np.array([1]), 0.0)
     assert sentence(thin, [by("section.layers[1].thickness", -1e-6)], np.array([1]), 4.2) == ""
     assert sentence(thin, [], np.array([1]), 4.2) == ""
+
+
+def test_large_motions_are_said_to_be_linear() -> None:
+    """Half a nanometre of -8 meV per nm is 4 meV: 10 % of 40 meV."""
+    section, found = Section(Rectangle(20.0, 10.0), "GaAs"), [by("section.height", -8e-3)]
+    small, large, whole = (sentence(section, found, np.array([1]), 0.0, e) for e in (0.0401, 0.025, 0.001))
+    assert "linear" not in small
+    assert large.endswith("These are linear estimates, and 16 % of the first level is no small motion.")
+    assert "more than the whole of the first level" in whole
+
+
+def test_a_motion_that_stands_there_under_two_names_is_told_once() -> None:
+    values = (-1.5e-3, -4e-3, -4e-3, -7e-3, -7e-3, -8e-3)
+    twice = (by("section.layers[1].thickness", *values), by("growth of rim", *values), by("growth of 7", *values))
+    assert [row.split()[0] for row in sensitivity_table(listed(*twice))[1:]] == ["layers[1].thickness"]
+    other = by("growth of 7", *(2 * v for v in values))
+    rows = sensitivity_table(listed(twice[0], other))[1:]
+    assert [row.split("  ")[0] for row in rows] == ["layers[1].thickness", "growth of group 7"]
 
 
 def listed(*found: Sensitivity) -> Result:
@@ -109,7 +131,7 @@ def along(section: Section, count: int) -> tuple[OutlineSensitivity, float]:
     made = Wire(wire(section, [own], count, 1e-6))
     done = certify(made.draw, made.channels, count, 1e-6)
     motion = outline_motion(section, outline_edges(done.space.mesh))
-    return outline_sensitivity(motion, done.solved, done.entries, done.level), float(done.energy_eV[0])
+    return outline_sensitivity(motion, done.solved, done.minima, done.entries, done.level), float(done.energy_eV[0])
 
 
 def test_along_a_circle() -> None:
@@ -151,3 +173,18 @@ def test_figure_shows_what_was_found() -> None:
     assert first_bar.get_xlabel().startswith("meV")
     one = core_shell_result(outline_sensitivity=OutlineSensitivity(segments, values, None))
     assert len(sensitivity(one).axes) == 2
+    for result in (one, both):
+        assert "alike" not in figure_words(result)
+        alike = tuple(replace(s, valley="L [1-11] [1-1-1]") for s in result.subbands)
+        assert "First level: one of 2 alike valleys is shown" in figure_words(replace(result, subbands=alike))
+
+
+def figure_words(result: Result) -> str:
+    """All words beside the panels, which must lie inside the figure and below its colour bars."""
+    figure = sensitivity(result)
+    figure.canvas.draw()
+    (caption,) = (text for text in figure.texts if "Outwards" in text.get_text())
+    box = caption.get_window_extent()
+    assert box.x0 >= 0 and box.x1 <= figure.bbox.x1 and box.y0 >= 0
+    assert box.y1 <= min(axes.xaxis.label.get_window_extent().y0 for axes in figure.axes)
+    return caption.get_text()

@@ -6,6 +6,7 @@ import csv
 import io
 import json
 import math
+import re
 from dataclasses import replace
 from pathlib import Path
 
@@ -15,9 +16,12 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from tests.synthetic import core_shell_result
+from wiresolve.describe.section import Layer
 from wiresolve.describe.wirefile import read
+from wiresolve.output.sources import from_memory
 from wiresolve.output.tables import (
-    from_memory,
+    WIDTH,
+    by_temperature,
     result_json,
     significant,
     step_table,
@@ -101,8 +105,9 @@ def test_csv_is_the_subbands() -> None:
 def test_spacings_stand_between_levels_in_meV_and_kT() -> None:
     result = core_shell_result(6)
     header, units, *rows = subband_table(result)
-    assert "to the next" in header
-    assert "kT at 77 K" in units
+    assert rows.pop() == "and 1 more temperature, see result.json"
+    assert "spacing" in header
+    assert header.count("in kT at") == units.count(" K") == 2
     # Subbands 2 and 3 are a pair: only the second carries the spacing to level 3.
     pair = [row.split() for row in rows[1:3]]
     gap_meV = 1e3 * (result.energies_eV[3] - result.energies_eV[2])
@@ -141,17 +146,18 @@ def test_more_than_three_temperatures_are_in_the_file_only() -> None:
         verdict=replace(result.verdict, steps=tuple(steps)),
     )
     lines = subband_table(many)
-    assert [part.split(" K")[0] for part in lines[1].split("kT at ")[1:]] == ["4.2", "20", "77"]
-    assert lines[-1] == "and 2 more temperatures, see result.json"
+    assert re.findall(r"([\d.]+) K", lines[1]) == ["4.2", "20"]
+    assert lines[-1] == "and 3 more temperatures, see result.json"
     assert step_table(many)[0].split()[5:] == ["at", "0", "K", "at", "4.2", "K", "at", "20", "K"]
     assert step_table(many)[-1] == "and 3 more temperatures, see result.json"
-    assert not [line for line in subband_table(result) if "result.json" in line]
+    two = replace(many, problem=replace(result.problem, carriers=replace(carriers, temperature_K=(0.0, 4.2, 20.0))))
+    assert not [line for line in subband_table(two) if "result.json" in line]
 
 
 def test_a_long_table_is_cut_and_says_so() -> None:
     lines = subband_table(core_shell_result(45))
-    assert len(lines) == 2 + 40 + 1
-    assert lines[-1] == "and 5 more, see subbands.csv"
+    assert len(lines) == 2 + 40 + 2
+    assert lines[-2] == "and 5 more, see subbands.csv"
     assert len(subbands_csv(core_shell_result(45)).splitlines()) == 3 + 1 + 45
 
 
@@ -180,9 +186,54 @@ def test_the_summary_tells_each_step_and_what_is_from_memory() -> None:
         assert row.endswith(f"{step['kind']} {math.floor(100 * step['contrast'])} %")
         assert row.split()[0] == str(step["level"])
     assert [float(row.split()[5]) for row in rows[2:]] == [1, 3, 5, 6]
-    # The gap and the valence edge of GaAs, and all that is known of its X and L valleys, stand there from memory.
-    expected = "GaAs: zone centre gap, all of X, all of L, valence edge, conduction edge;"
-    assert from_memory(result).startswith(expected)
+    # The gap and the valence edge of GaAs stand there from memory; so do its X and L valleys, which have no subband.
+    assert from_memory(result) == "GaAs: zone centre gap, valence edge, conduction edge"
     assert "permittivity" not in from_memory(result)
     assert "Al0.3Ga0.7As: zone centre gap" in from_memory(result, "conflict")
     assert "Values from memory" in summary(result)
+
+
+def test_only_values_that_were_used_are_named() -> None:
+    """Silicon alone has its edge at zero: its average valence energy, from memory, sets nothing. In an oxide that
+    admits carriers affinities set the step, and germanium beside silicon needs the average of both."""
+    problem = read(GEOMETRIES / "silicon_wire.toml")
+    few = replace(problem, accuracy=replace(problem.accuracy, subbands=2))
+    alone = solve(few)
+    assert "average" not in from_memory(alone) + from_memory(alone, "conflict")
+    assert "conduction edge" not in from_memory(alone)
+    for other, wanted, needless in (("SiO2", "affinity", "average"), ("Si0.7Ge0.3", "average", "affinity")):
+        section = replace(problem.section, layers=(Layer(2.0, other),))
+        both = solve(replace(few, section=section))
+        said = " ".join(from_memory(both, provenance) for provenance in ("memory", "conflict", "checked", "derived"))
+        assert (wanted in said, needless in said) == (True, False), said
+        assert all(kind not in said for kind in ("zone centre", "all of X", "all of L"))
+
+
+def test_a_wide_table_loses_what_matters_least_and_says_so() -> None:
+    result = core_shell_result(3)
+    named = [replace(s, valley="Delta [100] [010]", bound=True, layer="core") for s in result.subbands]
+    wide = subband_table(replace(result, subbands=tuple(named)))
+    assert max(len(line) for line in wide) <= WIDTH
+    assert re.findall(r"([\d.]+) K", wide[1]) == ["4.2"]
+    assert wide[-1] == "and 2 more temperatures, see result.json"
+    # Layers that differ are worth more than a second temperature; here levels and subbands differ, too.
+    apart = [replace(s, layer=name) for s, name in zip(named, ("core", "layer 1", "core"), strict=True)]
+    lines = subband_table(replace(result, subbands=tuple(apart)))
+    assert "layer 1 (Al0.3Ga0.7As)" in lines[3]
+    assert re.findall(r"([\d.]+) K", lines[1]) == ["4.2"]
+    same = [replace(s, level=s.index) for s in named]
+    lines = subband_table(replace(result, subbands=tuple(same)))
+    assert "all in core (GaAs)" in lines
+    assert lines[1].split()[:2] == ["subband", "meV"]
+    assert re.findall(r"([\d.]+) K", lines[1]) == ["4.2", "77"]
+
+
+def test_each_temperature_has_a_line() -> None:
+    text = "One channel. It opens. At 4.2 K (kT = 1): yes. At 300 K (kT = 26): no. Effective dimension 1. At 5 nm: so."
+    assert by_temperature(text).splitlines() == [
+        "One channel. It opens.",
+        "At 4.2 K (kT = 1): yes.",
+        "At 300 K (kT = 26): no.",
+        "Effective dimension 1. At 5 nm: so.",
+    ]
+    assert by_temperature(text).replace("\n", " ") == text

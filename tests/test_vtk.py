@@ -12,7 +12,13 @@ from vtkmodules.vtkCommonCore import vtkIdList
 from vtkmodules.vtkCommonDataModel import VTK_LAGRANGE_TRIANGLE
 
 from tests.synthetic import CORE_NM, RADIUS_NM, core_shell_result, rectangle_result
+from wiresolve.describe.problem import Accuracy, Carriers, Orientation, Problem
+from wiresolve.describe.section import Section
+from wiresolve.describe.shapes import Rectangle
 from wiresolve.output.vtk import write_modes, write_section
+from wiresolve.solve import solve
+
+EDGE = "band_edge_of_first_valleys_eV"
 
 
 def integrals(grid: pyvista.UnstructuredGrid, values: np.ndarray) -> np.ndarray:
@@ -78,15 +84,19 @@ def test_names_and_fields_of_the_file(tmp_path: Path) -> None:
         f"{kind}_{i:02d}_{unit}" for i in range(1, 11) for kind, unit in (("psi", "per_nm"), ("density", "per_nm2"))
     ]
     assert set(grid.point_data.keys()) == set(wanted)
-    assert set(grid.cell_data.keys()) == {"layer", "material", "mass_m0", "band_edge_eV"}
+    assert set(grid.cell_data.keys()) == {"layer", "material", "axial_mass_of_first_valleys_m0", EDGE}
     assert grid.field_data["energy_eV"] == pytest.approx(result.energies_eV, rel=1e-15)
     assert grid.field_data["error_eV"] == pytest.approx(result.errors_eV, rel=1e-15)
     assert grid.field_data["level"].tolist() == [s.level for s in result.subbands]
+    assert grid.field_data["valley"].tolist() == ["zone centre"] * 10
+    assert grid.field_data["spin_degeneracy"].tolist() == [2] * 10
+    assert grid.field_data["valley_degeneracy"].tolist() == [1] * 10
+    assert grid.field_data["axial_mass_m0"].tolist() == [s.axial_mass for s in result.subbands]
     assert grid.field_data["input_digest"].tolist() == [result.problem.digest]
     materials = grid.field_data["material_names"].tolist()
     barrier = grid.cell_data["material"] == materials.index("Al0.3Ga0.7As")
-    assert np.all(grid.cell_data["band_edge_eV"][barrier] == 0.3)
-    assert np.all(grid.cell_data["band_edge_eV"][~barrier] == 0.0)
+    assert np.all(grid.cell_data[EDGE][barrier] == 0.3)
+    assert np.all(grid.cell_data[EDGE][~barrier] == 0.0)
     assert np.all(grid.points[:, 2] == 0)
     assert grid.points[:, :2] == pytest.approx(result.mesh.points, abs=1e-12)
 
@@ -105,3 +115,22 @@ def test_a_mesh_alone(tmp_path: Path) -> None:
     assert grid.n_cells == len(result.mesh.cells)
     assert grid.point_data.keys() == []
     assert np.array_equal(grid.cell_data["layer"], result.mesh.region)
+
+
+def test_cells_have_the_mass_of_the_valleys_that_carry_the_first_subband(tmp_path: Path) -> None:
+    """Of silicon along [001], 4 nm wide and 30 nm high, up = [100]: the first subband is of the [010] valleys, whose
+    heavy axis (0.916 m0) lies across the width, and its axial mass is the light one (0.19 m0)."""
+    problem = Problem(
+        title="Sheet on its edge",
+        section=Section(Rectangle(4.0, 30.0), "Si"),
+        orientation=Orientation(axis=(0, 0, 1), up=(1, 0, 0)),
+        carriers=Carriers(temperature_K=(300.0,)),
+        accuracy=Accuracy(subbands=3, energy_eV=1e-3),
+    )
+    result = solve(problem)
+    write_modes(result, tmp_path / "modes.vtu")
+    grid = pyvista.read(tmp_path / "modes.vtu")
+    assert grid.field_data["valley"].tolist()[0] == "Delta [010]"
+    assert grid.cell_data["axial_mass_of_first_valleys_m0"] == pytest.approx(0.19, abs=0.002)
+    assert grid.cell_data[EDGE] == pytest.approx(0.0, abs=1e-12)
+    assert grid.field_data["valley_degeneracy"].tolist()[0] == 2

@@ -27,6 +27,7 @@ from wiresolve.physics.sensitivity import (
     merged,
     outline_sensitivity,
     sensitivities,
+    sensitivities_at_minima,
 )
 from wiresolve.physics.solved import levels
 from wiresolve.physics.spectrum import Spectrum
@@ -96,12 +97,18 @@ def _sensitivities(
     """How every listed energy moves with each dimension, mass and band edge, and the first two with each outline."""
     motion = outline_motion(wire.problem.section, outline_edges(certified.space.mesh))
     groups = {group.label: group for group in wire.groups}
-    each = [
-        sensitivities(motion, solved, wire.materials, groups[channel.label], n) if n else ()
-        for channel, solved, n in zip(certified.channels, certified.solved, certified.listed, strict=True)
-    ]
+    each = []
+    for channel, solved, low, n in zip(
+        certified.channels, certified.solved, certified.minima, certified.listed, strict=True
+    ):
+        materials, group = wire.materials, groups[channel.label]
+        if n and low is not None:
+            each.append(sensitivities_at_minima(motion, low, materials, group))
+        else:
+            each.append(sensitivities(motion, solved, materials, group, n) if n else ())
     level = levels(found.energy_eV, found.bar_eV)
-    return merged(each, found.entries), outline_sensitivity(motion, certified.solved, found.entries, level)
+    outlines = outline_sensitivity(motion, certified.solved, certified.minima, found.entries, level)
+    return merged(each, found.entries), outlines
 
 
 def _assembled(
@@ -123,7 +130,7 @@ def _assembled(
     level = levels(found.energy_eV, found.bar_eV)
     said = (
         carrying.sentence(found, certified),
-        spread.sentence(problem.section, moved[0], level, temperatures[0]),
+        spread.sentence(problem.section, moved[0], level, temperatures[0], float(outcome.above_edge_eV[0])),
         *remarked.said,
     )
     judged = verdict.judge(spectrum, temperatures, fermi, (text for text in said if text))
@@ -137,7 +144,7 @@ def _assembled(
         problem=problem,
         mesh=mesh,
         modes=points,
-        cell_fields=_cell_fields(wire, certified),
+        cell_fields=_cell_fields(wire, certified, found.valley[0]),
         subbands=subbands,
         spectrum=spectrum,
         summary=MeshSummary(
@@ -193,15 +200,18 @@ def _subbands(
     return tuple(listed)
 
 
-def _cell_fields(wire: Wire, certified: Certified) -> dict[str, Array]:
-    """The axial mass and the band edge of the lowest valleys, by cell."""
-    mesh, group = certified.space.mesh, wire.groups[0]
+def _cell_fields(wire: Wire, certified: Certified, valleys: str) -> dict[str, Array]:
+    """The axial mass and the band edge of the first subband's group of valleys, by cell; nan where it has none."""
+    mesh, group = certified.space.mesh, next(g for g in wire.groups if g.label == valleys)
     mass, edge = [], []
     for region in mesh.regions:
         known = region.carriers and region.material in group.inverse_mass
         mass.append(1 / group.inverse_mass[region.material][2, 2] if known else np.nan)
         edge.append(wire.edge_eV(region.material, region.offset_eV, group) if known else np.nan)
-    return {"mass_m0": np.array(mass)[mesh.region], "band_edge_eV": np.array(edge)[mesh.region]}
+    return {
+        "axial_mass_of_first_valleys_m0": np.array(mass)[mesh.region],
+        "band_edge_of_first_valleys_eV": np.array(edge)[mesh.region],
+    }
 
 
 def _dispersion(found: Listing, spectrum: Spectrum, certified: Certified) -> Dispersion:

@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
 COLUMN_MM, PAGE_MM = 86.0, 178.0
+_DASHES: tuple[Any, ...] = ("-", (0, (4, 1.4)), (0, (1.4, 0.9)), (0, (5, 1.2, 1, 1.2)), (0, (8, 2)), (0, (2, 2)))
 CYCLE = ("#0072B2", "#E69F00", "#009E73", "#CC79A7", "#56B4E9", "#D55E00", "#F0E442", "#000000")
 INK, FAINT = "#262626", "#8c8c8c"
 _DPI = 200
@@ -95,6 +96,11 @@ def line_style(number: int) -> tuple[str, Any]:
     """Colour and line style of the line of that number (from 0): once the colours are used up, the dashes change."""
     rounds, colour = divmod(number, len(CYCLE))
     return CYCLE[colour], "-" if rounds == 0 else (0, (5, 1.5) + (1, 1.5) * (rounds - 1))
+
+
+def dashes_of(labels: Sequence[str]) -> dict[str, Any]:
+    """A line style for each group of valleys, in order of appearance; drawn full where there is only one."""
+    return {label: _DASHES[n % len(_DASHES)] for n, label in enumerate(dict.fromkeys(labels))}
 
 
 def canvas(width_mm: float, height_mm: float) -> tuple[Figure, Callable[[float, float, float, float], Axes]]:

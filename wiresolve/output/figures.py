@@ -21,6 +21,7 @@ from matplotlib.patches import PathPatch, Rectangle
 from matplotlib.path import Path as Outline
 from matplotlib.ticker import LogLocator, MaxNLocator, NullLocator
 
+from wiresolve.describe.valley import ZONE_CENTRE
 from wiresolve.output import tables
 from wiresolve.output.canvas import (
     COLUMN_MM,
@@ -30,6 +31,7 @@ from wiresolve.output.canvas import (
     bare,
     canvas,
     coloured,
+    dashes_of,
     extent_of,
     label_lines,
     line_style,
@@ -46,6 +48,7 @@ from wiresolve.output.canvas import (
 )
 from wiresolve.output.outline_figure import sensitivity
 from wiresolve.output.raster import edges, outermost, outlines, raster
+from wiresolve.output.valley_names import members, short_valleys
 from wiresolve.result import Result, Subband
 from wiresolve.units import CONDUCTANCE_QUANTUM_SIEMENS, KB
 
@@ -144,18 +147,28 @@ def section(result: Result) -> Figure:
 
 @styled
 def modes(result: Result) -> Figure:
-    """The envelope functions in a grid, each on its own scale, white where they vanish; at most the first 20."""
+    """The envelope functions in a grid, each on its own scale, white where they vanish; at most the first 20.
+
+    Valleys are named where any subband is not of the zone centre.
+    """
     shown = result.subbands[:MOST_MODES]
     extent = extent_of(result.mesh.points[_where_seen(result)])
     wide, high = extent[1] - extent[0], extent[3] - extent[2]
     columns, panel = panels(len(shown), wide / high)
     rows = math.ceil(len(shown) / columns)
-    pitch_x, pitch_y = (PAGE_MM - 6) / columns, panel * high / wide + 10.5
-    height = rows * pitch_y + (5 if len(shown) < len(result.subbands) else 1)
+    named = any(s.valley != ZONE_CENTRE for s in result.subbands)
+    above = 13.0 if named else 9.5
+    notes = [f"first {len(shown)} of {len(result.subbands)} subbands"] if len(shown) < len(result.subbands) else []
+    if any(len(members(s.valley)[1]) > 1 for s in shown):
+        notes.append("of valleys that are alike one is shown")
+    pitch_x, pitch_y = (PAGE_MM - 6) / columns, panel * high / wide + above + 1
+    height = rows * pitch_y + (5 if notes else 1)
     figure, rect = canvas(PAGE_MM, height)
     found = edges(result.mesh)
     lines = list(outlines(result.mesh, found))
     titles = [f"subband {s.index}, level {s.level}\n{_energy(s)}" for s in shown]
+    if named:
+        titles = [f"{title}\n{short_valleys(s.valley)}" for title, s in zip(titles, shown, strict=True)]
     # A letter is about 0.22 mm wide for each point of its size.
     letters = max(len(line) for title in titles for line in title.splitlines())
     size = min(7.0, (pitch_x - 2.0) / (0.22 * letters))
@@ -163,29 +176,34 @@ def modes(result: Result) -> Figure:
     for place in range(len(shown)):
         row, column = divmod(place, columns)
         at_x = 3 + column * pitch_x + (pitch_x - panel) / 2
-        axes = rect(at_x, height - 9.5 - row * pitch_y - panel * high / wide, panel, panel * high / wide)
+        axes = rect(at_x, height - above - row * pitch_y - panel * high / wide, panel, panel * high / wide)
         bare(axes, extent)
         picture = coloured(pixels.image(result.modes[:, place]))
         axes.imshow(picture, origin="lower", extent=pixels.extent, interpolation="nearest", aspect="equal", zorder=1)
         axes.add_collection(LineCollection(lines, colors=INK, linewidths=0.45, zorder=2))
         bare(axes, extent)
         axes.set_title(titles[place], fontsize=size, pad=2.5, linespacing=1.25)
-    if len(shown) < len(result.subbands):
-        note = f"first {len(shown)} of {len(result.subbands)} subbands"
-        figure.text(0.5, 1.5 / height, note, ha="center", fontsize=7)
+    if notes:
+        figure.text(0.5, 1.5 / height, "; ".join(notes), ha="center", fontsize=7)
     return figure
 
 
 @styled
 def levels(result: Result) -> Figure:
-    """Levels with their bars on the left; spacing to the next level and bar against kT on the right."""
+    """Levels with their bars on the left; spacing to the next level and bar against kT on the right.
+
+    Where several groups of valleys are listed each has a line style.
+    """
     groups = tables.levels(result.subbands)
     energies = 1e3 * np.array([tables.level_energy_eV(g) for g in groups])
     bars = 1e3 * np.array([max(s.error_eV for s in g) for g in groups])
     warm = [t for t in result.problem.carriers.temperature_K if t > 0]
     thermal = [1e3 * KB * t for t in warm]
     high = min(128.0, max(56.0, 4.6 * min(len(groups), MOST_LABELS)))
-    below = 16.0 + 4.0 * math.ceil((len(warm) + 2) / 6)
+    dashes = dashes_of([s.valley for s in result.subbands])
+    # Names of valleys are long.
+    across = 6 if len(dashes) < 2 else 4
+    below = 16.0 + 4.0 * math.ceil((len(warm) + 2 + (len(dashes) if len(dashes) > 1 else 0)) / across)
     figure, rect = canvas(PAGE_MM, high + below + 8)
     margin = 0.07 * (np.ptp(energies) or max(abs(energies[0]), 1.0))
     span = (energies.min() - margin, energies.max() + margin)
@@ -194,9 +212,10 @@ def levels(result: Result) -> Figure:
         colour = CYCLE[0] if len(group) == 1 else CYCLE[5]
         count, gap = (len(group), 0.12) if len(group) <= 6 else (1, 0.0)
         width = (1 - gap * (count - 1)) / count
-        for start in np.arange(count) * (width + gap):
+        for start, entry in zip(np.arange(count) * (width + gap), group, strict=False):
             ladder.add_patch(Rectangle((start, energy - bar), width, 2 * bar, fc=colour, alpha=0.25, lw=0))
-            ladder.plot([start, start + width], [energy, energy], color=colour, lw=1.6, solid_capstyle="butt")
+            look = {"color": colour, "ls": dashes[entry.valley], "lw": 1.6, "solid_capstyle": "butt"}
+            ladder.plot([start, start + width], [energy, energy], dash_capstyle="butt", **look)
     ladder.set_ylim(*span)
     room = _thermal_bars(ladder, float(energies[0]), thermal, warm)
     ladder.set_xlim(-room, 2.25)
@@ -214,7 +233,10 @@ def levels(result: Result) -> Figure:
     signs += [Line2D([], [], color=INK, marker="|", ls="", ms=6, mew=1.2, label="error bar")]
     for number, temperature in enumerate(warm):
         signs.append(Line2D([], [], color=thermal_colour(number), lw=2, label=f"kT at {temperature:g} K"))
-    figure.legend(handles=signs, loc="lower center", ncols=6, handlelength=1.3, columnspacing=1.4)
+    if len(dashes) > 1:
+        signs += [Line2D([], [], color=INK, ls=dash, lw=1.4, label=short_valleys(v)) for v, dash in dashes.items()]
+    length = 1.3 if len(dashes) < 2 else 2.6
+    figure.legend(handles=signs, loc="lower center", ncols=across, handlelength=length, columnspacing=1.4)
     return figure
 
 
@@ -283,11 +305,14 @@ def density_of_states(result: Result) -> Figure:
 def dispersion(result: Result) -> Figure:
     """Energy along the wire's axis, a line a subband, mirrored where the table starts at k = 0.
 
-    Where the table reaches so far that the levels would run together, only the part around k = 0 is shown.
+    Where several groups of valleys are listed each has a line style. Where the table reaches so far that the levels
+    would run together, only the part around k = 0 is shown.
     """
     data = result.dispersion
-    figure, rect = canvas(COLUMN_MM, 70)
-    axes = rect(15, 11, COLUMN_MM - 25, 70 - 17)
+    dashes = dashes_of([s.valley for s in result.subbands])
+    below = 11 + (4.0 * math.ceil(len(dashes) / 2) + 1 if len(dashes) > 1 else 0)
+    figure, rect = canvas(COLUMN_MM, below + 62)
+    axes = rect(15, below, COLUMN_MM - 25, 53)
     k, energy = data.k_per_nm, 1e3 * data.energy_eV
     far = np.flatnonzero(energy[0] - energy[0, 0] > 1.6 * np.ptp(energy[:, 0]))
     if len(far) and np.ptp(energy[:, 0]) > 0:
@@ -296,8 +321,8 @@ def dispersion(result: Result) -> Figure:
     if k.size and k[0] == 0:
         k, energy = np.concatenate([-k[:0:-1], k]), np.concatenate([energy[:, :0:-1], energy], axis=1)
     for subband, line in zip(result.subbands, energy, strict=True):
-        colour, dashes = line_style(subband.level - 1)
-        axes.plot(k, line, color=colour, ls=dashes, lw=1.0)
+        colour, dash = line_style(subband.level - 1)
+        axes.plot(k, line, color=colour, ls=dash if len(dashes) < 2 else dashes[subband.valley], lw=1.0)
     axes.set_xlim(k[0], k[-1])
     low, high = float(energy.min()), float(energy.max())
     axes.set_ylim(*_with_fermi(result, low - 0.03 * (high - low), high + 0.03 * (high - low)))
@@ -313,8 +338,13 @@ def dispersion(result: Result) -> Figure:
     axes.xaxis.set_major_locator(MaxNLocator(5))
     axes.set_xlabel("Wave number along the wire (1/nm)")
     axes.set_ylabel("Energy (meV)")
-    text = f"Levels numbered; error of E(k) below {small_energy(data.error_bound_eV)}"
-    axes.set_title(text, loc="left", pad=5, fontsize=7)
+    bound = small_energy(data.error_bound_eV)
+    axes.set_title(
+        f"Levels numbered; beyond the bars of the minima,\nerror of E(k) below {bound}", loc="left", pad=4, fontsize=6.5
+    )
+    if len(dashes) > 1:
+        signs = [Line2D([], [], color=INK, ls=dash, lw=1.0, label=short_valleys(v)) for v, dash in dashes.items()]
+        figure.legend(handles=signs, loc="lower center", ncols=2, handlelength=2.6, columnspacing=1.4)
     return figure
 
 

@@ -11,6 +11,7 @@ from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 
 from wiresolve.output.canvas import COLUMN_MM, ENDS, INK, PAGE_MM, canvas, extent_of, styled
+from wiresolve.output.valley_names import members
 from wiresolve.result import Result
 
 if TYPE_CHECKING:
@@ -39,7 +40,16 @@ def sensitivity(result: Result) -> Figure:
     slot_mm = COLUMN_MM if len(fields) == 1 else PAGE_MM / len(fields)
     panel = min(slot_mm - 20, 78 * aspect)
     high = panel / aspect
-    below, above = 28.5, 6.0
+    notes = ["Outwards means away from the piece inside the line", "at a wall, away from the carriers"]
+    notes = ["; ".join(notes)] if len(fields) > 1 else [notes[0] + ";", notes[1]]
+    alike = len(members(result.subbands[0].valley)[1])
+    if alike > 1:
+        shown = [
+            f"First level: one of {alike} alike valleys is shown;",
+            "its images, mirrored or turned, lean their own way",
+        ]
+        notes += [" ".join(shown)] if len(fields) > 1 else shown
+    below, above = 25.5 + 2.6 * len(notes), 6.0
     height = above + high + below
     figure, rect = canvas(slot_mm * len(fields), height)
     for place, (title, values) in enumerate(fields):
@@ -53,11 +63,8 @@ def sensitivity(result: Result) -> Figure:
         figure.text(
             (slot + slot_mm / 2 + 4) / (slot_mm * len(fields)), 1 - 3.4 / height, title, ha="center", va="center"
         )
-        _colour_bar(figure, rect(slot + 18, 14, slot_mm - 28, 2.6), *top)
-    note = "Outwards: walls away from the carriers, interfaces away from the piece that they bound"
-    if len(fields) == 1:
-        note = note.replace(", ", ",\n")
-    figure.text(0.5, 1.2 / height, note, ha="center", va="bottom", fontsize=6)
+        _colour_bar(figure, rect(slot + 18, below - 14.5, slot_mm - 28, 2.6), *top)
+    figure.text(0.5, 1.2 / height, "\n".join(notes), ha="center", va="bottom", fontsize=6)
     return figure
 
 

@@ -15,7 +15,9 @@ from typing import Any
 import numpy as np
 
 from wiresolve.describe.valley import ZONE_CENTRE
+from wiresolve.output.sources import from_memory
 from wiresolve.physics.sensitivity import PER_LENGTH, Sensitivity
+from wiresolve.physics.spread import grown
 from wiresolve.result import Result, Subband
 from wiresolve.units import KB
 
@@ -203,49 +205,71 @@ def subband_table(result: Result) -> list[str]:
 
     At most the first `MOST_ROWS` are shown. The spacing to the next level stands at a level's last entry, in meV and
     in kT of the first `MOST_TEMPERATURES` carrier temperatures; the last level of the list has none. A layer is shown
-    with its material.
+    with its material. What is too wide for `WIDTH` loses columns: third temperatures, then what says the same in every
+    line, then all temperatures but the first.
     """
+    columns = _subband_columns(result)
     warm = [t for t in result.problem.carriers.temperature_K if t > 0]
-    temperatures = warm[:MOST_TEMPERATURES]
+    layers = {cell for cell in columns["layer"][2:] if cell}
+    notes: list[str] = []
+    for name in (*(f"kT {n}" for n in range(MOST_TEMPERATURES, 2, -1)), "layer", "level", "kT 2"):
+        if _width({key: cells[: MOST_ROWS + 2] for key, cells in columns.items()}) <= WIDTH:
+            break
+        same = {"layer": len(layers) == 1, "level": columns.get("level", [])[2:] == columns["subband"][2:]}
+        if name not in columns or not same.get(name, True):
+            continue
+        del columns[name]
+        if name == "layer":
+            notes.append(f"all in {layers.pop()}")
+    left = [n for n, name in enumerate(columns) if name in ("layer", "valleys")]
+    lines = aligned(list(zip(*columns.values(), strict=True))[: MOST_ROWS + 2], left=left)
+    hidden = len(result.subbands) - MOST_ROWS
+    if hidden > 0:
+        notes.append(f"and {hidden} more, see subbands.csv")
+    if more := _left_out(warm, sum(name.startswith("kT") for name in columns)):
+        notes.append(more)
+    return lines + notes
+
+
+def _width(columns: Mapping[str, Sequence[str]]) -> int:
+    return max(map(len, aligned(list(zip(*columns.values(), strict=True)))))
+
+
+def _subband_columns(result: Result) -> dict[str, list[str]]:
+    """The columns by name, two lines of heading first."""
+    temperatures = [t for t in result.problem.carriers.temperature_K if t > 0][:MOST_TEMPERATURES]
     material = {region.name: region.material for region in result.mesh.regions}
-    asked_bound = any(s.bound is not None for s in result.subbands)
-    head = ["", "", "energy", "to the next", *("to the next" for _ in temperatures), "axial", "", "spin x"]
-    unit = ["subband", "level", "meV", "meV", *(f"kT at {t:g} K" for t in temperatures), "mass", "layer", "valley"]
-    if asked_bound:
-        head, unit = [*head, ""], [*unit, "bound"]
-    several = any(s.valley != ZONE_CENTRE for s in result.subbands)
-    if several:
-        head, unit = [*head, ""], [*unit, "valleys"]
-    rows = [head, unit]
+    heads = {"subband": ("", "subband"), "level": ("", "level"), "energy": ("energy", "meV")}
+    heads["spacing"] = ("spacing", "meV")
+    heads |= {f"kT {n}": ("in kT at", f"{t:g} K") for n, t in enumerate(temperatures, 1)}
+    heads |= {"mass": ("axial", "mass"), "layer": ("", "layer"), "states": ("spin x", "valleys")}
+    if any(s.bound is not None for s in result.subbands):
+        heads["bound"] = ("", "bound")
+    if any(s.valley != ZONE_CENTRE for s in result.subbands):
+        heads["valleys"] = ("of the", "valleys")
+    rows: dict[str, list[str]] = {name: list(head) for name, head in heads.items()}
     energies = iter(_on_the_point([with_bar(1e3 * s.energy_eV, 1e3 * s.error_eV) for s in result.subbands]))
     groups = levels(result.subbands)
     for number, group in enumerate(groups):
         spacing = level_energy_eV(groups[number + 1]) - level_energy_eV(group) if number + 1 < len(groups) else None
         for s in group:
             shown = spacing if s is group[-1] else None
-            row = [str(s.index), str(s.level), next(energies)]
-            row.append("" if shown is None else significant(1e3 * shown, 4))
-            row += ["" if shown is None else significant(shown / (KB * t), 3) for t in temperatures]
-            row.append("none" if s.axial_mass is None else f"{s.axial_mass:.4f}")
-            layer = f"{s.layer} ({material[s.layer]})" if s.layer in material else s.layer
-            row += [layer, f"{s.spin_degeneracy} x {s.valley_degeneracy}"]
-            if asked_bound:
-                row.append({True: "yes", False: "no", None: ""}[s.bound])
-            if several:
-                row.append(s.valley)
-            rows.append(row)
-    texts = {5 + len(temperatures), len(unit) - 1} if several else {5 + len(temperatures)}
-    lines = aligned(rows[: MOST_ROWS + 2], left=texts)
-    hidden = len(result.subbands) - MOST_ROWS
-    if hidden > 0:
-        lines.append(f"and {hidden} more, see subbands.csv")
-    if more := _left_out(warm):
-        lines.append(more)
-    return lines
+            row = {"subband": str(s.index), "level": str(s.level), "energy": next(energies)}
+            row["spacing"] = "" if shown is None else significant(1e3 * shown, 4)
+            for n, t in enumerate(temperatures, 1):
+                row[f"kT {n}"] = "" if shown is None else significant(shown / (KB * t), 3)
+            row["mass"] = "none" if s.axial_mass is None else f"{s.axial_mass:.4f}"
+            row["layer"] = f"{s.layer} ({material[s.layer]})" if s.layer in material else s.layer
+            row["states"] = f"{s.spin_degeneracy} x {s.valley_degeneracy}"
+            row["bound"] = {True: "yes", False: "no", None: ""}[s.bound]
+            row["valleys"] = s.valley
+            for name in rows:
+                rows[name].append(row[name])
+    return rows
 
 
-def _left_out(temperatures: Sequence[float]) -> str:
-    count = len(temperatures) - MOST_TEMPERATURES
+def _left_out(temperatures: Sequence[float], shown: int = MOST_TEMPERATURES) -> str:
+    count = len(temperatures) - shown
     plural = "" if count == 1 else "s"
     return f"and {count} more temperature{plural}, see result.json" if count > 0 else ""
 
@@ -284,12 +308,14 @@ def sensitivity_table(result: Result) -> list[str]:
     """How the first `MOST_LEVELS` levels move with the dimensions, as aligned lines; empty where none is known.
 
     The `MOST_DIMENSIONS` that move them most are shown, in meV for each nm. A level that the dimension splits has both
-    of its ends.
+    of its ends. The growth of an outline that says what a dimension says is left out.
     """
     numbers = [s.level for s in result.subbands]
     level = np.array(numbers) - min(numbers)
     shown = np.unique(level)[:MOST_LEVELS]
     found = _by_length(result)
+    given = [s.values for s in found if not s.of.startswith("growth of ")]
+    found = [s for s in found if not s.of.startswith("growth of ") or not any(_alike(s.values, v) for v in given)]
     size = [float(np.abs(s.values[level <= shown[-1]]).max()) for s in found]
     kept = [n for n in range(len(found)) if 1e3 * size[n] >= _LEAST_meV_per_nm]
     kept = sorted(sorted(kept, key=lambda n: -size[n])[:MOST_DIMENSIONS])
@@ -298,10 +324,20 @@ def sensitivity_table(result: Result) -> list[str]:
     rows = [["meV for each nm of", *(f"level {n + 1}" for n in shown)]]
     for n in kept:
         ends = [1e3 * found[n].values[level == number][[0, -1]] for number in shown]
-        rows.append([found[n].of.removeprefix("section."), *(_range(float(a), float(b)) for a, b in ends)])
+        rows.append([_named(found[n].of), *(_range(float(a), float(b)) for a, b in ends)])
     lines = aligned(rows, left={0})
     hidden = len(found) - len(kept)
     return [*lines, f"and {hidden} more, see result.json"] if hidden else lines
+
+
+def _alike(one: Any, other: Any) -> bool:
+    """Motions that agree to more digits than are printed."""
+    return bool(np.allclose(one, other, rtol=1e-4, atol=1e-7))
+
+
+def _named(of: str) -> str:
+    """A dimension as the wire file names it; groups of an imported mesh are called so."""
+    return grown(of) if of.startswith("growth of ") else of.removeprefix("section.")
 
 
 def _range(low: float, high: float) -> str:
@@ -311,22 +347,10 @@ def _range(low: float, high: float) -> str:
     return one if abs(high - low) <= 0.01 * max(abs(low), abs(high)) else f"{one} to {other}"
 
 
-def from_memory(result: Result, provenance: str = "memory") -> str:
-    """The material values of a provenance ("memory", "conflict"), by material; empty where there are none.
-
-    A valley of which everything is so is named once.
-    """
-    found = []
-    for material in result.problem.resolved_materials().values():
-        names = {v.quantity.replace("_", " "): v.provenance == provenance for v in material.values}
-        said: dict[str, None] = {}
-        for name in (n for n, unsure in names.items() if unsure):
-            valley = next((v.name for v in material.valleys if name.startswith(f"{v.name} ")), None)
-            whole = valley is not None and all(names[n] for n in names if n.startswith(f"{valley} "))
-            said[f"all of {valley}" if whole else name] = None
-        if said:
-            found.append(f"{material.name}: {', '.join(said)}")
-    return "; ".join(found)
+def by_temperature(text: str) -> str:
+    """The verdict with a line of its own for each temperature, and one for what follows them."""
+    broken = re.sub(r" (?=At [-+.\de]+ K \()", "\n", text)
+    return re.sub(r" (?=Effective dimension )", "\n", broken, count=1)
 
 
 def _on_the_point(texts: Sequence[str]) -> list[str]:
@@ -339,7 +363,7 @@ def _on_the_point(texts: Sequence[str]) -> list[str]:
 def summary(result: Result, folder: str | Path | None = None, status: str = DONE) -> str:
     """What the command line prints: verdict, table, warnings with remedies, and where the files are."""
     lines = [result.problem.title] if result.problem.title else []
-    lines += [*paragraphs(result.verdict.text), "", *subband_table(result), ""]
+    lines += [*paragraphs(by_temperature(result.verdict.text)), "", *subband_table(result), ""]
     if steps := step_table(result):
         lines += [*steps, ""]
     if moved := sensitivity_table(result):

@@ -22,10 +22,12 @@ if TYPE_CHECKING:
 def write_modes(result: Result, path: str | Path) -> None:
     """Write the envelope functions of a result on its curved mesh.
 
-    Point data: `psi_01_per_nm`, ... (normalised to 1 over the section) and `density_01_per_nm2`, ... (their squares
-    at the nodes). Cell data: `layer` and `material` (indices into the field data `layer_names`, `material_names`) and
-    the cell fields of the result (`mass_m0`, `band_edge_eV`). Field data: `energy_eV`, `error_eV`, `level` (one value
-    a subband) and `input_digest`. Coordinates are in nm in the plane z = 0. The same result gives the same bytes.
+    Point data: `psi_01_per_nm`, ... (normalised to 1 over the section) and `density_01_per_nm2`, ... (their squares at
+    the nodes). Cell data: `layer` and `material` (indices into the field data `layer_names`, `material_names`) and the
+    cell fields of the result (`axial_mass_of_first_valleys_m0`, `band_edge_of_first_valleys_eV`). Field data, one value
+    a subband: `energy_eV`, `error_eV`, `level`, `valley` (label of its group), `spin_degeneracy`, `valley_degeneracy`,
+    `axial_mass_m0` (not a number where E(k) starts linearly); and `input_digest`. Coordinates are in nm in the plane z
+    = 0. The same result gives the same bytes.
 
     Raises
     ------
@@ -42,8 +44,12 @@ def write_modes(result: Result, path: str | Path) -> None:
         "energy_eV": result.energies_eV,
         "error_eV": result.errors_eV,
         "level": np.array([s.level for s in result.subbands], dtype=np.int32),
+        "spin_degeneracy": np.array([s.spin_degeneracy for s in result.subbands], dtype=np.int32),
+        "valley_degeneracy": np.array([s.valley_degeneracy for s in result.subbands], dtype=np.int32),
+        "axial_mass_m0": np.array([np.nan if s.axial_mass is None else s.axial_mass for s in result.subbands]),
     }
-    _write(grid(result.mesh, points, result.cell_fields, fields, {"input_digest": [result.problem.digest]}), path)
+    texts = {"valley": [s.valley for s in result.subbands], "input_digest": [result.problem.digest]}
+    _write(grid(result.mesh, points, result.cell_fields, fields, texts), path)
 
 
 def write_section(mesh: Mesh, path: str | Path) -> None:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 
 from wiresolve.describe.material import Material, Note
@@ -16,8 +16,12 @@ ALIKE = 0.15
 """Touching regions whose permittivities differ by no more than this part are one wire for image charges."""
 SHARE = 0.05
 """Part of the first spacing from which a shift by image charges is warned of."""
+SLIGHT = 0.25
+"""What vacuum around the drawing adds is told where it is more than this part: the closed forms are no better."""
 BARE = 0.1
 """Where more than this part of an outline is bare, what else lies farther out is left out."""
+_FAR_eV = 1.0
+"""Energies above this are not told by their size: no band reaches so far."""
 
 
 @dataclass(frozen=True)
@@ -109,6 +113,24 @@ def _weights(jumps: Sequence[Ring]) -> list[float]:
     return found
 
 
+def drawn(jumps: Sequence[Ring]) -> list[Ring]:
+    """The jumps that do not rest on vacuum where nothing is drawn."""
+    return [ring for ring in jumps if ring.bare <= BARE]
+
+
+def shift_in_words(jumps: Sequence[Ring]) -> str:
+    """How far image charges move all levels: by what is drawn, and with vacuum where nothing is drawn."""
+    known, whole = drawn(jumps), signed_meV(image_shift_eV(jumps))
+    by_drawn = image_shift_eV(known)
+    if not any(ring.bare for ring in jumps):
+        return f"about {whole}"
+    if not known or len(known) == len(jumps):
+        return f"about {whole}, with vacuum where nothing is drawn"
+    if abs(image_shift_eV(jumps) - by_drawn) <= SLIGHT * abs(by_drawn):
+        return f"about {signed_meV(by_drawn)}"
+    return f"about {signed_meV(by_drawn)}, or {whole} with vacuum where nothing is drawn"
+
+
 def on_image_charges(
     jumps: Sequence[Ring], state_radius_nm: float, spacing_eV: float | None, accuracy_eV: float
 ) -> list[Note]:
@@ -117,22 +139,32 @@ def on_image_charges(
     Of jumps that are drawn: above the accuracy and a twentieth of the first spacing. Where vacuum has to be assumed:
     above the whole spacing, since a guess must be large to be worth a warning.
     """
-    drawn = [ring for ring in jumps if ring.bare <= BARE]
     spacing = spacing_eV or 0.0
-    for some, least in ((drawn, SHARE * spacing), (jumps, spacing)):
-        shift = image_shift_eV(some)
-        if abs(shift) > max(accuracy_eV, least):
+    for some, least in ((drawn(jumps), SHARE * spacing), (list(jumps), spacing)):
+        if abs(image_shift_eV(some)) > max(accuracy_eV, least):
             break
     else:
         return []
-    ring = max(some, key=lambda r: abs(r.inside - r.outside))
-    verb = "falls" if ring.outside < ring.inside else "rises"
-    assumed = ", vacuum being assumed where nothing is drawn" if ring.bare > 0 else ""
-    wider = spacing_shift_eV(some, state_radius_nm)
-    around = f"mean around the wire{assumed}"
-    text = f"the permittivity {verb} from {ring.inside:.3g} to {ring.outside:.3g} ({around}): image"
-    text += f" charges, not modelled, would move all levels by about {signed_meV(shift)} and the first spacing by"
-    text += f" {signed_meV(wider)} (closed form of a round wire of {figures(2 * ring.radius_nm)} nm diameter)"
+    first, *farther = some
+    if farther:
+        # Jumps up and down add to one sum, which a single pair of numbers would contradict.
+        around = ", then ".join(f"{ring.outside:.3g}" for ring in some)
+        text = f"the permittivity is {first.inside:.3g} where the carriers are and, from there outwards, {around}"
+    else:
+        verb = "falls" if first.outside < first.inside else "rises"
+        text = (
+            f"the permittivity {verb} from {first.inside:.3g} where the carriers are to {first.outside:.3g} around it"
+        )
+    form = "sum of the closed forms" if farther else "closed form"
+    wider = signed_meV(spacing_shift_eV(some, state_radius_nm))
+    text += (
+        f" (means along the outlines): image charges, not modelled, would move all levels by {shift_in_words(jumps)}"
+    )
+    if "vacuum" in shift_in_words(jumps) and len(some) < len(jumps):
+        form = f"by what is drawn; {form}"
+    sizes = " and ".join(figures(2 * ring.radius_nm) for ring in some)
+    text += f", and the first spacing by {wider}"
+    text += f" ({form} of a round wire of {sizes} nm diameter)"
     remedy = "count the shift in offsets and thresholds; draw what surrounds the wire to have it estimated"
     return [("dielectric-mismatch", text, remedy)]
 
@@ -151,18 +183,34 @@ def harmless_density_per_nm(spacing_eV: float, permittivity: float) -> float:
     return spacing_eV / charge_energy_eV(1.0, permittivity)
 
 
-def on_charge(line_density_per_nm: float | None, permittivity: float | None, spacing_eV: float | None) -> list[Note]:
-    """Carriers at the given Fermi level whose own charge would move the states."""
+def on_charge(
+    line_density_per_nm: float | None,
+    permittivity: float | None,
+    spacing_eV: float | None,
+    level_of: Callable[[float], float | None],
+) -> list[Note]:
+    """Carriers at the given Fermi level whose own charge would move the states.
+
+    Parameters
+    ----------
+    level_of : the Fermi level at which the wire holds a line density, None where there is none.
+    """
     if line_density_per_nm is None or permittivity is None or spacing_eV is None:
         return []
     energy = charge_energy_eV(line_density_per_nm, permittivity)
     if energy <= spacing_eV:
         return []
-    text = (
-        f"at this Fermi level the wire holds {line_density_per_nm:.3g} carriers per nm, whose charge bends the bands by"
-    )
-    text += f" e^2 n L^2 / eps = {meV(energy)} (L the radius of equal area), more than the first spacing of"
+    size = f"= {meV(energy)}" if energy <= _FAR_eV else f"of more than {_FAR_eV:g} eV"
+    text = f"at this Fermi level the wire holds {line_density_per_nm:.3g} carriers per nm, whose charge bends the bands"
+    text += f" by e^2 n L^2 / eps {size} (L the radius of equal area), more than the first spacing of"
     text += f" {meV(spacing_eV)}; electrostatics are not modelled"
     limit = harmless_density_per_nm(spacing_eV, permittivity)
-    remedy = f"stay below {limit:.2g} carriers per nm (a lower fermi_level), or give the potential by [potential]"
+    level = level_of(limit)
+    below = "a lower fermi_level" if level is None else f"a fermi_level below {_floored_meV(level)}"
+    remedy = f"stay below {limit:.2g} carriers per nm ({below}), or give the potential by [potential]"
     return [("carrier-charge", text, remedy)]
+
+
+def _floored_meV(energy_eV: float) -> str:
+    """Rounded down to a tenth of a meV, so that what is said holds."""
+    return f"{math.floor(1e4 * energy_eV) / 10:g} meV"

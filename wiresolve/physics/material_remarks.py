@@ -76,12 +76,12 @@ def on_two_bands(above_edge_eV: Array, alpha_per_eV: Array, materials: Sequence[
     if not len(far):
         return []
     first = int(far[0])
-    text = f"from number {first + 1} on energies lie beyond the range of the two-band mass of {materials[first]}: it is"
+    text = f"from number {first + 1} on, energies lie beyond the range of the two-band mass of {materials[first]}:"
     text += (
-        f" {meV(above_edge_eV[first])} above its edge, alpha E = {growth[first]:.2g}, and from {TWO_BAND_RANGE:g} on"
+        f" number {first + 1} lies {meV(above_edge_eV[first])} above its edge (alpha E = {growth[first]:.2g}), and from"
     )
-    text += " bands count that this mass leaves out"
-    remedy = "rely on the lower levels only, or take a larger section; a model of eight bands is not there yet"
+    text += f" {TWO_BAND_RANGE:g} on bands count that this mass leaves out"
+    remedy = "rely on the lower levels only, or take a larger section (there is no eight-band model yet)"
     return [("mass-range", text, remedy)]
 
 
@@ -160,7 +160,7 @@ def on_lattices(
     text += f" of {a.name} ({one}), and strain is not modelled"
     shift = hydrostatic_shift_eV(a, valley, size, kelvin)
     if shift is not None:
-        text += f": if {a.name} took all of it up its conduction edge would move by about {signed_meV(shift)}"
+        text += f": if {a.name} took up all of it, its conduction edge would move by about {signed_meV(shift)}"
     remedy = "shift the edge by an offset, or check that the interface is relaxed"
     return [("lattice-mismatch", text, remedy)]
 

@@ -13,6 +13,7 @@ from wiresolve.bands.valleys import ValleyGroup
 from wiresolve.describe.material import Material, Note
 from wiresolve.describe.mesh_shape import ImportedMesh
 from wiresolve.describe.problem import PARABOLIC
+from wiresolve.errors import InputError
 from wiresolve.fem.mesh import Region
 from wiresolve.physics import boundary_remarks, charge_remarks, material_remarks
 from wiresolve.physics.borders import Borders, borders_of
@@ -21,9 +22,10 @@ from wiresolve.physics.charge_remarks import Ring
 from wiresolve.physics.listing import Listing
 from wiresolve.physics.solved import levels, lowest_energy
 from wiresolve.physics.spectrum import Spectrum
+from wiresolve.physics.statistics import fermi_level
 from wiresolve.physics.subbands import Certified
 from wiresolve.physics.wire import Wire
-from wiresolve.physics.wording import meV, signed_meV
+from wiresolve.physics.wording import meV
 from wiresolve.units import KB
 
 Array = NDArray[np.float64]
@@ -134,6 +136,13 @@ class Outcome:
         """Of where the first level lives."""
         return self.materials[self.places[0]].permittivity
 
+    def fermi_level_at(self, line_density_per_nm: float) -> float | None:
+        """The Fermi level at which the wire holds a line density at the first temperature, None where there is none."""
+        try:
+            return fermi_level(self.spectrum, line_density_per_nm, self.wire.problem.carriers.temperature_K[0])
+        except InputError:
+            return None
+
     @cached_property
     def outer_barrier(self) -> OuterBarrier | None:
         """The outermost layer as each listed state sees it, None where it is a barrier for none of them."""
@@ -187,9 +196,7 @@ def not_modelled(seen: Outcome) -> tuple[str, ...]:
         charge += f" (the carriers' own would, by about the first spacing, at {limit:.2g} per nm)"
     images = "image charges from the jump of permittivity at surfaces and interfaces"
     if seen.rings:
-        shift = signed_meV(charge_remarks.image_shift_eV(seen.rings))
-        guess = ", with vacuum where nothing is drawn" if any(ring.bare for ring in seen.rings) else ""
-        images += f" (they would move all levels by about {shift}{guess})"
+        images += f" (they would move all levels by {charge_remarks.shift_in_words(seen.rings)})"
     unknown = sorted({r.material for r in seen.regions.values() if r.carriers and not _growth(seen, r.material)})
     several = len({r.material for r in seen.regions.values()}) > 1
     return tuple(
@@ -198,7 +205,7 @@ def not_modelled(seen: Outcome) -> tuple[str, ...]:
             (charge, True),
             (images, True),
             ("strain from lattice mismatch", several),
-            (f"a mass that grows with energy: none is known of {', '.join(unknown)}", bool(unknown)),
+            (f"growth of the mass with energy in {', '.join(unknown)}: no value is known", bool(unknown)),
             (
                 "what lies behind a hard wall: behind a real barrier, which is not infinitely high, levels lie lower",
                 seen.wire.problem.section.outside is None,
@@ -378,5 +385,5 @@ def _on_surroundings(seen: Outcome) -> list[Note]:
         *material_remarks.on_lattices(borders, seen.materials, place, seen.groups[0].valley, kelvin),
         *material_remarks.on_surfaces(borders, seen.materials, admitted),
         *charge_remarks.on_image_charges(seen.rings, radius, spacing, seen.accuracy_eV),
-        *charge_remarks.on_charge(seen.line_density_per_nm, seen.permittivity, spacing),
+        *charge_remarks.on_charge(seen.line_density_per_nm, seen.permittivity, spacing, seen.fermi_level_at),
     ]

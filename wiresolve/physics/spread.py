@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping, Sequence
 
 import numpy as np
@@ -19,6 +20,8 @@ _MOST = 2
 """Dimensions that the sentence names."""
 _SMALL_nm = 5.0
 """Dimensions below this are varied by a tenth of a nanometre instead of half of one."""
+_LINEAR = 0.1
+"""Motions above this part of the first level are said to be linear estimates."""
 _MATTERS_eV = 5e-5
 """Motions below this, in both energies, are not worth a word."""
 _WORDS = {"across_flats": "width across flats", "across_corners": "width across corners"}
@@ -38,13 +41,20 @@ def same_width_K(spread_eV: float) -> float:
     return float(abs(spread_eV) / (_WIDTHS * KB))
 
 
-def sentence(section: Section, found: Sequence[Sensitivity], level: Ints, temperature_K: float) -> str:
+def sentence(
+    section: Section,
+    found: Sequence[Sensitivity],
+    level: Ints,
+    temperature_K: float,
+    first_eV: float | None = None,
+) -> str:
     """How far half a nanometre of the dimensions that matter most moves the first level and the first spacing.
 
     Parameters
     ----------
     found : of the listed subbands, whose levels are `level`.
     temperature_K : what the spread that the first dimension's error makes is compared with.
+    first_eV : the first level above its band edge: motions that are no small part of it are said to be linear.
     """
     given = {d.path: d.value_nm for d in dimensions(section) if ".center" not in d.path}
     lengths = {s.of: s for s in found if s.unit == PER_LENGTH}
@@ -58,9 +68,9 @@ def sentence(section: Section, found: Sequence[Sensitivity], level: Ints, temper
     parts = []
     for number, (of, first, spacing) in enumerate(rows[:_MOST]):
         amount = "half a nanometre" if _step(given, of) == 0.5 else "a tenth of a nanometre"
-        words = f"{amount} of {_name(of)} moves the first level by {_meV(first)}"
+        words = f"{amount} of {_name(of)} moves the first level by about {_meV(first)}"
         if spacing is not None:
-            words += f" and the first spacing by {_meV(spacing)}"
+            words += f" and the first spacing by about {_meV(spacing)}"
         parts.append(words if number == 0 else words.replace(" moves the first level", ""))
     said = "; ".join(parts)
     blurs, first, _ = max(rows[:_MOST], key=lambda row: abs(row[1]))
@@ -69,7 +79,11 @@ def sentence(section: Section, found: Sequence[Sensitivity], level: Ints, temper
     if temperature_K > 0:
         beside = f", {'more' if like > temperature_K else 'less'} than the {temperature_K:.3g} K of the carriers"
     spread = f"such a spread of {_name(blurs)} (standard deviation) blurs the first step as {like:.2g} K would{beside}"
-    return f"{said[0].upper()}{said[1:]}; {spread}."
+    large = max(abs(moved) for _, moved, _ in rows[:_MOST])
+    linear = ""
+    if first_eV is not None and large > _LINEAR * abs(first_eV):
+        linear = f" These are linear estimates, and {_part(large, first_eV)} of the first level is no small motion."
+    return f"{said[0].upper()}{said[1:]}; {spread}.{linear}"
 
 
 def _step(given: Mapping[str, float], of: str) -> float:
@@ -82,10 +96,22 @@ def _moves(sensitivity: Sensitivity, level: Ints, step_nm: float) -> tuple[float
     return float(by_level[0]), float(by_level[1] - by_level[0]) if len(by_level) > 1 else None
 
 
+def _part(moved_eV: float, whole_eV: float) -> str:
+    """A part in per cent, or that it is more than all."""
+    part = 100 * abs(moved_eV / whole_eV) if whole_eV else np.inf
+    return f"{part:.2g} %" if part < 99.5 else "more than the whole"
+
+
+def grown(of: str) -> str:
+    """The growth of an outline in words; pieces that only have the name of their group in a mesh are called groups."""
+    piece = of.removeprefix("growth of ")
+    return of if re.fullmatch(r"rim|core|outside|(layer|patch|group) \d+", piece) else f"growth of group {piece}"
+
+
 def _name(of: str) -> str:
     """A path in words: "diameter", "thickness of layer 1", "width of patch 2"."""
     if of.startswith("growth of "):
-        return "outward " + of
+        return "outward " + grown(of)
     *parents, key = of.removeprefix("section.").split(".")
     word = _WORDS.get(key, key.replace("_", " "))
     if not parents:
