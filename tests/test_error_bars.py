@@ -21,7 +21,7 @@ from wiresolve.describe.outline import Outline
 from wiresolve.describe.problem import Accuracy, Carriers, Orientation, Potential, Problem
 from wiresolve.describe.section import Layer, Patch, Section
 from wiresolve.describe.shapes import Circle, Ellipse, Polygon, Rectangle, Shape, Trapezoid, Triangle
-from wiresolve.physics import subbands
+from wiresolve.physics import first_mesh, subbands
 from wiresolve.physics.subbands import Certified, certify
 from wiresolve.physics.wire import Wire
 from wiresolve.solve import solve
@@ -264,7 +264,8 @@ def test_bars_see_a_kink_of_the_potential() -> None:
 
 
 def test_too_small_a_mesh_keeps_the_best_result_and_says_so(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(subbands, "MOST_VALUES", 30_000)
+    for module in (subbands, first_mesh):
+        monkeypatch.setattr(module, "MOST_VALUES", 30_000)
     result = solve(CASES["drum"].problem(1e-9))
     assert not result.accuracy_met
     assert [warned.code for warned in result.warnings] == ["accuracy-missed"]

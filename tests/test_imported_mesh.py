@@ -24,6 +24,7 @@ from wiresolve.describe.planar_map import undirected
 from wiresolve.describe.problem import Accuracy, Carriers, Problem
 from wiresolve.describe.section import Group, Layer, Patch, Section
 from wiresolve.describe.shapes import Circle, Rectangle
+from wiresolve.describe.summary import describe
 from wiresolve.errors import InputError, MeshError
 from wiresolve.fem import cad_file
 from wiresolve.fem.meshing import Mesher, SizeField
@@ -232,6 +233,42 @@ def test_other_formats_give_the_same_drawing(suffix: str, tmp_path: Path) -> Non
     assert read.group_names == ("2", "1")
     for one, other in zip(loops_of(plain), loops_of(read), strict=True):
         assert one.sample(3) == pytest.approx(other.sample(3), abs=1e-9)
+
+
+def test_which_array_tells_the_regions(tmp_path: Path) -> None:
+    """One array of integers, or one of a known name; never one of several, and never numbers with a decimal point."""
+    points, cells, groups = round_mesh()
+    (kind,) = cells
+    regions = groups[kind]
+
+    def vtu(**arrays: np.ndarray) -> bytes:
+        made = meshio.Mesh(points, list(cells.items()), cell_data={name: [values] for name, values in arrays.items()})
+        meshio.write(tmp_path / "m.vtu", made)
+        return (tmp_path / "m.vtu").read_bytes()
+
+    floats, other = regions.astype(float), np.arange(len(regions)) // 5
+    for arrays, array, chosen in (
+        ({"doping": regions, "phi": floats}, None, "doping"),
+        ({"part": other, "material": regions, "density": floats}, None, "material"),
+        ({"part": other, "side": regions}, "side", "side"),
+        ({"material": other, "side": regions}, "side", "side"),
+    ):
+        shape = mesh(vtu(**arrays), "s.vtu", array=array)
+        assert shape.region_array == chosen
+        assert sorted(shape.group_names) == ["1", "2"]
+        drawn = Section(shape, groups=(Group("1", "GaAs"), Group("2", "AlAs")))
+        rows = dict(describe(Problem("mesh", drawn, Carriers(temperature_K=(4.2,)))))
+        assert rows["section.array"].startswith(chosen)
+        assert ("chosen" in rows["section.array"]) == (array is None)
+    for arrays, array, words in (
+        ({"part": other, "side": regions}, None, r"that may tell the regions \(part, side\); give array"),
+        ({"region": other, "material": regions}, None, r"\(region, material\); give array"),
+        ({"region": floats}, None, "names no regions; export cell data with an integer"),
+        ({"phi": floats}, "phi", "^array: must hold one integer a cell"),
+    ):
+        with pytest.raises(InputError, match=words):
+            mesh(vtu(**arrays), "s.vtu", array=array)
+    assert mesh(meshes.msh(round_mesh(), NAMES)).region_array is None
 
 
 @pytest.mark.parametrize("file_format", ["gmsh22", "gmsh"])

@@ -13,7 +13,7 @@ import pytest
 from wiresolve.describe import material_file, wirefile
 from wiresolve.describe.material import Material
 from wiresolve.describe.material_changes import resolved
-from wiresolve.describe.materials import look_up
+from wiresolve.describe.materials import look_up, unknown
 from wiresolve.describe.problem import Problem
 from wiresolve.errors import InputError
 
@@ -109,6 +109,90 @@ def test_round_trips(name: str, tmp_path: Path) -> None:
     assert {m.name: m for m in back.materials}[name] == {m.name: m for m in problem.materials}[name]
 
 
+def test_lattices_and_the_crystal_can_be_replaced(tmp_path: Path) -> None:
+    lab = """
+[strained]
+extends = "InAs"
+lattice_constant = "0.61 nm"
+source = "invented"
+[phase]
+extends = "InAs"
+crystal = "wurtzite"
+lattice_constant = "0.428 nm"
+lattice_constant_c = "0.7 nm"
+valleys = [{name = "zone centre", axis = [0, 0, 1], longitudinal_mass = 0.03, transverse_mass = 0.04}]
+source = "invented"
+[half]
+extends = "InAs"
+crystal = "wurtzite"
+valleys = [{name = "zone centre", longitudinal_mass = 0.03, transverse_mass = 0.03}]
+source = "invented"
+"""
+    (tmp_path / "lab.toml").write_text(lab, encoding="utf-8")
+    problem = parse('materials_file = "lab.toml"\n' + WIRE.format("strained"), tmp_path)
+    strained, phase, half = (resolved(m, 4.2) for m in problem.materials)
+    listed = {v.quantity: (v.value, v.unit, v.source) for v in strained.values}
+    cited = look_up("InAs", 4.2).lattice_constant_nm
+    assert listed["lattice_constant"] == (0.61, "nm", f"given in lab.toml, replaces {cited:.6g}: invented")
+    assert strained.lattice_constant_nm == 0.61
+    assert strained.valleys == look_up("InAs", 4.2).valleys
+    assert (phase.crystal, phase.c_over_a) == ("wurtzite", pytest.approx(0.7 / 0.428))
+    # What the table tells of the cubic lattice is no lattice constant of the hexagonal one.
+    assert half.lattice_constant_nm is None
+    assert "lattice_constant" not in {v.quantity for v in half.values}
+    back = wirefile.parse(wirefile.dump(problem))
+    assert back.materials == problem.materials
+    assert back.digest == problem.digest
+
+
+def test_a_name_of_the_table_is_told(tmp_path: Path) -> None:
+    """A user's own Si stands in place of the table's, and every value says so; twice in a list of names it is not."""
+    text = '[{}]\nelectron_mass = 0.3\npermittivity = 12\nsource = "invented"\n'
+    for name, told in (("Si", True), ("In0.5Ga0.5As", True), ("LabSi", False), ("In0.5Ga0.6As", False)):
+        (tmp_path / "lab.toml").write_text(text.format(json.dumps(name)), encoding="utf-8")
+        problem = parse('materials_file = "lab.toml"\n' + WIRE.format(name), tmp_path)
+        instead = f", in place of the table's {name}" if told else ""
+        sources = {v.source for v in problem.resolved_materials()[name].values}
+        assert sources == {f"given in lab.toml{instead}: invented"}
+    assert str(unknown("Zz", ("Si",))).split().count("Si,") == 1
+
+
+EDGES = """
+[LabSi]
+source = "invented"
+extends = "Si"
+conduction_edge = "-4.5 eV"
+[LabOx]
+source = "invented"
+extends = "SiO2"
+"""
+
+
+def test_a_given_edge_is_never_dropped(tmp_path: Path) -> None:
+    """Where materials meet on a scale on which a given edge does not stand, it is refused."""
+    shell = '[[section.layers]]\nthickness = "2 nm"\nmaterial = "LabOx"\n{}'
+    wire = 'materials_file = "lab.toml"\n' + WIRE.format("LabSi")
+
+    def read(lab: str, more: str = "") -> Problem:
+        (tmp_path / "lab.toml").write_text(lab, encoding="utf-8")
+        return parse(wire + shell.format(more), tmp_path)
+
+    with pytest.raises(
+        InputError, match="LabSi gives a conduction_edge, and LabOx beside it has none on that"
+    ) as caught:
+        read(EDGES)
+    assert "materials.LabSi.conduction_edge" in caught.value.field
+    assert "'-4.5 eV'; give one to each of them, or take it out" in str(caught.value)
+    both = read(EDGES + 'conduction_edge = "-1.3 eV"\n').resolved_materials()
+    assert both["LabOx"].conduction_edge_eV - both["LabSi"].conduction_edge_eV == pytest.approx(3.2)
+    # The other way round: the oxide's edge, and none of the semiconductor.
+    with pytest.raises(InputError, match="LabOx gives a conduction_edge, and LabSi beside it has none"):
+        read(EDGES.replace('conduction_edge = "-4.5 eV"\n', "") + 'conduction_edge = "-1.3 eV"\n')
+    # Alone it counts: beside a material that keeps carriers out.
+    alone = read(EDGES, 'carriers = "excluded"\n')
+    assert alone.energy_zero()[1] == -4.5
+
+
 def test_the_digest_depends_on_what_is_in_the_file(tmp_path: Path) -> None:
     digests = set()
     for mass in (0.0235, 0.0236):
@@ -148,6 +232,9 @@ IN_THE_FILE = {
     "not TOML": ("[glass]", "[glass", ("is not TOML",)),
     "void": ("[glass]", "[void]", ("void", "meaning of its own")),
     "empty": (LAB, "", ("holds no material",)),
+    "as in the wire file": ("[InAs]", "[materials.InAs]", ("lab.toml: materials", "write [InAs]")),
+    "another crystal's valleys": ("extends", 'crystal = "wurtzite"\nextends', ("InAs.crystal", "give valleys")),
+    "no crystal": ("extends", 'crystal = "amorphous"\nextends', ("InAs.crystal", "'amorphous'")),
     "binary": ("invented", "inven\x00ted", ("is not TOML",)),
 }
 

@@ -365,16 +365,16 @@ BUILD: dict[str, tuple[Callable[[], object], str, str]] = {
     "alpha negative": (lambda: replace(X, nonparabolicity_per_eV=-1.0), "nonparabolicity", "between 0"),
     "alpha nan": (lambda: replace(X, nonparabolicity_per_eV=math.nan), "nonparabolicity", "finite"),
     "alpha text": (lambda: replace(X, nonparabolicity_per_eV="1/eV"), "nonparabolicity", "a number"),
-    "degeneracy beside an axis": (lambda: replace(X, degeneracy=3), "degeneracy", "stands beside an axis"),
+    "degeneracy beside an axis": (lambda: replace(X, degeneracy=3), "degeneracy", "is given beside an axis"),
     "height": (lambda: replace(X, height_eV=math.inf), "edge", "finite"),
     "no valleys": (lambda: Material.given("a", valleys=[]), "valleys", "one to 20"),
     "valley twice": (lambda: Material.given("a", valleys=[X, X]), "valleys", "names of their own"),
     "valleys a text": (lambda: Material.given("a", valleys="X"), "valleys", "list of valleys"),  # type: ignore[arg-type]
     "valleys and mass": (
-        lambda: Material.given("a", valleys=[X], electron_mass=0.1), "electron_mass", "stands beside valleys",
+        lambda: Material.given("a", valleys=[X], electron_mass=0.1), "electron_mass", "is given beside valleys",
     ),
     "valleys and degeneracy": (
-        lambda: Material.given("a", valleys=[X], valley_degeneracy=2), "valley_degeneracy", "stands beside valleys",
+        lambda: Material.given("a", valleys=[X], valley_degeneracy=2), "valley_degeneracy", "is given beside valleys",
     ),
     "valleys and alpha": (
         lambda: Material.given("a", valleys=[X], nonparabolicity_per_eV=1), "nonparabolicity", "give it to each valley",

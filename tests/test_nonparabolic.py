@@ -1,4 +1,4 @@
-"""Masses that grow with energy: matching at any k, counting, residuals, bars, densities, and the limits of the model."""
+"""Masses that grow with energy: matching at any k, counting, residuals, bars, densities, limits of the model."""
 
 from __future__ import annotations
 
@@ -132,7 +132,7 @@ def test_one_relation_in_all_regions_and_the_general_way_agree() -> None:
 
 
 def test_with_a_potential_a_shift_of_all_energies_changes_nothing() -> None:
-    """The mass follows E - V: a constant potential moves every level by itself, which a mass that ignored it would not."""
+    """The mass follows E - V: a constant potential moves every level by itself; a mass that ignored it would not."""
     section = Section(shape=Rectangle(width_nm=14.0, height_nm=9.0), material="a")
     plain = solve(problem(section, [material("a", 0.03, 2.0)], 4, 1e-5))
     lifted = solve(

@@ -9,8 +9,8 @@ import pytest
 from wiresolve.describe.material import Material, Valley
 from wiresolve.describe.materials import look_up
 from wiresolve.describe.problem import Carriers, Orientation, Problem
-from wiresolve.describe.section import Layer, Section
-from wiresolve.describe.shapes import Circle
+from wiresolve.describe.section import Layer, Patch, Section
+from wiresolve.describe.shapes import Circle, Rectangle
 from wiresolve.errors import InputError
 
 COLD = Carriers(temperature_K=(4.2,))
@@ -179,7 +179,11 @@ def test_directions_in_wurtzite() -> None:
         ("GaSb", ALONG_111, False),
         ("Ge", ALONG_111, False),
         ("InAs", ALONG_110, False),
-        ("InAs", None, False),
+        ("InAs", None, True),
+        ("InP", None, True),
+        ("GaAs", None, True),
+        ("In0.53Ga0.47As", None, False),
+        ("InSb", None, False),
     ],
 )
 def test_crystal_phase(core: str, orientation: Orientation | None, warned: bool) -> None:
@@ -187,6 +191,25 @@ def test_crystal_phase(core: str, orientation: Orientation | None, warned: bool)
     assert ("crystal-phase" in {code for code, _, _ in notes}) == warned
     if core == "InAs" and warned:
         assert "0.46 eV" in notes[0][1]
+        assert ("if it was grown along [111]" in notes[0][1]) == (orientation is None)
+
+
+def test_crystal_phase_is_one_warning_for_a_wire_that_was_grown() -> None:
+    def noted(problem: Problem) -> list[str]:
+        found = problem.resolved_materials().values()
+        return [text for m in found for code, text, _ in m.notes if code == "crystal-phase"]
+
+    for orientation in (None, ALONG_111):
+        (text,) = noted(wire("InAs", "InP", orientation=orientation))
+        assert text.startswith("InAs and InP in the table are zincblende, but ")
+    (text,) = noted(wire("GaAs", "Al0.3Ga0.7As", "GaAs"))
+    assert text.startswith("GaAs and Al0.3Ga0.7As in the table are zincblende")
+    # A patch or a shape that is etched is no grown wire, and a user's own InAs may be what it wants.
+    etched = Section(Rectangle(10, 10), "InAs")
+    assert noted(Problem("wire", etched, COLD)) == []
+    assert noted(wire("InAs", patches=(Patch(Rectangle(2, 2), "InAs"),))) == []
+    own = Material.given("InAs", electron_mass=0.03)
+    assert noted(wire("InAs", materials=(own,))) == []
 
 
 def test_a_users_own_material_has_a_phase_of_its_own() -> None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -10,7 +11,7 @@ from scipy.spatial import cKDTree
 
 from tests.truth import disk as bessel
 from tests.truth import ellipse
-from wiresolve.describe import outline, outline_file, point_table
+from wiresolve.describe import outline, outline_file, point_table, wirefile
 from wiresolve.describe.curves import Line, Loop, Spline, circle
 from wiresolve.describe.input_files import InputFile
 from wiresolve.describe.materials import Material
@@ -146,13 +147,22 @@ def test_core_and_shells() -> None:
     assert Space(mesh).area_nm2 == pytest.approx(found[0], rel=1e-6)
     for layers, words in (
         ((Layer(None, "two"),), "has 3 curves, and 2 layers without a thickness"),
-        ((Layer(None, "two"), Layer(1, "x"), Layer(None, "three")), "stands between curves"),
+        ((), r"^layers: the outline has 3 curves.*'none of them'; write \[\[section.layers\]\]"),
+        (
+            (Layer(None, "two"), Layer(5, "x")),
+            r"^layers\[2\].thickness: .*a curve is not used.*leave the thickness out",
+        ),
+        ((Layer(None, "two"), Layer(1, "x"), Layer(None, "three")), "is given between curves"),
         ((Layer(None, "two"),) * 3, "only 3 curves"),
     ):
         with pytest.raises(InputError, match=words):
             Section(made, "one", layers)
     with pytest.raises(InputError, match="is missing"):
         Section(Circle(10), "one", (Layer(None, "two"),))
+    two = Outline(file(*rings[:2]), scale_nm=0.25, pixel_nm=0.25)
+    one_wanted = "has 2 curves, and 1 layer without a thickness is wanted"
+    with pytest.raises(InputError, match=rf"^layers\[1\].thickness: the outline {one_wanted}.*'50 nm'; leave the"):
+        Section(two, "one", (Layer(50.0, "two"),))
 
 
 def test_a_grown_layer_keeps_its_distance() -> None:
@@ -225,10 +235,12 @@ BAD: dict[str, tuple[str, dict[str, object], str, str]] = {
     "words": (BOX + "a,b\n", {}, "file", "line 5 is no row"),
     "nan": (BOX + "nan,3\n", {}, "file", "line 5 holds a number that is not finite"),
     "four columns": ("1,2,3,4\n" * 4, {}, "file", "line 1 has 4 columns"),
-    "a point twice": ("0,0\n40,0\n40,20\n40,0\n0,20\n", {}, "file", "points 2 and 4 of the outline coincide"),
-    "crossing": ("0,0\n40,20\n40,0\n0,20\n", {}, "file", "the side from point 1 to 2 meets that from point 3 to 4"),
+    "a point twice": (
+        "0,0\n40,0\n40,20\n40,0\n0,20\n", {}, "file", "points of the outline coincide: lines 2 and 4; leave out line 4"
+    ),
+    "crossing": ("0,0\n40,20\n40,0\n0,20\n", {}, "file", "the side from line 1 to 2 meets that from 3 to 4"),
     "one line": ("0,0\n10,10\n20,20\n30,30\n", {}, "file", "meets|no area"),
-    "open": ("\n".join(f"{x:.9g},{y:.9g}" for x, y in 9 * STAR[:32]), {}, "file", "is open: its last point, 32"),
+    "open": ("\n".join(f"{x:.9g},{y:.9g}" for x, y in 9 * STAR[:32]), {}, "file", r"is open: its last .* 32\)"),
     "side by side": (BOX + "\n60,0\n90,0\n90,20\n60,20\n", {}, "file", "does not go around"),
     "curves that cross": (BOX + "\n-1,-9\n30,-9\n30,29\n-1,29\n", {}, "file", "does not go around"),
     "curves that touch": (BOX + "\n0,0\n50,-5\n50,30\n-5,30\n", {}, "file", "come within|does not go around"),
@@ -250,6 +262,63 @@ def test_bad_outlines(text: str, options: dict[str, object], field: str, words: 
         Outline(InputFile("o.csv", text.encode("utf-8", "surrogateescape")), **{"scale_nm": 1.0, **options})  # type: ignore[arg-type]
     assert caught.value.field == field
     assert str(caught.value).isprintable()
+
+
+@pytest.mark.parametrize(
+    ("keys", "words"),
+    [
+        (
+            'unit = "nm"\nscale = "1 nm"',
+            "section.scale: is given beside a unit: an outline needs one of them, not both",
+        ),
+        ("", "section.scale: is missing: an outline needs the unit of its numbers, or the scale"),
+    ],
+)
+def test_unit_or_scale(keys: str, words: str, tmp_path: Path) -> None:
+    (tmp_path / "o.csv").write_text(BOX)
+    wire = f'[section]\nshape = "outline"\nfile = "o.csv"\nmaterial = "GaAs"\n{keys}\n[carriers]\ntemperature = "4.2 K"'
+    with pytest.raises(InputError, match=words):
+        wirefile.parse(wire, tmp_path)
+
+
+def test_double_clicks_and_steps_back_are_left_out() -> None:
+    """A square of 10 pixels with repeated points and steps to a next pixel and back: the square's area all the same."""
+    square = [(0, 0), (10, 0), (10, 10), (0, 10)]
+    twice = [p for p in square for _ in range(3)]
+    assert Outline(file(np.array(twice)), scale_nm=1.0).loop().area == pytest.approx(100)
+    for k in range(4):  # the spike at any place of the list, at its ends too
+        for step in ((1, 1), (0, 1), (-1, -1)):
+            x, y = square[k]
+            spiked = [*square[: k + 1], (x + step[0], y + step[1]), *square[k:]]
+            for turn in range(6):
+                rows = np.array(spiked[turn:] + spiked[:turn])
+                (traced_,) = outline_file.read("file", file(rows), 1.0)
+                assert sorted(map(tuple, traced_.points.tolist())) == sorted(square)
+                with pytest.raises(InputError, match="coincide"):  # without a pixel's size nothing is left out
+                    Outline(file(rows), scale_nm=1.0)
+    long = [(0, 0), (3, 3), (0, 0), (10, 0), (10, 10), (0, 10)]
+    with pytest.raises(InputError, match="lines 2 and 4; leave out line 4"):
+        outline_file.read("file", file(np.array(long), head="x,y\n"), 1.0)
+
+
+def test_several_faults_in_one_message() -> None:
+    ring = np.round(100 * STAR).astype(int)
+    back = [row for k, p in enumerate(ring) for row in ([p, p + 7, p] if k in (5, 9, 20) else [p])]
+    told = "points of the outline coincide: lines .*; leave out one of each two"
+    with pytest.raises(InputError, match=told) as caught:
+        Outline(file(np.array(back)), scale_nm=1.0)
+    assert all(f"{a} and {b}" in str(caught.value) for a, b in ((6, 8), (12, 14), (25, 27)))
+    around_twice = np.vstack([ring, ring])
+    mixed = np.random.default_rng(2).permutation(ring)
+    one_twice = np.vstack([mixed, mixed[7:8]])
+    for rows in (around_twice, mixed, one_twice):
+        with pytest.raises(InputError, match="the order of the points is probably wrong") as caught:
+            Outline(file(rows), scale_nm=1.0)
+        assert str(caught.value).count(" and ") + str(caught.value).count(" meets ") <= 6
+    swapped = ring.copy()
+    swapped[[12, 13]] = ring[[13, 12]]
+    with pytest.raises(InputError, match="the side from line 12 to 13 meets that from 14 to 15; list the points in"):
+        Outline(file(swapped), scale_nm=1.0)
 
 
 def test_too_many_points(monkeypatch: pytest.MonkeyPatch) -> None:

@@ -17,9 +17,10 @@ from wiresolve.fem import eigen
 from wiresolve.fem.mesh import Mesh
 from wiresolve.fem.meshing import Mesher, SizeField
 from wiresolve.fem.space import Space
+from wiresolve.physics.channel import Channel
 from wiresolve.physics.pencil import Operator, build
 from wiresolve.physics.solved import solve_on
-from wiresolve.physics.subbands import Channel, certify
+from wiresolve.physics.subbands import certify
 from wiresolve.physics.wire import Wire
 
 WIDTH, HEIGHT = 11.0, 7.0

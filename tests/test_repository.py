@@ -15,6 +15,9 @@ import pytest
 
 import wiresolve.cli
 from wiresolve.describe import material_file, plain, shape_tables, wirefile
+from wiresolve.describe.problem import Carriers, Orientation, Problem
+from wiresolve.describe.section import Layer, Section
+from wiresolve.describe.shapes import Circle
 from wiresolve.doctor import GMSH_LIBRARIES
 
 REPOSITORY = Path(__file__).resolve().parents[1]
@@ -119,11 +122,17 @@ def test_generated_parts_of_the_readme_are_fresh() -> None:
     assert run.returncode == 0, run.stderr
 
 
-def test_wire_file_of_the_readme_is_valid() -> None:
-    (block,) = code_blocks("toml")
+def test_wire_and_materials_file_of_the_readme_are_valid(tmp_path: Path) -> None:
+    block, lab = code_blocks("toml")
     problem = wirefile.parse(block, REPOSITORY)
     assert problem.title == tomllib.loads(block)["title"]
     assert problem.accuracy.subbands == 10
+    (tmp_path / "lab.toml").write_text(lab, encoding="utf-8")
+    silicon, oxide = material_file.read("--file", tmp_path / "lab.toml")
+    wire = Section(Circle(10), silicon.name, (Layer(2, oxide.name),))
+    along = Orientation((1, 1, 0), (0, 0, 1))
+    problem = Problem("wire", wire, Carriers(temperature_K=(300,)), materials=(silicon, oxide), orientation=along)
+    assert problem.shared_valleys() == ("Delta", "L")
 
 
 def test_all_keys_of_the_wire_file_are_documented() -> None:

@@ -317,7 +317,7 @@ def materials(name: str | None, temperature: str, own: Path | None, as_json: boo
     """
     from wiresolve.describe import material_file
     from wiresolve.describe.material_changes import resolved
-    from wiresolve.describe.materials import look_up, table_names, table_values
+    from wiresolve.describe.materials import known, look_up, table_names, table_values, unknown
     from wiresolve.output import material_lists
     from wiresolve.output.tables import paragraphs
     from wiresolve.units import parse_quantity
@@ -334,7 +334,9 @@ def materials(name: str | None, temperature: str, own: Path | None, as_json: boo
         _print(f"at {lattice_K:g} K; unsure are values from memory and values on which sources differ")
         _print("'wiresolve materials NAME' shows where each is from")
         return
-    material = found[name] if name in found else look_up(name, lattice_K, tuple(found))
+    if name not in found and not known(name):
+        raise unknown(name, tuple(found), "Or name the file that describes it with --file" if own is None else "")
+    material = found[name] if name in found else look_up(name, lattice_K)
     values = material.values if name in found else table_values(name, lattice_K)
     if as_json:
         _print(material_lists.as_json([(material, values)]))

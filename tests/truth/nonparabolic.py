@@ -13,13 +13,14 @@ from wiresolve.result import Result
 from wiresolve.solve import solve
 
 HARD = (
-    "E (1 + alpha E) = (hbar^2/2m)(j_ln/R)^2: E. O. Kane, J. Phys. Chem. Solids 1, 249 (1957); closed form, exact for a "
-    "hard wall on the conduction envelope"
+    "E (1 + alpha E) = (hbar^2/2m)(j_ln/R)^2: E. O. Kane, J. Phys. Chem. Solids 1, 249 (1957); closed form, exact for "
+    "a hard wall on the conduction envelope"
 )
 FINITE = (
-    "BenDaniel-Duke matching with m(E) = m (1 + (E - edge)/gap) on both sides: G. Bastard, Phys. Rev. B 24, 5693 (1981); "
-    "D. F. Nelson, R. C. Miller, D. A. Kleinman, Phys. Rev. B 35, 7770 (1987); roots to 30 digits"
+    "BenDaniel-Duke matching with m(E) = m (1 + (E - edge)/gap) on both sides: G. Bastard, Phys. Rev. B 24, 5693 "
+    "(1981); D. F. Nelson, R. C. Miller, D. A. Kleinman, Phys. Rev. B 35, 7770 (1987); roots to 30 digits"
 )
+WITHIN = "1.5e-8 eV are asked for, a bar of twice the error; the wall that ends the barrier stays below that"
 LIGHT, NARROW = (0.067, 0.61, 5.0), (0.0135, 4.1, 15.0)
 """Mass in m0, alpha in 1/eV, radius in nm."""
 LIGHT_eV = ["0.1224055774684", "0.2845630438012", "0.4669280141903", "0.5249835507934"]
@@ -120,7 +121,7 @@ TRUTH: list[dict[str, Any]] = [
         "digits": 8,
         "scale": 1.0,
         "source": FINITE,
-        "tolerance_reason": "1.5e-8 eV are asked for, which is a bar of twice the error; the wall that ends the barrier stays below that",
+        "tolerance_reason": WITHIN,
         "compute": lambda: finite((0.067, 1.519), (0.092, 1.89), 0.25, 6.0, 6),
     },
     {
@@ -130,7 +131,7 @@ TRUTH: list[dict[str, Any]] = [
         "digits": 8,
         "scale": 1.0,
         "source": FINITE,
-        "tolerance_reason": "1.5e-8 eV are asked for, which is a bar of twice the error; the wall that ends the barrier stays below that",
+        "tolerance_reason": WITHIN,
         "compute": lambda: finite((0.026, 0.417), (0.0795, 1.4236), 0.52, 8.0, 14),
     },
 ]

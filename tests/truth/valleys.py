@@ -30,7 +30,7 @@ LEVELS = (
 SILICON = Valley("Delta", longitudinal_mass=0.916, transverse_mass=0.19, axis=(1, 0, 0))
 HENSEL = Valley("Delta", longitudinal_mass=0.9163, transverse_mass=0.1905, axis=(1, 0, 0))
 GERMANIUM = Valley("L", longitudinal_mass=1.59, transverse_mass=0.0815, axis=(1, 1, 1), zone_boundary=True)
-"""Masses in m0: J. C. Hensel, H. Hasegawa, M. Nakayama, Phys. Rev. 138, A225 (1965) (from memory) and common practice."""
+"""Masses in m0: J. C. Hensel, H. Hasegawa, M. Nakayama, Phys. Rev. 138, A225 (1965) (from memory), common practice."""
 RADIUS_nm = 3.0
 UPRIGHT = ["18.063083311", "30.394859898", "47.212683575", "60.721174296", "68.773324076", "80.214097561"]
 OBLIQUE = ["24.364484364", "54.155594307", "69.446598187", "97.416087562", "110.777466122", "141.875880113"]

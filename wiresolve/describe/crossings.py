@@ -11,13 +11,19 @@ _AT_ONCE = 2_000_000
 
 
 def first(start: Array, end: Array, knots: Ints) -> tuple[int, int] | None:
-    """Two pieces that cross or touch and share no end, or None.
+    """Two pieces that cross or touch and share no end, or None; parameters as for `several`."""
+    return next(iter(several(start, end, knots, 1)), None)
+
+
+def several(start: Array, end: Array, knots: Ints, enough: int) -> list[tuple[int, int]]:
+    """Pairs of pieces that cross or touch and share no end, in order; there may be more once `enough` are found.
 
     Parameters
     ----------
     start, end : (m, 2) points.
     knots : (m, 2) numbers of the end points; pieces with a common number are neighbours, which may touch.
     """
+    found: list[tuple[int, int]] = []
     reach = 1e-9 * float(np.ptp(np.vstack([start, end]), axis=0).max())
     low, high = np.minimum(start, end) - reach, np.maximum(start, end) + reach
     order = np.argsort(low[:, 0], kind="stable")
@@ -35,12 +41,12 @@ def first(start: Array, end: Array, knots: Ints) -> tuple[int, int] | None:
         apart = (knots[i][:, :, None] != knots[j][:, None, :]).all(axis=(1, 2))
         i, j = i[apart], j[apart]
         cross = _split(start[i], end[i], start[j], end[j], reach) & _split(start[j], end[j], start[i], end[i], reach)
-        if cross.any():
-            hits = np.flatnonzero(cross)
-            pairs = sorted((min(a, b), max(a, b)) for a, b in zip(i[hits].tolist(), j[hits].tolist(), strict=True))
-            return pairs[0]
+        hits = np.flatnonzero(cross)
+        found += [(min(a, b), max(a, b)) for a, b in zip(i[hits].tolist(), j[hits].tolist(), strict=True)]
+        if len(found) >= enough:
+            break
         begin = end_row
-    return None
+    return sorted(found)
 
 
 def _split(a: Array, b: Array, c: Array, d: Array, reach: float) -> NDArray[np.bool_]:

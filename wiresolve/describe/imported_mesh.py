@@ -22,7 +22,7 @@ FORMATS = {".msh": "gmsh", ".vtu": "vtu", ".vtk": "vtk", ".inp": "abaqus", ".mes
 _PLANE = 1e-6
 _Used = TypeVar("_Used")
 REGION_ARRAYS = ("region", "material", "group", "gmsh:physical", "medit:ref", "cell_tags", "CellEntityIds")
-"""Names of cell data that tell regions, the surest first."""
+"""Names of cell data that tell regions."""
 _FLAT = 1e-9
 _COUNTS = [
     rb"\$Elements\s+(\d{1,18})[ \r]*\n",
@@ -115,7 +115,7 @@ def _converted(field: str, mesh: Any, array: str | None) -> MeshData:
     if points.ndim != 2 or points.shape[1] not in (2, 3):
         raise InputError(field, "has nodes that are no points of a plane or of space")
     points = np.hstack([points, np.zeros((len(points), 3 - points.shape[1]))])
-    labels, names = _labels(field, mesh, array)
+    labels, names, chosen = _labels(field, mesh, array)
     blocks = []
     for block, label in zip(mesh.cells, labels, strict=True):
         kind, nodes = block.type, np.asarray(block.data)
@@ -127,7 +127,7 @@ def _converted(field: str, mesh: Any, array: str | None) -> MeshData:
         if nodes.min() < 0 or nodes.max() >= len(points):
             raise InputError(field, "has a cell with a node that is not there", remedy="write the file anew")
         blocks.append(Block(kind, nodes, label))
-    return MeshData(points, tuple(blocks), names, np.arange(1, len(points) + 1))
+    return MeshData(points, tuple(blocks), names, np.arange(1, len(points) + 1), chosen)
 
 
 def _wrong_kind(kind: str) -> tuple[str, str, str]:
@@ -138,35 +138,34 @@ def _wrong_kind(kind: str) -> tuple[str, str, str]:
     return "holds cells of a kind that cannot be used", kind, "export triangles or quads"
 
 
-def _labels(field: str, mesh: Any, array: str | None) -> tuple[list[np.ndarray], tuple[str, ...]]:
-    """For each block the index of each cell's group, and the groups' names."""
+def _labels(field: str, mesh: Any, array: str | None) -> tuple[list[np.ndarray], tuple[str, ...], str | None]:
+    """For each block the index of each cell's group; the groups' names; the cell data that tells them."""
     sets = {n: s for n, s in mesh.cell_sets.items() if not n.startswith("gmsh:")}
     if sets and array is None:
-        return _from_sets(field, mesh, sets)
+        return *_from_sets(field, mesh, sets), None
     whole = {}
     for name, parts in mesh.cell_data.items():
-        values = [np.asarray(part, dtype=float) for part in parts]
-        if all(v.ndim == 1 and np.isfinite(v).all() and (v == np.rint(v)).all() for v in values):
+        values = [np.asarray(part) for part in parts]
+        if all(v.ndim == 1 and v.dtype.kind in "iu" for v in values):
             whole[name] = values
     if array is not None:
         if array not in mesh.cell_data:
             has = ", ".join(f"'{n}'" for n in mesh.cell_data) or "none"
             raise InputError("array", f"is no cell data of the mesh, which has {has}", array)
         if array not in whole:
-            raise InputError("array", "must hold one whole number a cell", array)
-    chosen = array or next((n for n in REGION_ARRAYS if n in whole), None)
-    if chosen is None:
-        if len(whole) != 1:
-            has = f"has several arrays of whole numbers ({', '.join(whole)})" if whole else "names no regions"
-            remedy = 'give array = "NAME"' if whole else "export cell data with a whole number for each region"
-            raise InputError(field, has, remedy=remedy)
-        (chosen,) = whole
+            raise InputError("array", "must hold one integer a cell", array, "export the regions as integers")
+    named = [n for n in REGION_ARRAYS if n in whole] or list(whole)
+    if array is None and len(named) != 1:
+        has = f"has several arrays that may tell the regions ({', '.join(whole)})" if whole else "names no regions"
+        remedy = 'give array = "NAME"' if whole else "export cell data with an integer for each region"
+        raise InputError(field, has, remedy=remedy)
+    chosen = named[0] if array is None else array
     values = whole[chosen]
     every = sorted({int(v) for part in values for v in np.unique(part)})
     known = {int(tag): name for name, (tag, dim) in _field_data(mesh).items() if dim == 2}
     place = {v: k for k, v in enumerate(every)}
     labels = [np.array([place[int(v)] for v in part], dtype=np.int64).reshape(-1) for part in values]
-    return labels, tuple(known.get(v, str(v)) for v in every)
+    return labels, tuple(known.get(v, str(v)) for v in every), chosen
 
 
 def _field_data(mesh: Any) -> dict[str, tuple[int, int]]:

@@ -55,7 +55,7 @@ LIMITS: dict[str, tuple[float, float, str]] = {
 }
 """Lowest and highest value and unit of what a user may give of a material besides its valleys."""
 
-Change = float | None | InverseMass | tuple[Valley, ...]
+Change = float | str | None | InverseMass | tuple[Valley, ...]
 Note = tuple[str, str, str]
 """A warning about a material: code, text, remedy."""
 
@@ -270,13 +270,17 @@ class Material:
         conduction_edge_eV: float | None = None,
         permittivity: float | None = None,
         electron_affinity_eV: float | None = None,
+        lattice_constant_nm: float | None = None,
+        lattice_constant_c_nm: float | None = None,
+        crystal: str | None = None,
         source: str = "",
         given_in: str = WIRE_FILE,
     ) -> Material:
         """A material of the table (`base`) with some of its values replaced.
 
         A mass or a nonparabolicity replaces that of the zone-centre valley; `valleys` replaces all valleys, with
-        heights from the table's conduction edge or the given one.
+        heights from the table's conduction edge or the given one. Another `crystal` needs `valleys`: the table's belong
+        to its own.
 
         Raises `InputError` where a value is no number or out of range; an unknown `base` is found by the problem.
         """
@@ -284,6 +288,11 @@ class Material:
         checks.text("extends", base, 60)
         described = _described(electron_mass, inverse_mass, valleys, nonparabolicity_per_eV, None, alone=False)
         changes: dict[str, Change] = {}
+        if crystal is not None:
+            changes["crystal"] = checks.choice("crystal", crystal, CRYSTALS[:-1])
+            if valleys is None:
+                rule = "cannot be replaced alone: the table's valleys belong to its own crystal"
+                raise InputError("crystal", rule, crystal, "give valleys = [...] too")
         if valleys is not None:
             changes["valleys"] = described
         elif electron_mass is not None:
@@ -296,6 +305,8 @@ class Material:
             ("conduction_edge", conduction_edge_eV),
             ("permittivity", permittivity),
             ("electron_affinity", electron_affinity_eV),
+            ("lattice_constant", lattice_constant_nm),
+            ("lattice_constant_c", lattice_constant_c_nm),
         ):
             if value is not None:
                 changes[key] = checks.in_range(key, value, *LIMITS[key])
@@ -321,13 +332,13 @@ def _described(
     ways = {"electron_mass": electron_mass, "inverse_mass": inverse_mass, "valleys": valleys}
     used = [name for name, value in ways.items() if value is not None]
     if len(used) > 1:
-        raise InputError(used[0], f"stands beside {used[1]}", remedy="keep one of the two")
+        raise InputError(used[0], f"is given beside {used[1]}", remedy="keep one of the two")
     checks.whole("valley_degeneracy", 1 if degeneracy is None else degeneracy, 1, 48)
     if valleys is not None:
         for field, value in (("valley_degeneracy", degeneracy), ("nonparabolicity", nonparabolicity_per_eV)):
             if value is not None:
                 remedy = "take it out" if field == "valley_degeneracy" else "give it to each valley"
-                raise InputError(field, "stands beside valleys", value, remedy)
+                raise InputError(field, "is given beside valleys", value, remedy)
         return _distinct(valleys)
     alpha = checked_nonparabolicity(nonparabolicity_per_eV)
     if electron_mass is not None:
@@ -339,7 +350,7 @@ def _described(
     else:
         for field, value in (("nonparabolicity", alpha), ("valley_degeneracy", degeneracy)):
             if alone and value is not None:
-                raise InputError(field, "stands there without a mass", value, "give an electron_mass too")
+                raise InputError(field, "is given without a mass", value, "give an electron_mass too")
         return ()
     return (only,)
 

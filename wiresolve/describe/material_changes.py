@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import contextlib
 from dataclasses import dataclass, replace
 from typing import Any
 
 from wiresolve.describe.material import (
     ANY_VALLEY,
     GIVEN_SCALE,
+    LIMITS,
     VACUUM_LEVEL,
     ZONE_CENTRE,
     Material,
@@ -15,7 +17,7 @@ from wiresolve.describe.material import (
     Valley,
     in_order,
 )
-from wiresolve.describe.materials import VALLEY_PARTS, look_up
+from wiresolve.describe.materials import VALLEY_PARTS, known, look_up
 from wiresolve.describe.valley import valley_rows
 from wiresolve.errors import InputError
 
@@ -29,7 +31,7 @@ def resolved(material: Material, lattice_temperature_K: float) -> Material:
         The table has no such material, or it has no valley whose mass could be replaced.
     """
     if material.extends is None:
-        return material
+        return _told_apart(material)
     try:
         base = look_up(material.extends, lattice_temperature_K)
     except InputError as error:
@@ -41,6 +43,32 @@ def resolved(material: Material, lattice_temperature_K: float) -> Material:
         found = found.with_(key, value)
     values = tuple(replace(v, name=material.name) for v in found.made.values)
     return replace(found.made, values=values, given_in=material.given_in)
+
+
+def _told_apart(material: Material) -> Material:
+    """A user's material whose given values say so where it has the name of one of the table."""
+    with contextlib.suppress(InputError):  # what looks like an alloy whose fractions are wrong
+        if known(material.name):
+            plain = f"given in {material.given_in}"
+            told = f"{plain}, in place of the table's {material.name}"
+            own = (v.provenance == "given" and v.source.startswith(plain) for v in material.values)
+            values = zip(material.values, own, strict=True)
+            return replace(
+                material,
+                values=tuple(
+                    replace(v, source=told + v.source.removeprefix(plain)) if mine else v for v, mine in values
+                ),
+            )
+    return material
+
+
+def _in_crystal(material: Material, crystal: str) -> Material:
+    """The material in another crystal: between cubic and hexagonal ones it keeps no lattice constant."""
+    made = replace(material, crystal=crystal)
+    if (crystal == "wurtzite") == (material.crystal == "wurtzite"):
+        return made
+    kept = tuple(v for v in made.values if v.quantity not in ("lattice_constant", "lattice_constant_c"))
+    return replace(made, lattice_constant_nm=None, lattice_constant_c_nm=None, values=kept)
 
 
 @dataclass(frozen=True)
@@ -57,8 +85,12 @@ class _Changed:
             return self._valleys(value)
         if key in ("electron_mass", "inverse_mass", "nonparabolicity"):
             return self._mass(key, value)
+        if key == "crystal":
+            return replace(self, made=_in_crystal(made, value))
         if key == "permittivity":
             made = replace(made, permittivity=value)
+        elif key in ("lattice_constant", "lattice_constant_c"):
+            made = replace(made, **{f"{key}_nm": value})
         elif key == "electron_affinity":
             kept = [(scale, edge) for scale, edge in made.edges if scale != VACUUM_LEVEL]
             made = replace(made, electron_affinity_eV=value, edges=(*kept, (VACUUM_LEVEL, 0.0 - value)))
@@ -67,8 +99,7 @@ class _Changed:
             vacuum = [(scale, edge) for scale, edge in made.edges if scale == VACUUM_LEVEL]
             made = replace(made, edges=((GIVEN_SCALE, value), *vacuum))
             made = replace(made, conduction_edge_eV=value, edge_scale=GIVEN_SCALE)
-        unit = "" if key == "permittivity" else "eV"
-        return replace(self, made=self._listed(made, [(key, value, unit)]))
+        return replace(self, made=self._listed(made, [(key, value, LIMITS[key][2])]))
 
     def _mass(self, key: str, value: Any) -> _Changed:
         old = next((v for v in self.made.valleys if v.name in (ZONE_CENTRE, ANY_VALLEY)), None)

@@ -15,9 +15,17 @@ from wiresolve.errors import InputError
 
 LARGEST_FILE = 1_000_000
 MASS_KEYS = ("electron_mass", "inverse_mass", "valleys", "valley_degeneracy", "nonparabolicity")
-VALUE_KEYS = ("conduction_edge", "permittivity", "electron_affinity")
-WHOLE_KEYS = ("gap", "crystal", "lattice_constant", "lattice_constant_c")
-MATERIAL_KEYS = (*MASS_KEYS, *VALUE_KEYS, *WHOLE_KEYS, "extends", "source", "given_in")
+VALUE_KEYS = (
+    "conduction_edge",
+    "permittivity",
+    "electron_affinity",
+    "lattice_constant",
+    "lattice_constant_c",
+    "crystal",
+)
+WHOLE_KEYS = ("valley_degeneracy", "gap")
+"""Keys of a material that is described whole: they cannot replace a value of one in the table."""
+MATERIAL_KEYS = (*MASS_KEYS, *VALUE_KEYS, "gap", "extends", "source", "given_in")
 VALLEY_KEYS: tuple[str, ...] = (
     "name",
     "axis",
@@ -42,6 +50,10 @@ def read(where: str, path: str | Path, folder: str | Path | None = None) -> tupl
         data = toml_text.parse(file.text(""))
         if not data:
             raise InputError("", "holds no material", remedy="write a table [NAME] with its values and their source")
+        if isinstance(wrapped := data.get("materials"), dict) and any(isinstance(v, dict) for v in wrapped.values()):
+            name = next(name for name, value in wrapped.items() if isinstance(value, dict))
+            rule = "in a file of materials each has a table of its own name"
+            raise InputError("materials", rule, f"[materials.{name}]", f"write [{name}]")
         return materials(Table("", data), file.name, sourced=True)
     except InputError as error:
         field = f"{where}: {file.name}: {error.field}" if error.field else f"{where}: {file.name}"
@@ -72,20 +84,20 @@ def _material(table: Table, name: str, given_in: str) -> Material:
         "conduction_edge_eV": table.optional_quantity("conduction_edge", "energy"),
         "permittivity": table.data.get("permittivity"),
         "electron_affinity_eV": table.optional_quantity("electron_affinity", "energy"),
+        "lattice_constant_nm": table.optional_quantity("lattice_constant", "length"),
+        "lattice_constant_c_nm": table.optional_quantity("lattice_constant_c", "length"),
+        "crystal": table.data.get("crystal"),
     }
     if "valleys" in table:
         values["valleys"] = [_valley(entry) for entry in table.tables("valleys")]
     if "extends" in table:
-        for key in ("valley_degeneracy", *WHOLE_KEYS):
+        for key in WHOLE_KEYS:
             if key in table:
                 rule = "cannot be replaced in a material that extends another"
                 raise InputError(table.at(key), rule, remedy="take one of the two out")
         return _under(table.path, partial(Material.extending, name, table.text("extends"), **values))
     values["valley_degeneracy"] = table.data.get("valley_degeneracy")
     values["gap_eV"] = table.optional_quantity("gap", "energy")
-    values["crystal"] = table.data.get("crystal")
-    for key in ("lattice_constant", "lattice_constant_c"):
-        values[f"{key}_nm"] = table.optional_quantity(key, "length")
     return _under(table.path, partial(Material.given, name, **values))
 
 

@@ -30,6 +30,7 @@ __all__ = [
     "Valley",
     "alloy_families",
     "alloy_fraction",
+    "known",
     "look_up",
     "table_names",
     "table_values",
@@ -122,11 +123,16 @@ def _numbers(name: str, kelvin: float, others: tuple[str, ...] = ()) -> tuple[Nu
     return material_table.alloy(*found, kelvin), material_table.data()["alloys"][found[0]]["ends"][0], found
 
 
-def unknown(name: str, others: Sequence[str]) -> InputError:
+def known(name: str) -> bool:
+    """Whether `look_up` has a material of this name, or knows what is amiss with its fractions."""
+    return name in (*table_names(), *material_table.alloys()) or alloy_fraction(name) is not None
+
+
+def unknown(name: str, others: Sequence[str], otherwise: str = "Or describe it under [materials.NAME]") -> InputError:
     """The error for a material that neither the table nor `others` (the user's own) has."""
-    words = (*others, *table_names())
+    words = tuple(dict.fromkeys((*others, *table_names())))
     remedy = checks.nearest(name, words) or "known are " + ", ".join(words[:16]) + "."
-    return InputError("material", "is not a known material", name, f"{remedy} Or describe it under [materials.NAME]")
+    return InputError("material", "is not a known material", name, f"{remedy} {otherwise}")
 
 
 def _value(name: str, quantity: str, n: Number) -> MaterialValue:

@@ -38,13 +38,15 @@ class Block:
 class MeshData:
     """A mesh as a file gives it, unchecked: `points`, shape (n, 3), in the file's unit, and blocks of cells.
 
-    `numbers`, shape (n,), are the nodes' numbers in the file, for messages.
+    `numbers`, shape (n,), are the nodes' numbers in the file, for messages; `array` is the cell data that tells the
+    groups, where there is such a thing.
     """
 
     points: Array
     blocks: tuple[Block, ...]
     names: tuple[str, ...]
     numbers: Ints
+    array: str | None = None
 
 
 def too_many(cells: int) -> tuple[str, str, str]:

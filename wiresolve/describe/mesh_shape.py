@@ -56,14 +56,25 @@ class ImportedMesh(Shape):
                 raise InputError("file", rule, name, "rename the group")
 
     @cached_property
-    def _as_read(self) -> PlanarMap:
-        """The drawing at its place in the file, in nm."""
+    def _data(self) -> MeshData:
+        """The mesh as the file gives it."""
         data = self.meshed
         if data is None:
             if self.file.suffix in CAD:
                 remedy = "read the wire file with wiresolve.load"
                 raise InputError("file", "holds a geometry that has to be meshed first", self.file.name, remedy)
             data = imported_mesh.read("file", self.file.name, self.file.content, self.array)
+        return data
+
+    @property
+    def region_array(self) -> str | None:
+        """The cell data that tells the regions; None where the file names its groups."""
+        return self._data.array
+
+    @cached_property
+    def _as_read(self) -> PlanarMap:
+        """The drawing at its place in the file, in nm."""
+        data = self._data
         scale = float(UNITS["length"][self.unit])
         self._size_is_sane(data, scale)
         return planar_map("file", data, scale)
@@ -77,7 +88,9 @@ class ImportedMesh(Shape):
         spread = np.ptp(finite, axis=0) if len(finite) else np.zeros(3)
         sides = sorted(float(side) for side in spread)[1:]  # of the plane that it lies in
         if not np.isfinite(sides).all():
-            raise InputError("file", "has nodes whose places are beyond all numbers", remedy="write the mesh anew")
+            raise InputError(
+                "file", "has nodes whose coordinates are too large for numbers", remedy="write the mesh anew"
+            )
         size = sides[-1] * scale
         if not checks.SHORTEST_nm <= size <= checks.LONGEST_nm:
             fits = [u for u, f in UNITS["length"].items() if u.isascii() and 1 <= sides[-1] * float(f) <= 2000]

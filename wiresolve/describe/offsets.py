@@ -7,6 +7,7 @@ from collections.abc import Mapping, Sequence
 
 from wiresolve.describe.material import GIVEN_SCALE, VACUUM_LEVEL, Material
 from wiresolve.errors import InputError
+from wiresolve.units import format_quantity
 
 
 def barrier_height_eV(inner: Material, outer: Material, valley: str | None = None) -> tuple[float, str] | None:
@@ -52,7 +53,7 @@ def on_common_scale(materials: Mapping[str, Material], admitted: Sequence[str]) 
     Raises
     ------
     InputError
-        An edge is missing, or no scale holds all of them.
+        An edge is missing, no scale holds all of them, or a user's own edge does not stand on the one that does.
     """
     found, used = dict(materials), [materials[name] for name in admitted]
     if len(used) == 1:
@@ -62,12 +63,14 @@ def on_common_scale(materials: Mapping[str, Material], admitted: Sequence[str]) 
         return found
     scale = _shared_scale(used)
     if scale is not None:
+        _no_edge_is_dropped(used, scale)
         return found | {m.name: m.on_scale(scale) for m in materials.values() if scale in dict(m.edges)}
     conductors = [m for m in used if not m.insulator]
     scale = _shared_scale(conductors) if conductors else None
     insulators = [m for m in used if m.insulator]
     if scale is None or not insulators:
         raise _no_common_scale(used)
+    _no_edge_is_dropped(used, scale)
     lowest = min(conductors, key=lambda m: dict(m.edges)[scale])
     vacuum = dict(lowest.edges)[scale] - dict(lowest.edges).get(VACUUM_LEVEL, float("nan"))
     found |= {m.name: m.on_scale(scale) for m in conductors}
@@ -77,6 +80,20 @@ def on_common_scale(materials: Mapping[str, Material], admitted: Sequence[str]) 
             raise _no_common_scale(used)
         found[insulator.name] = insulator.at_edge(vacuum + depth, scale)
     return found
+
+
+def _no_edge_is_dropped(materials: Sequence[Material], scale: str) -> None:
+    """InputError where a user gave an edge that would not count, since the materials meet on another scale."""
+    given = [m for m in materials if GIVEN_SCALE in dict(m.edges)]
+    if scale == GIVEN_SCALE or not given:
+        return
+    others = [m.name for m in materials if m not in given]
+    beside = others[0] if len(others) == 1 else ", ".join(others[:-1]) + " and " + others[-1]
+    has = "has" if len(others) == 1 else "have"
+    rule = f"{given[0].name} gives a conduction_edge, and {beside} beside it {has} none on that scale"
+    edge = format_quantity(dict(given[0].edges)[GIVEN_SCALE], "energy")
+    remedy = "give one to each of them, or take it out"
+    raise InputError(f"materials.{given[0].name}.conduction_edge", rule, edge, remedy)
 
 
 def _no_common_scale(materials: Sequence[Material]) -> InputError:

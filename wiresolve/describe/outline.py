@@ -53,7 +53,7 @@ class Outline(Shape):
     @cached_property
     def _as_read(self) -> tuple[Loop, ...]:
         """The curves at their place in the file, in nm, from the innermost outwards."""
-        traced = outline_file.read("file", self.file)
+        traced = outline_file.read("file", self.file, self.pixel_nm / self.scale_nm)
         flip = np.array([1.0, -1.0 if self.y_down else 1.0]) * self.scale_nm
         drawn = [(self._drawn(one.points[:: -1 if self.y_down else 1] * flip, one.name), one) for one in traced]
         drawn.sort(key=lambda pair: pair[0].area)

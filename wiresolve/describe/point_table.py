@@ -12,14 +12,17 @@ from wiresolve.errors import InputError
 MOST_ROWS = 1_000_000
 
 
-def read(field: str, file: InputFile, columns: int, optional: str = "") -> tuple[list[list[float]], list[str]]:
-    """Rows of numbers, and for each what stands behind it, or else its block between blank lines.
+def read(
+    field: str, file: InputFile, columns: int, optional: str = ""
+) -> tuple[list[list[float]], list[str], list[int]]:
+    """Rows of numbers, for each what stands behind it, or else its block between blank lines, and its line from 1.
 
     Columns are separated by commas, semicolons (then numbers may have decimal commas), tabs or blanks; lines that begin
     with # are skipped, and the first line may hold names. A row may have one column more if `optional` says what it is.
     """
     rows: list[list[float]] = []
     marks: list[str] = []
+    lines: list[int] = []
     block, gap, first = 0, False, True
     for number, line in enumerate(file.text(field).splitlines(), 1):
         text = line.strip()
@@ -52,7 +55,8 @@ def read(field: str, file: InputFile, columns: int, optional: str = "") -> tuple
         if gap:
             block, gap = block + 1, False
         rows.append(values)
+        lines.append(number)
         marks.append(cells[columns] if len(cells) > columns else f"\n{block}")
         if len(rows) > MOST_ROWS:
             raise InputError(field, f"has more than {MOST_ROWS:,} rows", remedy="export fewer points")
-    return rows, marks
+    return rows, marks, lines

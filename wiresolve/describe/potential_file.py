@@ -66,7 +66,7 @@ class PotentialFile:
     def _samples(self) -> tuple[Array, Array]:
         """Points in nm, shape (n, 2), and energies in eV."""
         if self.file.suffix in TABLES:
-            rows, _ = point_table.read("file", self.file, 3)
+            rows, _, _ = point_table.read("file", self.file, 3)
             table = np.array(rows).reshape(-1, 3)
             points, energy = table[:, :2], table[:, 2]
         else:

@@ -55,7 +55,7 @@ class Carriers:
             raise InputError("temperature", f"must be one to {MOST_TEMPERATURES} temperatures", f"{len(row)} of them")
         kelvin = tuple(checks.in_range("temperature", t, 0, 2000, "K") for t in row)
         if len(set(kelvin)) != len(kelvin):
-            raise InputError("temperature", "the same temperature stands twice", list(kelvin))
+            raise InputError("temperature", "the same temperature is given twice", list(kelvin))
         object.__setattr__(self, "temperature_K", kelvin)
         if self.fermi_level_eV is not None:
             level = checks.in_range("fermi_level", self.fermi_level_eV, -100, 100, "eV")
@@ -173,10 +173,8 @@ class Problem:
                 other = 'outside = "hard wall"' if where.endswith("outside") else 'carriers = "excluded" there'
                 raise InputError(where, rule, name, f"give it an electron_mass, or write {other}")
         found = on_common_scale(found, self._admitted())
-        if self.orientation is None:
-            return found
-        table = {name for name in found if name not in own}
-        return {n: with_phase_note(m, self.orientation.axis) if n in table else m for n, m in found.items()}
+        table = [name for name in found if name not in own]
+        return with_phase_note(found, table, section, None if self.orientation is None else self.orientation.axis)
 
     def _admitted(self) -> list[str]:
         """Names of the materials that admit carriers, from the core outwards."""

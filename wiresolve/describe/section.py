@@ -252,6 +252,7 @@ class Section:
         curves = self.shape.curve_count if isinstance(self.shape, Outline) else 1
         through, coats = 0.0, {side: 0.0 for side in self.shape.edge_names() if side.startswith("side ")}
         single, curve = False, 0
+        self._check_curves(curves)
         for k, layer in enumerate(self.layers, 1):
             try:
                 if layer.thickness_nm is None:
@@ -275,7 +276,7 @@ class Section:
                     if isinstance(self.shape, Outline):
                         loop = self.shape.grown_from(curve, through)
                         if curve + 1 < curves and any(later.thickness_nm is None for later in self.layers[k:]):
-                            rule = "stands between curves of the outline, whose layers have none"
+                            rule = "is given between curves of the outline, whose layers have none"
                             raise InputError("thickness", rule, remedy="leave it out, or draw all curves")
                     else:
                         loop = self.shape.coated(through, coats if single else {})
@@ -283,14 +284,27 @@ class Section:
                 raise error.under(f"layers[{k}]") from None
             admits = self._admits(layer.material, layer.carriers)
             painted.insert(0, Piece(f"layer {k}", loop, layer.material, admits, layer.offset_eV))
-        if curve + 1 < curves:
-            rule = f"has {curves} curves, and {curves - 1} layers without a thickness are wanted, one for each shell"
-            raise InputError("layers", f"the outline {rule}", f"{curve} of them")
         for k, patch in enumerate(self.patches, 1):
             admits = self._admits(patch.material, patch.carriers)
             loop = patch.shape.loop().moved(*patch.center_nm)
             painted.append(Piece(f"patch {k}", loop, patch.material, admits, patch.offset_eV))
         return tuple(painted)
+
+    def _check_curves(self, curves: int) -> None:
+        """InputError where the outline has a curve that no layer uses."""
+        using, wanted = sum(layer.thickness_nm is None for layer in self.layers), curves - 1
+        if using >= wanted:
+            return
+        one = "1 layer without a thickness is" if wanted == 1 else f"{wanted} layers without a thickness are"
+        rule = f"the outline has {curves} curves, and {one} wanted, one for each shell: a curve is not used"
+        for k, layer in enumerate(self.layers, 1):
+            if layer.thickness_nm is not None:
+                remedy = "leave the thickness out: the layer then reaches to the file's next curve"
+                raise InputError(f"layers[{k}].thickness", rule, f"{layer.thickness_nm:g} nm", remedy)
+        remedy = (
+            'write [[section.layers]] with a material for each shell, or "void", or leave the curve out of the file'
+        )
+        raise InputError("layers", rule, f"{using or 'none'} of them", remedy)
 
     def _core(self) -> list[Piece]:
         """The core as one piece, or the faces of a mesh and the gaps between them, larger outlines first."""

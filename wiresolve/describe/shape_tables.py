@@ -169,8 +169,11 @@ def _outline(table: Table, others: tuple[str, ...], files: Files) -> Outline:
     table.only(("shape", *OUTLINE_KEYS, *others), "an outline")
     file = files.read(table)
     if ("unit" in table) == ("scale" in table):
-        rule = "an outline needs either the unit of its numbers or the scale, the length of one of them"
-        raise InputError(table.at("scale"), rule, remedy='write e.g. unit = "nm", or scale = "0.42 nm"')
+        rule, remedy = "is given beside a unit: an outline needs one of them, not both", "take one of the two out"
+        if "scale" not in table:
+            rule = "is missing: an outline needs the unit of its numbers, or the scale, the length of one of them"
+            remedy = 'write e.g. unit = "nm", or scale = "0.42 nm"'
+        raise InputError(table.at("scale"), rule, remedy=remedy)
     values: dict[str, Any] = {}
     if "unit" in table:
         values["scale_nm"] = float(UNITS["length"][_unit(table)])

@@ -102,6 +102,8 @@ def _of_mesh(section: Section) -> list[tuple[str, str]]:
     assert isinstance(section.shape, ImportedMesh)
     pieces = {piece.name: piece for piece in section.pieces()}
     rows = []
+    if (array := section.shape.region_array) is not None:
+        rows.append(("section.array", array if section.shape.array else f"{array}, chosen as it tells the regions"))
     for name in section.shape.group_names:
         faces = [face for face in section.shape.faces() if face.group == name]
         parts = f"{len(faces)} parts, " if len(faces) > 1 else ""

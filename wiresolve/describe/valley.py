@@ -48,7 +48,7 @@ class Valley:
         self._set("height_eV", checks.in_range("edge", self.height_eV, -100, 100, "eV"))
         if not isinstance(self.inverse_mass, tuple) or self.inverse_mass:
             if any(value is not None for value in (self.longitudinal_mass, self.transverse_mass, self.axis)):
-                raise InputError("inverse_mass", "stands beside masses or an axis", remedy="keep one of the two")
+                raise InputError("inverse_mass", "is given beside masses or an axis", remedy="keep one of the two")
             self._set("inverse_mass", checked_tensor(self.inverse_mass))
         else:
             for field in ("longitudinal_mass", "transverse_mass"):
@@ -63,7 +63,7 @@ class Valley:
         if not isinstance(self.zone_boundary, bool):
             raise InputError("zone_boundary", "must be true or false", self.zone_boundary)
         if self.axis is not None and self.degeneracy is not None:
-            rule = "stands beside an axis, whose equivalent directions are counted"
+            rule = "is given beside an axis, whose equivalent directions are counted"
             raise InputError("degeneracy", rule, self.degeneracy, "take one of the two out")
         if self.axis is None:
             given = 1 if self.degeneracy is None else self.degeneracy
