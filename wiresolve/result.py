@@ -111,9 +111,9 @@ class Result:
     """Everything a run found. It is data: no field is filled in later.
 
     `modes` has the shape (mesh points, listed subbands): real envelope functions in 1/nm at the mesh's nodes, each
-    normalised to 1 over the section. `cell_fields` holds values by cell (`mass_m0`, the axial mass, and `band_edge_eV`;
-    NaN where carriers are kept out). `spectrum` is what `line_density`, `fermi_level` and `conductance_at` stand on:
-    the listed subbands and what lies above them.
+    normalised to 1 over the section. `cell_fields` holds values by cell for the group of valleys of the first subband
+    (`axial_mass_of_first_valleys_m0`, `band_edge_of_first_valleys_eV`; NaN where carriers are kept out). `spectrum` is
+    what `line_density`, `fermi_level` and `conductance_at` stand on: the listed subbands and what lies above them.
     """
 
     problem: Problem

@@ -17,8 +17,8 @@ Array = NDArray[np.float64]
 class Relation:
     """How real energies follow from those of the constant mass, where one edge and one alpha hold everywhere.
 
-    The operator is then K / (1 + alpha (E - edge)) + edge, so every eigenvalue of the constant-mass one, K + edge, gives
-    an exact energy; alpha = 0 is the constant mass.
+    The operator is then K / (1 + alpha (E - edge)) + edge, so every eigenvalue of the constant-mass one, K + edge,
+    gives an exact energy; alpha = 0 is the constant mass.
     """
 
     edge_eV: float

@@ -84,7 +84,10 @@ def _stress(
     local = states[space.dofs[cells]]
     psi = values @ local
     grad = np.einsum("cqrx,rcqm->xcqm", inverse, np.stack([slopes[0] @ local, slopes[1] @ local]))
-    flux = np.einsum("cxy,ycqm->xcqm", medium.stiffness[region][:, :2, :2], grad)
+    if medium.k_per_nm:
+        grad = np.concatenate([grad, 1j * medium.k_per_nm * psi[None]])
+    depth = len(grad)
+    flux = np.einsum("cxy,ycqm->xcqm", medium.stiffness[region][:, :depth, :depth], grad)
     above = energy - medium.edge_eV[region][:, None, None]
     if medium.potential is not None:
         x = np.einsum("qa,cax->xcq", values, corner)
@@ -93,5 +96,5 @@ def _stress(
         flux = flux / (1 + medium.nonparabolicity_per_eV[region][:, None, None] * above)
     normal = np.moveaxis(normals, 2, 0)[..., None]
     kinetic = (grad.conj() * flux).sum(axis=0).real
-    across = ((normal * grad).sum(axis=0).conj() * (normal * flux).sum(axis=0)).real
+    across = ((normal * grad[:2]).sum(axis=0).conj() * (normal * flux[:2]).sum(axis=0)).real
     return np.asarray(kinetic - above * np.abs(psi) ** 2 - 2 * across)

@@ -221,7 +221,8 @@ def ritz_from(hamiltonian: NDArray[Any], mass: NDArray[Any]) -> tuple[Array, NDA
     try:
         values, turn = dense.eigh(_hermitian(hamiltonian), _hermitian(mass))
     except np.linalg.LinAlgError:
-        raise ConvergenceError("the solver's states are not independent; ask fewer states or a finer accuracy") from None
+        rule = "the solver's states are not independent; ask fewer states or a finer accuracy"
+        raise ConvergenceError(rule) from None
     return values, turn
 
 

@@ -12,7 +12,9 @@ from numpy.typing import NDArray
 from wiresolve.describe.section import Piece
 from wiresolve.physics import local_axial, modes
 from wiresolve.physics.axial_bands import AxialBands, curvature, dispersion
-from wiresolve.physics.solved import Solved, certify_at
+from wiresolve.physics.band_tables import tables
+from wiresolve.physics.minima import Minima, bend, beside
+from wiresolve.physics.solved import Solved
 from wiresolve.physics.subbands import Certified
 from wiresolve.physics.wire import Wire
 from wiresolve.units import HBAR2_OVER_2M0, KB
@@ -85,7 +87,10 @@ class Listing:
 def listing(wire: Wire, certified: Certified) -> Listing:
     """Everything that is listed of the certified states."""
     reach = _energy_reach(wire, certified)
-    each = tuple(_listed(wire, solved, n, reach) for solved, n in zip(certified.solved, certified.listed, strict=True))
+    each = tuple(
+        _listed(wire, solved, n, low, reach)
+        for solved, n, low in zip(certified.solved, certified.listed, certified.minima, strict=True)
+    )
     entries = certified.entries
 
     def gathered(name: str) -> Array:
@@ -116,28 +121,22 @@ def listing(wire: Wire, certified: Certified) -> Listing:
     )
 
 
-def _listed(wire: Wire, solved: Solved, listed: int, reach_eV: float) -> Listed:
+def _listed(wire: Wire, solved: Solved, listed: int, low: Minima | None, reach_eV: float) -> Listed:
     """One channel's states; without a listed one, E(k) is taken for a parabola."""
-    whole = int(solved.level[-1])
+    whole = int(solved.level.max())
     unknowns = modes.canonical(solved.pencil, solved.unknown_states, solved.level, whole)
     states = solved.pencil.spread(unknowns)
     shares = modes.shares(solved.pencil.space, states)
     if not listed:
         return _unlisted(solved, unknowns, states, shares)
+    if low is not None:
+        accuracy = max(0.1 * wire.problem.accuracy.energy_eV, _AXIAL_eV)
+        return _sheared(solved, low, unknowns, states, shares, reach_eV, accuracy)
     count = listed
     if solved.relation is None:
         return _locally(solved, unknowns, states, shares, count, reach_eV)
     relation, pencil = solved.relation, solved.pencil
-    coarse = curvature(pencil, solved.value_eV, unknowns, solved.level, solved.shift_eV)
-    # The same at degree 6 shows what the mesh still does to the mass.
-    fine_states = solved.enriched.states[solved.enriched_pencil.kept]
-    fine = curvature(solved.enriched_pencil, solved.enriched.energy_eV, fine_states, solved.level, solved.shift_eV)
-    heavier = 1 / relation.slope(solved.energy_eV)
-    mass = HBAR2_OVER_2M0 / coarse * heavier
-    error = solved.bar_factor * np.abs(HBAR2_OVER_2M0 / fine * heavier - mass) + 1e-12 * np.abs(mass)
-    growth = relation.alpha_per_eV * solved.bar_eV
-    error = error + 2 * growth / heavier * np.abs(mass)
-
+    coarse, mass, error = _masses(solved, unknowns)
     stiffness = np.nanmedian(np.abs(coarse)) if np.isfinite(coarse).any() else HBAR2_OVER_2M0
     lowest = solved.energy_eV[:1]
     far = float((relation.value(lowest + reach_eV) - relation.value(lowest))[0])
@@ -147,14 +146,65 @@ def _listed(wire: Wire, solved: Solved, listed: int, reach_eV: float) -> Listed:
     parabola = solved.value_eV[:count, None] + coarse[:count, None] * k**2
     closed = bool(np.isfinite(coarse).all() and np.abs(bands.energy_eV - parabola).max() < 1e-9)
     bands = replace(bands, energy_eV=relation.energy(bands.energy_eV))
+    k_min = np.zeros(len(solved.energy_eV))
+    return Listed(solved.energy_eV, solved.bar_eV, k_min, mass, error, states, shares, bands, closed)
+
+
+def _masses(solved: Solved, unknowns: NDArray[Any]) -> tuple[Array, Array, Array]:
+    """(m,) curvatures of the constant-mass eigenvalues at k = 0 in eV nm^2, axial masses in m0, and their errors."""
+    relation = solved.relation
+    assert relation is not None
+    coarse = curvature(solved.pencil, solved.value_eV, unknowns, solved.level, solved.shift_eV)
+    # The same at degree 6 shows what the mesh still does to the mass.
+    fine_states = solved.enriched.states[solved.enriched_pencil.kept]
+    fine = curvature(solved.enriched_pencil, solved.enriched.energy_eV, fine_states, solved.level, solved.shift_eV)
+    heavier = 1 / relation.slope(solved.energy_eV)
+    mass = HBAR2_OVER_2M0 / coarse * heavier
+    error = solved.bar_factor * np.abs(HBAR2_OVER_2M0 / fine * heavier - mass) + 1e-12 * np.abs(mass)
+    growth = relation.alpha_per_eV * solved.bar_eV
+    return coarse, mass, error + 2 * growth / heavier * np.abs(mass)
+
+
+def _sheared(
+    solved: Solved,
+    low: Minima,
+    unknowns: NDArray[Any],
+    states: NDArray[Any],
+    shares: Mapping[str, Array],
+    reach_eV: float,
+    accuracy_eV: float,
+) -> Listed:
+    """The same where H(k) has a part linear in k: bands may be lowest off k = 0, or start linearly."""
+    n = len(low.rows)
     energy, bar, k_min = solved.energy_eV.copy(), solved.bar_eV.copy(), np.zeros(len(solved.energy_eV))
-    below = energy[:count] - bands.energy_eV.min(axis=1) > bar[:count]
-    for i in np.flatnonzero(below):
-        k_min[i], bottom = _minimum(bands, int(i))
-        there = certify_at(solved, float(k_min[i]), int(i) + 1)
-        energy[i], bar[i] = there.energy_eV[i], there.bar_eV[i]
-        mass[i], error[i] = _mass_there(bands, int(i), bottom, bar[i])
-    return Listed(energy, bar, k_min, mass, error, states, shares, bands, closed)
+    energy[:n], bar[:n], k_min[:n] = low.energy_eV, low.bar_eV, low.k_per_nm
+    along = np.diag(solved.pencil.expected(2, unknowns)).real
+    if solved.relation is not None:
+        _, mass, error = _masses(solved, unknowns)
+        along = along * solved.relation.slope(solved.energy_eV)
+        near_zero = None
+    else:
+        mass, error = HBAR2_OVER_2M0 / along, 0.1 * HBAR2_OVER_2M0 / along
+        near_zero = beside(low.survey) if None in low.there else None
+    for i, there in enumerate(low.there):
+        if there is not None:
+            k_min[i], mass[i], error[i] = _bent(low, i)
+        elif solved.relation is None:
+            assert solved.local_mass is not None
+            level = np.flatnonzero(solved.level == solved.level[i])
+            linear = local_axial.linear_part(solved.local_mass, solved.energy_eV[i], unknowns[:, level])
+            mass[i], error[i] = (np.nan, np.nan) if linear > along[i] else _bent(low, i, near_zero)[1:]
+    stiffness = HBAR2_OVER_2M0 / np.abs(mass[:n][np.isfinite(mass[:n])])
+    end = float(np.sqrt(1.5 * reach_eV / np.median(stiffness if len(stiffness) else along[:n])))
+    bands = tables(low, k_min[:n], end, K_POINTS, reach_eV, accuracy_eV)
+    return Listed(energy, bar, k_min, mass, error, states, shares, bands, closed=False)
+
+
+def _bent(low: Minima, i: int, near_zero: Solved | None = None) -> tuple[float, float, float]:
+    """Where exactly a listed minimum is, its axial mass, and the mass's error."""
+    k, curve, error = bend(low, i, near_zero)
+    mass = HBAR2_OVER_2M0 / curve
+    return k, mass, abs(mass) * error / abs(curve)
 
 
 def _unlisted(solved: Solved, unknowns: NDArray[Any], states: NDArray[Any], shares: Mapping[str, Array]) -> Listed:
@@ -171,42 +221,18 @@ def _locally(
     solved: Solved, unknowns: NDArray[Any], states: NDArray[Any], shares: Mapping[str, Array], count: int, reach: float
 ) -> Listed:
     """The same where masses grow with energy differently from place to place."""
-    family, energy = solved.local_mass, solved.energy_eV.copy()
+    family, energy = solved.local_mass, solved.energy_eV
     assert family is not None
-    bar, k_min = solved.bar_eV.copy(), np.zeros(len(energy))
     along = np.diag(solved.pencil.expected(2, unknowns)).real
     k = np.linspace(0, np.sqrt(1.5 * reach / np.median(along)), K_POINTS)
     bands = local_axial.dispersion(family, energy, unknowns, k, solved.phase_space, count)
-    if family.sheared:
-        inner = (bands.energy_eV[:, 1] - bands.energy_eV[:, 0]) / k[1] ** 2
-        coarse = np.concatenate([inner, along[count:]])
-    else:
-        coarse = local_axial.curvature(family, energy, unknowns, solved.level)
+    coarse = local_axial.curvature(family, energy, unknowns, solved.level)
     mass = HBAR2_OVER_2M0 / coarse
     fine = np.diag(
         solved.enriched_pencil.expected(2, solved.enriched.states[solved.enriched_pencil.kept])
     ).real  # fmt: skip
     error = 2 * solved.bar_factor * np.abs(fine / along - 1) * np.abs(mass) + 1e-9 * np.abs(mass)
-    for i in np.flatnonzero(energy[:count] - bands.energy_eV.min(axis=1) > bar[:count]):
-        k_min[i], bottom = _minimum(bands, int(i))
-        energy[i] = bottom[2]
-        bar[i] += bands.error_bound_eV
-        mass[i], error[i] = _mass_there(bands, int(i), bottom, bar[i])
-    return Listed(energy, bar, k_min, mass, error, states, shares, bands, closed=False)
-
-
-def _minimum(bands: AxialBands, i: int) -> tuple[float, Array]:
-    """Where a band is lowest, and the parabola (from its own origin there: curvature, 0, energy) through it."""
-    k = bands.k_per_nm
-    j = int(np.clip(np.argmin(bands.energy_eV[i]), 1, len(k) - 2))
-    a, b, c = np.polyfit(k[j - 1 : j + 2] - k[j], bands.energy_eV[i, j - 1 : j + 2], 2)
-    return float(k[j] - b / (2 * a)), np.array([a, 0.0, c - b * b / (4 * a)])
-
-
-def _mass_there(bands: AxialBands, i: int, bottom: Array, bar: float) -> tuple[float, float]:
-    mass = HBAR2_OVER_2M0 / bottom[0]
-    step = bands.k_per_nm[1] - bands.k_per_nm[0]
-    return mass, abs(mass) * (4 * (bar + bands.error_bound_eV) / (bottom[0] * step**2) + 1e-3)
+    return Listed(energy, solved.bar_eV, np.zeros(len(energy)), mass, error, states, shares, bands, closed=False)
 
 
 def carrying_piece(wire: Wire) -> Piece:

@@ -9,8 +9,8 @@ import scipy.linalg as dense
 from numpy.typing import NDArray
 
 from wiresolve.errors import ConvergenceError
-from wiresolve.physics.axial_bands import AxialBands
-from wiresolve.physics.local_mass import LocalMass, reduced
+from wiresolve.physics.axial_bands import LINEAR_ABOVE, AxialBands
+from wiresolve.physics.local_mass import LocalMass
 from wiresolve.physics.semiclassical import PhaseSpace
 
 Array = NDArray[np.float64]
@@ -18,9 +18,7 @@ Array = NDArray[np.float64]
 _ENERGIES = 96
 """Energies at which all k of the bands are found; between them k^2(E) is smooth."""
 _ABOVE = 6
-"""States solved beyond the listed ones where k is large: bands that have crossed the listed ones may lie lower there."""
-_K_POINTS = 17
-"""Wave numbers at which bands with terms linear in k are found."""
+"""States solved beyond the listed ones where k is large: bands that have crossed listed ones may lie lower there."""
 
 
 def curvature(family: LocalMass, energies: Array, states: NDArray[Any], levels: NDArray[np.int64]) -> Array:
@@ -44,6 +42,19 @@ def curvature(family: LocalMass, energies: Array, states: NDArray[Any], levels: 
     return out
 
 
+def linear_part(family: LocalMass, energy_eV: float, states: NDArray[Any]) -> float:
+    """The largest first-order term between the states (n, g) of a level, in eV nm, as `LINEAR_ABOVE` measures it.
+
+    Above the curvature in eV nm^2 it counts.
+    """
+    scale = np.sqrt(family.norms(np.full(states.shape[1], energy_eV), states))
+    total: Any = 0
+    for weight, matrix in zip(family.weights(energy_eV), family.axial_matrices(1), strict=True):
+        if matrix is not None:
+            total = total + weight * (states.conj().T @ (matrix @ states))
+    return float(10 / LINEAR_ABOVE * np.abs(total / np.outer(scale, scale)).max())
+
+
 def dispersion(
     family: LocalMass,
     energies: Array,
@@ -52,18 +63,18 @@ def dispersion(
     cells: PhaseSpace,
     count: int,
 ) -> AxialBands:
-    """E(k) of the lowest `count` states at all `k_per_nm` (p,), from the space of states at three wave numbers."""
+    """E(k) of the lowest `count` states at all `k_per_nm` (p,), from the space of states at three wave numbers.
+
+    For an operator without terms linear in k; `minima` is for others.
+    """
     blocks, held = [states], []
     for j in (round(0.6 * (len(k_per_nm) - 1)), len(k_per_nm) - 1):
         found = family.moved(float(k_per_nm[j])).lowest(count + _ABOVE, cells, polished=False)
         blocks.append(found.states)
         held.append((j, found.energy_eV))
     space = _orthonormal(np.hstack(blocks), family.mass)
-    orders = [_small(space, family.matrices), *(_small(space, family.axial_matrices(o)) for o in (1, 2))]
-    if family.sheared:
-        table = _by_wave_number(family, orders, energies, k_per_nm, count)
-    else:
-        table = _by_energy(family, orders, energies, k_per_nm, count)
+    still, moving = _small(space, family.matrices), _small(space, family.axial_matrices(2))
+    table = _by_energy(family, still, moving, energies, k_per_nm, count)
     bound = max(_distance(table[:, j], energy) for j, energy in held)
     return AxialBands(k_per_nm, table, bound)
 
@@ -87,13 +98,17 @@ def _sum(weights: Array, parts: list[NDArray[Any]]) -> NDArray[Any]:
 
 
 def _by_energy(
-    family: LocalMass, orders: list[list[NDArray[Any]]], energies: Array, k_per_nm: Array, count: int
+    family: LocalMass,
+    still: list[NDArray[Any]],
+    moving: list[NDArray[Any]],
+    energies: Array,
+    k_per_nm: Array,
+    count: int,
 ) -> Array:
-    """At a fixed energy k^2 is the eigenvalue of a linear problem, (E - T(E)) x = k^2 H2(E) x, for all bands at once."""
+    """At a fixed energy k^2 is the eigenvalue of a linear problem, (E - T(E)) x = k^2 H2(E) x, for all bands."""
     from scipy.interpolate import CubicSpline
     from scipy.optimize import linear_sum_assignment
 
-    still, moving = orders[0], orders[2]
     d, end = len(still[0]), float(k_per_nm[-1]) ** 2
     low = float(energies[0])
     # Where the lightest of the bands would be at the end, if its mass did not grow.
@@ -118,7 +133,9 @@ def _by_energy(
             break
         reach *= 1.6
     else:
-        raise ConvergenceError("the motion along the wire could not be followed up to the wave numbers that heat reaches")
+        raise ConvergenceError(
+            "the motion along the wire could not be followed up to the wave numbers that heat reaches"
+        )
     table = np.empty((count, len(k_per_nm)))
     starts = np.array([np.interp(0.0, row, grid) for row in squares])
     for row, start in enumerate(np.argsort(starts, kind="stable")):
@@ -128,27 +145,6 @@ def _by_energy(
         order = np.argsort(x)
         table[row] = CubicSpline(x[order], y[order])(k_per_nm**2)
     return table
-
-
-def _by_wave_number(
-    family: LocalMass, orders: list[list[NDArray[Any]]], energies: Array, k_per_nm: Array, count: int
-) -> Array:
-    """Band after band at a few wave numbers, followed by the overlap of states, and a spline through them."""
-    from scipy.interpolate import CubicSpline
-    from scipy.optimize import linear_sum_assignment
-
-    points = np.linspace(0, float(k_per_nm[-1]), _K_POINTS)
-    found, before = np.empty((count, len(points))), None
-    more = min(count + 2, len(orders[0][0]))
-    values = np.full(more, float(energies[0]))
-    for i, k in enumerate(points):
-        parts = [a + k * b + k**2 * c for a, b, c in zip(*orders, strict=True)]
-        values, vectors = reduced(parts, family.weights, family.slopes, more, values)
-        picked = np.arange(count)
-        if before is not None:
-            picked = linear_sum_assignment(np.abs(before.conj().T @ vectors) ** 2, maximize=True)[1]
-        found[:, i], before = values[picked], vectors[:, picked]
-    return np.array([CubicSpline(points, row, bc_type=("clamped", "not-a-knot"))(k_per_nm) for row in found])
 
 
 def _orthonormal(block: NDArray[Any], mass: Any) -> NDArray[Any]:

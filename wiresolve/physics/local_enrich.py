@@ -12,7 +12,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from wiresolve.fem.enrich import Enriched, Local, Piece, condensed_solve, prolong
+from wiresolve.fem.enrich import Enriched, Piece, condensed_solve, prolong
 from wiresolve.physics.local_mass import Found, LocalMass, reduced
 
 Array = NDArray[np.float64]
@@ -43,7 +43,7 @@ def enrich(coarse: LocalMass, fine: LocalMass, found: Found) -> Enriched:
     kept = values > 1e-12 * values[-1]
     turn = vectors[:, kept] / np.sqrt(values[kept])
     improved, mix = reduced(
-        [turn.T @ part @ turn for part in small], fine.weights, fine.slopes, len(energies), energies
+        [turn.conj().T @ part @ turn for part in small], fine.weights, fine.slopes, len(energies), energies
     )
     mix = turn @ mix
     after = basis @ mix
@@ -100,10 +100,9 @@ class _Cells:
         made: dict[int, NDArray[Any]] = {}
         parts = []
         for part in self.family.parts:
-            local: Local = part.local
-            if id(local) not in made:
-                made[id(local)] = local(space, pick)
-            parts.append(made[id(local)])
+            if id(part.pencil) not in made:
+                made[id(part.pencil)] = part.pencil.local(self.family.k_per_nm)(space, pick)
+            parts.append(made[id(part.pencil)])
         found = parts, space.elements({("1", "1"): space.ones}, pick)
         if key == 0 and isinstance(pick, slice) and pick.stop >= len(space.cells):
             self._kept[key] = found

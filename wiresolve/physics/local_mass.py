@@ -1,4 +1,4 @@
-"""A mass that grows with energy and differs from place to place: T(E) psi = E M psi, solved to its residual and counted.
+"""A mass that grows with energy and differs from place to place: T(E) psi = E M psi, solved and counted.
 
 m(E) = m (1 + alpha (E - V(x, y))), V being band edge and potential (E. O. Kane, J. Phys. Chem. Solids 1, 249 (1957); in
 a heterostructure G. Bastard, Phys. Rev. B 24, 5693 (1981)). The n-th eigenvalue of T(E) falls with E, so it meets E
@@ -20,7 +20,6 @@ from numpy.typing import NDArray
 from wiresolve.bands.coefficients import Coefficients
 from wiresolve.errors import ConvergenceError, InputError
 from wiresolve.fem import eigen
-from wiresolve.fem.enrich import Local
 from wiresolve.fem.space import Space
 from wiresolve.physics.pencil import Operator, Pencil, build
 from wiresolve.physics.semiclassical import PhaseSpace
@@ -47,9 +46,9 @@ _REFERENCES, _MORE_REFERENCES = (0.2, 0.9), (0.05, 0.3, 0.6, 1.0)
 
 @dataclass(frozen=True, eq=False)
 class Part:
-    """A part of T(E): element matrices on some cells ((c,) flags, None for all), times a weight that depends on E."""
+    """A part of T(E): a pencil's element matrices on some cells ((c,) flags, None for all), times a weight of E's."""
 
-    local: Local
+    pencil: Pencil
     cells: NDArray[np.bool_] | None
 
 
@@ -69,13 +68,14 @@ class LocalMass:
     Attributes
     ----------
     kept : unknowns among the space's nodes.
-    parts : the sum at k = 0 as element matrices.
+    parts : the sum as element matrices.
     axial : pencils whose orders 1 and 2 in k go with the same weights (None: nothing).
     weights, slopes : of the parts at an energy, (p,), and their derivatives.
     mass : of the inner product.
     middle_eV : the energy at which the first block of states is solved.
     shift_eV : an energy below all states.
     floor_eV : the energy above which all masses are positive; all states lie above it.
+    still : the same at k = 0, where k is another.
     """
 
     space: Space
@@ -89,18 +89,19 @@ class LocalMass:
     shift_eV: float
     floor_eV: float
     k_per_nm: float = 0.0
+    still: LocalMass | None = None
 
     @cached_property
     def matrices(self) -> tuple[Any, ...]:
         """The parts as sparse matrices on the unknowns."""
-        found = []
-        for i, part in enumerate(self.parts):
-            total = self.space.gathered(part.local, part.cells)[self.kept][:, self.kept]
-            for order in (1, 2):
-                moving = self.axial_matrices(order)[i] if self.k_per_nm else None
+        if self.still is None:
+            made = (self.space.gathered(part.pencil.local(), part.cells) for part in self.parts)
+            return tuple(total[self.kept][:, self.kept] for total in made)
+        found = list(self.still.matrices)
+        for order in (1, 2):
+            for i, moving in enumerate(self.axial_matrices(order)):
                 if moving is not None:
-                    total = total + self.k_per_nm**order * moving
-            found.append(total)
+                    found[i] = found[i] + self.k_per_nm**order * moving
         return tuple(found)
 
     def axial_matrices(self, order: int) -> tuple[Any | None, ...]:
@@ -114,11 +115,13 @@ class LocalMass:
 
     def moved(self, k_per_nm: float) -> LocalMass:
         """T(E) at a wave number along the wire."""
-        return replace(self, k_per_nm=k_per_nm)
+        return replace(self, k_per_nm=k_per_nm, still=self.still or self)
 
     @cached_property
     def mass(self) -> Any:
         """The matrix of the inner product on the unknowns."""
+        if self.still is not None:
+            return self.still.mass
         return self.space.mass[self.kept][:, self.kept]
 
     def at(self, energy_eV: float) -> Any:
@@ -183,6 +186,13 @@ class LocalMass:
             raise ConvergenceError(rule)
         return found
 
+    def polish(self, found: Found) -> Found:
+        """The same states improved until their residuals are small; all anew where that does not succeed."""
+        count = len(found.energy_eV)
+        energies, states = self._polished(found.energy_eV, found.states, count)
+        _, size = self.residuals(energies, states)
+        return Found(energies, states, float(size.max()))
+
     def _solved(
         self, count: int, cells: PhaseSpace, polished: bool, references: Sequence[float], start: NDArray[Any] | None
     ) -> Found:
@@ -193,6 +203,7 @@ class LocalMass:
             at = max(cells.energy_of(max(share * more, 0.5)), self.floor_eV)
             _, found = eigen.lowest(self.at(at), self.mass, more, self.shift_eV, _FIRST)
             block = found if block is None else np.hstack([block, found])
+        assert block is not None
         block = _orthonormal(block, self.mass)
         small = [block.conj().T @ (matrix @ block) for matrix in self.matrices]
         guess = np.full(more, max(cells.energy_of(1), self.floor_eV))
@@ -351,7 +362,7 @@ def _parts(space: Space, operator: Operator, kept: NDArray[np.int64], lowest_eV:
         ),
         nonparabolicity_per_eV=(),
     )
-    whole = build(space, moving).local()
+    whole = build(space, moving)
     parts, axial, alphas, centres = [], [], [], []
     for g, (own_edge, own_alpha) in enumerate(pairs):
         cells = number[region] == g
@@ -367,7 +378,7 @@ def _parts(space: Space, operator: Operator, kept: NDArray[np.int64], lowest_eV:
             for j in range(len(points)):
                 scaled = replace(mine, kinetic_scale=_lagrange(operator, points, j))
                 pencil = replace(build(space, scaled), kept=kept)
-                parts.append(Part(pencil.local(), cells))
+                parts.append(Part(pencil, cells))
                 axial.append(pencil)
         alphas += [float(own_alpha)] * len(points)
         centres += (own_edge + points).tolist()
@@ -379,13 +390,13 @@ def _parts(space: Space, operator: Operator, kept: NDArray[np.int64], lowest_eV:
     def slopes(energy: float) -> Array:
         return np.append(-slope / (1 + slope * (energy - centre)) ** 2, 0.0)
 
-    return (*parts, Part(build(space, still).local(), None)), weights, slopes, (*axial, None)
+    return (*parts, Part(build(space, still), None)), weights, slopes, (*axial, None)
 
 
 def _potentials(
     space: Space, operator: Operator, cells: NDArray[np.bool_], edge: float, alpha: float, lowest_eV: float
 ) -> Array | None:
-    """Chebyshev points of the potential in some cells, as many as 1/m needs at the lowest energy; None where one does."""
+    """Chebyshev points of the potential in some cells, as many as 1/m needs at the lowest energy; None: one does."""
     if operator.potential is None or alpha == 0:
         return None
     at = space.quadrature_points[cells]

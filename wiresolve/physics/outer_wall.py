@@ -2,18 +2,23 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.fem import eigen
+from wiresolve.fem.mesh import Mesh
+from wiresolve.fem.meshing import SizeField
 from wiresolve.physics import local_mass
 from wiresolve.physics.pencil import build
 from wiresolve.physics.semiclassical import PhaseSpace
 from wiresolve.physics.solved import Solved
 
 Array = NDArray[np.float64]
+
+_GROWTH = 4.0
+"""How much larger cells are far out in a material that goes on outside."""
 
 
 @dataclass(frozen=True)
@@ -26,17 +31,18 @@ class Barrier:
     extendable: bool
 
 
-def wall_effect(solved: Solved, barrier: Barrier, count: int) -> Array:
-    """How far each of the lowest energies falls when the outer hard wall is left free, (count,) in eV."""
+def wall_effect(solved: Solved, barrier: Barrier, count: int, k_per_nm: float = 0.0) -> Array:
+    """How far each of the lowest energies, at a k, falls when the outer hard wall is left free, (count,) in eV."""
     space = solved.pencil.space
     region = [r.name for r in space.mesh.regions].index(barrier.region)
     released = space.rim_of(region)
     if solved.relation is None:
         free = local_mass.family(space, solved.operator, solved.phase_space, count + 2, released)
+        free = free.moved(k_per_nm) if k_per_nm else free
         energy = free.lowest(count + 2, solved.phase_space, start=solved.states[free.kept, : count + 2]).energy_eV
     else:
         pencil = build(space, solved.operator, released)
-        value, _ = eigen.lowest(pencil.h0, pencil.mass, count + 2, solved.shift_eV)
+        value, _ = eigen.lowest(pencil.at(k_per_nm), pencil.mass, count + 2, solved.shift_eV)
         energy = solved.relation.energy(value)
     return np.asarray(solved.energy_eV[:count] - energy[:count])
 
@@ -77,3 +83,14 @@ def further(energy_eV: Array, effect_eV: Array, barrier: Barrier, accuracy_eV: f
     depth = barrier.edge_eV - np.minimum(energy_eV, (2 * energy_eV - effect_eV) / 2)
     decay = np.sqrt(np.maximum(depth, 1e-6) / barrier.stiffness_eV_nm2)
     return float((np.log(np.maximum(effect_eV[bound], 1e-300) / wish) / (2 * decay[bound])).max() * 1.15)
+
+
+def coarser_outside(size: SizeField, rough: Mesh, barrier: Barrier, top_eV: float) -> SizeField:
+    """Cells that grow away from what the outer material surrounds: states decay there, or have long waves."""
+    corner = rough.cells[:, :3]
+    outer = rough.region == [r.name for r in rough.regions].index(barrier.region)
+    wave = np.sqrt(max(top_eV - barrier.edge_eV, 0) / barrier.stiffness_eV_nm2)
+    grown = min(_GROWTH * size.largest_nm, max(2 / wave, size.largest_nm) if wave else np.inf)
+    sizes = np.full(len(rough.points), grown)
+    sizes[np.unique(corner[~outer])] = size.largest_nm
+    return replace(size, largest_nm=grown, triangles=rough.points[corner], sizes_nm=sizes[corner])

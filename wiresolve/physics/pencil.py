@@ -74,7 +74,7 @@ class Operator:
 
     @property
     def relation(self) -> Relation | None:
-        """The one relation between energies and constant-mass eigenvalues that holds in all regions, if there is one."""
+        """The one relation of energies and constant-mass eigenvalues that holds in all regions, if there is one."""
         if not self.nonparabolic:
             return Relation(0.0, 0.0)
         edges = {float(c.constant[0, 0].real) for c in self.by_region}

@@ -3,7 +3,8 @@
 Dimensions by the volume form of the shape derivative (`fem.shape_derivative`), masses and edges by the theorem of
 H. Hellmann (1937) and R. P. Feynman (Phys. Rev. 56, 340 (1939)), all with the same integrals. A level of several states
 has a matrix of derivatives; its eigenvalues are how fast the states that it splits into move, and they are listed in
-ascending order. Energies are counted with the energy zero and a given potential held where they are, at k = 0.
+ascending order. Energies are counted with the energy zero and a given potential held where they are, each at the k
+where its band is lowest.
 """
 
 from __future__ import annotations
@@ -21,6 +22,7 @@ from wiresolve.describe.valley import ANY_VALLEY, ZONE_CENTRE, Valley
 from wiresolve.fem.boundary_form import places, stress_jumps
 from wiresolve.fem.mesh import Region
 from wiresolve.fem.shape_derivative import Medium, Pairs, Response, respond
+from wiresolve.physics.minima import Minima
 from wiresolve.physics.outline_motion import OutlineMotion
 from wiresolve.physics.solved import Solved
 from wiresolve.units import HBAR2_OVER_2M0
@@ -58,6 +60,7 @@ def sensitivities(
     materials: Mapping[str, Material],
     group: ValleyGroup,
     wanted: int,
+    k_per_nm: float = 0.0,
 ) -> tuple[Sensitivity, ...]:
     """Derivatives of the lowest energies of one group of valleys by dimensions, masses, band edges and offsets.
 
@@ -66,10 +69,11 @@ def sensitivities(
     motion : of the outlines of the mesh that the states are on; the same for all groups on it.
     materials : by name, those that admit carriers at least.
     wanted : how many of the states count; whole levels are taken into account.
+    k_per_nm : the wave number of the states.
     """
     kept = int(np.searchsorted(solved.level, solved.level[max(wanted, 1) - 1], side="right"))
     pairs = _pairs(solved.level[:kept], solved.energy_eV)
-    found = respond(solved.pencil.space, motion.edges, medium(solved), solved.states[:, :kept], pairs)
+    found = respond(solved.pencil.space, motion.edges, medium(solved, k_per_nm), solved.states[:, :kept], pairs)
     regions = solved.pencil.space.mesh.regions
     rows = [(name, PER_LENGTH) for name in motion.names]
     parts = [found.moved(motion.edges, motion.velocity)] if rows else []
@@ -78,6 +82,20 @@ def sensitivities(
         parts.append(row[None])
     values = _of_levels(np.vstack(parts), found.norm, pairs, solved.level[:kept])[:, :wanted]
     return tuple(Sensitivity(name, unit, row) for (name, unit), row in zip(rows, values, strict=True))
+
+
+def sensitivities_at_minima(
+    motion: OutlineMotion, low: Minima, materials: Mapping[str, Material], group: ValleyGroup
+) -> tuple[Sensitivity, ...]:
+    """The same of a channel's listed minima, each at its own wave number: there dE/dk is zero."""
+    still = sensitivities(motion, low.survey.space.solved, materials, group, int(low.rows.max()) + 1)
+    values = {s.of: s.values[low.rows] for s in still}
+    for i, there in enumerate(low.there):
+        if there is not None:
+            solved, number = there
+            for own in sensitivities(motion, solved, materials, group, number + 1, float(low.k_per_nm[i])):
+                values[own.of][i] = own.values[number]
+    return tuple(Sensitivity(s.of, s.unit, values[s.of]) for s in still)
 
 
 @dataclass(frozen=True, eq=False)
@@ -98,13 +116,13 @@ class OutlineSensitivity:
 
 
 def outline_sensitivity(
-    motion: OutlineMotion, solved: Sequence[Solved], entries: Ints, level: Ints
+    motion: OutlineMotion, solved: Sequence[Solved], minima: Sequence[Minima | None], entries: Ints, level: Ints
 ) -> OutlineSensitivity:
     """The outlines' pieces with what they do to the first two levels of a list.
 
     Parameters
     ----------
-    solved : of each channel, on the mesh of `motion`.
+    solved, minima : of each channel, on the mesh of `motion`, as in `Certified`.
     entries, level : (n, 2) channel and state of each entry by energy, and its level.
     """
     edges = motion.edges
@@ -114,11 +132,9 @@ def outline_sensitivity(
     for number in np.unique(level)[:2]:
         total: Any = 0
         own = np.asarray(entries)[np.asarray(level) == number]
-        for channel in np.unique(own[:, 0]):
-            one = solved[channel]
-            states = own[own[:, 0] == channel, 1]
+        for one, states, k in _places(solved, minima, own):
             energy, vectors = one.energy_eV[states], one.states[:, states]
-            jumps = stress_jumps(one.pencil.space, edges, medium(one), vectors, energy, middle)
+            jumps = stress_jumps(one.pencil.space, edges, medium(one, k), vectors, energy, middle)
             total = total + (jumps / _norms(one, energy, vectors)).sum(axis=2)
         outward = np.where(edges.wall, 1.0, motion.outward)
         found.append((total / len(own) * outward[:, None]).ravel())
@@ -128,6 +144,22 @@ def outline_sensitivity(
     drawn = np.repeat(motion.outward != 0, _PIECES)
     first = found[0][drawn]
     return OutlineSensitivity(segments[drawn], first, found[1][drawn] - first if len(found) > 1 else None)
+
+
+def _places(
+    solved: Sequence[Solved], minima: Sequence[Minima | None], entries: Ints
+) -> Iterator[tuple[Solved, Ints, float]]:
+    """The states of entries (channel, state) at their minima: all of a channel at k = 0 together, others one by one."""
+    for channel in np.unique(entries[:, 0]):
+        states, low = entries[entries[:, 0] == channel, 1], minima[channel]
+        off = [] if low is None else [i for i in states if low.there[i] is not None]
+        if len(off) < len(states):
+            yield solved[channel], np.setdiff1d(states, off), 0.0
+        for i in off:
+            assert low is not None
+            there = low.there[i]
+            assert there is not None
+            yield there[0], np.array([there[1]]), float(low.k_per_nm[i])
 
 
 def _norms(solved: Solved, energy: Array, states: NDArray[Any]) -> Array:

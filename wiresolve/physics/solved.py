@@ -72,21 +72,48 @@ class Solved:
         slope = 1.0 if self.relation is None else self.relation.slope(self.energy_eV)
         return np.asarray(self.enriched.indicator_eV * slope)
 
-    def count_below(self, energy_eV: float) -> int:
-        """Number of states of the discrete problem below an energy."""
-        if self.relation is None:
-            assert self.local_mass is not None
-            return self.local_mass.count_below(energy_eV)
-        return eigen.count_below(self.pencil.h0, self.pencil.mass, float(self.relation.value(np.array(energy_eV))))
+    @property
+    def sheared(self) -> bool:
+        """Whether terms linear in k are there: minima may lie off k = 0."""
+        return self.pencil.has(1)
 
-    def lowest(self, count: int) -> tuple[Array, NDArray[Any]]:
-        """(count,) energies of the lowest states and (unknowns, count) states, without bars."""
+    def count_below(self, energy_eV: float, k_per_nm: float = 0.0) -> int:
+        """Number of states of the discrete problem below an energy, at a wave number along the wire."""
         if self.relation is None:
-            assert self.local_mass is not None
-            found = self.local_mass.lowest(count, self.phase_space, polished=False)
+            return self._family_at(k_per_nm).count_below(energy_eV)
+        value = float(self.relation.value(np.array(energy_eV)))
+        return eigen.count_below(self.pencil.at(k_per_nm), self.pencil.mass, value)
+
+    def lowest(self, count: int, k_per_nm: float = 0.0) -> tuple[Array, NDArray[Any]]:
+        """(count,) energies of the lowest states and (unknowns, count) states at a wave number, without bars."""
+        if self.relation is None:
+            found = self._family_at(k_per_nm).lowest(count, self.phase_space, polished=False)
             return found.energy_eV, found.states
-        values, states = eigen.lowest(self.pencil.h0, self.pencil.mass, count, self.shift_eV)
+        values, states = eigen.lowest(self.pencil.at(k_per_nm), self.pencil.mass, count, self.shift_eV)
         return self.relation.energy(values), states
+
+    def _family_at(self, k_per_nm: float) -> LocalMass:
+        assert self.local_mass is not None
+        return self.local_mass.moved(k_per_nm) if k_per_nm else self.local_mass
+
+    def reordered(self, order: Ints) -> Solved:
+        """The same states in another order, (m,) numbers of states."""
+        enriched = replace(
+            self.enriched,
+            energy_eV=self.enriched.energy_eV[order],
+            fall_eV=self.enriched.fall_eV[order],
+            indicator_eV=self.enriched.indicator_eV[:, order],
+            states=self.enriched.states[:, order],
+        )
+        return replace(
+            self,
+            energy_eV=self.energy_eV[order],
+            bar_eV=self.bar_eV[order],
+            level=self.level[order],
+            value_eV=self.value_eV[order],
+            states=self.states[:, order],
+            enriched=enriched,
+        )
 
 
 def levels(energy_eV: Array, bar_eV: Array) -> Ints:
@@ -108,12 +135,25 @@ def solve_on(
     return solve_in(*spaces(coarse, fine, operator), operator, count, factor)
 
 
-def solve_in(coarse: Space, fine: Space, operator: Operator, count: int, factor: float = estimate.BAR_FACTOR) -> Solved:
-    """States and bars (`factor` falls wide) on a pair of spaces (degree 4 and 6 over the same triangles)."""
+def solve_in(
+    coarse: Space,
+    fine: Space,
+    operator: Operator,
+    count: int,
+    factor: float = estimate.BAR_FACTOR,
+    polished: bool = True,
+) -> Solved:
+    """States and bars (`factor` falls wide) on a pair of spaces (degree 4 and 6 over the same triangles).
+
+    Parameters
+    ----------
+    polished : where masses grow differently from place to place, solve to the last residual; without it energies have
+        some eight digits, which is enough to find the next mesh (`finished` does the rest).
+    """
     cells = phase_space(coarse, operator)
     relation = operator.relation
     if relation is None:
-        return _solve_local(coarse, fine, operator, count, factor, cells)
+        return _solve_local(coarse, fine, operator, count, factor, cells, polished)
     pencil, above = build(coarse, operator), build(fine, operator)
     unknowns = len(pencil.kept)
     check_count(count, unknowns)
@@ -152,6 +192,11 @@ def lowest_energy(space: Space, operator: Operator) -> float:
     return float(relation.energy(value)[0])
 
 
+def slanted(operator: Operator) -> bool:
+    """Whether axis-plane terms of the inverse mass are left, which make H(k) linear in k."""
+    return any(bool(np.any(c.quadratic[:2, 2])) for c in operator.by_region)
+
+
 def check_count(count: int, unknowns: int) -> None:
     """ConvergenceError where a mesh is too small for so many states."""
     if count > unknowns // 2:
@@ -167,13 +212,41 @@ def _with_bars(value: Array, enriched: Enriched, factor: float, relation: Relati
     return energy, bar, levels(energy, bar)
 
 
+def finished(solved: Solved) -> Solved:
+    """The same states solved to their last residual, with bars of their own."""
+    family = solved.local_mass
+    if family is None:
+        return solved
+    states = solved.unknown_states
+    _, size = family.residuals(solved.energy_eV, states)
+    if size.max() <= local_mass.RESIDUAL:
+        return solved
+    found = family.polish(local_mass.Found(solved.energy_eV, states, float(size.max())))
+    if found.residual > local_mass.RESIDUAL:
+        count = len(solved.energy_eV)
+        return solve_in(family.space, solved.enriched.space, solved.operator, count, solved.bar_factor)
+    finer = local_mass.family(solved.enriched.space, solved.operator, solved.phase_space, len(found.energy_eV))
+    enriched = local_enrich.enrich(family, finer, found)
+    alone = estimate.bars(enriched, solved.bar_factor)
+    bar = estimate.shared(alone, levels(found.energy_eV, alone))
+    return replace(
+        solved,
+        energy_eV=found.energy_eV,
+        bar_eV=bar,
+        level=levels(found.energy_eV, bar),
+        value_eV=found.energy_eV,
+        states=family.spread(found.states),
+        enriched=enriched,
+    )
+
+
 def _solve_local(
-    coarse: Space, fine: Space, operator: Operator, count: int, factor: float, cells: PhaseSpace
+    coarse: Space, fine: Space, operator: Operator, count: int, factor: float, cells: PhaseSpace, polished: bool
 ) -> Solved:
     """The same where masses grow with energy, differently from place to place."""
     family = local_mass.family(coarse, operator, cells, count)
     check_count(count, len(family.kept))
-    found = family.lowest(count, cells)
+    found = family.lowest(count, cells, polished)
     finer = local_mass.family(fine, operator, cells, count)
     enriched = local_enrich.enrich(family, finer, found)
     alone = estimate.bars(enriched, factor)
@@ -198,9 +271,10 @@ def _solve_local(
 
 
 def certify_at(solved: Solved, k_per_nm: float, count: int) -> Solved:
-    """The states at another k on the same meshes, with bars of their own (for one relation in all regions)."""
+    """The states at another k on the same meshes, with bars of their own."""
     relation = solved.relation
-    assert relation is not None
+    if relation is None:
+        return _certify_local(solved, k_per_nm, count + SPARE)
     pencil = solved.pencil
     value, states = eigen.lowest(pencil.at(k_per_nm), pencil.mass, count + SPARE, solved.shift_eV)
     full = pencil.spread(states)
@@ -219,3 +293,24 @@ def certify_at(solved: Solved, k_per_nm: float, count: int) -> Solved:
     return replace(
         solved, energy_eV=energy, bar_eV=bar, level=level, value_eV=value, states=full, enriched=enriched
     )  # fmt: skip
+
+
+def _certify_local(solved: Solved, k_per_nm: float, count: int) -> Solved:
+    cells, known = solved.phase_space, len(solved.energy_eV)
+    assert solved.local_mass is not None
+    family = solved.local_mass.moved(k_per_nm)
+    finer = local_mass.family(solved.enriched.space, solved.operator, cells, known).moved(k_per_nm)
+    found = family.lowest(count, cells)
+    enriched = local_enrich.enrich(family, finer, found)
+    alone = estimate.bars(enriched, solved.bar_factor)
+    bar = estimate.shared(alone, levels(found.energy_eV, alone))
+    return replace(
+        solved,
+        energy_eV=found.energy_eV,
+        bar_eV=bar,
+        level=levels(found.energy_eV, bar),
+        value_eV=found.energy_eV,
+        states=family.spread(found.states),
+        enriched=enriched,
+        local_mass=family,
+    )

@@ -15,13 +15,24 @@ from numpy.typing import NDArray
 from wiresolve.describe.section import Piece
 from wiresolve.errors import ConvergenceError
 from wiresolve.fem import estimate
-from wiresolve.fem.corners import Corner, gradings, singular_corners
 from wiresolve.fem.mesh import Mesh
-from wiresolve.fem.meshing import Mesher, SizeField
+from wiresolve.fem.meshing import Mesher
 from wiresolve.fem.space import Space
+from wiresolve.physics.channel import Channel
+from wiresolve.physics.first_mesh import MOST_VALUES, First, first_size
+from wiresolve.physics.minima import Minima, selected
 from wiresolve.physics.outer_wall import Barrier, farthest, first_distance, further, wall_effect
-from wiresolve.physics.semiclassical import PhaseSpace, phase_space
-from wiresolve.physics.solved import SPARE, OperatorOf, Solved, levels, lowest_energy, solve_in, spaces
+from wiresolve.physics.semiclassical import phase_space
+from wiresolve.physics.solved import (
+    SPARE,
+    Solved,
+    finished,
+    levels,
+    lowest_energy,
+    slanted,
+    solve_in,
+    spaces,
+)
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -29,47 +40,12 @@ Progress = Callable[[str, float, str], None]
 
 _log = logging.getLogger(__name__)
 
-MOST_VALUES = 12_000_000
-"""Unknowns times states above which a mesh would leave a laptop's memory and patience: the best result so far is kept
-and marked. A first mesh above it is made coarser."""
-_NODES_PER_AREA = 18.0
-"""Unknowns of an even mesh in a square of the cells' size."""
-_COARSER = 300.0
-"""How much less accurate the first mesh of a section with corners or interfaces is: the fit below knows smooth sections
-only, and a second mesh that is sized by what the first one shows is cheaper than a first one that is too fine."""
-_REACH = 1.5
-"""Cells grow from a corner to their full size over this many full sizes."""
 _AIM = 0.7
 """The next mesh aims at this share of the accuracy, so that one that turns out a little worse still meets it."""
-_TURN_CELLS = 10
-"""Cells around a full turn of a curve, at least: larger ones beside a fillet would fold."""
-_HARDLY = 0.4
-"""Gradings to no less than this share of the largest cell are left away: they cost more than they save."""
-_GROWTH = 4.0
-"""How much larger cells are far out in a material that goes on outside."""
+_POLISHED_eV = 1e-6
+"""Finer accuracies need the states of every mesh solved to the last residual, others those of the last mesh alone."""
 _NEAR_eV = 0.3
 """Valleys whose edge lies this far above the lowest level are looked at, though they are not listed."""
-_PER_WAVE = 1.55e-8
-"""Relative error of a smooth section's energy at k h = 1, times (k h)^8: fitted on circles, for the first mesh only."""
-
-
-@dataclass(frozen=True, eq=False)
-class Channel:
-    """A group of valleys that one operator describes.
-
-    Attributes
-    ----------
-    valley, label : their kind ("Delta"), and the group's name ("Delta [001]").
-    degeneracy : how many valleys it stands for.
-    operator_of : the operator over a mesh's regions.
-    barrier : the outermost layer where it is a barrier for them.
-    """
-
-    valley: str
-    label: str
-    degeneracy: int
-    operator_of: OperatorOf
-    barrier: Barrier | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -78,13 +54,16 @@ class Certified:
 
     Attributes
     ----------
-    channels, solved : the groups of valleys with states near the wanted ones, and their states.
+    channels, solved : the groups of valleys with states near the wanted ones, and their states at k = 0, the listed
+        ones first.
     listed : how many states of each channel are among the wanted ones.
+    minima : of each channel whose H(k) has a part linear in k, where its listed bands are lowest; None of others.
     entries : (wanted, 2) channel and state of each wanted entry, by energy.
     above : channels without a state near the wanted ones, each with its lowest energy on this mesh, or its band edge
         where that alone is far up.
-    energy_eV, bar_eV, level : (wanted,) of the entries; levels over all channels.
-    missed : states below the highest listed one that the solver did not return, in all channels together.
+    energy_eV, bar_eV, level : (wanted,) of the entries, at their minima over k; levels over all channels.
+    missed : states below the highest listed one that the solver did not return, in all channels together, at k = 0 and
+        where H(k) has a part linear in k at all k of `minima.survey` and at each minimum.
     wall_effect_eV : (wanted,) NaN for channels of which the outermost layer is no barrier, None where it is none.
     met : every wanted bar is under the accuracy.
     """
@@ -92,6 +71,7 @@ class Certified:
     channels: tuple[Channel, ...]
     solved: tuple[Solved, ...]
     listed: tuple[int, ...]
+    minima: tuple[Minima | None, ...]
     entries: Ints
     above: tuple[tuple[Channel, float], ...]
     energy_eV: Array
@@ -115,13 +95,60 @@ class Certified:
 
 @dataclass(frozen=True, eq=False)
 class _Pass:
-    """All channels on one mesh: None for those whose states all lie above the wanted ones."""
+    """All channels on one mesh: None for those whose states all lie above the wanted ones, as in `Certified`."""
 
     solved: tuple[Solved | None, ...]
     listed: tuple[int, ...]
+    minima: tuple[Minima | None, ...]
     bottoms: tuple[float, ...]
-    top_eV: float
-    bar_eV: float
+
+    @property
+    def top_eV(self) -> float:
+        """The highest listed energy."""
+        return max(float(energy[-1]) for energy, _, _ in self.states if len(energy))
+
+    @property
+    def states(self) -> tuple[tuple[Array, Array, Array], ...]:
+        """Energy, bar and (c, n) shares by cell of each channel's listed states, at their minima over k."""
+        nothing = np.zeros(0), np.zeros(0), np.zeros((0, 0))
+        return tuple(
+            nothing if s is None
+            else (s.energy_eV[:n], s.bar_eV[:n], s.share_eV[:, :n]) if m is None
+            else (m.energy_eV, m.bar_eV, m.share_eV)
+            for s, m, n in zip(self.solved, self.minima, self.listed, strict=True)
+        )  # fmt: skip
+
+    @property
+    def bar_eV(self) -> float:
+        """The widest of the listed states' bars."""
+        return max(float(bar.max()) for _, bar, _ in self.states if len(bar))
+
+    @property
+    def needs(self) -> tuple[int, ...]:
+        """How many states at k = 0 each channel needs on the next mesh."""
+        return tuple(
+            n if m is None else max(n, m.survey.highest) for m, n in zip(self.minima, self.listed, strict=True)
+        )  # fmt: skip
+
+    def finished(self) -> _Pass:
+        """The same with all states solved to their last residual."""
+        solved = tuple(
+            s if s is None or m is not None else finished(s) for s, m in zip(self.solved, self.minima, strict=True)
+        )
+        return replace(self, solved=solved)
+
+    def thorough(self, accuracy_eV: float) -> _Pass:
+        """The same with all that is to be proved about minima off k = 0."""
+        if all(m is None or m.survey.thorough for m in self.minima):
+            return self
+        top = max(m.survey.top_eV for m in self.minima if m is not None)
+        solved = [s if m is None else m.survey.space.solved for s, m in zip(self.solved, self.minima, strict=True)]
+        spaces_ = next((s.pencil.space, s.enriched.space) for s in solved if s is not None)
+        return _Pass(*selected(solved, spaces_, top, self.wanted, accuracy_eV, thorough=True), self.bottoms)
+
+    @property
+    def wanted(self) -> int:
+        return sum(self.listed)
 
     @property
     def space(self) -> Space:
@@ -155,7 +182,7 @@ def certify(
     extendable = any(c.barrier is not None and c.barrier.extendable for c in channels)
     for _ in range(4):
         with Mesher(draw(distance)) as mesher:
-            first = _first_size(mesher, channels, wanted, accuracy_eV)
+            first = first_size(mesher, channels, wanted, accuracy_eV)
             if extendable and distance == 0.0:
                 distance = max(
                     first_distance(cells, c.barrier)
@@ -166,17 +193,17 @@ def certify(
             best, made = _refine(mesher, first, channels, wanted, accuracy_eV, passes, tell)
         passes += made
         effects = [
-            wall_effect(s, c.barrier, n)
+            (wall_effect(s, c.barrier, n) if m is None else m.wall_effect(c.barrier))
             if s is not None and n and c.barrier is not None and _meshed(s, c.barrier)
             else None
-            for c, s, n in zip(channels, best.solved, best.listed, strict=True)
+            for c, s, m, n in zip(channels, best.solved, best.minima, best.listed, strict=True)
         ]
         if not extendable:
             break
         more, farthest_nm = 0.0, 0.0
-        for channel, solved, effect, n in zip(channels, best.solved, effects, best.listed, strict=True):
+        for channel, solved, effect, (energy, _, _) in zip(channels, best.solved, effects, best.states, strict=True):
             if effect is not None and channel.barrier is not None and solved is not None:
-                more = max(more, further(solved.energy_eV[:n], effect, channel.barrier, accuracy_eV))
+                more = max(more, further(energy, effect, channel.barrier, accuracy_eV))
                 farthest_nm = max(farthest_nm, farthest(solved, channel.barrier))
         if more == 0.0 or distance >= farthest_nm:
             break
@@ -200,25 +227,28 @@ def _certified(
 ) -> Certified:
     """The count of every channel, and all of them merged."""
     used, above, missed = [], [], 0
-    for channel, solved, n, effect, bottom in zip(
-        channels, best.solved, best.listed, effects, best.bottoms, strict=True
+    for channel, solved, low, n, effect, bottom in zip(
+        channels, best.solved, best.minima, best.listed, effects, best.bottoms, strict=True
     ):
         if solved is None:
             near = bottom < best.lowest_eV + _NEAR_eV
             above.append((channel, lowest_energy(best.space, channel.operator_of(best.space.mesh)) if near else bottom))
             continue
-        counted, lost = _counted(solved, n, best.top_eV)
+        counted, lost = _counted(solved, n, best.top_eV) if low is None else (solved, low.missed())
         missed += lost
-        used.append((channel, counted, n, effect))
-    energy, bar, entries = _merged([(s.energy_eV[:n], s.bar_eV[:n]) for _, s, n, _ in used])
+        used.append((channel, counted, n, effect, low))
+    energy, bar, entries = _merged(
+        [(s.energy_eV[:n], s.bar_eV[:n]) if m is None else (m.energy_eV, m.bar_eV) for _, s, n, _, m in used]
+    )
     alone = levels(energy, bar)
     bar = estimate.shared(bar, alone)
-    effect_of = [np.full(n, np.nan) if effect is None else effect for _, _, n, effect in used]
-    some = any(effect is not None for _, _, _, effect in used)
+    effect_of = [np.full(n, np.nan) if effect is None else effect for _, _, n, effect, _ in used]
+    some = any(effect is not None for _, _, _, effect, _ in used)
     return Certified(
-        channels=tuple(c for c, _, _, _ in used),
-        solved=tuple(s for _, s, _, _ in used),
-        listed=tuple(n for _, _, n, _ in used),
+        channels=tuple(c for c, *_ in used),
+        solved=tuple(s for _, s, *_ in used),
+        listed=tuple(n for _, _, n, *_ in used),
+        minima=tuple(m for *_, m in used),
         entries=entries,
         above=tuple(above),
         energy_eV=energy,
@@ -240,77 +270,9 @@ def _merged(parts: Sequence[tuple[Array, Array]]) -> tuple[Array, Array, Ints]:
     return energy[order], bar[order], np.array(rows, dtype=np.int64).reshape(-1, 2)[order]
 
 
-@dataclass(frozen=True, eq=False)
-class _First:
-    """What a rough mesh shows: sizes of the first mesh, singular corners, and how many states each channel may need."""
-
-    size: SizeField
-    corners: tuple[Corner, ...]
-    cells: tuple[PhaseSpace, ...]
-    needs: tuple[int, ...]
-
-
-def _first_size(mesher: Mesher, channels: Sequence[Channel], wanted: int, accuracy_eV: float) -> _First:
-    """A size field for the first mesh, from the wave length of the highest wanted state and the singular corners."""
-    rough, _ = mesher.mesh(SizeField(mesher.extent_nm / 4, turn_cells=_TURN_CELLS))
-    space = Space(rough)
-    operators = [c.operator_of(rough) for c in channels]
-    cells = tuple(phase_space(space, operator) for operator in operators)
-    top = _energy_of(cells, wanted + 1)
-    needs = tuple(int(np.ceil(c.count(np.array(top)))) if c.bottom_eV < top else 0 for c in cells)
-    wave_number = float(np.sqrt(max(c.wave_numbers_squared(np.array(top)).max() for c in cells)))
-    sharpest: dict[tuple[float, float], Corner] = {}
-    for operator, need in zip(operators, needs, strict=True):
-        if need:
-            inverse_mass = [np.asarray(c.quadratic[:2, :2, 0, 0].real) for c in operator.by_region]
-            for corner in singular_corners(rough, inverse_mass):
-                known = sharpest.get((corner.x, corner.y))
-                if known is None or corner.exponent < known.exponent:
-                    sharpest[corner.x, corner.y] = corner
-    corners = tuple(sharpest.values())
-    bottom = min(c.bottom_eV for c in cells)
-    relative = accuracy_eV / estimate.BAR_FACTOR / 2 / (top - bottom)
-    # How small the first mesh's innermost cells are; later meshes follow the indicators.
-    least = float(np.clip((relative / 1e-3) ** 0.25, 0.05, 0.8))
-    if corners or len(operators[0].by_region) > 1:
-        relative *= _COARSER
-    largest = (relative / _PER_WAVE) ** 0.125 / wave_number
-    affordable = np.sqrt(_NODES_PER_AREA * space.area_nm2 * (wanted + SPARE) / MOST_VALUES)
-    largest = min(max(largest, 0.4 / wave_number, affordable), 3.0 / wave_number, mesher.extent_nm / 3)
-    reach = min(float(np.sqrt(space.area_nm2) / 2), _REACH * largest)
-    graded = gradings(corners, largest, reach, least) if least < _HARDLY else ()
-    first = SizeField(largest, graded, turn_cells=_TURN_CELLS)
-    barriers = [
-        c.barrier for c, n in zip(channels, needs, strict=True) if n and c.barrier is not None and c.barrier.extendable
-    ]
-    if barriers:
-        lowest = min(barriers, key=lambda b: b.edge_eV)
-        first = _coarser_outside(first, rough, lowest, top)
-    return _First(first, corners, cells, needs)
-
-
-def _energy_of(cells: Sequence[PhaseSpace], count: int) -> float:
-    """The energy below which all channels together have `count` states."""
-    low, high = min(c.energy_of(1) for c in cells), min(c.energy_of(count) for c in cells)
-    grid = np.linspace(min(low, high), high, 129)
-    total = np.sum([c.count(grid) for c in cells], axis=0)
-    return float(np.interp(count, np.maximum.accumulate(total), grid)) if total[-1] > total[0] else high
-
-
-def _coarser_outside(size: SizeField, rough: Mesh, barrier: Barrier, top_eV: float) -> SizeField:
-    """Cells that grow away from what the outer material surrounds: states decay there, or have long waves."""
-    corner = rough.cells[:, :3]
-    outer = rough.region == [r.name for r in rough.regions].index(barrier.region)
-    wave = np.sqrt(max(top_eV - barrier.edge_eV, 0) / barrier.stiffness_eV_nm2)
-    grown = min(_GROWTH * size.largest_nm, max(2 / wave, size.largest_nm) if wave else np.inf)
-    sizes = np.full(len(rough.points), grown)
-    sizes[np.unique(corner[~outer])] = size.largest_nm
-    return replace(size, largest_nm=grown, triangles=rough.points[corner], sizes_nm=sizes[corner])
-
-
 def _refine(
     mesher: Mesher,
-    first: _First,
+    first: First,
     channels: Sequence[Channel],
     wanted: int,
     accuracy_eV: float,
@@ -322,8 +284,10 @@ def _refine(
     worst, stalled, factor = np.inf, 0, estimate.bar_factor(first.corners)
     size, needs = first.size, first.needs
     for number in range(1, 11):
-        done = _solve_all(*mesher.mesh(size), channels, needs, wanted, factor)
-        bar, needs, unknowns = done.bar_eV, done.listed, done.unknowns
+        done = _solve_all(*mesher.mesh(size), channels, needs, wanted, factor, accuracy_eV)
+        if done.bar_eV <= accuracy_eV:
+            done = done.thorough(accuracy_eV).finished()
+        bar, needs, unknowns = done.bar_eV, done.needs, done.unknowns
         detail = f"mesh {passes + number}: {unknowns} unknowns, widest bar {1e3 * bar:.3g} meV"
         tell("mesh", 0.1 + 0.08 * number, detail)
         _log.debug("pass %d: %d unknowns, bar %.3g eV", passes + number, unknowns, bar)
@@ -335,24 +299,31 @@ def _refine(
         # A mesh that missed its aim was outside the law that sized it: aim lower the next time.
         aim = _AIM / 2 ** max(number - 2, 0)
         target = max(accuracy_eV / factor * aim, 1e-3 * bar)
-        shares = [s.share_eV[:, :n] for s, n in zip(done.solved, done.listed, strict=True) if s is not None and n]
+        shares = [share for _, bars, share in done.states if len(bars)]
         space = next(s.enriched.space for s in done.solved if s is not None)
         size = estimate.finer(space, np.hstack(shares), size, first.corners, target)
         if unknowns * (bar / (factor * target)) ** 0.25 * (wanted + SPARE) > MOST_VALUES:
             break
     assert best is not None
-    return best, number
+    return best.thorough(accuracy_eV).finished(), number
 
 
 def _solve_all(
-    coarse: Mesh, fine: Mesh, channels: Sequence[Channel], needs: Sequence[int], wanted: int, factor: float
+    coarse: Mesh,
+    fine: Mesh,
+    channels: Sequence[Channel],
+    needs: Sequence[int],
+    wanted: int,
+    factor: float,
+    accuracy_eV: float,
 ) -> _Pass:
     """Every channel on one mesh, with as many states as lie below the highest wanted one of all together."""
     operators = [c.operator_of(coarse) for c in channels]
     space, finer = spaces(coarse, fine, operators[0])
+    polished = accuracy_eV < _POLISHED_eV
     bottoms = [phase_space(space, operator).bottom_eV for operator in operators]
     solved: list[Solved | None] = [
-        solve_in(space, finer, operator, need + SPARE, factor) if need else None
+        solve_in(space, finer, operator, need + SPARE, factor, polished or slanted(operator)) if need else None
         for operator, need in zip(operators, needs, strict=True)
     ]
     for _ in range(20):
@@ -369,13 +340,12 @@ def _solve_all(
             before = solved[i]
             have = 0 if before is None else len(before.energy_eV)
             count = have + max(have // 2, 4) if have else 2 + SPARE
-            solved[i] = solve_in(space, finer, operators[i], count, factor)
+            solved[i] = solve_in(space, finer, operators[i], count, factor, polished or slanted(operators[i]))
     else:
         raise ConvergenceError("the valleys' states could not be brought into one list")
-    _, _, entries = _merged([(np.zeros(0),) * 2 if s is None else (s.energy_eV, s.bar_eV) for s in solved])
-    listed = tuple(np.bincount(entries[:wanted, 0], minlength=len(channels)).tolist())
-    widest = max(float(s.bar_eV[:n].max()) for s, n in zip(solved, listed, strict=True) if s is not None and n)
-    return _Pass(tuple(solved), listed, tuple(bottoms), top, widest)
+    # A band that is lowest off k = 0 may lie below states that are lower than it at k = 0.
+    chosen = selected(solved, (space, finer), top, wanted, accuracy_eV, thorough=False)
+    return _Pass(*chosen, tuple(bottoms))
 
 
 def _counted(solved: Solved, wanted: int, top_eV: float) -> tuple[Solved, int]:

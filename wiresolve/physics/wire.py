@@ -19,9 +19,9 @@ from wiresolve.describe.shapes import Rectangle
 from wiresolve.describe.symmetry import symmetries
 from wiresolve.errors import InputError
 from wiresolve.fem.mesh import Mesh
+from wiresolve.physics.channel import Channel
 from wiresolve.physics.outer_wall import Barrier, least_distance
 from wiresolve.physics.pencil import Operator
-from wiresolve.physics.subbands import Channel
 from wiresolve.units import HBAR2_OVER_2M0
 
 Array = NDArray[np.float64]
