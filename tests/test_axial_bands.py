@@ -148,12 +148,13 @@ def test_minimum_off_the_centre_is_found() -> None:
         SKEW.replace("[[20, 0, 8], [0, 20, 3], [8, 3, 20]]", "[[20, 0, 19.0], [0, 20, 0], [19.0, 0, 20]]")
         .replace("[[10, 0, 0], [0, 10, 0], [0, 0, 10]]", "[[20, 0, -19.0], [0, 20, 0], [-19.0, 0, 20]]")
         .replace('conduction_edge = "0.3 eV"', 'conduction_edge = "0.02 eV"')
+        .replace('energy = "1e-3 meV"', 'energy = "0.1 meV"')
     )
     result = solve(parse(text, Path()))
     lowest = result.dispersion.energy_eV.min(axis=1)
     assert any(subband.k_min_per_nm > 0.1 for subband in result.subbands)
     for subband, bottom, row in zip(result.subbands, lowest, result.dispersion.energy_eV, strict=True):
-        assert subband.energy_eV == pytest.approx(bottom, abs=2e-4)
+        assert subband.energy_eV == pytest.approx(bottom, abs=2e-5)
         assert subband.energy_eV <= row[0] + subband.error_eV
         if row[0] - bottom > 1e-3:
             assert subband.k_min_per_nm > 0

@@ -106,7 +106,7 @@ def _by_energy(
     count: int,
 ) -> Array:
     """At a fixed energy k^2 is the eigenvalue of a linear problem, (E - T(E)) x = k^2 H2(E) x, for all bands."""
-    from scipy.interpolate import CubicSpline
+    from scipy.interpolate import CubicSpline, PchipInterpolator
     from scipy.optimize import linear_sum_assignment
 
     d, end = len(still[0]), float(k_per_nm[-1]) ** 2
@@ -116,7 +116,8 @@ def _by_energy(
     reach = 1.2 * float(energies[count - 1] - low) + 0.3 * min(stiffest * end, 1.0) + 1e-3
     for _ in range(24):
         grid = low + reach * np.linspace(0, 1, _ENERGIES) ** 1.5
-        squares = np.empty((count, len(grid)))
+        # Far below their energies bands come in another order: some more are followed than are wanted.
+        squares = np.empty((min(count + _ABOVE, d), len(grid)))
         before = None
         for i, energy in enumerate(grid):
             weights = family.weights(float(energy))
@@ -124,12 +125,13 @@ def _by_energy(
             values, vectors = dense.eigh(energy * np.eye(d) - _sum(weights, still), (metric + metric.conj().T) / 2)
             values, vectors = values[::-1], vectors[:, ::-1]
             if before is None:
-                picked = np.arange(count)
+                picked = np.arange(len(squares))
             else:
                 # Bands of unlike mass cross: each is followed by its states.
                 picked = linear_sum_assignment(np.abs(before.conj().T @ metric @ vectors) ** 2, maximize=True)[1]
             squares[:, i], before = values[picked], vectors[:, picked]
-        if squares[:, -1].min() >= end:
+        wanted = np.argsort([np.interp(0.0, row, grid) for row in squares], kind="stable")[:count]
+        if squares[wanted, -1].min() >= end:
             break
         reach *= 1.6
     else:
@@ -137,14 +139,29 @@ def _by_energy(
             "the motion along the wire could not be followed up to the wave numbers that heat reaches"
         )
     table = np.empty((count, len(k_per_nm)))
-    starts = np.array([np.interp(0.0, row, grid) for row in squares])
-    for row, start in enumerate(np.argsort(starts, kind="stable")):
+    for row, start in enumerate(wanted):
         at = np.unique(np.append(np.flatnonzero(np.abs(grid - energies[row]) > 1e-3 * reach / _ENERGIES), []))
         at = at.astype(int)
         x, y = np.append(squares[start, at], 0.0), np.append(grid[at], energies[row])
         order = np.argsort(x)
-        table[row] = CubicSpline(x[order], y[order])(k_per_nm**2)
+        x, y = _rising(x[order], y[order])
+        table[row] = CubicSpline(x, y)(k_per_nm**2)
+        if (np.diff(table[row]) < 0).any():
+            # Where two bands nearly meet a spline overshoots; this does not.
+            table[row] = PchipInterpolator(x, y)(k_per_nm**2)
     return table
+
+
+def _rising(x: Array, y: Array) -> tuple[Array, Array]:
+    """The points of which no earlier one, seen from the band's bottom (x = 0), is higher."""
+    bottom = int(np.flatnonzero(x == 0.0)[0])
+    above = y[bottom:] >= np.maximum.accumulate(y[bottom:])
+    below = y[: bottom + 1] <= np.minimum.accumulate(y[: bottom + 1][::-1])[::-1]
+    kept = np.append(below[:-1], above)
+    x, y = x[kept], y[kept]
+    apart = np.append(True, np.diff(x) > 1e-12 * max(float(np.ptp(x)), 1e-300))
+    apart[x == 0.0] = True
+    return x[apart], y[apart]
 
 
 def _orthonormal(block: NDArray[Any], mass: Any) -> NDArray[Any]:
