@@ -72,14 +72,14 @@ def enrich(
     small_h, small_m = (np.zeros((after.shape[1],) * 2, dtype=after.dtype) for _ in range(2))
     for _, dofs, h, w in parts:
         local = after[dofs]
-        small_h += _summed(local, h @ local)
-        small_m += _summed(local, w @ local)
+        small_h += summed(local, h @ local)
+        small_m += summed(local, w @ local)
     improved, turn = ritz_from(small_h, small_m)
     after = after @ turn
     # Inside a level the two bases may be turned against each other: the difference is taken to the projection.
     overlap = np.zeros_like(small_m)
     for _, dofs, _, w in parts:
-        overlap += _summed(before[dofs], w @ after[dofs])
+        overlap += summed(before[dofs], w @ after[dofs])
     indicator = np.empty((len(fine.cells), after.shape[1]))
     for chunk, dofs, h, w in parts:
         local = after[dofs] - before[dofs] @ overlap
@@ -207,7 +207,7 @@ def _gathered(elements: NDArray[Any], rows: NDArray[np.int32], size: int) -> spa
     return sparse.csc_array((elements.ravel(), (down, across)), shape=(size, size))
 
 
-def _summed(left: NDArray[Any], right: NDArray[Any]) -> NDArray[Any]:
+def summed(left: NDArray[Any], right: NDArray[Any]) -> NDArray[Any]:
     """Sum over cells and nodes of conj(left) right: (c, n, m) twice to (m, m)."""
     m = left.shape[2]
     return np.asarray(left.reshape(-1, m).conj().T @ right.reshape(-1, m))

@@ -9,7 +9,6 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from wiresolve.describe.section import Piece
 from wiresolve.physics import local_axial, modes
 from wiresolve.physics.axial_bands import AxialBands, curvature, dispersion
 from wiresolve.physics.band_tables import tables
@@ -233,12 +232,6 @@ def _locally(
     ).real  # fmt: skip
     error = 2 * solved.bar_factor * np.abs(fine / along - 1) * np.abs(mass) + 1e-9 * np.abs(mass)
     return Listed(energy, solved.bar_eV, np.zeros(len(energy)), mass, error, states, shares, bands, closed=False)
-
-
-def carrying_piece(wire: Wire) -> Piece:
-    """The piece with the lowest band edge that admits carriers."""
-    pieces = [p for p in reversed(wire.problem.section.visible()) if p.carriers]
-    return min(pieces, key=lambda p: wire.edge_eV(p.material, p.offset_eV))
 
 
 def _energy_reach(wire: Wire, certified: Certified) -> float:

@@ -12,7 +12,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from wiresolve.fem.enrich import Enriched, Piece, condensed_solve, prolong
+from wiresolve.fem.enrich import Enriched, Piece, condensed_solve, prolong, summed
 from wiresolve.physics.local_mass import Found, LocalMass, reduced
 
 Array = NDArray[np.float64]
@@ -152,11 +152,6 @@ class _Cells:
             parts, mass = self.on(chunk)
             for i, (part, matrix) in enumerate(zip(self.family.parts, parts, strict=True)):
                 mine = slice(None) if part.cells is None else np.flatnonzero(part.cells[chunk])
-                small[i] += _summed(local[mine], matrix[mine] @ local[mine])
-            gram += _summed(local, mass @ local)
+                small[i] += summed(local[mine], matrix[mine] @ local[mine])
+            gram += summed(local, mass @ local)
         return small, gram
-
-
-def _summed(left: NDArray[Any], right: NDArray[Any]) -> NDArray[Any]:
-    m = left.shape[2]
-    return np.asarray(left.reshape(-1, m).conj().T @ right.reshape(-1, m))

@@ -187,7 +187,7 @@ class LocalMass:
         return found
 
     def polish(self, found: Found) -> Found:
-        """The same states improved until their residuals are small; all anew where that does not succeed."""
+        """The same states improved by inverse iteration; `residual` tells whether that was enough."""
         count = len(found.energy_eV)
         energies, states = self._polished(found.energy_eV, found.states, count)
         _, size = self.residuals(energies, states)

@@ -226,18 +226,7 @@ def finished(solved: Solved) -> Solved:
         count = len(solved.energy_eV)
         return solve_in(family.space, solved.enriched.space, solved.operator, count, solved.bar_factor)
     finer = local_mass.family(solved.enriched.space, solved.operator, solved.phase_space, len(found.energy_eV))
-    enriched = local_enrich.enrich(family, finer, found)
-    alone = estimate.bars(enriched, solved.bar_factor)
-    bar = estimate.shared(alone, levels(found.energy_eV, alone))
-    return replace(
-        solved,
-        energy_eV=found.energy_eV,
-        bar_eV=bar,
-        level=levels(found.energy_eV, bar),
-        value_eV=found.energy_eV,
-        states=family.spread(found.states),
-        enriched=enriched,
-    )
+    return replace(solved, **_local_states(family, finer, found, solved.bar_factor))
 
 
 def _solve_local(
@@ -248,26 +237,33 @@ def _solve_local(
     check_count(count, len(family.kept))
     found = family.lowest(count, cells, polished)
     finer = local_mass.family(fine, operator, cells, count)
-    enriched = local_enrich.enrich(family, finer, found)
-    alone = estimate.bars(enriched, factor)
-    bar = estimate.shared(alone, levels(found.energy_eV, alone))
     middle = family.middle_eV
     return Solved(
         pencil=build(coarse, operator.at(middle)),
         operator=operator,
-        energy_eV=found.energy_eV,
-        bar_eV=bar,
-        level=levels(found.energy_eV, bar),
-        value_eV=found.energy_eV,
-        states=family.spread(found.states),
-        enriched=enriched,
         enriched_pencil=build(fine, operator.at(middle)),
         shift_eV=family.shift_eV,
         phase_space=cells,
         bar_factor=factor,
         relation=None,
         local_mass=family,
+        **_local_states(family, finer, found, factor),
     )
+
+
+def _local_states(family: LocalMass, finer: LocalMass, found: local_mass.Found, factor: float) -> dict[str, Any]:
+    """What `Solved` holds of the states of T(E), with their bars from the enriched step."""
+    enriched = local_enrich.enrich(family, finer, found)
+    alone = estimate.bars(enriched, factor)
+    bar = estimate.shared(alone, levels(found.energy_eV, alone))
+    return {
+        "energy_eV": found.energy_eV,
+        "bar_eV": bar,
+        "level": levels(found.energy_eV, bar),
+        "value_eV": found.energy_eV,
+        "states": family.spread(found.states),
+        "enriched": enriched,
+    }
 
 
 def certify_at(solved: Solved, k_per_nm: float, count: int) -> Solved:
@@ -301,16 +297,4 @@ def _certify_local(solved: Solved, k_per_nm: float, count: int) -> Solved:
     family = solved.local_mass.moved(k_per_nm)
     finer = local_mass.family(solved.enriched.space, solved.operator, cells, known).moved(k_per_nm)
     found = family.lowest(count, cells)
-    enriched = local_enrich.enrich(family, finer, found)
-    alone = estimate.bars(enriched, solved.bar_factor)
-    bar = estimate.shared(alone, levels(found.energy_eV, alone))
-    return replace(
-        solved,
-        energy_eV=found.energy_eV,
-        bar_eV=bar,
-        level=levels(found.energy_eV, bar),
-        value_eV=found.energy_eV,
-        states=family.spread(found.states),
-        enriched=enriched,
-        local_mass=family,
-    )
+    return replace(solved, local_mass=family, **_local_states(family, finer, found, solved.bar_factor))
