@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from wiresolve.describe.curves import Arc, Array, Line, Loop, Segment
 from wiresolve.describe.planar_map import outlines
-from wiresolve.describe.section import GAP, Piece
+from wiresolve.describe.section import GAP, Piece, Section
 
 BESIDE = 1e-10
 """How far beside an outline, as a part of the drawing's size, it is asked what lies there."""
@@ -49,6 +49,28 @@ def area(pieces: Sequence[Piece]) -> float:
             # Where outlines coincide, the last one counts: what the later ones hold on the inner side is theirs.
             total += _share(segment, grid, beside, [loops[n] for n in near], [loops[n] for n in near if n > k])
     return total
+
+
+def visible_areas(section: Section) -> dict[str, float]:
+    """Area in nm^2 of what is left to see of each piece, by name; patches over an imported mesh are not subtracted."""
+    pieces = section.pieces()
+    if section.groups:
+        layers = [piece for piece in pieces if piece.holes is None and piece.name.startswith("layer")]
+        map_area = area([piece for piece in pieces if piece.holes is not None])
+        found = dict.fromkeys((piece.name for piece in pieces), 0.0)
+        for k, piece in enumerate(layers):
+            found[piece.name] = piece.loop.area - (layers[k + 1].loop.area if k + 1 < len(layers) else map_area)
+        for piece in pieces:
+            if piece.holes is not None:
+                found[piece.name] += piece.loop.area - sum(hole.area for hole in piece.holes)
+            elif piece.name.startswith("patch"):
+                found[piece.name] = piece.loop.area
+        return found
+    patches = [piece for piece in pieces if piece.name.startswith("patch")]
+    nested = pieces[: len(pieces) - len(patches)]
+    whole = [area([piece, *patches]) for piece in nested]
+    whole += [area(patches[k:]) for k in range(len(patches))] + [0.0]
+    return {piece.name: whole[k] - whole[k + 1] for k, piece in enumerate(pieces)}
 
 
 def _box(points: Array) -> tuple[Array, Array]:

@@ -9,6 +9,7 @@ from wiresolve.describe.input_files import InputFile
 from wiresolve.describe.material import LIMITS, WIRE_FILE, ZONE_CENTRE, Material, Valley
 from wiresolve.describe.mesh_shape import ImportedMesh
 from wiresolve.describe.outline import Outline
+from wiresolve.describe.plain_device import of_doping
 from wiresolve.describe.potential import Potential
 from wiresolve.describe.section import HARD_WALL, Group, Layer, Patch, Section
 from wiresolve.describe.shapes import Circle, Cornered, Polygon, Shape
@@ -38,6 +39,7 @@ def of_section(section: Section, lattice_temperature_K: float, named: NameFile) 
     else:
         found |= {"material": section.material, "carriers": section.carriers}
         found["offset"] = format_quantity(section.offset_eV, "energy")
+        found |= of_doping(section.doping)
     found["outside"] = section.outside or HARD_WALL
     found["lattice_temperature"] = format_quantity(lattice_temperature_K, "temperature")
     if section.layers:
@@ -84,7 +86,8 @@ def _of_patch(patch: Patch, named: NameFile) -> dict[str, Any]:
 
 
 def _of_options(part: Layer | Patch | Group) -> dict[str, Any]:
-    return {"carriers": part.carriers, "offset": format_quantity(part.offset_eV, "energy")}
+    found = {"carriers": part.carriers, "offset": format_quantity(part.offset_eV, "energy")}
+    return found | of_doping(part.doping)
 
 
 def of_material(material: Material) -> dict[str, Any]:

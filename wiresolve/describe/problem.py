@@ -4,21 +4,24 @@ from __future__ import annotations
 
 import hashlib
 import json
-from collections.abc import Sequence
-from dataclasses import dataclass, field
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field, replace
 from typing import Any
 
-from wiresolve.describe import checks, crystal, input_files, plain
+from wiresolve.describe import checks, crystal, device, input_files, plain, plain_device
 from wiresolve.describe.crystal_phase import with_phase_note
+from wiresolve.describe.gates import Gate, Surface, Surroundings
 from wiresolve.describe.input_files import InputFile
 from wiresolve.describe.material import ANY_VALLEY, Material, Valley
 from wiresolve.describe.material_changes import resolved
 from wiresolve.describe.materials import look_up, table_names, unknown
 from wiresolve.describe.mesh_shape import ImportedMesh
 from wiresolve.describe.offsets import on_common_scale
+from wiresolve.describe.operation import Transport, Voltages
 from wiresolve.describe.outline import Outline
 from wiresolve.describe.potential import Potential
-from wiresolve.describe.section import VOID, Piece, Section
+from wiresolve.describe.section import ADMITTED, VOID, Piece, Section
+from wiresolve.describe.setting import setting
 from wiresolve.errors import InputError
 from wiresolve.units import format_quantity
 
@@ -28,6 +31,7 @@ MOST_SUBBANDS = 500
 MOST_TEMPERATURES = 20
 FINEST_ENERGY_eV, COARSEST_ENERGY_eV = 1e-9, 1.0
 PARABOLIC, NONPARABOLIC = "parabolic", "nonparabolic"
+HARTREE, LOCAL_DENSITY = "hartree", "local density"
 _LISTS = {"layer": "layers", "patch": "patches"}
 NO_HOLES = "holes cannot be solved yet: their bands mix, and one mass per material would give wrong subbands"
 
@@ -37,18 +41,22 @@ class Carriers:
     """Which carriers, at which temperatures in K (one or several), and their Fermi level from the energy zero.
 
     `model` is "nonparabolic" (masses grow with energy wherever it is known how) or "parabolic" (they do not).
+    `interaction`: electrons feel their mean field alone ("hartree"), or also exchange and correlation in the local
+    density approximation ("local density").
     """
 
     kind: str = "electrons"
     temperature_K: tuple[float, ...] = field(kw_only=True)
     fermi_level_eV: float | None = None
     model: str = NONPARABOLIC
+    interaction: str = HARTREE
 
     def __post_init__(self) -> None:
         if self.kind == "holes":
             raise InputError("kind", NO_HOLES, remedy='write kind = "electrons"')
         checks.choice("kind", self.kind, ("electrons",))
         checks.choice("model", self.model, (NONPARABOLIC, PARABOLIC))
+        checks.choice("interaction", self.interaction, (HARTREE, LOCAL_DENSITY))
         given: Any = self.temperature_K
         row = tuple(given) if isinstance(given, Sequence) and not isinstance(given, str) else (given,)
         if not 1 <= len(row) <= MOST_TEMPERATURES:
@@ -105,6 +113,11 @@ class Problem:
     materials: tuple[Material, ...] = ()
     orientation: Orientation | None = None
     potential: Potential | None = None
+    gates: tuple[Gate, ...] = ()
+    surfaces: tuple[Surface, ...] = ()
+    surroundings: Surroundings | None = None
+    voltages: Voltages | None = None
+    transport: Transport | None = None
 
     def __post_init__(self) -> None:
         checks.text("title", self.title)
@@ -118,8 +131,55 @@ class Problem:
         for name in names:
             if names.count(name) > 1 or name == VOID:
                 raise InputError("materials", "must have names of their own", name)
+        gates, surfaces = device.gates_and_surfaces(self.gates, self.surfaces)
+        object.__setattr__(self, "gates", gates)
+        object.__setattr__(self, "surfaces", surfaces)
+        device.check_names(gates, self.surroundings, self.voltages, self.transport)
         self._check_valleys()
         self._check_cover()
+        if self.charged:
+            self._check_charge()
+
+    def _check_charge(self) -> None:
+        """InputError where gates and charge do not fit the section, its materials or the carriers."""
+        device.check_states(self.section, self.carriers.fermi_level_eV, self.carriers.temperature_K)
+        drawn = setting(self)
+        device.check_permittivity(self.resolved_materials())
+        for gate in self.gates:
+            self.lineup_V(gate)
+        device.check_neutral(self.section, self.surfaces, drawn)
+
+    @property
+    def charged(self) -> bool:
+        """Whether charge moves the states: there is a gate, a surface, a surrounding or a dopant.
+
+        Energies then count from the source's Fermi level.
+        """
+        around = bool(self.gates or self.surfaces or self.surroundings is not None)
+        return around or self.section.doped
+
+    @property
+    def fermi_level_eV(self) -> float | None:
+        """From the energy zero, which it is itself where charge counts; None where none was given."""
+        return 0.0 if self.charged else self.carriers.fermi_level_eV
+
+    def lineup_V(self, gate: Gate) -> float:
+        """The gate's voltage in V at which, with no charge anywhere, the band edge lines up with the Fermi level.
+
+        The band edge is that of `edge_zero`. InputError where a work function meets no affinity.
+        """
+        _, _, name, valley, offset = self._lowest()
+        field = f"gates[{self.gates.index(gate) + 1}]" if gate in self.gates else gate.name
+        return device.lineup_V(gate, (self.resolved_materials()[name], offset + valley.height_eV), field)
+
+    def at_voltages(self, volts: Mapping[str, float]) -> Problem:
+        """The same problem with other voltages in V on the gates named; the sweep is kept."""
+        names = [gate.name for gate in self.gates]
+        for name in volts:
+            if name not in names:
+                raise InputError("gates", "there is no gate of this name", name, checks.nearest(name, names))
+        gates = tuple(replace(gate, voltage_V=volts.get(gate.name, gate.voltage_V)) for gate in self.gates)
+        return replace(self, gates=gates)
 
     def _check_cover(self) -> None:
         """InputError where a potential's file does not cover the section."""
@@ -152,6 +212,7 @@ class Problem:
         used |= {n: f"section.patches[{k}].material" for k, n in _fresh((p.material for p in section.patches), used)}
         if section.outside is not None:
             used.setdefault(section.outside, "section.outside")
+        used |= {n: where for n, where in device.around(self.gates, self.surroundings).items() if n not in used}
         found: dict[str, Material] = {}
         for name, where in used.items():
             if name == VOID:
@@ -179,6 +240,7 @@ class Problem:
     def _admitted(self) -> list[str]:
         """Names of the materials that admit carriers, from the core outwards."""
         names = [piece.material for piece in self._carrying()]
+        names += [material for _, material, _ in self._admitting_insulators()]
         return list(dict.fromkeys(names if self.section.outside is None else [*names, self.section.outside]))
 
     def _carrying(self) -> list[Piece]:
@@ -191,9 +253,23 @@ class Problem:
 
         return sorted((piece for piece in self.section.visible() if piece.carriers), key=rank)
 
+    def _admitting_insulators(self) -> list[tuple[str, str, float]]:
+        """Insulators that admit carriers: place, material and the shift of its edge in eV."""
+        return [
+            (f"insulator of {gate.name}", gate.insulator.material, 0.0)
+            for gate in self.gates
+            if gate.insulator is not None and gate.insulator.carriers == ADMITTED
+        ]
+
     def _place_admitting(self, material: str) -> str:
         """The table or key that puts carriers into a material."""
         section = self.section
+        if all(not p.carriers or p.material != material for p in section.visible()):
+            for k, gate in enumerate(self.gates, 1):
+                if f"insulator of {gate.name}" in [
+                    row[0] for row in self._admitting_insulators() if row[1] == material
+                ]:
+                    return f"gates[{k}].insulator"
         name = next((p.name for p in section.visible() if p.carriers and p.material == material), "outside")
         kind, _, number = name.partition(" ")
         if section.groups and name in [group.name for group in section.groups]:
@@ -242,6 +318,7 @@ class Problem:
         places = [(p.name, p.material, p.offset_eV) for p in self._carrying()]
         if section.outside is not None:
             places.append(("outside", section.outside, 0.0))
+        places += self._admitting_insulators()
         edges = [
             ((materials[name].conduction_edge_eV or 0.0) + offset + valley.height_eV, place, name, valley, offset)
             for place, name, offset in places
@@ -251,7 +328,16 @@ class Problem:
         return min(edges, key=lambda edge: edge[0])  # of equally low ones the first
 
     def energy_zero(self) -> tuple[str, float | None]:
-        """What energies are counted from, and its value on the scale that the materials share (None: no scale)."""
+        """What energies are counted from, and its value on the scale that the materials share (None: no scale).
+
+        With gates or charge this is the source's Fermi level, which has no place on that scale: the value is that of
+        the band edge which lines up with it at the gates' line-up voltages (`edge_zero`).
+        """
+        text, value = self.edge_zero()
+        return (f"Fermi level of the source; at line-up, the {text}" if self.charged else text), value
+
+    def edge_zero(self) -> tuple[str, float | None]:
+        """The lowest band edge that carriers meet, and its value on the scale that the materials share."""
         edge, place, name, valley, offset = self._lowest()
         material = self.resolved_materials()[name]
         kind = f"{valley.name} edge" if valley.height_eV else "conduction edge"
@@ -292,7 +378,10 @@ class Problem:
         if carriers.fermi_level_eV is not None:
             found["carriers"]["fermi_level"] = format_quantity(carriers.fermi_level_eV, "energy")
         found["carriers"]["model"] = carriers.model
+        if carriers.interaction != HARTREE or self.charged:
+            found["carriers"]["interaction"] = carriers.interaction
         found["accuracy"] = {"subbands": accuracy.subbands, "energy": format_quantity(accuracy.energy_eV, "energy")}
+        found |= plain_device.of_device(self.gates, self.surfaces, self.surroundings, self.voltages, self.transport)
         return found
 
     @property

@@ -10,6 +10,7 @@ import numpy as np
 
 from wiresolve.describe import checks, contacts
 from wiresolve.describe.curves import Loop, Parabolas, Point, Spline
+from wiresolve.describe.doping import UNDOPED, Doping
 from wiresolve.describe.mesh_shape import ImportedMesh
 from wiresolve.describe.outline import Outline
 from wiresolve.describe.shapes import Shape
@@ -37,6 +38,13 @@ def _offset(value: object) -> float:
     return checks.in_range("offset", value, -LARGEST_OFFSET_eV, LARGEST_OFFSET_eV, "eV")
 
 
+def _doping(value: object, material: str) -> None:
+    if not isinstance(value, Doping):
+        raise InputError("doping", "must be a Doping", value)
+    if value.any and material == VOID:
+        raise InputError("donors" if value.donors_per_nm3 else "acceptors", "cannot be in a void")
+
+
 @dataclass(frozen=True)
 class Layer:
     """A shell of constant thickness; `sides` gives edges of a polygon ("bottom", "side 2") a thickness of their own.
@@ -49,6 +57,7 @@ class Layer:
     carriers: str = ADMITTED
     offset_eV: float = 0.0
     sides: tuple[tuple[str, float], ...] | None = None
+    doping: Doping = UNDOPED
 
     def __post_init__(self) -> None:
         set_ = object.__setattr__
@@ -59,6 +68,7 @@ class Layer:
         set_(self, "material", checks.text("material", self.material, 60))
         _carriers(self.carriers)
         set_(self, "offset_eV", _offset(self.offset_eV))
+        _doping(self.doping, self.material)
         if self.sides is not None:
             coats = []
             for name, value in self.sides.items() if isinstance(self.sides, Mapping) else self.sides:
@@ -89,6 +99,7 @@ class Patch:
     center_nm: Point = (0.0, 0.0)
     carriers: str = ADMITTED
     offset_eV: float = 0.0
+    doping: Doping = UNDOPED
 
     def __post_init__(self) -> None:
         set_ = object.__setattr__
@@ -103,6 +114,7 @@ class Patch:
         set_(self, "center_nm", tuple(checks.in_range("center", v, -far, far, "nm") for v in (x, y)))
         _carriers(self.carriers)
         set_(self, "offset_eV", _offset(self.offset_eV))
+        _doping(self.doping, self.material)
 
 
 @dataclass(frozen=True)
@@ -113,12 +125,14 @@ class Group:
     material: str
     carriers: str = ADMITTED
     offset_eV: float = 0.0
+    doping: Doping = UNDOPED
 
     def __post_init__(self) -> None:
         checks.text("group", self.name, 60)
         checks.text("material", self.material, 60)
         _carriers(self.carriers)
         object.__setattr__(self, "offset_eV", _offset(self.offset_eV))
+        _doping(self.doping, self.material)
 
 
 @dataclass(frozen=True)
@@ -142,8 +156,8 @@ class Section:
     """A cross-section, from the core's shape outwards.
 
     `layers` go outwards; `patches` are painted in their order. `outside` is None for a hard wall around everything, or
-    a material that goes on. `carriers` and `offset_eV` are the core's. An imported mesh has `groups` in place of these
-    and of `material` (which then is that of its largest group). Raises `InputError` where the parts do not fit.
+    a material that goes on. `carriers`, `offset_eV` and `doping` are the core's. An imported mesh has `groups` in place
+    of these and of `material` (which then is that of its largest group). Raises `InputError` where parts do not fit.
     """
 
     shape: Shape
@@ -155,6 +169,7 @@ class Section:
     offset_eV: float = 0.0
     lattice_temperature_K: float | None = None
     groups: tuple[Group, ...] = ()
+    doping: Doping = UNDOPED
 
     def __post_init__(self) -> None:
         set_ = object.__setattr__
@@ -170,6 +185,7 @@ class Section:
             if not isinstance(given, Sequence) or not all(isinstance(part, kind) for part in given):
                 raise InputError(name, f"must be a list of {kind.__name__}", given)
             set_(self, name, tuple(given))
+        _doping(self.doping, self.material)
         if len(self.layers) > MOST_LAYERS:
             raise InputError("layers", f"a section can have at most {MOST_LAYERS} layers", f"{len(self.layers)} layers")
         if len(self.patches) > MOST_PATCHES:
@@ -234,6 +250,8 @@ class Section:
         if self.carriers != ADMITTED or self.offset_eV != 0:
             key = "carriers" if self.carriers != ADMITTED else "offset"
             raise InputError(key, "of a mesh is given group by group", remedy="write it in group_materials")
+        if self.doping != UNDOPED:
+            raise InputError("donors", "of a mesh are given group by group", remedy="write them in group_materials")
         largest = max(
             (g for g in given if g.material != VOID),
             key=lambda g: (g.carriers == ADMITTED, sum(f.area_nm2 for f in mesh.faces() if f.group == g.name)),
@@ -341,6 +359,23 @@ class Section:
                 seen.append(piece)
             free &= ~inside
         return tuple(reversed(seen))
+
+    def doping_of(self, piece: str) -> Doping:
+        """The doping of a piece by its name: "core", "layer 2", "patch 1" or a mesh's group; none for other names."""
+        for group in self.groups:
+            if group.name == piece:
+                return group.doping
+        kind, _, number = piece.partition(" ")
+        rows: dict[str, Sequence[Layer | Patch]] = {"layer": self.layers, "patch": self.patches}
+        if kind in rows and number.isdecimal() and 1 <= int(number) <= len(rows[kind]):
+            return rows[kind][int(number) - 1].doping
+        return self.doping if piece == "core" else UNDOPED
+
+    @property
+    def doped(self) -> bool:
+        """Whether any part holds donors or acceptors."""
+        parts: tuple[Layer | Patch | Group, ...] = (*self.layers, *self.patches, *self.groups)
+        return self.doping.any or any(part.doping.any for part in parts)
 
     @property
     def outermost(self) -> str:

@@ -5,9 +5,10 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any, TypeVar
+from typing import Any
 
 from wiresolve.describe import checks, input_files
+from wiresolve.describe.gate_tables import DOPING_KEYS, doping
 from wiresolve.describe.input_files import InputFile
 from wiresolve.describe.mesh_data import MeshData
 from wiresolve.describe.mesh_shape import CAD, ImportedMesh
@@ -17,6 +18,7 @@ from wiresolve.describe.potential_file import PotentialFile
 from wiresolve.describe.section import Group
 from wiresolve.describe.shapes import Circle, Ellipse, Hexagon, Polygon, Rectangle, Shape, Trapezoid, Triangle
 from wiresolve.describe.tables import Table
+from wiresolve.describe.tables import under as under  # for those who take it from here
 from wiresolve.errors import InputError
 from wiresolve.units import UNITS, parse_quantity
 
@@ -35,7 +37,7 @@ SAMPLE_LENGTHS = {"diameter": '"10 nm"', "width": '"20 nm"', "height": '"10 nm"'
 MESH_KEYS = ("file", "unit", "array", "rotation", "group_materials")
 OUTLINE_KEYS = ("file", "unit", "scale", "pixel_size", "y_down", "rotation")
 POTENTIAL_FILE_KEYS = ("file", "length_unit", "energy_unit", "array", "origin")
-GROUP_KEYS = ("material", "carriers", "offset")
+GROUP_KEYS = ("material", "carriers", "offset", *DOPING_KEYS)
 
 
 @dataclass(frozen=True)
@@ -53,17 +55,6 @@ class Files:
             remedy = "give the text's folder, or read the wire file itself"
             raise InputError(where, "names a file, and this text has no folder to look in", path, remedy)
         return input_files.read(where, path, self.folder)
-
-
-_Made = TypeVar("_Made")
-
-
-def under(path: str, build: Callable[[], _Made]) -> _Made:
-    """What `build` makes; an InputError that it raises gets the table's path before its field."""
-    try:
-        return build()
-    except InputError as error:
-        raise error.under(path) from None
 
 
 def shape(table: Table, others: tuple[str, ...], files: Files) -> Shape:
@@ -161,6 +152,7 @@ def groups(table: Table) -> tuple[Group, ...]:
             options["carriers"] = one.data["carriers"]
         offset = one.optional_quantity("offset", "energy")
         options["offset_eV"] = 0.0 if offset is None else offset
+        options["doping"] = doping(one)
         found.append(under(one.path, lambda n=name, o=options: Group(n, **o)))  # type: ignore[misc]
     return tuple(found)
 

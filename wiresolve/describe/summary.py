@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import math
 
-from wiresolve.describe import drawing
+from wiresolve.describe import device_summary, drawing
 from wiresolve.describe.material import Material
 from wiresolve.describe.mesh_shape import ImportedMesh
 from wiresolve.describe.outline import Outline, near_symmetry
 from wiresolve.describe.plain import LENGTH_KEYS
 from wiresolve.describe.problem import Problem
 from wiresolve.describe.section import ADMITTED, VOID, Piece, Section
+from wiresolve.describe.setting import setting
 from wiresolve.describe.shapes import Cornered, Polygon, Shape
 from wiresolve.describe.symmetry import described, symmetries
 from wiresolve.units import KB, format_quantity
@@ -39,17 +40,22 @@ def describe(problem: Problem) -> list[tuple[str, str]]:
     if section.shape.kind in ("outline", "mesh") and (nearly := near_symmetry(loop)) is not None:
         rows.append((f"{part}.near_symmetry", nearly))
     rows += (
-        _of_mesh(section) if isinstance(section.shape, ImportedMesh) else [("section.core", _piece(by_name["core"]))]
+        _of_mesh(section)
+        if isinstance(section.shape, ImportedMesh)
+        else [("section.core", _piece(by_name["core"], section))]
     )
     for k, layer in enumerate(section.layers, 1):
         sides = "".join(f", {_nm(t)} on '{edge}'" for edge, t in layer.sides or ())
         thick = "to the next curve" if layer.thickness_nm is None else _nm(layer.thickness_nm)
-        rows.append((f"section.layers[{k}]", f"{thick}{sides} of {_piece(by_name[f'layer {k}'])}"))
+        rows.append((f"section.layers[{k}]", f"{thick}{sides} of {_piece(by_name[f'layer {k}'], section)}"))
     for k, patch in enumerate(section.patches, 1):
         at = " and ".join(_nm(v) for v in patch.center_nm)
-        rows.append((f"section.patches[{k}]", f"{_shape(patch.shape)} at {at}, {_piece(by_name[f'patch {k}'])}"))
+        rows.append(
+            (f"section.patches[{k}]", f"{_shape(patch.shape)} at {at}, {_piece(by_name[f'patch {k}'], section)}")
+        )
     rows.append(("section.outside", f"{section.outside}, carriers admitted" if section.outside else "hard wall"))
-    rows.append(("section.symmetry", described(symmetries(section, problem.potential))))
+    around = setting(problem) if problem.charged else None
+    rows.append(("section.symmetry", described(symmetries(section, problem.potential, around))))
     rows.append(("section.lattice_temperature", f"{problem.lattice_temperature_K:g} K"))
     if problem.orientation is not None:
         axis, up = (" ".join(str(v) for v in d) for d in (problem.orientation.axis, problem.orientation.up))
@@ -70,6 +76,7 @@ def describe(problem: Problem) -> list[tuple[str, str]]:
     rows.append(("carriers.temperature", hot))
     if carriers.fermi_level_eV is not None:
         rows.append(("carriers.fermi_level", _meV(carriers.fermi_level_eV)))
+    rows += device_summary.rows(problem)
     rows += [("accuracy.subbands", str(accuracy.subbands)), ("accuracy.energy", _meV(accuracy.energy_eV))]
     text, value = problem.energy_zero()
     rows.append(("energy_zero", text if value is None else f"{text}, at {value:.6g} eV on the common scale"))
@@ -110,7 +117,7 @@ def _of_mesh(section: Section) -> list[tuple[str, str]]:
         x, y = faces[0].centroid
         place = f"{parts}{sum(face.area_nm2 for face in faces):.6g} nm^2"
         place += f" around {round(x, 6) + 0:g} and {round(y, 6) + 0:g} nm"
-        rows.append((f"section.group_materials.{name}", f"{_piece(pieces[name])}; {place}"))
+        rows.append((f"section.group_materials.{name}", f"{_piece(pieces[name], section)}; {place}"))
     rows.append(("section.edges", ", ".join(section.shape.edge_names())))
     if (note := section.shape.geometry_note) is not None:
         rows.append(("section.geometry", note))
@@ -148,11 +155,12 @@ def _shape(shape: Shape) -> str:
     return f"{shape.kind}, " + ", ".join(words)
 
 
-def _piece(piece: Piece) -> str:
+def _piece(piece: Piece, section: Section) -> str:
     if piece.material == VOID:
         return "void"
     offset = f", edge shifted by {_meV(piece.offset_eV)}" if piece.offset_eV else ""
-    return f"{piece.material}, carriers {ADMITTED if piece.carriers else 'excluded'}{offset}"
+    dopants = device_summary.doped(section.doping_of(piece.name))
+    return f"{piece.material}, carriers {ADMITTED if piece.carriers else 'excluded'}{offset}{dopants}"
 
 
 def _material(material: Material) -> list[tuple[str, str]]:

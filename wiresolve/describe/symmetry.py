@@ -14,9 +14,11 @@ from dataclasses import dataclass, fields
 import numpy as np
 from numpy.typing import NDArray
 
-from wiresolve.describe.curves import Arc, EllipseArc, Line, Loop, Point, Spline, cos_sin
+from wiresolve.describe.curves import Arc, EllipseArc, Line, Loop, Point, Segment, Spline, cos_sin
+from wiresolve.describe.doping import Doping
 from wiresolve.describe.potential import Potential
 from wiresolve.describe.section import VOID, Piece, Section
+from wiresolve.describe.setting import Setting, distances
 
 Array = NDArray[np.float64]
 Matrix = tuple[tuple[float, float], tuple[float, float]]
@@ -25,6 +27,8 @@ ALIKE = 1e-9
 """Outlines that differ by less than this part of the section's size are the same."""
 MARKS = 9
 """Points compared on each segment, both ends among them: five fix a conic."""
+_ASTRAY = 2e-5
+"""The same for the curves of gates, whose distance is taken from chords."""
 MOST_MARKS = 128
 """Points compared on a closed curve of one segment, at parameters that its own symmetries exchange."""
 IMPORTED = ("outline", "mesh")
@@ -45,13 +49,42 @@ class Symmetry:
     maps: tuple[Matrix, ...]
 
 
-def symmetries(section: Section, potential: Potential | None = None) -> Symmetry:
-    """The symmetry of everything painted, and of the potential.
+def symmetries(section: Section, potential: Potential | None = None, around: Setting | None = None) -> Symmetry:
+    """The symmetry of everything painted and doped, of the potential, and of gates and surroundings.
 
     A material that goes on outside is the same in all directions and breaks nothing. An electric field leaves the maps
     that keep its direction; a harmonic well those that take the x and y axes to themselves and keep the origin; a
     function or a file the identity alone. So do imported outlines.
     """
+    found = _of_section(section, potential)
+    if around is None:
+        return found
+    size = float(np.ptp(np.vstack([piece.loop.sample(8) for piece in section.pieces()]), axis=0).max())
+    center = np.array(found.center_nm)
+    turned = [k * math.pi / 2 for k in range(4)]
+    maps = [*map(rotation, turned), *map(reflection, turned)] if found.continuous else list(found.maps)
+    rings = [ring for piece in around.around if (ring := piece.loop.is_circle) is not None]
+    whole = len(rings) == len(around.around) and all(math.dist(at, found.center_nm) <= ALIKE * size for at, _ in rings)
+    if found.continuous and whole and all(_goes_round(b.segments) for b in (*around.gates, *around.surfaces)):
+        return found
+    rows = [piece.loop.segments for piece in around.around]
+    rows += [boundary.segments for boundary in (*around.gates, *around.surfaces)]
+    kept = [m for m in maps if all(_keeps(np.array(m), row, center, _ASTRAY * size) for row in rows)]
+    return Symmetry(found.center_nm, False, _ordered(kept))
+
+
+def _goes_round(segments: Sequence[Segment]) -> bool:
+    return Loop(tuple(segments)).is_circle is not None
+
+
+def _keeps(acting: Array, segments: Sequence[Segment], center: Array, near: float) -> bool:
+    """Whether a map takes some curves to themselves, judged at points of each."""
+    t = np.linspace(0, 1, MARKS)
+    moved = np.vstack([(segment.point(t) - center) @ acting.T + center for segment in segments])
+    return bool((np.min([distances(moved, segment) for segment in segments], axis=0) < near).all())
+
+
+def _of_section(section: Section, potential: Potential | None) -> Symmetry:
     outlines = _outlines(section)
     if outlines is None or _arbitrary(potential):
         return Symmetry((0.0, 0.0), False, (IDENTITY,))
@@ -59,7 +92,8 @@ def symmetries(section: Section, potential: Potential | None = None) -> Symmetry
     size = float(np.ptp(np.vstack([piece.loop.sample(8) for piece in section.pieces()]), axis=0).max())
     center = _center(section.pieces(), ALIKE * size)
     allowed = _Allowed(potential, np.array(center), ALIKE * size)
-    figure = _Figure(section.pieces(), rings, curves, np.array(center), ALIKE * size)
+    doping = [section.doping_of(piece.name) for piece in section.pieces()]
+    figure = _Figure(section.pieces(), rings, curves, np.array(center), ALIKE * size, doping)
     if not figure.curved and all(math.dist(at, center) <= figure.near for at, _ in rings.values()):
         if allowed.everything:
             return Symmetry(center, True, (IDENTITY,))
@@ -207,8 +241,12 @@ class _Figure:
         curves: dict[int, Array],
         center: Array,
         near: float,
+        doping: Sequence[Doping],
     ) -> None:
-        self.matter = [(p.material, p.carriers, p.offset_eV) if p.material != VOID else (VOID,) for p in pieces]
+        self.matter = [
+            (p.material, p.carriers, p.offset_eV, d) if p.material != VOID else (VOID,)
+            for p, d in zip(pieces, doping, strict=True)
+        ]
         self.rings = {k: (np.array(at) - center, radius) for k, (at, radius) in rings.items()}
         self.curves = {k: marks - center for k, marks in curves.items()}
         self.near = near

@@ -2,25 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, TypeVar
 
 from wiresolve.describe import checks
 from wiresolve.errors import InputError
 from wiresolve.units import parse_quantity
 
-LATER = {
-    "gates": "gates",
-    "surfaces": "surface charge",
-    "surroundings": "surroundings of the wire",
-    "voltages": "voltage sweeps",
-    "transport": "scattering and contacts",
-    "donors": "doping",
-    "acceptors": "doping",
-    "ionisation": "doping",
-}
-"""Keys of the wire file that this version knows but does not model, and what they stand for."""
+_Made = TypeVar("_Made")
 
 SLIPS: Mapping[str, tuple[tuple[str, ...], ...]] = {
     "radius": (("diameter",), ("corner_radius",)),
@@ -46,6 +36,16 @@ HOMES: Mapping[str, str] = {
     "temperature": "[carriers]",
     "fermi_level": "[carriers]",
     "subbands": "[accuracy]",
+    "gates": "[[gates]]",
+    "surfaces": "[[surfaces]]",
+    "surroundings": "[surroundings]",
+    "voltages": "[voltages]",
+    "transport": "[transport]",
+    "donors": "[section]",
+    "acceptors": "[section]",
+    "insulator": "[[gates]]",
+    "beside": "[surroundings]",
+    "mean_free_path": "[transport]",
 }
 """Where keys belong that stand in another table, or above all tables."""
 
@@ -63,14 +63,11 @@ class Table:
         return f"{self.path}.{shown}" if self.path else shown
 
     def only(self, allowed: Iterable[str], of: str = "") -> None:
-        """InputError for any other key: not modelled yet, or unknown, with the nearest allowed ones."""
+        """InputError for any other key, with the nearest allowed ones."""
         words = tuple(allowed)
         for key in self.data:
             if key in words:
                 continue
-            if key in LATER:
-                rule = f"this version does not model {LATER[key]} yet"
-                raise InputError(self.at(key), rule, remedy="take the key out, or wait for a version that does")
             near = self._meant(key, words)
             near += " " if near.endswith("?") else "; " if near else ""
             known = ("allowed are " if near else "its keys are ") + ", ".join(words)
@@ -133,3 +130,11 @@ class Table:
             given = "a table" if isinstance(value, dict) else value
             raise InputError(self.at(key), "must be a list of tables", given, f"write [[{self.at(key)}]] for each")
         return [Table(f"{self.at(key)}[{k}]", entry) for k, entry in enumerate(value, 1)]
+
+
+def under(path: str, build: Callable[[], _Made]) -> _Made:
+    """What `build` makes; an InputError that it raises gets the table's path before its field."""
+    try:
+        return build()
+    except InputError as error:
+        raise error.under(path) from None

@@ -7,10 +7,11 @@ import re
 from pathlib import Path
 from typing import Any
 
-from wiresolve.describe import checks, material_file, toml_text
+from wiresolve.describe import checks, gate_tables, material_file, toml_text
+from wiresolve.describe.gate_tables import DEVICE_KEYS, DOPING_KEYS
 from wiresolve.describe.material import Material
 from wiresolve.describe.potential import Potential
-from wiresolve.describe.problem import NONPARABOLIC, Accuracy, Carriers, Orientation, Problem
+from wiresolve.describe.problem import Accuracy, Carriers, Orientation, Problem
 from wiresolve.describe.section import Layer, Patch, Section
 from wiresolve.describe.shape_tables import POTENTIAL_FILE_KEYS, DrawFile, Files, groups, potential_file, shape, under
 from wiresolve.describe.summary import describe
@@ -21,10 +22,13 @@ from wiresolve.units import parse_quantity, same_quantity
 __all__ = ["describe", "dump", "parse", "read"]
 
 LARGEST_FILE = 1_000_000
-TOP_KEYS = ("title", "materials_file", "section", "orientation", "materials", "potential", "carriers", "accuracy")
-SECTION_KEYS = ("material", "outside", "layers", "patches", "carriers", "offset", "lattice_temperature")
-LAYER_KEYS = ("thickness", "material", "sides", "carriers", "offset")
-PATCH_KEYS = ("material", "center", "carriers", "offset")
+TOP_KEYS = (
+    *("title", "materials_file", "section", "orientation", "materials", "potential", "carriers", "accuracy"),
+    *DEVICE_KEYS,
+)
+SECTION_KEYS = ("material", "outside", "layers", "patches", "carriers", "offset", "lattice_temperature", *DOPING_KEYS)
+LAYER_KEYS = ("thickness", "material", "sides", "carriers", "offset", *DOPING_KEYS)
+PATCH_KEYS = ("material", "center", "carriers", "offset", *DOPING_KEYS)
 
 
 def read(path: str | Path, draw: DrawFile | None = None) -> Problem:
@@ -109,7 +113,8 @@ def _problem(top: Table, name: str, files: Files) -> Problem:
     potential = _potential(top.table("potential"), files) if "potential" in top else None
     carriers = _carriers(top.table("carriers"))
     accuracy = _accuracy(top.table("accuracy")) if "accuracy" in top else Accuracy()
-    return Problem(title, section, carriers, accuracy, materials, orientation, potential)
+    device = gate_tables.device(top)
+    return Problem(title, section, carriers, accuracy, materials, orientation, potential, **device)
 
 
 def _section(table: Table, files: Files) -> Section:
@@ -131,7 +136,7 @@ def _material_name(table: Table) -> str:
 
 
 def _options(table: Table) -> dict[str, Any]:
-    found: dict[str, Any] = {}
+    found: dict[str, Any] = {"doping": gate_tables.doping(table)}
     if "carriers" in table:
         found["carriers"] = table.data["carriers"]
     offset = table.optional_quantity("offset", "energy")
@@ -208,15 +213,15 @@ def _potential(table: Table, files: Files) -> Potential:
 
 
 def _carriers(table: Table) -> Carriers:
-    table.only(("kind", "temperature", "fermi_level", "model"))
+    table.only(("kind", "temperature", "fermi_level", "model", "interaction"))
     given = table.required("temperature", '"300 K"')
     rows = given if isinstance(given, list) else [given]
     where = table.at("temperature")
     places = [f"{where}[{k}]" for k in range(1, len(rows) + 1)] if isinstance(given, list) else [where]
     kelvin = tuple(parse_quantity(t, "temperature", place) for t, place in zip(rows, places, strict=True))
     kind, level = table.data.get("kind", "electrons"), table.optional_quantity("fermi_level", "energy")
-    model = table.data.get("model", NONPARABOLIC)
-    return under(table.path, lambda: Carriers(kind, temperature_K=kelvin, fermi_level_eV=level, model=model))
+    options = {key: table.data[key] for key in ("model", "interaction") if key in table}
+    return under(table.path, lambda: Carriers(kind, temperature_K=kelvin, fermi_level_eV=level, **options))
 
 
 def _accuracy(table: Table) -> Accuracy:
@@ -263,9 +268,9 @@ def _write(lines: list[str], path: str, table: dict[str, Any]) -> None:
 
 
 def _is_deeper(key: str, value: object) -> bool:
-    """Whether a value needs a table header of its own ("sides" and "harmonic" stand on one line)."""
+    """Whether a value needs a table header of its own ("sides", "harmonic", "below" and "above" stand on one line)."""
     if isinstance(value, list):
-        return bool(value) and isinstance(value[0], dict)
+        return bool(value) and isinstance(value[0], dict) and key not in ("below", "above")
     return isinstance(value, dict) and key not in ("sides", "harmonic")
 
 
