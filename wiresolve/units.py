@@ -23,6 +23,10 @@ RESISTANCE_QUANTUM_OHM: float = 1 / CONDUCTANCE_QUANTUM_SIEMENS
 """h / (2 e^2) in ohm."""
 E2_OVER_4PI_EPS0: float = _codata.e / (4 * _codata.pi * _codata.epsilon_0) * 1e9
 """e^2 / (4 pi eps0) in eV nm."""
+EPSILON0_PER_V_NM: float = _codata.epsilon_0 / _codata.e * 1e-9
+"""eps0 in elementary charges per V and nm."""
+FARAD_PER_M: float = _codata.e * 1e9
+"""F/m in one elementary charge per V and nm."""
 
 
 def _inverse(lengths: Mapping[str, str], power: int) -> dict[str, str]:
@@ -48,6 +52,7 @@ UNITS: Mapping[str, Mapping[str, str]] = MappingProxyType(
         "electric field": {"V/nm": "1", "V/um": "1e-3", "MV/m": "1e-3", "MV/cm": "0.1", "kV/cm": "1e-4"}
         | {"V/cm": "1e-7", "V/m": "1e-9"},
         "voltage": {"V": "1", "mV": "1e-3"},
+        "resistance": {"ohm": "1", "kohm": "1e3", "Mohm": "1e6"},
         "wave number": _inverse(_INVERSE_FROM, 1),
         "line density": _inverse(_INVERSE_FROM, 1),
         "sheet density": _inverse(_INVERSE_FROM, 2),
@@ -58,7 +63,7 @@ UNITS: Mapping[str, Mapping[str, str]] = MappingProxyType(
 _SAMPLES = {
     "length": "10 nm", "energy": "0.1 eV", "temperature": "77 K", "angle": "15 deg", "electric field": "0.01 V/nm",
     "voltage": "0.5 V", "wave number": "0.1 nm^-1", "line density": "1e6 cm^-1", "sheet density": "1e12 cm^-2",
-    "density": "1e18 cm^-3",
+    "density": "1e18 cm^-3", "resistance": "500 ohm",
 }  # fmt: skip
 _USUAL = {"accuracy.energy": "0.1 meV", "--accuracy": "0.1 meV", "harmonic.x": "5 meV", "harmonic.y": "5 meV"}
 """Samples for fields whose usual unit is not that of their dimension."""

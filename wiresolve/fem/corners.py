@@ -54,7 +54,7 @@ def singular_corners(mesh: Mesh, inverse_mass: Sequence[Array]) -> tuple[Corner,
         sectors = []
         for cell, vertex in zip(cells, local, strict=True):
             jacobian = np.einsum("ra,ax->xr", slopes[:, vertex], mesh.points[mesh.cells[cell]])
-            legs = [jacobian @ leg for leg in _LEGS[vertex]]
+            legs = [jacobian @ leg for leg in LEGS[vertex]]
             first, last = (np.arctan2(*(stretch @ leg)[::-1]) for leg in legs)
             # What is left of a tensor after the common stretch counts by its geometric mean: grading needs no more.
             weight = float(np.sqrt(np.linalg.det(stretch @ inverse_mass[mesh.region[cell]] @ stretch.T)))
@@ -66,7 +66,7 @@ def singular_corners(mesh: Mesh, inverse_mass: Sequence[Array]) -> tuple[Corner,
     return tuple(corners)
 
 
-_LEGS = (
+LEGS = (
     (np.array([1.0, 0.0]), np.array([0.0, 1.0])),
     (np.array([-1.0, 1.0]), np.array([-1.0, 0.0])),
     (np.array([0.0, -1.0]), np.array([1.0, -1.0])),
@@ -91,7 +91,7 @@ def _fans(sectors: Sequence[tuple[float, float, float]]) -> list[tuple[list[tupl
     """Runs of neighbouring sectors as ((angle, weight) merged by weight, closed around the point)."""
     order = sorted(sectors)
     if abs(sum(s[1] for s in order) - 2 * np.pi) < 1e-3:
-        return [(_merged([(s[1], s[2]) for s in order]), True)]
+        return [(merged([(s[1], s[2]) for s in order]), True)]
     fans: list[list[tuple[float, float, float]]] = []
     for sector in order:
         if fans and abs(np.mod(sector[0] - fans[-1][-1][0] - fans[-1][-1][1] + np.pi, 2 * np.pi) - np.pi) < 1e-3:
@@ -101,17 +101,18 @@ def _fans(sectors: Sequence[tuple[float, float, float]]) -> list[tuple[list[tupl
     first, last = fans[0][0], fans[-1][-1]
     if len(fans) > 1 and abs(np.mod(first[0] - last[0] - last[1] + np.pi, 2 * np.pi) - np.pi) < 1e-3:
         fans[0] = fans.pop() + fans[0]
-    return [(_merged([(s[1], s[2]) for s in fan]), False) for fan in fans]
+    return [(merged([(s[1], s[2]) for s in fan]), False) for fan in fans]
 
 
-def _merged(parts: list[tuple[float, float]]) -> list[tuple[float, float]]:
-    merged: list[tuple[float, float]] = []
+def merged(parts: Sequence[tuple[float, float]]) -> list[tuple[float, float]]:
+    """Sectors (angle, weight) with neighbours of one weight made one."""
+    found: list[tuple[float, float]] = []
     for angle, weight in parts:
-        if merged and np.isclose(merged[-1][1], weight, rtol=1e-9):
-            merged[-1] = (merged[-1][0] + angle, weight)
+        if found and np.isclose(found[-1][1], weight, rtol=1e-9):
+            found[-1] = (found[-1][0] + angle, weight)
         else:
-            merged.append((angle, weight))
-    return merged
+            found.append((angle, weight))
+    return found
 
 
 @lru_cache(maxsize=1)
@@ -128,16 +129,17 @@ def _angular_element() -> tuple[Array, Array]:
     return (slope * weights) @ slope.T, (value * weights) @ value.T
 
 
-def exponents(sectors: Sequence[tuple[float, float]], closed: bool) -> Array:
+def exponents(sectors: Sequence[tuple[float, float]], closed: bool, held: tuple[bool, bool] = (True, True)) -> Array:
     """Exponents a of r^a, ascending and positive, where sectors of different inverse mass meet.
 
     Parameters
     ----------
     sectors : (angle in rad, inverse mass) in order around the point.
-    closed : they close around it; otherwise walls bound the fan.
+    closed : they close around it; otherwise the fan has two ends.
+    held : whether the function is given at the fan's first and last end, as at a wall; else no flux goes through.
     """
     if not closed and len(sectors) == 1:
-        return np.asarray(np.pi / sectors[0][0] * np.arange(1, 9))
+        return np.asarray(np.pi / sectors[0][0] * (np.arange(1, 9) - (0 if held[0] == held[1] else 0.5)))
     degree, pieces = _ANGULAR_DEGREE, []
     for angle, weight in sectors:
         parts = max(1, int(np.ceil(angle / 1.2)))
@@ -155,7 +157,8 @@ def exponents(sectors: Sequence[tuple[float, float]], closed: bool) -> Array:
             matrix[:, 0] += matrix[:, -1]
         left, right = left[:-1, :-1], right[:-1, :-1]
     else:
-        left, right = left[1:-1, 1:-1], right[1:-1, 1:-1]
+        kept = slice(int(held[0]), size - int(held[1]))
+        left, right = left[kept, kept], right[kept, kept]
     squares = dense.eigh(left, right, eigvals_only=True, subset_by_index=(0, min(8, len(left) - 1)))
     return np.asarray(np.sqrt(squares[squares > 1e-6]))
 

@@ -24,6 +24,7 @@ _TOLERANCE = 1e-11
 """Of the iteration, relative; energies are as exact as its square after Rayleigh-Ritz."""
 _SLICE = 60
 """States of one window where many are wanted."""
+_ORDER = "MMD_AT_PLUS_A"
 SINGLE_FROM = 60_000
 """Definite systems from this many unknowns on are factored in single precision."""
 
@@ -57,12 +58,26 @@ def factor(hamiltonian: Any, mass: Any, shift: float) -> Factor:
     return _factor(sparse.csc_array(hamiltonian - shift * mass), shift)
 
 
-def _factor(matrix: Any, shift: float = 0.0) -> Factor:
+def definite(matrix: Any, ordered: bool = False) -> Factor:
+    """Factor a Hermitian positive definite matrix (n, n) for many solves.
+
+    `ordered` says that rows and columns stand in an order of elimination already (`elimination_order`), which saves
+    more than half of the time.
+    """
+    return _factor(sparse.csc_array(matrix), order="NATURAL" if ordered else _ORDER)
+
+
+def elimination_order(matrix: Any) -> NDArray[np.int64]:
+    """(n,) rows in the order in which a symmetric matrix (n, n) is best eliminated (minimum degree)."""
+    return np.argsort(_factor(sparse.csc_array(matrix)).solver.perm_c)
+
+
+def _factor(matrix: Any, shift: float = 0.0, order: str = _ORDER) -> Factor:
     with warnings.catch_warnings():
         warnings.simplefilter("ignore", sparse_linalg.MatrixRankWarning)
         try:
             solver = sparse_linalg.splu(
-                matrix, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0, options={"SymmetricMode": True}
+                matrix, permc_spec=order, diag_pivot_thresh=0.0, options={"SymmetricMode": True}
             )
         except RuntimeError as fault:
             raise ConvergenceError(f"the matrix at {shift:.6g} eV is singular: {fault}") from None

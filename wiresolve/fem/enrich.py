@@ -149,19 +149,26 @@ def _inverse_iteration(parts: _Parts, block: NDArray[Any], shift: float) -> NDAr
     return condensed_solve(parts.space, parts.bands, pieces, block.shape[1])
 
 
-def condensed_solve(space: Space, bands: int, pieces: Callable[[], Iterator[Piece]], columns: int) -> NDArray[Any]:
+def condensed_solve(
+    space: Space,
+    bands: int,
+    pieces: Callable[[], Iterator[Piece]],
+    columns: int,
+    held: NDArray[np.bool_] | None = None,
+) -> NDArray[Any]:
     """Solve S y = load for `columns` loads on all nodes, zero on the walls, inner nodes condensed cell by cell.
 
     Parameters
     ----------
     pieces : makes an iterator over the cells in chunks, called twice: the chunk, its rows, and its element matrices of
         S, Hermitian positive definite, and loads.
+    held : (nodes,) where y is zero, in place of the walls.
     """
     element = triangle(space.mesh.degree)
     outer = (element.count - element.inner) * bands
     unknown = np.zeros(len(space.nodes), dtype=bool)
     unknown[space.dofs[:, : element.count - element.inner]] = True
-    unknown &= ~space.wall
+    unknown &= ~(space.wall if held is None else held)
     unknown = np.repeat(unknown, bands)
     number = np.full(len(unknown), -1, dtype=np.int32)
     number[unknown] = np.arange(unknown.sum(), dtype=np.int32)

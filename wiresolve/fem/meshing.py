@@ -48,6 +48,7 @@ class SizeField:
     largest_nm : everywhere.
     gradings : around corners.
     spots : (x, y, radius, size) circles in which cells are at most so large.
+    growing : (x, y, radius, rate): outside this circle `largest_nm` grows by so much for each nm of distance.
     turn_cells : at least so many cells around a full turn of a curve (0: no matter how many).
     triangles, sizes_nm : (t, 3, 2) and (t, 3): linear interpolation in a triangulation of the section.
     """
@@ -55,6 +56,7 @@ class SizeField:
     largest_nm: float
     gradings: tuple[Grading, ...] = ()
     spots: tuple[tuple[float, float, float, float], ...] = ()
+    growing: tuple[float, float, float, float] | None = None
     turn_cells: int = 0
     triangles: Array | None = None
     sizes_nm: Array | None = None
@@ -162,9 +164,13 @@ class Mesher:
             fields.remove(tag)
         for tag in gmsh.view.getTags():
             gmsh.view.remove(tag)
-        gmsh.option.setNumber("Mesh.MeshSizeMax", size.largest_nm)
+        gmsh.option.setNumber("Mesh.MeshSizeMax", size.largest_nm if size.growing is None else 1e22)
         gmsh.option.setNumber("Mesh.MeshSizeFromCurvature", size.turn_cells)
         parts = []
+        if size.growing is not None:
+            x, y, radius, rate = size.growing
+            across = 2 * self.extent_nm
+            parts.append(self._ball(x, y, radius, across, size.largest_nm, size.largest_nm + rate * across))
         alike: dict[tuple[float, float, float, float], list[int]] = {}
         for g in size.gradings:
             key = (g.smallest_nm, g.outer_nm, g.reach_nm, g.power)
@@ -177,12 +183,7 @@ class Mesher:
             fields.setString(law, "F", f"{smallest:.15f}+{outer:.12f}*(F{distance}/{reach:.12f})^{power:.6f}")
             parts.append(law)
         for x, y, radius, cell in size.spots:
-            spot = fields.add("Ball")
-            for name, value in (("XCenter", x), ("YCenter", y), ("Radius", radius), ("Thickness", 2 * radius)):
-                fields.setNumber(spot, name, value)
-            fields.setNumber(spot, "VIn", cell)
-            fields.setNumber(spot, "VOut", size.largest_nm)
-            parts.append(spot)
+            parts.append(self._ball(x, y, radius, 2 * radius, cell, size.largest_nm))
         if size.triangles is not None and size.sizes_nm is not None:
             view = gmsh.view.add("size")
             corners = np.zeros((len(size.triangles), 12))
@@ -196,6 +197,15 @@ class Mesher:
             least = fields.add("Min")
             fields.setNumbers(least, "FieldsList", parts)
             fields.setAsBackgroundMesh(least)
+
+    def _ball(self, x: float, y: float, radius: float, thickness: float, inside: float, outside: float) -> int:
+        """A field of one size in a circle, another one farther out, and a straight line between over a thickness."""
+        fields = self._gmsh.model.mesh.field
+        ball = int(fields.add("Ball"))
+        values = {"XCenter": x, "YCenter": y, "Radius": radius, "Thickness": thickness, "VIn": inside, "VOut": outside}
+        for name, value in values.items():
+            fields.setNumber(ball, name, value)
+        return ball
 
     def _point_near(self, x: float, y: float) -> int:
         """The drawing's point nearest to a place."""
@@ -232,11 +242,13 @@ class Mesher:
         return blended(oriented(Mesh(degree, points, renumber[old], np.concatenate(region), regions, corners)))
 
     def _rank(self, piece: int) -> tuple[int, int]:
-        """Regions are listed from the core, or a map's innermost face, outwards, then patches, then what is outside."""
+        """From the core, or a map's innermost face, outwards; then patches, what is outside, and what is around it."""
         if self.pieces[piece].holes is not None:
             return 0, -piece
         kind, _, number = self.pieces[piece].name.partition(" ")
-        return ("core", "layer", "patch", "outside").index(kind), int(number or 0)
+        if kind == "insulator":
+            return _KINDS.index(kind), piece
+        return _KINDS.index(kind), int(number or 0)
 
     def _curved_edges(self, degree: int) -> Iterator[tuple[int, Ints]]:
         """Curves that are not straight, with the node tags of their edges: two ends, then the inner ones."""
@@ -295,6 +307,7 @@ OPTIONS = {
 }
 
 
+_KINDS = ("core", "layer", "patch", "outside", "insulator", "below", "above", "beside")
 _MANY = 12
 """Folded cells above which the whole mesh is sized anew; fewer are mended by spots, which leave the rest as it is."""
 

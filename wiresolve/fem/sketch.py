@@ -65,20 +65,24 @@ def _map(occ: Any, pieces: Sequence[Piece]) -> dict[int, int]:
             row.append(curves[key])
         return int(occ.addCurveLoop(row))
 
-    rings = [_curve_loop(occ, piece.loop) for piece in pieces[:first]]
-    owner = {int(occ.addPlaneSurface(rings[i : i + 2])): i for i in range(first - 1)}
+    # Surroundings are no rings: the map is painted over them.
+    flat = [i for i in range(first) if pieces[i].name.split()[0] in ("beside", "below", "above")]
+    ring = [i for i in range(first) if i not in flat]
+    rings = [_curve_loop(occ, pieces[i].loop) for i in ring]
+    owner = {int(occ.addPlaneSurface(rings[n : n + 2])): i for n, i in enumerate(ring[:-1])}
     # A gap between faces is drawn by nothing; a face of void is, as its curves bound others, and is taken out later.
-    faces = [(i, pieces[i].loop, pieces[i].holes or ()) for i in of_map if not _is_gap(pieces[i])]
-    if first:
+    faces = [(i, pieces[i].loop, pieces[i].holes or ()) for i in of_map if flat or not _is_gap(pieces[i])]
+    if ring:
         around = [closed(loop) for loop in outlines([(loop, holes) for _, loop, holes in faces])]
-        owner[int(occ.addPlaneSurface([rings[-1], *around]))] = first - 1
+        owner[int(occ.addPlaneSurface([rings[-1], *around]))] = ring[-1]
     for i, loop, holes in faces:
         owner[int(occ.addPlaneSurface([closed(loop), *(closed(hole) for hole in holes)]))] = i
     patches = range(last + 1, len(pieces))
-    if not patches:
+    if not patches and not flat:
         return owner
+    beneath = [(i, int(occ.addPlaneSurface([_curve_loop(occ, pieces[i].loop)]))) for i in flat]
     painted = [(i, int(occ.addPlaneSurface([_curve_loop(occ, pieces[i].loop)]))) for i in patches]
-    return _fragmented(occ, [*((i, tag) for tag, i in owner.items()), *painted])
+    return _fragmented(occ, [*beneath, *((i, tag) for tag, i in owner.items()), *painted])
 
 
 def _is_gap(piece: Piece) -> bool:
@@ -100,7 +104,8 @@ def _strictly_nested(loops: Sequence[Loop]) -> bool:
 
 def _curve_loop(occ: Any, loop: Loop) -> int:
     circle = loop.is_circle
-    if circle is not None:
+    # A circle whose segments have names of their own is cut at their ends: a gate covers a part of it.
+    if circle is not None and len({segment.name for segment in loop.segments}) == 1:
         (x, y), radius = circle
         return int(occ.addCurveLoop([occ.addCircle(x, y, 0, radius)]))
     segments = loop.segments

@@ -79,22 +79,24 @@ def _reference_parts(element: LagrangeTriangle, at: Array) -> Array:
 
 @dataclass(frozen=True, eq=False)
 class Space:
-    """Continuous functions of the mesh's degree on the cells that carriers may enter.
+    """Continuous functions of the mesh's degree on the cells that carriers may enter, or on all of them.
 
     Attributes
     ----------
     mesh : the curved mesh; functions live at `nodes`, a subset of its points.
     composite : fields that vary inside cells are integrated on 16 parts of each, which sees what one rule cannot (a
         kink of a potential).
+    whole : all cells belong to the space, those that carriers are kept out of too; "admitted" below means all then.
     """
 
     mesh: Mesh
     composite: bool = False
+    whole: bool = False
 
     @cached_property
     def cells(self) -> Ints:
-        """(c,) numbers of the cells that carriers may enter."""
-        return np.flatnonzero(self.mesh.admitted)
+        """(c,) numbers of the cells that carriers may enter, or of all cells."""
+        return np.arange(len(self.mesh.cells)) if self.whole else np.flatnonzero(self.mesh.admitted)
 
     @cached_property
     def nodes(self) -> Ints:
@@ -176,6 +178,11 @@ class Space:
         """Weights (q,) of the rule for varying fields; reference derivatives and values there, (3, q, functions)."""
         return _tabulated(self.mesh.degree, self.quadrature_order, self.composite)
 
+    @property
+    def reference_points(self) -> Array:
+        """(q, 2) reference places of `quadrature_points`, the same in every cell."""
+        return self._varying_rule[0]
+
     @cached_property
     def quadrature_points(self) -> Array:
         """(c, q, 2) points in nm at which a varying field is wanted."""
@@ -194,6 +201,14 @@ class Space:
         jacobian = np.einsum("rqa,cax->cqxr", slopes, local, optimize=True)
         det = jacobian[..., 0, 0] * jacobian[..., 1, 1] - jacobian[..., 0, 1] * jacobian[..., 1, 0]
         return np.asarray(det * weights)
+
+    def gradients_of(self, local: NDArray[Any]) -> NDArray[Any]:
+        """(c, q, 2, m) gradients at the quadrature points of functions (c, nodes, m) given cell by cell."""
+        at, _ = self._varying_rule
+        slopes = triangle(self.mesh.degree).gradients(at)
+        jacobian = np.einsum("rqa,cax->cqxr", slopes, self.mesh.points[self.nodes[self.dofs]], optimize=True)
+        there = np.einsum("rqa,cam->cqrm", slopes, local, optimize=True)
+        return np.asarray(np.einsum("cqrx,cqrm->cqxm", np.linalg.inv(jacobian), there, optimize=True))
 
     def elements(self, form: Form, cells: slice | Ints) -> Array:
         """Element matrices of a form on some of the cells, shape (len(cells), n, n)."""

@@ -1,0 +1,97 @@
+"""A function that is known by its values at the nodes of a mesh."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from wiresolve.fem.lagrange import triangle
+from wiresolve.fem.mesh import Mesh
+from wiresolve.fem.space import Space
+
+Array = NDArray[np.float64]
+
+_NEWTON = 12
+_CANDIDATES = 6
+
+
+@dataclass(frozen=True, eq=False)
+class NodalFunction:
+    """A continuous function on a mesh.
+
+    Attributes
+    ----------
+    mesh : the curved mesh.
+    values : (n,) at its points.
+    """
+
+    mesh: Mesh
+    values: Array
+
+    def on(self, space: Space) -> Array:
+        """(c, q) values at the quadrature points of a space over the same triangles, of any degree.
+
+        Raises
+        ------
+        ValueError
+            The space lies over other triangles.
+        """
+        if len(space.mesh.cells) != len(self.mesh.cells):
+            raise ValueError("the space lies over other triangles than the function")
+        shapes = triangle(self.mesh.degree).values(space.reference_points)
+        return np.asarray(self.values[self.mesh.cells[space.cells]] @ shapes.T)
+
+    def at_nodes(self, space: Space) -> Array:
+        """(n,) values at the nodes of a space over the same triangles."""
+        shapes = triangle(self.mesh.degree).values(triangle(space.mesh.degree).nodes)
+        found = np.empty(len(space.nodes))
+        found[space.dofs] = self.values[self.mesh.cells[space.cells]] @ shapes.T
+        return found
+
+    def __call__(self, x: Array, y: Array) -> Array:
+        """Values at any points; outside the mesh those of the nearest cell, at its nearest edge."""
+        points = np.column_stack([np.ravel(x), np.ravel(y)])
+        element = triangle(self.mesh.degree)
+        found, worst = np.zeros(len(points)), np.full(len(points), np.inf)
+        _, near = self._tree.query(points, k=min(_CANDIDATES, len(self.mesh.cells)))
+        for cell in near.reshape(len(points), min(_CANDIDATES, len(self.mesh.cells))).T:
+            open_ = np.flatnonzero(worst > 1e-9)
+            if not len(open_):
+                break
+            nodes = self.mesh.points[self.mesh.cells[cell[open_]]]
+            at = _place(nodes, points[open_], self.mesh.degree)
+            outside = np.maximum(-np.minimum(at.min(axis=1), 1 - at.sum(axis=1)), 0.0)
+            better = outside < worst[open_]
+            some = open_[better]
+            inside = np.clip(at[better], 0.0, 1.0)
+            inside /= np.maximum(inside.sum(axis=1, keepdims=True), 1.0)
+            shapes = element.values(inside)
+            found[some] = np.einsum("pn,pn->p", shapes, self.values[self.mesh.cells[cell[some]]])
+            worst[some] = outside[better]
+        return found.reshape(np.shape(x))
+
+    @cached_property
+    def _tree(self) -> Any:
+        from scipy.spatial import cKDTree
+
+        return cKDTree(self.mesh.points[self.mesh.cells[:, :3]].mean(axis=1))
+
+
+def _place(nodes: Array, points: Array, degree: int) -> Array:
+    """(p, 2) reference places of points in their cells, nodes (p, n, 2), by Newton's method."""
+    element = triangle(degree)
+    first, second = nodes[:, 1] - nodes[:, 0], nodes[:, 2] - nodes[:, 0]
+    at = np.linalg.solve(np.stack([first, second], axis=2), (points - nodes[:, 0])[..., None])[..., 0]
+    for _ in range(_NEWTON):
+        at = np.clip(at, -0.5, 1.5)
+        rest = points - np.einsum("pn,pnx->px", element.values(at), nodes)
+        jacobian = np.einsum("rpn,pnx->pxr", element.gradients(at), nodes)
+        step = np.linalg.solve(jacobian, rest[..., None])[..., 0]
+        at = at + step
+        if np.abs(step).max() < 1e-12:
+            break
+    return np.asarray(at)
