@@ -97,6 +97,38 @@ class Dispersion:
 
 
 @dataclass(frozen=True)
+class GateCharge:
+    """A gate: its voltage, that of its line-up, and the charge on it in e/nm."""
+
+    name: str
+    voltage_V: float
+    lineup_voltage_V: float
+    charge_per_nm: float
+
+
+@dataclass(frozen=True, eq=False)
+class Charge:
+    """What charge and potential agreed on.
+
+    `potential_V` (mesh points,) is the electrostatic potential, by which an electron's energy is lowered,
+    `density_per_nm3` (mesh points,) that of the carriers, and `potential_error_eV` (n,) the part of each listed bar
+    that comes from the potential. `passes` of states were solved until one changed the potential by less than 1e-6 V,
+    `residual_V` is what the last one changed, and `gauss_error` what gates, fixed charge and carriers lack of
+    neutrality, relative to the largest of them.
+    """
+
+    gates: tuple[GateCharge, ...]
+    fixed_per_nm: float
+    pinned_per_nm: float
+    passes: int
+    residual_V: float
+    gauss_error: float
+    potential_V: Array
+    density_per_nm3: Array
+    potential_error_eV: Array
+
+
+@dataclass(frozen=True)
 class Verdict:
     """The plain-language answer and the numbers behind it (see `physics.verdict`)."""
 
@@ -113,7 +145,8 @@ class Result:
     `modes` has the shape (mesh points, listed subbands): real envelope functions in 1/nm at the mesh's nodes, each
     normalised to 1 over the section. `cell_fields` holds values by cell for the group of valleys of the first subband
     (`axial_mass_of_first_valleys_m0`, `band_edge_of_first_valleys_eV`; NaN where carriers are kept out). `spectrum` is
-    what `line_density`, `fermi_level` and `conductance_at` stand on: the listed subbands and what lies above them.
+    what `line_density`, `fermi_level` and `conductance_at` stand on: the listed subbands and what lies above them. With
+    gates or charge (`charge` is not None) they hold the potential as it is: another Fermi level asks for another solve.
     """
 
     problem: Problem
@@ -139,6 +172,7 @@ class Result:
     not_modelled: tuple[str, ...]
     versions: Mapping[str, str]
     timings_s: Mapping[str, float] = field(default_factory=dict)
+    charge: Charge | None = None
 
     def __repr__(self) -> str:
         levels = ", ".join(f"{1e3 * s.energy_eV:.6g}" for s in self.subbands[:8])
@@ -176,6 +210,19 @@ class Result:
         """Ballistic conductance in units of G0 = 2 e^2/h at Fermi levels in eV, in their shape."""
         return transport.conductance(self.spectrum, fermi_eV, temperature_K)
 
+    def _charge(self) -> dict[str, float | int] | None:
+        charge = self.charge
+        if charge is None:
+            return None
+        return {
+            "fixed_per_nm": charge.fixed_per_nm,
+            "pinned_per_nm": charge.pinned_per_nm,
+            "passes": charge.passes,
+            "residual_V": charge.residual_V,
+            "gauss_error": charge.gauss_error,
+            "potential_error_eV": float(np.nanmax(charge.potential_error_eV)),
+        }
+
     def to_dict(self) -> dict[str, Any]:
         """Plain data (dicts, lists, strings, numbers, None), the content of `result.json`."""
         materials = [
@@ -195,7 +242,8 @@ class Result:
             "sensitivities": [
                 {"of": s.of, "unit": s.unit, "values": np.asarray(s.values).tolist()} for s in self.sensitivities
             ],
-            "gates": [],
+            "gates": [] if self.charge is None else [asdict(gate) for gate in self.charge.gates],
+            "charge": self._charge(),
             "line_density_per_nm": self.line_density_per_nm,
             "states_missed": self.states_missed,
             "accuracy_met": self.accuracy_met,

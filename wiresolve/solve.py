@@ -18,10 +18,15 @@ from numpy.typing import NDArray
 from wiresolve.describe.problem import Problem
 from wiresolve.fem.outline import outline_edges
 from wiresolve.physics import carrying, remarks, spread, statistics, transport, verdict
+from wiresolve.physics.charge_sentence import charge_sentence
+from wiresolve.physics.charged_subbands import ChargedSubbands, certify_charged
+from wiresolve.physics.charged_wire import ChargedWire
+from wiresolve.physics.electrostatics import PINNED
 from wiresolve.physics.ladder import spectrum_of
 from wiresolve.physics.listing import SPIN, Listing, listing
 from wiresolve.physics.outline_motion import outline_motion
 from wiresolve.physics.sensitivity import (
+    NOWHERE,
     OutlineSensitivity,
     Sensitivity,
     merged,
@@ -34,8 +39,10 @@ from wiresolve.physics.spectrum import Spectrum
 from wiresolve.physics.subbands import Certified, certify
 from wiresolve.physics.wire import Wire
 from wiresolve.result import (
+    Charge,
     DensityOfStates,
     Dispersion,
+    GateCharge,
     MeshSummary,
     Result,
     Subband,
@@ -77,18 +84,22 @@ def solve(problem: Problem, on_progress: Progress | None = None) -> Result:
     # More BLAS threads only get in each other's way at these sizes.
     with threadpool_limits(limits=1, user_api="blas"):
         wire = Wire(problem)
+        wanted, accuracy = problem.accuracy.subbands, problem.accuracy.energy_eV
+        charged = None
         with clock("subbands"):
-            certified = certify(
-                wire.draw, wire.channels, problem.accuracy.subbands, problem.accuracy.energy_eV, on_progress
-            )
+            if problem.charged:
+                charged = certify_charged(ChargedWire(wire), [{}], wanted, accuracy, on_progress)[0]
+                certified = charged.certified
+            else:
+                certified = certify(wire.draw, wire.channels, wanted, accuracy, on_progress)
         with clock("axial"):
             found = listing(wire, certified)
         with clock("above"):
             spectrum = spectrum_of(wire, certified, found)
         with clock("sensitivities"):
-            moved = _sensitivities(wire, certified, found)
+            moved = ((), NOWHERE) if charged is not None else _sensitivities(wire, certified, found)
     with clock("measured"):
-        return _assembled(wire, certified, found, spectrum, moved, clock)
+        return _assembled(wire, certified, found, spectrum, moved, clock, charged)
 
 
 def _sensitivities(
@@ -118,19 +129,25 @@ def _assembled(
     spectrum: Spectrum,
     moved: tuple[tuple[Sensitivity, ...], OutlineSensitivity],
     clock: _Clock,
+    charged: ChargedSubbands | None,
 ) -> Result:
     problem, space = wire.problem, certified.space
     temperatures = problem.carriers.temperature_K
-    fermi = problem.carriers.fermi_level_eV
+    fermi = problem.fermi_level_eV
     by_subband = None if fermi is None else statistics.line_density_by_subband(spectrum, fermi, temperatures[0])
     total = None if fermi is None else float(statistics.line_density(spectrum, fermi, temperatures[0]))
-    outcome = remarks.Outcome(wire, certified, found, spectrum, total)
+    if charged is not None:
+        total = charged.balanced.occupied.total_per_nm
+    potential = None if charged is None else charged.balanced.function
+    outcome = remarks.Outcome(wire, certified, found, spectrum, total, potential)
     subbands = _subbands(certified, found, outcome.bound, None if by_subband is None else np.ravel(by_subband))
     remarked = remarks.on(outcome)
     level = levels(found.energy_eV, found.bar_eV)
     said = (
         carrying.sentence(found, certified),
-        spread.sentence(problem.section, moved[0], level, temperatures[0], float(outcome.above_edge_eV[0])),
+        spread.sentence(problem.section, moved[0], level, temperatures[0], float(outcome.above_edge_eV[0]))
+        if charged is None
+        else charge_sentence(charged.balanced, wire),
         *remarked.said,
     )
     judged = verdict.judge(spectrum, temperatures, fermi, (text for text in said if text))
@@ -164,8 +181,25 @@ def _assembled(
         verdict=Verdict(judged.text, judged.single_subband, judged.steps, judged.effective_dimension),
         warnings=tuple(Warned(*w) for w in remarked.warnings),
         not_modelled=remarked.not_modelled,
-        versions=_versions(),
+        versions=versions(),
         timings_s=clock.seconds,
+        charge=None if charged is None else _charge(problem, charged),
+    )
+
+
+def _charge(problem: Problem, charged: ChargedSubbands) -> Charge:
+    balanced = charged.balanced
+    on_gates = balanced.charges_per_nm()
+    return Charge(
+        gates=tuple(GateCharge(g.name, g.voltage_V, problem.lineup_V(g), on_gates[g.name]) for g in problem.gates),
+        fixed_per_nm=balanced.fixed_per_nm(),
+        pinned_per_nm=on_gates.get(PINNED, 0.0),
+        passes=balanced.passes,
+        residual_V=balanced.residual_V,
+        gauss_error=balanced.gauss_error,
+        potential_V=balanced.potential_V,
+        density_per_nm3=balanced.density_at_points(),
+        potential_error_eV=charged.potential_error_eV,
     )
 
 
@@ -261,7 +295,7 @@ def _edges(spectrum: Spectrum) -> Array:
 
 
 @lru_cache(maxsize=1)
-def _versions() -> dict[str, str]:
+def versions() -> dict[str, str]:
     found = {}
     for name in ("wiresolve", "numpy", "scipy", "scikit-fem", "gmsh", "meshio"):
         try:

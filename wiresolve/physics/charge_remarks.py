@@ -6,7 +6,9 @@ import math
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 
+from wiresolve.describe.doping import SOLUBLE_PER_NM3
 from wiresolve.describe.material import Material, Note
+from wiresolve.describe.section import Section
 from wiresolve.physics.borders import Borders
 from wiresolve.physics.image_charge import ground_state_shift, second_state_shift
 from wiresolve.physics.wording import figures, meV, signed_meV
@@ -209,6 +211,19 @@ def on_charge(
     below = "a lower fermi_level" if level is None else f"a fermi_level below {_floored_meV(level)}"
     remedy = f"stay below {limit:.2g} carriers per nm ({below}), or give the potential by [potential]"
     return [("carrier-charge", text, remedy)]
+
+
+def on_doping(section: Section) -> list[Note]:
+    """More dopants than a crystal dissolves."""
+    notes = []
+    for piece in section.visible():
+        doping = section.doping_of(piece.name)
+        for kind, density in (("donors", doping.donors_per_nm3), ("acceptors", doping.acceptors_per_nm3)):
+            if density > SOLUBLE_PER_NM3:
+                text = f"{density * 1e21:.2g} cm^-3 of {kind} in {piece.name} are more than crystals dissolve (about"
+                text += f" {SOLUBLE_PER_NM3 * 1e21:.0e} cm^-3): a part of them would not be charged"
+                notes.append(("doping-solubility", text, f"give the {kind} that are charged, as measured"))
+    return notes
 
 
 def _floored_meV(energy_eV: float) -> str:

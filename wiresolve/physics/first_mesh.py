@@ -44,9 +44,21 @@ class First:
     needs: tuple[int, ...]
 
 
-def first_size(mesher: Mesher, channels: Sequence[Channel], wanted: int, accuracy_eV: float) -> First:
-    """A size field for the first mesh, from the wave length of the highest wanted state and the singular corners."""
-    rough, _ = mesher.mesh(SizeField(mesher.extent_nm / 4, turn_cells=_TURN_CELLS))
+def first_size(
+    mesher: Mesher,
+    channels: Sequence[Channel],
+    wanted: int,
+    accuracy_eV: float,
+    within: tuple[float, float, float, float] | None = None,
+) -> First:
+    """A size field for the first mesh, from the wave length of the highest wanted state and the singular corners.
+
+    Parameters
+    ----------
+    within : (x, y, radius, rate): outside this circle, which holds the section, cells grow with the distance.
+    """
+    extent = mesher.extent_nm if within is None else 2 * within[2]
+    rough, _ = mesher.mesh(SizeField(extent / 4, growing=within, turn_cells=_TURN_CELLS))
     space = Space(rough)
     operators = [c.operator_of(rough) for c in channels]
     cells = tuple(phase_space(space, operator) for operator in operators)
@@ -70,10 +82,10 @@ def first_size(mesher: Mesher, channels: Sequence[Channel], wanted: int, accurac
         relative *= _COARSER
     largest = (relative / _PER_WAVE) ** 0.125 / wave_number
     affordable = np.sqrt(_NODES_PER_AREA * space.area_nm2 * (wanted + SPARE) / MOST_VALUES)
-    largest = min(max(largest, 0.4 / wave_number, affordable), 3.0 / wave_number, mesher.extent_nm / 3)
+    largest = min(max(largest, 0.4 / wave_number, affordable), 3.0 / wave_number, extent / 3)
     reach = min(float(np.sqrt(space.area_nm2) / 2), _REACH * largest)
     graded = gradings(corners, largest, reach, least) if least < _HARDLY else ()
-    first = SizeField(largest, graded, turn_cells=_TURN_CELLS)
+    first = SizeField(largest, graded, growing=within, turn_cells=_TURN_CELLS)
     barriers = [
         c.barrier for c, n in zip(channels, needs, strict=True) if n and c.barrier is not None and c.barrier.extendable
     ]

@@ -12,13 +12,13 @@ from numpy.typing import NDArray
 from wiresolve.physics import local_mass, modes
 from wiresolve.physics.channel import Channel
 from wiresolve.physics.listing import K_POINTS, SPIN, THERMAL_REACH, Listed, Listing
-from wiresolve.physics.pencil import Operator, build
+from wiresolve.physics.pencil import build
 from wiresolve.physics.smooth_count import SmoothCount, smooth_count
 from wiresolve.physics.solved import Solved, levels
 from wiresolve.physics.spectrum import Spectrum
 from wiresolve.physics.subbands import Certified
 from wiresolve.physics.tail import Tail
-from wiresolve.physics.unlisted import axial_motion
+from wiresolve.physics.unlisted import axial_motion, upright
 from wiresolve.physics.wire import Wire
 from wiresolve.units import HBAR2_OVER_2M0, KB
 
@@ -69,8 +69,9 @@ def spectrum_of(wire: Wire, certified: Certified, found: Listing) -> Spectrum:
     hottest = KB * max(*carriers.temperature_K, 1.0)
     lowest = float(certified.energy_eV[0])
     ceiling = lowest + THERMAL_REACH * hottest
-    if carriers.fermi_level_eV is not None:
-        ceiling = max(ceiling, carriers.fermi_level_eV + _FERMI_REACH * KB * carriers.temperature_K[0])
+    fermi = wire.problem.fermi_level_eV
+    if fermi is not None:
+        ceiling = max(ceiling, fermi + _FERMI_REACH * KB * carriers.temperature_K[0])
     counts = [smooth_count(certified.space, solved.operator) for solved in certified.solved]
     rows = [
         _rows(wire, channel, solved, n, own, count, ceiling, hottest)
@@ -160,8 +161,8 @@ def _rows(
         family = higher.made.local_mass
         assert family is not None
         if family.sheared:
-            upright = _upright(solved.operator)
-            family = local_mass.family(family.space, upright, solved.phase_space, len(higher.energy_eV))
+            count = len(higher.energy_eV)
+            family = local_mass.family(family.space, upright(solved.operator), solved.phase_space, count)
         bent, growth = axial_motion(family, higher.energy_eV, higher.vectors, listed, _BENT * hottest_eV)
         mass = np.concatenate([own.axial_mass[:listed], bent])
         edge, alpha = energy, np.concatenate([np.zeros(listed), growth])
@@ -204,24 +205,8 @@ def _along(made: Solved, vectors: NDArray[Any]) -> Array:
     """hbar^2/2m along the wire of states (unknowns, m) at constant masses."""
     pencil = made.pencil
     if pencil.has(1):
-        pencil = replace(build(pencil.space, _upright(made.operator)), kept=pencil.kept)
+        pencil = replace(build(pencil.space, upright(made.operator)), kept=pencil.kept)
     return np.asarray(np.diag(pencil.expected(2, vectors)).real)
-
-
-def _upright(operator: Operator) -> Operator:
-    """The operator without terms that couple the axis to the section.
-
-    They move a region's in-plane momenta, which a phase undoes where the state lives, and leave the axis softer by
-    c A^(-1) c, with A the in-plane part and c the coupling.
-    """
-    by_region = []
-    for c in operator.by_region:
-        tensor = np.array(c.quadratic)
-        softer = tensor[2, 2, 0, 0] - tensor[2, :2, 0, 0] @ np.linalg.solve(tensor[:2, :2, 0, 0], tensor[:2, 2, 0, 0])
-        tensor[2, :2] = tensor[:2, 2] = 0.0
-        tensor[2, 2] = softer
-        by_region.append(replace(c, quadratic=tensor))
-    return replace(operator, by_region=tuple(by_region))
 
 
 @dataclass(frozen=True, eq=False)
@@ -340,7 +325,7 @@ def _joined(rows: Sequence[_Rows], wanted: int, tails: tuple[Tail, ...]) -> Spec
 def _mean_stiffness(solved: Solved) -> float:
     """hbar^2/2m along the axis, averaged over the section."""
     space = solved.pencil.space
-    upright = _upright(solved.operator).by_region
-    by_region = np.array([float(c.quadratic[2, 2, 0, 0].real) for c in upright])
+    softer = upright(solved.operator).by_region
+    by_region = np.array([float(c.quadratic[2, 2, 0, 0].real) for c in softer])
     weights = space.quadrature_weights.sum(axis=1)
     return float(np.average(by_region[space.mesh.region[space.cells]], weights=weights))

@@ -399,8 +399,7 @@ def _potentials(
     """Chebyshev points of the potential in some cells, as many as 1/m needs at the lowest energy; None: one does."""
     if operator.potential is None or alpha == 0:
         return None
-    at = space.quadrature_points[cells]
-    values = np.asarray(operator.potential(at[..., 0], at[..., 1]), dtype=float)
+    values = operator.potential_on(space)[cells]
     low, high = float(values.min()), float(values.max())
     middle, half = (low + high) / 2, max((high - low) / 2, 1e-9)
     probes = middle + half * np.cos(np.pi * np.linspace(0, 1, 201))
@@ -428,9 +427,7 @@ def _lagrange(operator: Operator, points: Array, j: int) -> Callable[[Space], Ar
     """The j-th polynomial of the potential, as a field on a space."""
 
     def field(space: Space) -> Array:
-        assert operator.potential is not None
-        at = space.quadrature_points
-        values = np.asarray(operator.potential(at[..., 0], at[..., 1]), dtype=float)
+        values = operator.potential_on(space)
         inside = np.clip(values, points.min() - 0.1 * np.ptp(points), points.max() + 0.1 * np.ptp(points))
         return np.asarray(_polynomials(points, inside.ravel())[j].reshape(values.shape))
 

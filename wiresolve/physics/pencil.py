@@ -10,7 +10,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass, replace
 from functools import cached_property
-from typing import Any
+from typing import Any, Protocol, runtime_checkable
 
 import numpy as np
 import scipy.sparse as sparse
@@ -23,6 +23,14 @@ from wiresolve.fem.space import Field, Form, Space
 Array = NDArray[np.float64]
 Cells = slice | NDArray[np.int64]
 _AXES = ("x", "y")
+
+
+@runtime_checkable
+class OnCells(Protocol):
+    """A function that knows its values on the cells of any space over its triangles, without looking for points."""
+
+    def on(self, space: Space) -> Array:
+        """(c, q) values at the space's quadrature points."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -93,9 +101,17 @@ class Operator:
         edge = space.field([float(c.constant[0, 0].real) for c in self.by_region])
         if self.potential is None:
             return np.asarray(1 + alpha * (energy_eV - edge))
-        at = space.quadrature_points
-        higher = np.asarray(self.potential(at[..., 0], at[..., 1]), dtype=float)
+        higher = self.potential_on(space)
         return np.asarray(1 + alpha[:, None] * (energy_eV - edge[:, None] - higher))
+
+    def potential_on(self, space: Space) -> Array:
+        """(c, q) the potential in eV at a space's quadrature points, 0 without one."""
+        if isinstance(self.potential, OnCells):
+            return self.potential.on(space)
+        at = space.quadrature_points
+        if self.potential is None:
+            return np.zeros(at.shape[:2])
+        return np.asarray(self.potential(at[..., 0], at[..., 1]), dtype=float)
 
     def terms(self, space: Space) -> tuple[Term, ...]:
         """The operator as terms on a space; equal matrices share one form."""
@@ -136,12 +152,11 @@ class Operator:
             add(0, ("1", "1"), here, c.constant)
             add(1, ("1", "1"), here, c.linear[2])
             add(2, ("1", "1"), moving, c.quadratic[2, 2])
-        varying = list(self.coupling)
-        if self.potential is not None:
-            varying.append((self.potential, np.eye(self.bands)))
-        for function, matrix in varying:
+        for function, matrix in self.coupling:
             at = space.quadrature_points
             add(0, ("1", "1"), np.asarray(function(at[..., 0], at[..., 1]), dtype=float), matrix)
+        if self.potential is not None:
+            add(0, ("1", "1"), self.potential_on(space), np.eye(self.bands))
         return tuple(Term(order, form, _plain(matrix)) for (order, _), (form, matrix) in gathered.items())
 
 

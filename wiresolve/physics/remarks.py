@@ -12,9 +12,10 @@ from numpy.typing import NDArray
 from wiresolve.bands.valleys import ValleyGroup
 from wiresolve.describe.material import Material, Note
 from wiresolve.describe.mesh_shape import ImportedMesh
-from wiresolve.describe.problem import PARABOLIC
+from wiresolve.describe.problem import HARTREE, PARABOLIC
 from wiresolve.errors import InputError
 from wiresolve.fem.mesh import Region
+from wiresolve.fem.nodal import NodalFunction
 from wiresolve.physics import boundary_remarks, charge_remarks, material_remarks
 from wiresolve.physics.borders import Borders, borders_of
 from wiresolve.physics.boundary_remarks import OuterBarrier
@@ -47,6 +48,7 @@ class Outcome:
     Attributes
     ----------
     line_density_per_nm : at the Fermi level and the first temperature, None without a Fermi level.
+    potential_V : the charge's potential, None where charge does not count.
     """
 
     wire: Wire
@@ -54,6 +56,7 @@ class Outcome:
     found: Listing
     spectrum: Spectrum
     line_density_per_nm: float | None
+    potential_V: NodalFunction | None = None
 
     @property
     def accuracy_eV(self) -> float:
@@ -96,10 +99,11 @@ class Outcome:
 
     @cached_property
     def given_eV(self) -> Array:
-        """The given potential at the space's nodes, 0 without one."""
+        """The potential energy at the space's nodes, given or of the charge, 0 without one."""
         space, potential = self.certified.space, self.wire.potential
         x, y = space.mesh.points[space.nodes].T
-        return np.zeros(len(x)) if potential is None else np.asarray(potential(x, y))
+        given = np.zeros(len(x)) if potential is None else np.asarray(potential(x, y))
+        return given if self.potential_V is None else given - self.potential_V.at_nodes(space)
 
     @cached_property
     def mean_potential_eV(self) -> Array:
@@ -191,7 +195,8 @@ def on(seen: Outcome) -> Remarks:
 def not_modelled(seen: Outcome) -> tuple[str, ...]:
     """What the result leaves out, as far as it matters to this wire."""
     charge = "charge: fixed charge, gates and the carriers' own charge do not move the levels"
-    if seen.permittivity is not None and seen.spacing_eV is not None:
+    modelled = seen.wire.problem.charged
+    if not modelled and seen.permittivity is not None and seen.spacing_eV is not None:
         limit = charge_remarks.harmless_density_per_nm(seen.spacing_eV, seen.permittivity)
         charge += f" (the carriers' own would, by about the first spacing, at {limit:.2g} per nm)"
     images = "image charges from the jump of permittivity at surfaces and interfaces"
@@ -202,7 +207,9 @@ def not_modelled(seen: Outcome) -> tuple[str, ...]:
     return tuple(
         text
         for text, matters in (
-            (charge, True),
+            (charge, not modelled),
+            ("exchange and correlation: electrons feel their mean charge alone", modelled and _mean_field(seen)),
+            ("holes, and traps at surfaces whose charge follows the gate", modelled),
             (images, True),
             ("strain from lattice mismatch", several),
             (f"growth of the mass with energy in {', '.join(unknown)}: no value is known", bool(unknown)),
@@ -216,6 +223,10 @@ def not_modelled(seen: Outcome) -> tuple[str, ...]:
         )
         if matters
     )
+
+
+def _mean_field(seen: Outcome) -> bool:
+    return seen.wire.problem.carriers.interaction == HARTREE
 
 
 def _growth(seen: Outcome, material: str) -> bool:
@@ -385,5 +396,9 @@ def _on_surroundings(seen: Outcome) -> list[Note]:
         *material_remarks.on_lattices(borders, seen.materials, place, seen.groups[0].valley, kelvin),
         *material_remarks.on_surfaces(borders, seen.materials, admitted),
         *charge_remarks.on_image_charges(seen.rings, radius, spacing, seen.accuracy_eV),
-        *charge_remarks.on_charge(seen.line_density_per_nm, seen.permittivity, spacing, seen.fermi_level_at),
+        *(
+            charge_remarks.on_doping(seen.wire.problem.section)
+            if seen.wire.problem.charged
+            else charge_remarks.on_charge(seen.line_density_per_nm, seen.permittivity, spacing, seen.fermi_level_at)
+        ),
     ]

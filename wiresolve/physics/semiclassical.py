@@ -8,13 +8,16 @@ m (E - V)(1 + alpha (E - V)).
 
 from __future__ import annotations
 
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.fem.space import Space
+from wiresolve.physics.fermi import fermi_integral
 from wiresolve.physics.pencil import Operator
+from wiresolve.units import KB
 
 Array = NDArray[np.float64]
 
@@ -75,7 +78,34 @@ def phase_space(space: Space, operator: Operator) -> PhaseSpace:
         area = np.array([weights[region == r].sum() for r in regions])
         first = [int(np.argmax(region == r)) for r in regions]
         return PhaseSpace(area, edge[first], stiffness[first], space.wall_length_nm, alpha[first])
-    at = space.quadrature_points
-    energy = edge[:, None] + operator.potential(at[..., 0], at[..., 1])
+    energy = edge[:, None] + operator.potential_on(space)
     spread, growth = (np.broadcast_to(by_cell[:, None], weights.shape).ravel() for by_cell in (stiffness, alpha))
     return PhaseSpace(weights.ravel(), energy.ravel(), spread, space.wall_length_nm, growth)
+
+
+def free_carriers(
+    space: Space, operators: Sequence[Operator], degeneracies: Sequence[int], temperature_K: float
+) -> Callable[[Array], tuple[Array, Array]]:
+    """Carriers in 1/nm^3 as in a bulk crystal, and their derivative, as a function of the potential in V, both (c, q).
+
+    n = g (kT)^(3/2) / (8 pi^(3/2) sqrt(det A)) F_(1/2)((phi - edge)/kT), A = hbar^2/2m being the 3 x 3 tensor and the
+    Fermi level 0 (J. S. Blakemore, Solid-State Electronics 25, 1067 (1982), for F_j).
+    """
+    thermal = KB * temperature_K
+    region = space.mesh.region[space.cells]
+    parts = []
+    for operator, degeneracy in zip(operators, degeneracies, strict=True):
+        edge = np.array([float(c.constant[0, 0].real) for c in operator.by_region])[region]
+        stiffness = np.array([np.sqrt(np.linalg.det(c.quadratic[:, :, 0, 0].real)) for c in operator.by_region])
+        states = degeneracy * (thermal / np.pi) ** 1.5 / (8 * stiffness[region])
+        parts.append((states[:, None], edge[:, None] + operator.potential_on(space)))
+
+    def filled(potential_V: Array) -> tuple[Array, Array]:
+        density, slope = np.zeros(potential_V.shape), np.zeros(potential_V.shape)
+        for states, edge in parts:
+            eta = (potential_V - edge) / thermal
+            density += states * fermi_integral(0.5, eta)
+            slope += states / thermal * fermi_integral(-0.5, eta)
+        return density, slope
+
+    return filled

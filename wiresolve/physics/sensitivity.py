@@ -115,6 +115,10 @@ class OutlineSensitivity:
     spacing_eV_per_nm2: Array | None
 
 
+NOWHERE = OutlineSensitivity(np.zeros((0, 2, 2)), np.zeros(0), None)
+"""No outline's sensitivity is known."""
+
+
 def outline_sensitivity(
     motion: OutlineMotion, solved: Sequence[Solved], minima: Sequence[Minima | None], entries: Ints, level: Ints
 ) -> OutlineSensitivity:

@@ -135,13 +135,16 @@ def smooth_count(space: Space, operator: Operator) -> SmoothCount:
     axial = np.array([t[2, 2] - t[2, :2] @ np.linalg.solve(t[:2, :2], t[:2, 2]) for t in tensors])
     mesh = space.mesh
 
-    def places(region: NDArray[np.int64], at: Array) -> Places:
-        higher = 0.0 if operator.potential is None else np.asarray(operator.potential(at[:, 0], at[:, 1]), dtype=float)
+    def at(region: NDArray[np.int64], higher: Array | float) -> Places:
         return Places(edge[region] + higher, in_plane[region], axial[region], alpha[region])
+
+    def places(region: NDArray[np.int64], points: Array) -> Places:
+        varying = operator.potential
+        return at(region, 0.0 if varying is None else np.asarray(varying(points[:, 0], points[:, 1]), dtype=float))
 
     weights = space.quadrature_weights
     region = np.repeat(mesh.region[space.cells], weights.shape[1])
-    inside = places(region, space.quadrature_points.reshape(-1, 2))
+    inside = at(region, operator.potential_on(space).ravel())
     bins = _bins(region, inside.edge_eV)
 
     border = outline_edges(mesh)

@@ -94,7 +94,7 @@ class Certified:
 
 
 @dataclass(frozen=True, eq=False)
-class _Pass:
+class Pass:
     """All channels on one mesh: None for those whose states all lie above the wanted ones, as in `Certified`."""
 
     solved: tuple[Solved | None, ...]
@@ -130,21 +130,48 @@ class _Pass:
             n if m is None else max(n, m.survey.highest) for m, n in zip(self.minima, self.listed, strict=True)
         )  # fmt: skip
 
-    def finished(self) -> _Pass:
+    def finished(self) -> Pass:
         """The same with all states solved to their last residual."""
         solved = tuple(
             s if s is None or m is not None else finished(s) for s, m in zip(self.solved, self.minima, strict=True)
         )
         return replace(self, solved=solved)
 
-    def thorough(self, accuracy_eV: float) -> _Pass:
+    def thorough(self, accuracy_eV: float) -> Pass:
         """The same with all that is to be proved about minima off k = 0."""
         if all(m is None or m.survey.thorough for m in self.minima):
             return self
         top = max(m.survey.top_eV for m in self.minima if m is not None)
         solved = [s if m is None else m.survey.space.solved for s, m in zip(self.solved, self.minima, strict=True)]
         spaces_ = next((s.pencil.space, s.enriched.space) for s in solved if s is not None)
-        return _Pass(*selected(solved, spaces_, top, self.wanted, accuracy_eV, thorough=True), self.bottoms)
+        return Pass(*selected(solved, spaces_, top, self.wanted, accuracy_eV, thorough=True), self.bottoms)
+
+    def wall_effects(self, channels: Sequence[Channel]) -> list[Array | None]:
+        """How far each listed state moves where the outer wall is freed; None for channels without a barrier there."""
+        return [
+            (wall_effect(s, c.barrier, n) if m is None else m.wall_effect(c.barrier))
+            if s is not None and n and c.barrier is not None and meshed(s, c.barrier)
+            else None
+            for c, s, m, n in zip(channels, self.solved, self.minima, self.listed, strict=True)
+        ]
+
+    def widened(self, more_eV: Sequence[Array]) -> Pass:
+        """The same with wider bars, by so much for each state (m,) of every channel that is solved, in their order.
+
+        Of bands with minima off k = 0 those at the minima are widened by the largest of them.
+        """
+        more, solved, minima = iter(more_eV), [], []
+        for s, low in zip(self.solved, self.minima, strict=True):
+            if s is not None:
+                own = next(more)
+                alone = s.bar_eV + own
+                bar = estimate.shared(alone, levels(s.energy_eV, alone))
+                s = replace(s, bar_eV=bar, level=levels(s.energy_eV, bar))
+                if low is not None:
+                    low = replace(low, bar_eV=low.bar_eV + float(own.max()))
+            solved.append(s)
+            minima.append(low)
+        return replace(self, solved=tuple(solved), minima=tuple(minima))
 
     @property
     def wanted(self) -> int:
@@ -192,12 +219,7 @@ def certify(
                 continue
             best, made = _refine(mesher, first, channels, wanted, accuracy_eV, passes, tell)
         passes += made
-        effects = [
-            (wall_effect(s, c.barrier, n) if m is None else m.wall_effect(c.barrier))
-            if s is not None and n and c.barrier is not None and _meshed(s, c.barrier)
-            else None
-            for c, s, m, n in zip(channels, best.solved, best.minima, best.listed, strict=True)
-        ]
+        effects = best.wall_effects(channels)
         if not extendable:
             break
         more, farthest_nm = 0.0, 0.0
@@ -209,17 +231,17 @@ def certify(
             break
         distance = min(distance + more, farthest_nm)
     tell("count", 0.9, "counting the states below the highest wanted one")
-    return _certified(channels, best, effects, wanted, accuracy_eV, passes)
+    return certified_pass(channels, best, effects, wanted, accuracy_eV, passes)
 
 
-def _meshed(solved: Solved, barrier: Barrier) -> bool:
+def meshed(solved: Solved, barrier: Barrier) -> bool:
     """Whether the barrier's region is there at all: patches may cover it."""
     return barrier.region in [r.name for r in solved.pencil.space.mesh.regions]
 
 
-def _certified(
+def certified_pass(
     channels: Sequence[Channel],
-    best: _Pass,
+    best: Pass,
     effects: Sequence[Array | None],
     wanted: int,
     accuracy_eV: float,
@@ -278,13 +300,13 @@ def _refine(
     accuracy_eV: float,
     passes: int,
     tell: Progress,
-) -> tuple[_Pass, int]:
+) -> tuple[Pass, int]:
     """Solve and re-mesh until the bars are under the accuracy, or no longer fall."""
-    best: _Pass | None = None
+    best: Pass | None = None
     worst, stalled, factor = np.inf, 0, estimate.bar_factor(first.corners)
     size, needs = first.size, first.needs
     for number in range(1, 11):
-        done = _solve_all(*mesher.mesh(size), channels, needs, wanted, factor, accuracy_eV)
+        done = solve_all(*mesher.mesh(size), channels, needs, wanted, factor, accuracy_eV)
         if done.bar_eV <= accuracy_eV:
             done = done.thorough(accuracy_eV).finished()
         bar, needs, unknowns = done.bar_eV, done.needs, done.unknowns
@@ -308,7 +330,7 @@ def _refine(
     return best.thorough(accuracy_eV).finished(), number
 
 
-def _solve_all(
+def solve_all(
     coarse: Mesh,
     fine: Mesh,
     channels: Sequence[Channel],
@@ -316,7 +338,7 @@ def _solve_all(
     wanted: int,
     factor: float,
     accuracy_eV: float,
-) -> _Pass:
+) -> Pass:
     """Every channel on one mesh, with as many states as lie below the highest wanted one of all together."""
     operators = [c.operator_of(coarse) for c in channels]
     space, finer = spaces(coarse, fine, operators[0])
@@ -345,7 +367,7 @@ def _solve_all(
         raise ConvergenceError("the valleys' states could not be brought into one list")
     # A band that is lowest off k = 0 may lie below states that are lower than it at k = 0.
     chosen = selected(solved, (space, finer), top, wanted, accuracy_eV, thorough=False)
-    return _Pass(*chosen, tuple(bottoms))
+    return Pass(*chosen, tuple(bottoms))
 
 
 def _counted(solved: Solved, wanted: int, top_eV: float) -> tuple[Solved, int]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -9,6 +10,7 @@ import scipy.linalg as dense
 from numpy.typing import NDArray
 
 from wiresolve.physics.local_mass import LocalMass
+from wiresolve.physics.pencil import Operator
 from wiresolve.units import HBAR2_OVER_2M0
 
 Array = NDArray[np.float64]
@@ -56,3 +58,19 @@ def _small(states: NDArray[Any], matrix: Any | None) -> NDArray[Any]:
         return np.zeros((states.shape[1], states.shape[1]))
     small = np.asarray(states.conj().T @ (matrix @ states))
     return np.asarray((small + small.conj().T) / 2)
+
+
+def upright(operator: Operator) -> Operator:
+    """The operator without terms that couple the axis to the section.
+
+    They move a region's in-plane momenta, which a phase undoes where the state lives, and leave the axis softer by
+    c A^(-1) c, with A the in-plane part and c the coupling.
+    """
+    by_region = []
+    for c in operator.by_region:
+        tensor = np.array(c.quadratic)
+        softer = tensor[2, 2, 0, 0] - tensor[2, :2, 0, 0] @ np.linalg.solve(tensor[:2, :2, 0, 0], tensor[:2, 2, 0, 0])
+        tensor[2, :2] = tensor[:2, 2] = 0.0
+        tensor[2, 2] = softer
+        by_region.append(replace(c, quadratic=tensor))
+    return replace(operator, by_region=tuple(by_region))

@@ -15,6 +15,7 @@ from wiresolve.describe.material import ANY_VALLEY, Material
 from wiresolve.describe.outside import outside_loop
 from wiresolve.describe.problem import PARABOLIC, Problem
 from wiresolve.describe.section import Piece
+from wiresolve.describe.setting import Setting, setting
 from wiresolve.describe.shapes import Rectangle
 from wiresolve.describe.symmetry import symmetries
 from wiresolve.errors import InputError
@@ -45,9 +46,15 @@ class Wire:
         return self.problem.energy_zero()[1] or 0.0
 
     @cached_property
+    def setting(self) -> Setting | None:
+        """Insulators, surroundings, gates and surfaces, where charge counts."""
+        return setting(self.problem) if self.problem.charged else None
+
+    @cached_property
     def inner(self) -> tuple[Piece, ...]:
         """The drawn pieces in painting order, without a material that goes on outside."""
-        return self.problem.section.pieces()
+        section, around = self.problem.section, self.setting
+        return section.pieces() if around is None else around.pieces(section)
 
     def draw(self, distance_nm: float) -> tuple[Piece, ...]:
         """The pieces in painting order, the outside one reaching so far."""
@@ -61,7 +68,7 @@ class Wire:
     @cached_property
     def carrying(self) -> tuple[Material, ...]:
         """The materials that admit carriers, each once."""
-        names = [p.material for p in self.problem.section.visible() if p.carriers]
+        names = [p.material for p in (*self.problem.section.visible(), *self._insulators) if p.carriers]
         if self.problem.section.outside is not None:
             names.append(self.problem.section.outside)
         return tuple(self.materials[name] for name in dict.fromkeys(names))
@@ -78,7 +85,7 @@ class Wire:
             if directions is not None or not any(_needs(m, name) for m in self.carrying)
         ]
         found = valley_groups(
-            self.carrying, names, directions, symmetries(problem.section, problem.potential)
+            self.carrying, names, directions, symmetries(problem.section, problem.potential, self.setting)
         )  # fmt: skip
         return tuple(sorted(found, key=lambda group: min(self.edges_eV(group).values())))
 
@@ -99,9 +106,14 @@ class Wire:
                     lowest[name] = min(lowest.get(name, np.inf), base + height)
         return tuple(lowest.items())
 
+    @property
+    def _insulators(self) -> tuple[Piece, ...]:
+        """What is drawn around the section that admits carriers."""
+        return () if self.setting is None else tuple(p for p in self.setting.around if p.carriers)
+
     def _places(self) -> list[Piece]:
         outside = self.problem.section.outside
-        places = [p for p in self.problem.section.visible() if p.carriers]
+        places = [p for p in (*self.problem.section.visible(), *self._insulators) if p.carriers]
         if outside is not None:
             places.append(replace(places[0], name="outside", material=outside, offset_eV=0.0))
         return places
@@ -268,7 +280,7 @@ class Wire:
             A material that goes on outside lies no higher than the wire: carriers would leave.
         """
         section = self.problem.section
-        name = section.outermost
+        name = self._insulators[0].name if self._insulators else section.outermost
         edges = self.edges_eV(group)
         if name not in edges or len(edges) < 2:
             return None

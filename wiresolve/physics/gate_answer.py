@@ -1,0 +1,113 @@
+"""How a wire in balance answers to a gate: levels and carriers for each volt, and what an empty section would do."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from wiresolve.fem.space import Space
+from wiresolve.physics.response import Response, response
+from wiresolve.physics.selfconsistent import Balanced, Stage, balance
+from wiresolve.units import KB
+
+Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
+
+_STEP_KT, _LEAST_V = 0.05, 2e-5
+"""Voltage steps of the difference that stands for the answer where masses grow with energy."""
+
+
+@dataclass(frozen=True, eq=False)
+class Answered:
+    """What one volt on a gate does.
+
+    Attributes
+    ----------
+    coupling : (n,) by how many eV each listed level falls; levels of one cluster share their mean.
+    empty_coupling : the same of the first level where there is no charge.
+    carriers_per_V_nm : by how much the line density rises.
+    """
+
+    coupling: Array
+    empty_coupling: float
+    carriers_per_V_nm: float
+
+
+def answered(balanced: Balanced, states: NDArray[Any], level: Ints, gate: str) -> Answered:
+    """The answer of listed states (nodes, n), whose clusters are `level` (n,), and of all carriers.
+
+    Where masses grow with energy it is a fourth-order difference of four balances close by.
+    """
+    stage = balanced.stage
+    if any(operator.nonparabolic for operator in stage.carriers.operators):
+        found = _by_difference(balanced, gate)
+    else:
+        found = response(balanced, gate)
+    seen = _seen(stage.carriers.space, found.potential, states)
+    shared = np.array([seen[level == number].mean() for number in level])
+    empty = _seen(stage.carriers.space, _empty(stage, gate), states[:, :1])
+    return Answered(shared, float(empty[0]), found.carriers_per_V_nm)
+
+
+def _seen(space: Space, potential: Array, states: NDArray[Any]) -> Array:
+    """(n,) mean of a potential (mesh points,) in each state."""
+    here = potential[space.nodes]
+    values = space.tabulated[1][2]
+    at = here[space.dofs] @ values.T
+    psi = np.einsum("qa,cam->cqm", values, states[space.dofs])
+    weights = space.quadrature_weights
+    total = np.einsum("cq,cqm->m", weights, np.abs(psi) ** 2)
+    return np.asarray(np.einsum("cq,cqm->m", weights * at, np.abs(psi) ** 2) / total)
+
+
+def _empty(stage: Stage, gate: str) -> Array:
+    """(n,) the potential of one volt on a gate, with no charge that answers."""
+    field = stage.field.field
+    held = np.zeros(len(field.space.nodes))
+    held[field.gate_points[gate]] = 1.0
+    return field.solve_linear(np.zeros(len(held)), held[field.held])
+
+
+def _by_difference(balanced: Balanced, gate: str) -> Response:
+    stage = balanced.stage
+    field = stage.field.field
+    one = np.zeros(len(field.space.nodes))
+    one[field.gate_points[gate]] = 1.0
+    step = max(_STEP_KT * KB * stage.carriers.temperature_K, _LEAST_V)
+    near, far = (
+        [balance(stage, balanced.held_V + sign * n * step * one[field.held], balanced) for sign in (1, -1)]
+        for n in (1, 2)
+    )
+
+    def slope(of: Any) -> Any:
+        return (8 * (of(near[0]) - of(near[1])) - (of(far[0]) - of(far[1]))) / (12 * step)
+
+    charges = {name: slope(lambda b, n=name: b.charges_per_nm()[n]) for name in field.gate_points}
+    return Response(
+        slope(lambda b: b.potential_V),
+        slope(lambda b: b.occupied.carriers_per_nm3),
+        float(slope(lambda b: b.occupied.total_per_nm)),
+        charges,
+    )
+
+
+def channel_capacitance(stage: Stage, gate: str) -> float:
+    """Capacitance in e/(V nm) between a gate and the section as if all that admits carriers were a metal.
+
+    All other gates and pinned surfaces are at its potential.
+    """
+    field, space = stage.field.field, stage.carriers.space
+    inside = np.zeros(len(field.space.nodes), dtype=bool)
+    inside[space.nodes] = True
+    potential = np.zeros(len(inside))
+    potential[field.gate_points[gate]] = 1.0
+    free = np.flatnonzero(~inside & ~field.is_held)
+    if len(free):
+        from wiresolve.fem.eigen import definite
+
+        load = -(field.stiffness @ potential)
+        potential[free] = definite(field.stiffness[free][:, free]).solve(load[free])
+    return float(-(field.stiffness @ potential)[inside].sum())
