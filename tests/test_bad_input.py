@@ -178,16 +178,6 @@ CASES: dict[str, tuple[str, str, tuple[str, ...]]] = {
     "not TOML": ("[section]", "[section", ("is not TOML", "line")),
     "duplicate key": (CIRCLE, f'shape = "circle"\n{CIRCLE}', ("is not TOML", "overwrite")),
 }
-# Keys that later versions will know: never silently ignored.
-LATER = {
-    "gates": ("[potential]", '[[gates]]\nname = "wrap"\n[potential]'),
-    "surfaces": ("[potential]", "[[surfaces]]\n[potential]"),
-    "surroundings": ("[potential]", "[surroundings]\n[potential]"),
-    "voltages": ("[potential]", "[voltages]\n[potential]"),
-    "transport": ("[potential]", "[transport]\n[potential]"),
-    "donors": ('thickness = "2 nm"', 'thickness = "2 nm"\ndonors = "1e18 cm^-3"'),
-    "acceptors": (CIRCLE, f'{CIRCLE}\nacceptors = "1e18 cm^-3"'),
-}
 
 
 def refusal(text: str, name: str = "wire.toml") -> str:
@@ -216,12 +206,6 @@ def test_one_line_that_names_the_key(old: str, new: str, words: tuple[str, ...])
     assert old in GOOD
     message = refusal(GOOD.replace(old, new, 1))
     assert [word for word in words if word not in message] == []
-
-
-@pytest.mark.parametrize(("old", "new"), LATER.values(), ids=LATER.keys())
-def test_what_is_not_modelled_yet_is_refused(old: str, new: str) -> None:
-    assert old in GOOD
-    assert "this version does not model" in refusal(GOOD.replace(old, new, 1))
 
 
 def test_the_field_is_the_path_of_the_key() -> None:

@@ -24,14 +24,14 @@ LAYERS: tuple[frozenset[str], ...] = tuple(
             {"fem"},
             {"bands"},
             {"physics"},
-            {"result", "solve", "loading"},
+            {"result", "gate_result", "solve", "gate_curve", "loading"},
             {"output"},
             {"survey"},
-            {"cli", "doctor", "known_wires", "__main__"},
+            {"cli", "cli_gate_curve", "terminal", "doctor", "known_wires", "__main__"},
         ),
     )
 )
-MAY_PRINT = {"wiresolve.cli", "wiresolve.__main__"}
+MAY_PRINT = {"wiresolve.cli", "wiresolve.terminal", "wiresolve.__main__"}
 # Libraries that only one module may import.
 ONLY_IMPORTER = {
     "gmsh": "wiresolve.fem.meshing",

@@ -96,7 +96,7 @@ def test_named_scripts_can_be_started(text: str) -> None:
 def test_documented_commands_are_the_real_ones() -> None:
     documented = set(re.findall(r"`wiresolve (\w[\w-]*)", README))
     assert documented == set(real_commands())
-    passed_through = re.search(r"^ +((?:\w+ \| )+)--version\)", (REPOSITORY / "scripts" / "run").read_text(), re.M)
+    passed_through = re.search(r"^ +((?:[\w-]+ \| )+)--version\)", (REPOSITORY / "scripts" / "run").read_text(), re.M)
     assert passed_through
     assert set(passed_through[1].replace("|", " ").split()) == set(real_commands())
 

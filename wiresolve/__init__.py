@@ -7,6 +7,8 @@
     ws.write(result, "results/wire")
     ws.figures.modes(result).savefig("modes.png")
 
+A problem with gates and a sweep of voltages has a gate curve, which is written likewise: `ws.gate_curve(problem)`.
+
 Lengths are in nm, energies in eV, temperatures in K, masses in those of the free electron. Names are loaded when they
 are first used (PEP 562).
 """
@@ -25,9 +27,11 @@ if TYPE_CHECKING:
     from wiresolve.describe.section import Layer, Patch, Section
     from wiresolve.describe.valley import Valley
     from wiresolve.errors import WiresolveError
+    from wiresolve.gate_curve import gate_curve
+    from wiresolve.gate_result import GateCurve
     from wiresolve.loading import load
-    from wiresolve.output import figures
-    from wiresolve.output.folder import write
+    from wiresolve.output import figures, gate_curve_figures
+    from wiresolve.output.writing import write
     from wiresolve.physics.section_mesh import mesh
     from wiresolve.result import Result
     from wiresolve.solve import solve
@@ -35,6 +39,7 @@ if TYPE_CHECKING:
 __all__ = [
     "Accuracy",
     "Carriers",
+    "GateCurve",
     "Layer",
     "Material",
     "Orientation",
@@ -46,6 +51,8 @@ __all__ = [
     "Valley",
     "WiresolveError",
     "figures",
+    "gate_curve",
+    "gate_curve_figures",
     "load",
     "mesh",
     "shapes",
@@ -57,6 +64,7 @@ __version__ = "0.1.0"
 _HOMES = {
     "Accuracy": "wiresolve.describe.problem:Accuracy",
     "Carriers": "wiresolve.describe.problem:Carriers",
+    "GateCurve": "wiresolve.gate_result:GateCurve",
     "Layer": "wiresolve.describe.section:Layer",
     "Material": "wiresolve.describe.materials:Material",
     "Orientation": "wiresolve.describe.problem:Orientation",
@@ -68,11 +76,13 @@ _HOMES = {
     "Valley": "wiresolve.describe.valley:Valley",
     "WiresolveError": "wiresolve.errors:WiresolveError",
     "figures": "wiresolve.output.figures:",
+    "gate_curve": "wiresolve.gate_curve:gate_curve",
+    "gate_curve_figures": "wiresolve.output.gate_curve_figures:",
     "load": "wiresolve.loading:load",
     "mesh": "wiresolve.physics.section_mesh:mesh",
     "shapes": "wiresolve.describe.shapes:",
     "solve": "wiresolve.solve:solve",
-    "write": "wiresolve.output.folder:write",
+    "write": "wiresolve.output.writing:write",
 }
 
 

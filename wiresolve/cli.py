@@ -9,24 +9,20 @@ from __future__ import annotations
 import errno
 import logging
 import os
-import signal
 import sys
-import threading
-from collections.abc import Callable, Iterator, Sequence
-from contextlib import contextmanager
+from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, NoReturn
 
 import click
 
+from wiresolve.cli_gate_curve import gate_curve
 from wiresolve.doctor import GMSH_LIBRARIES, examine, missing_library
 from wiresolve.errors import InputError, WiresolveError
+from wiresolve.terminal import ACCURACY_MISSED, INTERRUPTED, complain, heed_signals, judged, progress, read_problem, say
 
 if TYPE_CHECKING:
-    from wiresolve.describe.problem import Problem
-    from wiresolve.result import Result
-
-INTERRUPTED, ACCURACY_MISSED, REFUSED = 130, 5, 2
+    pass
 
 
 class _Program(click.Group):
@@ -55,7 +51,7 @@ class _Program(click.Group):
             return super().invoke(ctx)
         except KeyboardInterrupt as fault:
             # Left to itself, click prints an empty line for it.
-            raise click.Abort from fault
+            raise click.Abort(*fault.args) from fault
 
 
 def _explain(fault: BaseException, debug: bool) -> int:
@@ -70,102 +66,30 @@ def _explain(fault: BaseException, debug: bool) -> int:
         click.echo(fault.format_message(), err=True)
         return fault.exit_code
     if isinstance(fault, click.Abort | KeyboardInterrupt):
-        _complain("interrupted", "")
+        complain(f"interrupted; {fault}" if str(fault) else "interrupted", "")
         return INTERRUPTED
     if isinstance(fault, click.UsageError):
         path = fault.ctx.command_path if fault.ctx else "wiresolve"
-        _complain(f"{fault.format_message().rstrip('.')} (see '{path} --help')")
+        complain(f"{fault.format_message().rstrip('.')} (see '{path} --help')")
         return fault.exit_code
     if isinstance(fault, click.ClickException):
-        _complain(fault.format_message())
+        complain(fault.format_message())
         return fault.exit_code
     if isinstance(fault, WiresolveError):
-        _complain(str(fault))
+        complain(str(fault))
         return fault.exit_code
     if isinstance(fault, OSError) and fault.errno in (errno.ENOSPC, errno.EDQUOT):
-        _complain("the disk is full; make room or write elsewhere")
+        complain("the disk is full; make room or write elsewhere")
         return InputError.exit_code
     if isinstance(fault, MemoryError):
-        _complain("out of memory; ask for fewer subbands or a larger error")
+        complain("out of memory; ask for fewer subbands or a larger error")
         return 1
     if library := missing_library(str(fault)):
-        _complain(f"the system library {library} is missing; as root on Debian: apt-get install {GMSH_LIBRARIES}")
+        complain(f"the system library {library} is missing; as root on Debian: apt-get install {GMSH_LIBRARIES}")
         return 1
     hint = "" if debug else "; WIRESOLVE_DEBUG=1 shows where"
-    _complain(f"internal fault, please report it with the wire file: {type(fault).__name__}: {fault}{hint}")
+    complain(f"internal fault, please report it with the wire file: {type(fault).__name__}: {fault}{hint}")
     return 1
-
-
-def _complain(text: str, kind: str = "error: ") -> None:
-    """One printable line on stderr."""
-    line = "".join(c if c.isprintable() else " " if c.isspace() else repr(c)[1:-1] for c in text)
-    click.echo(f"wiresolve: {kind}{line}", err=True)
-
-
-def _print(text: str) -> None:
-    """Text on stdout in whatever it can encode; a reader that has gone away (`| head`) is no error."""
-    encoding = sys.stdout.encoding or "ascii"
-    try:
-        text.encode(encoding)
-    except UnicodeEncodeError:
-        text = text.replace("±", "+/-").replace("×", "x").replace("²", "2").replace("µ", "u")
-        text = text.encode(encoding, "backslashreplace").decode(encoding)
-    try:
-        click.echo(text)
-    except BrokenPipeError:
-        sys.stdout = open(os.devnull, "w", encoding="utf-8")  # noqa: SIM115 - it has to outlive this call
-
-
-def _heed_signals() -> None:
-    """Let a closed pipe raise an error, and a termination unwind, so that what is being written gets removed.
-
-    Gmsh sets both back to ending the process on the spot.
-    """
-    if threading.current_thread() is not threading.main_thread():
-        return
-
-    def stop(*_: object) -> NoReturn:
-        raise SystemExit(128 + signal.SIGTERM)
-
-    signal.signal(signal.SIGTERM, stop)
-    if hasattr(signal, "SIGPIPE"):
-        signal.signal(signal.SIGPIPE, signal.SIG_IGN)
-
-
-@contextmanager
-def _progress(shown: bool) -> Iterator[Callable[[str, float, str], None] | None]:
-    """A callback that draws a bar on stderr where that is a terminal, else None."""
-    if not (shown and sys.stderr.isatty()):
-        yield None
-        return
-    from rich.console import Console
-    from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
-
-    columns = (TextColumn("{task.description}"), BarColumn(), TimeElapsedColumn(), TextColumn("{task.fields[detail]}"))
-    with Progress(*columns, console=Console(stderr=True), transient=True) as bar:
-        task = bar.add_task("mesh", total=1.0, detail="")
-
-        def report(stage: str, fraction: float, detail: str) -> None:
-            bar.update(task, description=stage, completed=fraction, detail=detail)
-
-        yield report
-
-
-def _read(file: Path, accuracy: str | None = None) -> Problem:
-    from dataclasses import replace
-
-    from wiresolve.loading import load
-
-    problem = load(file)
-    if accuracy is not None:
-        from wiresolve.units import parse_quantity
-
-        energy_eV = parse_quantity(accuracy, "energy", "--accuracy")
-        try:
-            problem = replace(problem, accuracy=replace(problem.accuracy, energy_eV=energy_eV))
-        except InputError as fault:
-            raise InputError("--accuracy", fault.rule, accuracy, fault.remedy) from fault
-    return problem
 
 
 def _show_version(context: click.Context, _: click.Parameter, wanted: bool) -> None:
@@ -221,40 +145,30 @@ def solve(
     from wiresolve.output.folder import check_target, write
     from wiresolve.output.tables import DONE, result_json, summary
 
-    problem = _read(file, accuracy)
+    problem = read_problem(file, accuracy)
     folder = Path("results") / file.stem if out is None else out
     may_replace = replace or out is None
     check_target(folder, replace=may_replace, field="--out")
     from wiresolve.solve import solve as find
 
-    with _progress(not quiet) as report:
+    with progress(not quiet) as report:
         result = find(problem, on_progress=report)
-        _heed_signals()
-        code, reasons = _judged(result, strict)
+        heed_signals()
+        code, reasons = judged(result, strict, float(result.errors_eV.max()))
         status = "; ".join(reasons) or DONE
         if report is not None:
             report("writing", 1.0, str(folder))
         write(result, folder, replace=may_replace, figures=not no_figures, status=status, field="--out")
     if as_json:
-        _print(result_json(result, status).rstrip("\n"))
+        say(result_json(result, status).rstrip("\n"))
     elif not quiet:
-        _print(summary(result, folder, status))
+        say(summary(result, folder, status))
     if reasons:
-        _complain(f"{'; '.join(reasons)}; the results are in {folder}, marked so")
+        complain(f"{'; '.join(reasons)}; the results are in {folder}, marked so")
     return code
 
 
-def _judged(result: Result, strict: bool) -> tuple[int, list[str]]:
-    """Exit code of a finished run, and what is held against it."""
-    code, reasons = 0, []
-    if strict and result.warnings:
-        codes = ", ".join(dict.fromkeys(w.code for w in result.warnings))
-        code, reasons = REFUSED, [f"warnings under --strict: {codes}"]
-    if not result.accuracy_met:
-        wanted, worst = 1e3 * result.problem.accuracy.energy_eV, 1e3 * float(result.errors_eV.max())
-        code = ACCURACY_MISSED
-        reasons.insert(0, f"accuracy missed: wanted {wanted:g} meV, the largest bar is {worst:.2g} meV")
-    return code, reasons
+program.add_command(gate_curve)
 
 
 @program.command()
@@ -269,22 +183,22 @@ def mesh(file: Path, out: Path | None, replace: bool) -> int:
     from wiresolve.output.folder import check_file, writing
     from wiresolve.output.vtk import write_section
 
-    problem = _read(file)
+    problem = read_problem(file)
     wanted = out or Path("results") / f"{file.stem}.mesh.vtu"
     target = check_file(wanted, replace=replace or out is None, field="--out", suffix=".vtu", source=file)
     from wiresolve.physics.section_mesh import mesh as mesh_of
 
-    with _progress(True) as report:
+    with progress(True) as report:
         made = mesh_of(problem, report)
-        _heed_signals()
+        heed_signals()
         with writing(target, "--out") as fresh:
             write_section(made.mesh, fresh)
     curved = f"{len(made.mesh.cells):,} curved cells of degree {made.mesh.degree}, {made.unknowns:,} unknowns"
-    _print(f"{curved}; {', '.join(f'{n:,} in {name}' for name, n in made.cells.items())}")
-    _print("Area: " + ", ".join(f"{name} {area:.6g} nm^2" for name, area in made.areas_nm2.items() if area))
-    _print(f"File: {out or target}")
+    say(f"{curved}; {', '.join(f'{n:,} in {name}' for name, n in made.cells.items())}")
+    say("Area: " + ", ".join(f"{name} {area:.6g} nm^2" for name, area in made.areas_nm2.items() if area))
+    say(f"File: {out or target}")
     if not made.met:
-        _complain("the accuracy wanted was missed; this is the best mesh found")
+        complain("the accuracy wanted was missed; this is the best mesh found")
     return 0 if made.met else ACCURACY_MISSED
 
 
@@ -300,8 +214,8 @@ def check(file: Path) -> None:
     from wiresolve.physics import carrying
     from wiresolve.physics.wire import Wire
 
-    problem = _read(file)
-    _print("\n".join(described(describe(problem) + carrying.described(Wire(problem)))))
+    problem = read_problem(file)
+    say("\n".join(described(describe(problem) + carrying.described(Wire(problem)))))
 
 
 @program.command()
@@ -328,22 +242,22 @@ def materials(name: str | None, temperature: str, own: Path | None, as_json: boo
     if name is None:
         found |= {entry: look_up(entry, lattice_K) for entry in table_names() if entry not in found}
         if as_json:
-            _print(material_lists.as_json([(material, material.values) for material in found.values()]))
+            say(material_lists.as_json([(material, material.values) for material in found.values()]))
             return
-        _print("\n".join(material_lists.listing(list(found.values()))))
-        _print(f"at {lattice_K:g} K; unsure are values from memory and values on which sources differ")
-        _print("'wiresolve materials NAME' shows where each is from")
+        say("\n".join(material_lists.listing(list(found.values()))))
+        say(f"at {lattice_K:g} K; unsure are values from memory and values on which sources differ")
+        say("'wiresolve materials NAME' shows where each is from")
         return
     if name not in found and not known(name):
         raise unknown(name, tuple(found), "Or name the file that describes it with --file" if own is None else "")
     material = found[name] if name in found else look_up(name, lattice_K)
     values = material.values if name in found else table_values(name, lattice_K)
     if as_json:
-        _print(material_lists.as_json([(material, values)]))
+        say(material_lists.as_json([(material, values)]))
         return
-    _print("\n".join(material_lists.value_table(values)))
+    say("\n".join(material_lists.value_table(values)))
     for code, text, remedy in material.notes:
-        _print("\n".join(["", *paragraphs(f"warning {code}: {text}"), *paragraphs(remedy, indent="    ")]))
+        say("\n".join(["", *paragraphs(f"warning {code}: {text}"), *paragraphs(remedy, indent="    ")]))
 
 
 @program.command()
@@ -355,15 +269,15 @@ def doctor() -> int:
     sound = True
     for line in examine():
         sound &= line.ok
-        _print(line.text)
-    _print("all is well" if sound else "something is amiss, see above")
+        say(line.text)
+    say("all is well" if sound else "something is amiss, see above")
     return 0 if sound else 1
 
 
 def main(args: Sequence[str] | None = None) -> NoReturn:
     """Run the command line and leave the interpreter with its exit code."""
 
-    _heed_signals()
+    heed_signals()
     # Libraries' own log lines and warnings are no answer to the user; --debug brings them back.
     logging.captureWarnings(True)
     logging.getLogger().addHandler(logging.NullHandler())

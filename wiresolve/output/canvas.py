@@ -7,7 +7,7 @@ import math
 from collections.abc import Callable, Sequence
 from contextlib import AbstractContextManager
 from types import MappingProxyType
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, TypeVar
 
 import matplotlib
 import numpy as np
@@ -22,6 +22,8 @@ from wiresolve.result import Result
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
+Drawn = TypeVar("Drawn")
+"""What is drawn: a result or a gate curve."""
 COLUMN_MM, PAGE_MM = 86.0, 178.0
 _DASHES: tuple[Any, ...] = ("-", (0, (4, 1.4)), (0, (1.4, 0.9)), (0, (5, 1.2, 1, 1.2)), (0, (8, 2)), (0, (2, 2)))
 CYCLE = ("#0072B2", "#E69F00", "#009E73", "#CC79A7", "#56B4E9", "#D55E00", "#F0E442", "#000000")
@@ -65,11 +67,11 @@ def style() -> AbstractContextManager[None]:
     return matplotlib.rc_context(settings)
 
 
-def styled(draw: Callable[[Result], Figure]) -> Callable[[Result], Figure]:
+def styled(draw: Callable[[Drawn], Figure]) -> Callable[[Drawn], Figure]:
     """Draw in this module's style whatever the caller's settings are, and leave those alone."""
 
     @functools.wraps(draw)
-    def drawn(result: Result) -> Figure:
+    def drawn(result: Drawn) -> Figure:
         with style():
             return draw(result)
 
@@ -203,9 +205,9 @@ def mark(axes: Axes, energies_meV: Any) -> None:
 
 def mark_fermi(axes: Axes, result: Result, along: str) -> None:
     """A thin dashed line and a word at the wire file's Fermi level; its value and an arrow where it is out of view."""
-    if result.problem.carriers.fermi_level_eV is None:
+    if result.problem.fermi_level_eV is None:
         return
-    level = 1e3 * result.problem.carriers.fermi_level_eV
+    level = 1e3 * result.problem.fermi_level_eV
     low, high = axes.get_xlim() if along == "x" else axes.get_ylim()
     part = (level - low) / (high - low)
     style: dict[str, Any] = {"textcoords": "offset points", "xycoords": "axes fraction", "fontsize": 6}

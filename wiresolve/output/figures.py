@@ -70,7 +70,7 @@ def _fermi_window(result: Result) -> tuple[float, float]:
 
 def _with_fermi(result: Result, low: float, high: float) -> tuple[float, float]:
     """A range in meV, widened by up to a third of itself where that brings the wire file's Fermi level into view."""
-    level, room = result.problem.carriers.fermi_level_eV, 0.3 * (high - low)
+    level, room = result.problem.fermi_level_eV, 0.3 * (high - low)
     if level is None or not low - room <= 1e3 * level <= high + room:
         return low, high
     return min(low, 1e3 * level - 0.1 * room), max(high, 1e3 * level + 0.1 * room)

@@ -8,9 +8,11 @@ import secrets
 import shutil
 from collections.abc import Iterator
 from contextlib import contextmanager, suppress
+from dataclasses import dataclass
 from pathlib import Path
 
 from wiresolve.describe import input_files, wirefile
+from wiresolve.describe.problem import Problem
 from wiresolve.errors import InputError
 from wiresolve.output import tables, vtk
 from wiresolve.result import Result
@@ -19,6 +21,19 @@ INPUT, RESULT, SUBBANDS, MODES, FIGURES = "input.toml", "result.json", "subbands
 INPUTS = input_files.FOLDER
 DRAWN = ("section", "modes", "levels", "density_of_states", "dispersion", "conductance", "sensitivity")
 """Names of the figures, known here without loading what draws them."""
+
+
+@dataclass(frozen=True)
+class Contents:
+    """What a kind of result folder holds of its own: `marker`, by which it is known, `entries` and figures' names."""
+
+    name: str
+    marker: str
+    entries: tuple[str, ...]
+    drawn: tuple[str, ...]
+
+
+SOLVED = Contents("result", RESULT, (INPUT, RESULT, SUBBANDS, MODES, FIGURES, INPUTS), DRAWN)
 
 
 def write(
@@ -57,11 +72,8 @@ def write(
         The target exists (and is not to be or cannot be replaced), cannot be written, or the disk is full.
     """
     target = check_target(folder, replace=replace, field=field)
-    with _readable(target, field), _parents(target), _fresh_beside(target) as fresh:
-        (fresh / INPUT).write_text(wirefile.dump(result.problem), encoding="utf-8")
-        for path, content in result.problem.files:
-            (fresh / path).parent.mkdir(exist_ok=True)
-            (fresh / path).write_bytes(content)
+    with filling(target, SOLVED, field) as fresh:
+        write_input(result.problem, fresh)
         tables.write_json(result, fresh / RESULT, status)
         tables.write_subbands(result, fresh / SUBBANDS, status)
         vtk.write_modes(result, fresh / MODES)
@@ -70,11 +82,32 @@ def write(
 
             (fresh / FIGURES).mkdir()
             save_all(result, fresh / FIGURES)
-        _put_in_place(fresh, target)
     return target
 
 
-def check_target(folder: str | Path, *, replace: bool, field: str = "folder") -> Path:
+@contextmanager
+def filling(target: Path, contents: Contents, field: str) -> Iterator[Path]:
+    """A fresh folder beside `target` to fill, put in its place at the end; nothing is left of it on failure.
+
+    Raises
+    ------
+    InputError
+        It cannot be written or the disk is full.
+    """
+    with readable(target, field), _parents(target), _fresh_beside(target) as fresh:
+        yield fresh
+        _put_in_place(fresh, target, contents)
+
+
+def write_input(problem: Problem, fresh: Path) -> None:
+    """The exact wire file, and copies of the files that it names."""
+    (fresh / INPUT).write_text(wirefile.dump(problem), encoding="utf-8")
+    for path, content in problem.files:
+        (fresh / path).parent.mkdir(exist_ok=True)
+        (fresh / path).write_bytes(content)
+
+
+def check_target(folder: str | Path, *, replace: bool, field: str = "folder", contents: Contents = SOLVED) -> Path:
     """The absolute path of a target that a result can be written to; nothing is left behind by looking.
 
     Raises
@@ -83,17 +116,16 @@ def check_target(folder: str | Path, *, replace: bool, field: str = "folder") ->
         As for `write`; called before a run, it saves the run.
     """
     path = Path(folder)
-    with _readable(path, field):
+    with readable(path, field):
         target = path.resolve()
         if target.exists():
             if not target.is_dir():
                 raise InputError(field, "is a file, and a result is a folder", str(path), "give another name")
             if not replace:
                 raise InputError(field, "exists already", str(path), _how_to_replace(field))
-            if any(target.iterdir()) and not ((target / RESULT).is_file() and (target / INPUT).is_file()):
-                raise InputError(
-                    field, "exists and holds no result, so it is not replaced", str(path), "give another name"
-                )
+            if any(target.iterdir()) and not ((target / contents.marker).is_file() and (target / INPUT).is_file()):
+                rule = f"exists and holds no {contents.name}, so it is not replaced"
+                raise InputError(field, rule, str(path), "give another name")
         _try_place(target, path, field)
     return target
 
@@ -117,7 +149,7 @@ def check_file(
         It exists and is not to be replaced, is a folder, is `source`, or cannot be written there.
     """
     given = Path(path)
-    with _readable(given, field):
+    with readable(given, field):
         target = given.resolve()
         if target.is_dir():
             raise InputError(field, "is a folder, and a file is wanted", str(path), "give another name")
@@ -161,7 +193,7 @@ def writing(target: Path, field: str) -> Iterator[Path]:
     InputError
         The file cannot be written or the disk is full.
     """
-    with _readable(target, field), _parents(target):
+    with readable(target, field), _parents(target):
         fresh = _beside(target, "partial")
         try:
             yield fresh
@@ -195,7 +227,7 @@ def _parents(target: Path) -> Iterator[None]:
         raise
 
 
-def _put_in_place(fresh: Path, target: Path) -> None:
+def _put_in_place(fresh: Path, target: Path, contents: Contents) -> None:
     """Rename `fresh` to `target`, with the user's own entries of the folder that was there; undone on failure.
 
     Those entries are never in a folder that gets removed: they leave the old one last, and return to it first.
@@ -204,7 +236,7 @@ def _put_in_place(fresh: Path, target: Path) -> None:
     own: list[Path] = []
     try:
         if target.exists():
-            own = _own_entries(target, fresh)
+            own = _own_entries(target, fresh, contents)
             os.replace(target, old)
         os.replace(fresh, target)
         for entry in own:
@@ -222,23 +254,23 @@ def _put_in_place(fresh: Path, target: Path) -> None:
     shutil.rmtree(old, ignore_errors=True)
 
 
-def _own_entries(folder: Path, fresh: Path) -> list[Path]:
+def _own_entries(folder: Path, fresh: Path, contents: Contents) -> list[Path]:
     """Relative paths of what lies in a result folder and is none of what this program writes there.
 
     Copies of input files are known by their names only: those that `fresh` does not bring along stay.
     """
-    own = [Path(p.name) for p in folder.iterdir() if p.name not in (INPUT, RESULT, SUBBANDS, MODES, FIGURES, INPUTS)]
+    own = [Path(p.name) for p in folder.iterdir() if p.name not in contents.entries]
     copies = folder / INPUTS
     if copies.is_dir() and not copies.is_symlink():
         own += [Path(INPUTS, p.name) for p in copies.iterdir() if not (fresh / INPUTS / p.name).exists()]
-    drawn, pictures = {f"{name}.{kind}" for name in DRAWN for kind in ("png", "svg")}, folder / FIGURES
+    drawn, pictures = {f"{name}.{kind}" for name in contents.drawn for kind in ("png", "svg")}, folder / FIGURES
     if pictures.is_dir() and not pictures.is_symlink():
         own += [Path(FIGURES, p.name) for p in pictures.iterdir() if p.name not in drawn]
     return own
 
 
 @contextmanager
-def _readable(target: Path, field: str) -> Iterator[None]:
+def readable(target: Path, field: str) -> Iterator[None]:
     """Turn the operating system's refusals into errors that a user can act on."""
     try:
         yield

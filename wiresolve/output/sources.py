@@ -2,10 +2,14 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
+
 from wiresolve.describe.material import GIVEN_SCALE, VACUUM_LEVEL, Material
+from wiresolve.describe.problem import Problem
 from wiresolve.describe.valley import ZONE_CENTRE
+from wiresolve.fem.mesh import Mesh
 from wiresolve.output.valley_names import members
-from wiresolve.result import Result
+from wiresolve.result import Result, Warned
 
 _KINDS = {ZONE_CENTRE: "zone_centre_", "X": "X_", "L": "L_", "Delta": "Delta_"}
 _SCALE = ("valence_edge", "model_solid_valence_average", "conduction_edge")
@@ -13,16 +17,23 @@ _WALLS = "soft-wall"
 
 
 def from_memory(result: Result, provenance: str = "memory") -> str:
-    """The values of a provenance ("memory", "conflict") that the run used, by material; empty where there are none.
+    """The values of a provenance ("memory", "conflict") that a result stands on (see `unsure`)."""
+    return unsure(result.problem, result.mesh, (s.valley for s in result.subbands), result.warnings, provenance)
+
+
+def unsure(
+    problem: Problem, mesh: Mesh, valleys: Iterable[str], warnings: Iterable[Warned], provenance: str = "memory"
+) -> str:
+    """The values of a provenance that a run used, by material; empty where there are none.
 
     Left out are valleys without a listed subband, and whatever only sets band edges against each other where nothing
     is set so. A valley of which everything is so is named once.
     """
     found = []
-    materials = result.problem.resolved_materials()
-    carrying = {r.material for r in result.mesh.regions if r.carriers}
-    kinds = {members(s.valley)[0] for s in result.subbands}
-    walls = any(w.code == _WALLS for w in result.warnings)
+    materials = problem.resolved_materials()
+    carrying = {r.material for r in mesh.regions if r.carriers}
+    kinds = {members(valley)[0] for valley in valleys}
+    walls = any(w.code == _WALLS for w in warnings)
     for material in materials.values():
         if not walls and material.name not in carrying:
             used = {"permittivity", "lattice_constant", "lattice_constant_c"}

@@ -88,18 +88,21 @@ def result_json(result: Result, status: str = DONE) -> str:
     ValueError
         A number is not finite: JSON has no word for it, and no result holds one.
     """
-    return _json({**result.to_dict(), "status": status}, "", 0) + "\n"
+    return json_text({**result.to_dict(), "status": status}) + "\n"
 
 
-def _json(value: Any, path: str, depth: int) -> str:
+def json_text(value: Any, path: str = "", depth: int = 0) -> str:
+    """Plain data as JSON, keys sorted, a list of numbers on one line; ValueError where a number is not finite."""
     inner, outer = "  " * (depth + 1), "  " * depth
     if isinstance(value, Mapping):
-        items = [f"{json.dumps(str(k))}: {_json(value[k], f'{path}.{k}', depth + 1)}" for k in sorted(value, key=str)]
+        items = [
+            f"{json.dumps(str(k))}: {json_text(value[k], f'{path}.{k}', depth + 1)}" for k in sorted(value, key=str)
+        ]
         return "{\n" + inner + f",\n{inner}".join(items) + f"\n{outer}}}" if items else "{}"
     if isinstance(value, np.ndarray):
         value = value.tolist()
     if isinstance(value, list | tuple):
-        items = [_json(v, f"{path}[{i}]", depth + 1) for i, v in enumerate(value)]
+        items = [json_text(v, f"{path}[{i}]", depth + 1) for i, v in enumerate(value)]
         if any(isinstance(v, Mapping | list | tuple | str | np.ndarray) for v in value):
             return "[\n" + inner + f",\n{inner}".join(items) + f"\n{outer}]"
         return "[" + ", ".join(items) + "]"
@@ -152,11 +155,12 @@ def subbands_csv(result: Result, status: str = DONE) -> str:
     for number, s in enumerate(result.subbands):
         row = [getattr(s, name) for name in COLUMNS] + [s.shares.get(place, 0.0) for place in places]
         row += [float(by.values[number]) for by in moved]
-        table.writerow([_cell(value) for value in row])
+        table.writerow([cell(value) for value in row])
     return lines.getvalue()
 
 
-def _cell(value: object) -> str:
+def cell(value: object) -> str:
+    """A value as a CSV file holds it: exact floats, empty where there is none."""
     if value is None:
         return ""
     if isinstance(value, bool | np.bool_):

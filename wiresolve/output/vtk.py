@@ -49,7 +49,7 @@ def write_modes(result: Result, path: str | Path) -> None:
         "axial_mass_m0": np.array([np.nan if s.axial_mass is None else s.axial_mass for s in result.subbands]),
     }
     texts = {"valley": [s.valley for s in result.subbands], "input_digest": [result.problem.digest]}
-    _write(grid(result.mesh, points, result.cell_fields, fields, texts), path)
+    save(grid(result.mesh, points, result.cell_fields, fields, texts), path)
 
 
 def write_section(mesh: Mesh, path: str | Path) -> None:
@@ -60,7 +60,7 @@ def write_section(mesh: Mesh, path: str | Path) -> None:
     OSError
         The file cannot be written.
     """
-    _write(grid(mesh), path)
+    save(grid(mesh), path)
 
 
 def grid(
@@ -125,7 +125,8 @@ def grid(
     return out
 
 
-def _write(data: vtkUnstructuredGrid, path: str | Path) -> None:
+def save(data: vtkUnstructuredGrid, path: str | Path) -> None:
+    """Write a grid as a `.vtu` file; OSError where it cannot be written."""
     from vtkmodules.vtkIOXML import vtkXMLUnstructuredGridWriter
 
     # VTK reports a full disk on its own error stream and returns; written to memory first, Python raises OSError.
