@@ -14,6 +14,7 @@ from scipy.special import iv
 from wiresolve.describe.curves import Arc, EllipseArc, Line, Loop, Parabolas, Segment, Spline, circle
 from wiresolve.describe.section import VOID, Piece
 from wiresolve.errors import ConvergenceError
+from wiresolve.fem.condensed import outside
 from wiresolve.fem.estimate import finer
 from wiresolve.fem.field_corners import field_corners
 from wiresolve.fem.mesh import Mesh
@@ -168,6 +169,20 @@ class TestLinear:
         assert matrix[1, 1] == pytest.approx(2 * poisson.energy(phi), rel=1e-12)
         assert matrix == pytest.approx(matrix.T, rel=1e-10)
 
+    def test_capacitance_converges_like_the_eighth_power_of_the_size(self) -> None:
+        exact, errors = 2 * math.pi * EPSILON0_PER_V_NM * 9.0 / math.acosh((16 + 100 - 9) / 80), []
+        for turn in (16, 32):
+            pieces = [piece("layer 1", circle(10.0)), piece("core", circle(4.0, center=(3.0, 0.0)), VOID)]
+            mesh, _ = pair_of(pieces, 40.0 / turn, turn)
+            gates = {
+                "rim": edges_along(mesh, circle(10.0).segments),
+                "core": edges_along(mesh, circle(4.0, center=(3.0, 0.0)).segments),
+            }
+            _, matrix = capacitances(poisson_field(Space(mesh, whole=True), [9.0], gates))
+            errors.append((matrix[0, 0] / exact - 1, len(mesh.points)))
+        (coarse, few), (fine, many) = errors
+        assert math.log(coarse / fine) / math.log(many / few) * 2 > 7.0
+
     def test_charge_on_an_interface_is_a_jump_of_the_flux(self) -> None:
         mesh, (sheet, donors) = ring(1.5)[0], (0.02, 1e-3)
         core = ring_field(mesh, donors)
@@ -278,6 +293,34 @@ class TestLinear:
             poisson_field(Space(mesh, whole=True), [1.0, 1.0], {"far": edges_along(mesh, circle(20.0).segments)})
         with pytest.raises(ValueError, match="'one' and 'two' touch"):
             poisson_field(Space(mesh, whole=True), [1.0, 1.0], {"one": rim, "two": rim})
+
+
+class TestOutside:
+    def test_what_is_left_is_the_complement(self) -> None:
+        poisson = ring_field(ring()[0])
+        matrix, free = poisson.stiffness, poisson.free
+        inner, outer = free[::7], np.setdiff1d(free, free[::7])
+        found = outside(matrix, inner, outer)
+        whole = matrix.toarray()
+        less = whole[np.ix_(inner, outer)] @ np.linalg.solve(whole[np.ix_(outer, outer)], whole[np.ix_(outer, inner)])
+        wanted = whole[np.ix_(inner, inner)] - less
+        assert found.reduced.toarray() == pytest.approx(wanted, abs=1e-12 * np.abs(wanted).max())
+
+    def test_nothing_outside(self) -> None:
+        poisson = ring_field(ring()[0])
+        found = outside(poisson.stiffness, poisson.free, np.zeros(0, dtype=np.int64))
+        assert found.factor is None
+        assert (found.reduced != poisson.stiffness[poisson.free][:, poisson.free]).nnz == 0
+
+    def test_a_step_solves_the_whole_equation(self) -> None:
+        mesh, _ = ring()
+        poisson = ring_field(mesh)
+        charged = ChargedField(poisson, np.flatnonzero(mesh.admitted))
+        load = np.cos(np.arange(len(mesh.points)))
+        found = charged.solve(poisson.held_values({"gate": -3.0}), electrons, np.zeros(len(mesh.points)), 1e-10)
+        # So few electrons do not answer: the step is the linear solution.
+        step = charged.stepped(found.factor, load)
+        assert step == pytest.approx(poisson.solve_linear(load, np.zeros(len(poisson.held))), rel=1e-6, abs=1e-6)
 
 
 class TestNonlinear:

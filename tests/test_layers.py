@@ -24,7 +24,7 @@ LAYERS: tuple[frozenset[str], ...] = tuple(
             {"fem"},
             {"bands"},
             {"physics"},
-            {"result", "gate_result", "solve", "gate_curve", "loading"},
+            {"result", "gate_result", "solve", "gate_curve", "gate_verdict", "step_motion", "sweep", "loading"},
             {"output"},
             {"survey"},
             {"cli", "cli_gate_curve", "terminal", "doctor", "known_wires", "__main__"},

@@ -163,7 +163,7 @@ def test_rings_are_found_from_the_inside_outwards() -> None:
     # Core and first layer are nearly alike: one wire of 10 nm radius.
     assert (inner.radius_nm, inner.inside, inner.outside, inner.bare) == (pytest.approx(10, rel=1e-3), 12.9, 3.9, 0)
     assert (outer.radius_nm, outer.inside, outer.outside, outer.bare) == (pytest.approx(15, rel=1e-3), 3.9, 1.0, 1)
-    assert rings(borders, materials, "core", endless="layer 2") == (inner,)
+    assert rings(borders, materials, "core", endless=frozenset({"layer 2"})) == (inner,)
     assert rings(borders, {**materials, "core": of(None)}, "core") == ()
     assert rings(borders, {**materials, "layer 2": of(None)}, "core") == ()
 

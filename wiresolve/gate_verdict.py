@@ -1,25 +1,49 @@
-"""The steps of a sweep, and what it says in words: thresholds, limits, and what half a nanometre does."""
+"""The steps of a sweep, and what is said of it in words."""
 
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
-from typing import TYPE_CHECKING
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe.problem import Problem
-from wiresolve.gate_result import GatePoint, GateStep, Judged, TransistorPoint
-from wiresolve.physics.gate_steps import gate_steps
-
-if TYPE_CHECKING:
-    from wiresolve.sweep import WireSweep
+from wiresolve.gate_result import GatePoint, GateStep
+from wiresolve.physics.capacitance import limit_text
+from wiresolve.physics.gate_steps import THERMAL_WIDTH_KT, gate_steps
+from wiresolve.physics.transistor_summary import TransistorSummary
+from wiresolve.step_motion import Motion
+from wiresolve.units import KB
 
 Array = NDArray[np.float64]
 
+HALF_nm = 0.5
+_STEPS = 3
 
-def gate_steps_of(problem: Problem, points: Sequence[GatePoint]) -> tuple[GateStep, ...]:
+
+@dataclass(frozen=True)
+class OpenStep:
+    """A step with the number of its lowest subband by energy (from 0), and coupling and error bar where it opens."""
+
+    step: GateStep
+    subband: int
+    coupling: float
+    error_eV: float
+
+    def at(self, voltage_V: float, coupling: float, rest_eV: float, kelvin: float) -> OpenStep:
+        """The same at a voltage where its level is within `rest_eV` of the Fermi level."""
+        step = replace(
+            self.step,
+            opens_at_V=voltage_V,
+            error_V=(self.error_eV + rest_eV) / coupling,
+            width_V=THERMAL_WIDTH_KT * KB * kelvin / coupling,
+        )
+        return replace(self, step=step, coupling=coupling)
+
+
+def steps_of(problem: Problem, points: Sequence[GatePoint]) -> tuple[OpenStep, ...]:
     """Where the listed subbands meet the Fermi level; subbands that do within their errors are one step."""
     if len(points) < 2:
         return ()
@@ -31,27 +55,29 @@ def gate_steps_of(problem: Problem, points: Sequence[GatePoint]) -> tuple[GateSt
     found = gate_steps([p.gate_voltage_V for p in rows], energy, coupling, error, kelvin)
     degeneracy, valley = rows[-1].degeneracy, rows[-1].valley
     order = np.argsort(np.where(np.isfinite(found.voltage_V), found.voltage_V, np.inf), kind="stable")
-    steps: list[GateStep] = []
+    steps: list[OpenStep] = []
     plateau, members = 0.0, list[int]()
     for place, n in enumerate(order):
         members.append(int(n))
         following = order[place + 1] if place + 1 < len(order) else None
         if following is not None and _together(found.voltage_V, found.error_V, int(n), int(following)):
             continue
+        if not math.isfinite(found.voltage_V[n]):
+            break
         height = float(degeneracy[members].sum()) / 2
         plateau += height
         first = members[0]
-        steps.append(
-            GateStep(
-                level=len(steps) + 1,
-                valley=valley[first],
-                opens_at_V=float(np.mean(found.voltage_V[members])),
-                error_V=float(np.max(found.error_V[members])),
-                height_G0=height,
-                plateau_G0=plateau,
-                width_V=float(found.width_V[first]),
-            )
+        step = GateStep(
+            level=len(steps) + 1,
+            valley=valley[first],
+            opens_at_V=float(np.mean(found.voltage_V[members])),
+            error_V=float(np.max(found.error_V[members])),
+            height_G0=height,
+            plateau_G0=plateau,
+            width_V=float(found.width_V[first]),
         )
+        bar = float(found.error_V[first] * found.coupling[first])
+        steps.append(OpenStep(step, min(members), float(found.coupling[first]), bar))
         members = []
     return tuple(steps)
 
@@ -62,11 +88,125 @@ def _together(voltage: Array, error: Array, one: int, other: int) -> bool:
     return bool(abs(voltage[other] - voltage[one]) <= error[one] + error[other])
 
 
-def judged_sweep(
-    sweep: WireSweep, points: Sequence[GatePoint], steps: tuple[GateStep, ...], run: tuple[TransistorPoint, ...]
-) -> Judged:
-    """The verdict on a sweep."""
-    measures: dict[str, float | None] = {}
-    opened = [s for s in steps if math.isfinite(s.opens_at_V)]
-    measures["threshold_V"] = opened[0].opens_at_V if opened else None
-    return Judged("", (), (), measures)
+def sentences(
+    problem: Problem,
+    points: Sequence[GatePoint],
+    steps: Sequence[OpenStep],
+    motions: Sequence[Motion],
+    where: str,
+    run: TransistorSummary | None,
+    drain_V: float | None,
+) -> list[str]:
+    """The verdict on a sweep, sentence by sentence.
+
+    Parameters
+    ----------
+    where : where the carriers sit at the end of the sweep that holds most of them.
+    run : the transistor between the ends of the sweep, at the largest drain voltage.
+    """
+    rows = sorted(points, key=lambda point: point.gate_voltage_V)
+    last = max(points, key=lambda point: point.line_density_per_nm)
+    kelvin = problem.carriers.temperature_K[0]
+    said = [_opening(problem, rows, steps, kelvin)]
+    said += [_moved(steps, motions)] if motions else []
+    if last.line_density_per_nm > 0 and last.quantum_F_per_m > 0:
+        limit = limit_text(last.quantum_F_per_m, last.geometric_F_per_m)
+        said.append(
+            f"At {last.gate_voltage_V:.4g} V the channel is {limit}: the gate's capacitance is"
+            f" {1e9 * last.capacitance_F_per_m:.3g} nF/m, of {1e9 * last.geometric_F_per_m:.3g} nF/m by geometry and"
+            f" {1e9 * last.quantum_F_per_m:.3g} nF/m by the density of states; a volt on the gate moves the first level"
+            f" by {last.gate_coupling:.3g} eV."
+        )
+        said.append(f"It holds {last.line_density_per_nm * 1e7:.3g} carriers per cm there, {where}.")
+    if run is not None and drain_V is not None:
+        said.append(_as_transistor(run, drain_V, rows))
+    said.append(_rests_on(problem))
+    return said
+
+
+def _opening(problem: Problem, rows: Sequence[GatePoint], steps: Sequence[OpenStep], kelvin: float) -> str:
+    assert problem.voltages is not None
+    gate, first, final = problem.voltages.gate, rows[0], rows[-1]
+    span = f"between {first.gate_voltage_V:.4g} V and {final.gate_voltage_V:.4g} V on gate '{gate}'"
+    if not steps:
+        state = "open" if first.energy_eV[0] < 0 else "closed"
+        return f"Design estimate: no step opens {span}; the channel is {state} all over the sweep."
+    some = [s.step for s in steps[:_STEPS]]
+    opened = _listed([f"{s.opens_at_V:.4g} V" for s in some])
+    text = f"Design estimate: {span}, {_counted(len(some), 'step')} open at {opened}"
+    if len(steps) > len(some):
+        text = f"Design estimate: {span}, {len(steps)} steps open, the first {len(some)} at {opened}"
+    heights = _listed([f"{s.height_G0:.3g}" for s in some])
+    text += f", of {heights} G0"
+    if kelvin > 0:
+        text += f", each {1e3 * some[0].width_V:.3g} mV wide at {kelvin:g} K"
+        text += f" ({THERMAL_WIDTH_KT:.2f} kT = {1e3 * THERMAL_WIDTH_KT * KB * kelvin:.3g} meV over the coupling)"
+    return text + "."
+
+
+def _moved(steps: Sequence[OpenStep], motions: Sequence[Motion]) -> str:
+    rows = []
+    for motion in motions:
+        small = HALF_nm if motion.value_nm >= 5 else 0.1
+        size = "half a nanometre" if small == HALF_nm else "a tenth of a nanometre"
+        by = _listed([f"{1e3 * small * v:+.2g}" for v in motion.per_nm_V])
+        rows.append(f"{size} more of {motion.of} by {by} mV")
+    count = len(motions[0].per_nm_V)
+    what = "The first step moves" if count == 1 else f"The first {count} steps move"
+    return f"{what} with {'; with '.join(rows)}."
+
+
+def _as_transistor(run: TransistorSummary, drain_V: float, rows: Sequence[GatePoint]) -> str:
+    low, high = rows[0].gate_voltage_V, rows[-1].gate_voltage_V
+    text = f"As a transistor at {drain_V:g} V on the drain it carries {_amperes(run.on_current_A)} at {high:.4g} V and"
+    text += f" {_amperes(run.off_current_A)} at {low:.4g} V"
+    if math.isfinite(run.subthreshold_slope_mV_per_decade):
+        text += f", {run.subthreshold_slope_mV_per_decade:.3g} mV a decade there"
+    if math.isfinite(run.injection_velocity_m_per_s):
+        text += f"; carriers enter at {run.injection_velocity_m_per_s:.2g} m/s"
+    if run.ballistic_part < 0.999:
+        text += f" and scattering leaves {100 * run.ballistic_part:.0f} % of the ballistic current"
+    return text + "."
+
+
+def _rests_on(problem: Problem) -> str:
+    work = [g for g in problem.gates if g.work_function_eV is not None]
+    scale = "the work function and the affinity" if work else "the line-up voltage"
+    text = f"All voltages rest on {scale} given and on an insulator without charge of its own"
+    transport = problem.transport
+    if transport is None or (transport.mean_free_path_nm is None and transport.transmission is None):
+        text += ", step heights and currents on contacts and a channel that scatter nothing"
+    return text + "."
+
+
+def _amperes(current: float) -> str:
+    for factor, unit in ((1e3, "mA"), (1e6, "uA"), (1e9, "nA"), (1e12, "pA")):
+        if abs(current) * factor >= 1:
+            return f"{current * factor:.3g} {unit}"
+    return f"{current:.2g} A"
+
+
+def _listed(parts: Sequence[str]) -> str:
+    return parts[0] if len(parts) == 1 else f"{', '.join(parts[:-1])} and {parts[-1]}"
+
+
+def _counted(number: int, noun: str) -> str:
+    return f"one {noun}" if number == 1 else f"{number} {noun}s"
+
+
+def measures_of(
+    steps: Sequence[OpenStep], run: TransistorSummary | None, more: Mapping[str, float | None]
+) -> dict[str, float | None]:
+    """The numbers of a whole curve by names with units as suffixes."""
+    found: dict[str, float | None] = {"threshold_by_first_level_V": steps[0].step.opens_at_V if steps else None}
+    if run is not None:
+        found |= {
+            "on_current_A": run.on_current_A,
+            "off_current_A": run.off_current_A,
+            "ballistic_part": run.ballistic_part,
+            "subthreshold_slope_mV_per_decade": run.subthreshold_slope_mV_per_decade,
+            "barrier_lowering_mV_per_V": run.barrier_lowering_mV_per_V,
+            "injection_velocity_m_per_s": run.injection_velocity_m_per_s,
+            "transconductance_S": run.transconductance_S,
+        }
+    return found | dict(more)

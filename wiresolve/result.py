@@ -112,7 +112,8 @@ class Charge:
 
     `potential_V` (mesh points,) is the electrostatic potential, by which an electron's energy is lowered,
     `density_per_nm3` (mesh points,) that of the carriers, and `potential_error_eV` (n,) the part of each listed bar
-    that comes from the potential. `passes` of states were solved until one changed the potential by less than 1e-6 V,
+    that comes from the potential. `given_eV` (mesh points,) is the energy of a potential given beside it, zero where
+    there is none. `passes` of states were solved until one changed the potential by less than 1e-6 V,
     `residual_V` is what the last one changed, and `gauss_error` what gates, fixed charge and carriers lack of
     neutrality, relative to the largest of them.
     """
@@ -126,6 +127,7 @@ class Charge:
     potential_V: Array
     density_per_nm3: Array
     potential_error_eV: Array
+    given_eV: Array
 
 
 @dataclass(frozen=True)
@@ -209,6 +211,21 @@ class Result:
     def conductance_at(self, fermi_eV: ArrayLike, temperature_K: float) -> Array:
         """Ballistic conductance in units of G0 = 2 e^2/h at Fermi levels in eV, in their shape."""
         return transport.conductance(self.spectrum, fermi_eV, temperature_K)
+
+    @property
+    def potential_energy_eV(self) -> Array | None:
+        """(mesh points,) where the band edge of the first subband's valleys lies, from the Fermi level; None without
+        gates or charge.
+
+        Where materials meet it is the lower edge, and not a number where carriers are kept out.
+        """
+        if self.charge is None:
+            return None
+        edge = np.full(len(self.mesh.points), np.inf)
+        by_cell = self.cell_fields["band_edge_of_first_valleys_eV"]
+        known = np.isfinite(by_cell)
+        np.minimum.at(edge, self.mesh.cells[known], by_cell[known, None])
+        return np.where(np.isfinite(edge), edge + self.charge.given_eV - self.charge.potential_V, np.nan)
 
     def _charge(self) -> dict[str, float | int] | None:
         charge = self.charge

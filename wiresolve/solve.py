@@ -183,13 +183,15 @@ def _assembled(
         not_modelled=remarked.not_modelled,
         versions=versions(),
         timings_s=clock.seconds,
-        charge=None if charged is None else _charge(problem, charged),
+        charge=None if charged is None else _charge(wire, charged),
     )
 
 
-def _charge(problem: Problem, charged: ChargedSubbands) -> Charge:
-    balanced = charged.balanced
-    on_gates = balanced.charges_per_nm()
+def _charge(wire: Wire, charged: ChargedSubbands) -> Charge:
+    problem, balanced, space = wire.problem, charged.balanced, charged.certified.space
+    on_gates, given = balanced.charges_per_nm(), np.zeros(len(space.mesh.points))
+    if wire.potential is not None:
+        given[space.nodes] = wire.potential(*space.mesh.points[space.nodes].T)
     return Charge(
         gates=tuple(GateCharge(g.name, g.voltage_V, problem.lineup_V(g), on_gates[g.name]) for g in problem.gates),
         fixed_per_nm=balanced.fixed_per_nm(),
@@ -200,6 +202,7 @@ def _charge(problem: Problem, charged: ChargedSubbands) -> Charge:
         potential_V=balanced.potential_V,
         density_per_nm3=balanced.density_at_points(),
         potential_error_eV=charged.potential_error_eV,
+        given_eV=given,
     )
 
 

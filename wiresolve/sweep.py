@@ -2,35 +2,48 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe.problem import Problem
+from wiresolve.errors import ConvergenceError
 from wiresolve.fem.mesh import Mesh
 from wiresolve.gate_result import GatePoint, GateStep, Judged, TransistorPoint
-from wiresolve.gate_verdict import gate_steps_of, judged_sweep
-from wiresolve.physics import conductance
+from wiresolve.gate_verdict import OpenStep, measures_of, sentences, steps_of
+from wiresolve.physics import conductance, remarks
 from wiresolve.physics.capacitance import in_F_per_m, parts, per_V_nm
+from wiresolve.physics.charge_sentence import where
 from wiresolve.physics.charged_subbands import ChargedSubbands, Meshes, certify_charged, certify_on
 from wiresolve.physics.charged_wire import ChargedWire
 from wiresolve.physics.gate_answer import answered, channel_capacitance
+from wiresolve.physics.gate_steps import threshold_by_extrapolation_V
+from wiresolve.physics.ladder import spectrum_of
 from wiresolve.physics.listed_rows import listed_rows
+from wiresolve.physics.listing import listing
+from wiresolve.physics.remarks import Remarks
 from wiresolve.physics.scale_length import drain_coupling, scale_length_nm
 from wiresolve.physics.selfconsistent import Balanced, balance
 from wiresolve.physics.thermoelectric import thermoelectric
 from wiresolve.physics.transistor import Rows, Transistor
+from wiresolve.physics.transistor_summary import TransistorSummary, transistor_summary
 from wiresolve.physics.transmission import Open, Transmission, transmission_of
 from wiresolve.physics.wire import Wire
+from wiresolve.result import Warned
+from wiresolve.step_motion import Motion, step_motions
 
 Array = NDArray[np.float64]
 Progress = Callable[[str, float, str], None]
 
 MIDDLE = 0.5
 """Where the drain's field is taken: half-way along the channel, where the barrier of a symmetric one is highest."""
+_MOST_SOLVED, _MOST_SECANTS = 12, 8
+"""Steps whose voltage is solved for, not interpolated, and how many solves each may take."""
+_CLOSE_eV = 1e-6
 _EMPTY = 1e-9
 """Below this part of the geometric capacitance an answer says nothing of the channel's capacitance."""
 
@@ -43,6 +56,8 @@ class WireSweep:
     on_progress: Progress | None = None
     _last: tuple[float, Balanced] | None = field(default=None, repr=False)
     _needs: tuple[int, ...] = field(default=(), repr=False)
+    _opened: tuple[OpenStep, ...] | None = field(default=None, repr=False)
+    _moved: tuple[Motion, ...] | None = field(default=None, repr=False)
 
     @cached_property
     def charged(self) -> ChargedWire:
@@ -105,7 +120,7 @@ class WireSweep:
     def _solved(self, voltage: float, previous: GatePoint | None) -> ChargedSubbands:
         meshes, accuracy = self.meshes, self.problem.accuracy
         stage = self._ends[0].balanced.stage
-        held = meshes.field.held_values(self.charged.gate_V({self._swept: voltage}))
+        held = self._held(voltage)
         before, guess = None, None
         if previous is not None and self._last is not None and self._last[0] == previous.gate_voltage_V:
             before = self._last[1]
@@ -175,7 +190,63 @@ class WireSweep:
 
     def steps(self, points: Sequence[GatePoint]) -> tuple[GateStep, ...]:
         """The conductance steps of the listed subbands, those that open together as one."""
-        return gate_steps_of(self.problem, points)
+        found = self._steps(points)
+        motions = self._motions(found)
+        return tuple(
+            replace(one.step, moves_V_per_nm=motions[0].per_nm_V[n])
+            if motions and n < len(motions[0].per_nm_V)
+            else one.step
+            for n, one in enumerate(found)
+        )
+
+    def _steps(self, points: Sequence[GatePoint]) -> tuple[OpenStep, ...]:
+        """The steps, each solved for where its level meets the Fermi level; worked out once."""
+        if self._opened is None:
+            rough = steps_of(self.problem, points)
+            self._opened = tuple(
+                self._solved_step(one, points) if n < _MOST_SOLVED else one for n, one in enumerate(rough)
+            )
+        return self._opened
+
+    def _solved_step(self, one: OpenStep, points: Sequence[GatePoint]) -> OpenStep:
+        """The voltage at which a level is at the Fermi level, by secants between the points beside it."""
+        rows = sorted(points, key=lambda point: point.gate_voltage_V)
+        energies = [(p.gate_voltage_V, float(p.energy_eV[one.subband])) for p in rows]
+        low = max(((v, e) for v, e in energies if e > 0 and v <= one.step.opens_at_V), default=None)
+        high = min(((v, e) for v, e in energies if e <= 0 and v >= one.step.opens_at_V), default=None)
+        if low is None or high is None:
+            return one
+        stage, last = self._ends[0].balanced.stage, self._last
+        before = None if last is None else last[1]
+        voltage, coupling, rest = one.step.opens_at_V, one.coupling, math.inf
+        known = [low, high]
+        try:
+            for _ in range(_MOST_SECANTS):
+                before = balance(stage, self._held(voltage), before)
+                energy = float(np.sort(before.occupied.energy_eV)[one.subband])
+                rest = abs(energy)
+                known.append((voltage, energy))
+                low, high = ((voltage, energy), high) if energy > 0 else (low, (voltage, energy))
+                near = sorted(known, key=lambda at: abs(at[1]))[:2]
+                coupling = (near[0][1] - near[1][1]) / (near[1][0] - near[0][0])
+                if rest <= 0.1 * max(one.error_eV, _CLOSE_eV):
+                    break
+                following = voltage + energy / coupling if coupling > 0 else math.nan
+                voltage = following if low[0] < following < high[0] else (low[0] + high[0]) / 2
+        except (ConvergenceError, IndexError):
+            return one
+        return one.at(known[-1][0], max(coupling, 1e-12), rest, self.problem.carriers.temperature_K[0])
+
+    def _held(self, voltage: float) -> Array:
+        """The held potentials at a voltage of the swept gate."""
+        return self.meshes.field.held_values(self.charged.gate_V({self._swept: voltage}))
+
+    def _motions(self, found: Sequence[OpenStep]) -> tuple[Motion, ...]:
+        """How the steps move with the wire's dimensions; worked out once."""
+        if self._moved is None:
+            rows = [(one.step, one.subband, one.coupling) for one in found]
+            self._moved = step_motions(self.problem, rows, self.on_progress)
+        return self._moved
 
     def transistor(self, points: Sequence[GatePoint]) -> tuple[TransistorPoint, ...]:
         """Currents at every drain voltage."""
@@ -224,4 +295,48 @@ class WireSweep:
         self, points: Sequence[GatePoint], steps: tuple[GateStep, ...], run: tuple[TransistorPoint, ...]
     ) -> Judged:
         """The verdict, warnings and the numbers that belong to the whole curve."""
-        return judged_sweep(self, points, steps, run)
+        problem, found = self.problem, self._steps(points)
+        full = max(self._ends, key=lambda end: end.balanced.occupied.total_per_nm)
+        summary = self._summary(points)
+        drain = max(self._drains, default=None)
+        text = sentences(
+            problem, points, found, self._motions(found), where(full.balanced, self.charged.wire), summary, drain
+        )
+        more: dict[str, float | None] = {"geometric_F_per_m": float(in_F_per_m(self.geometric_per_V_nm))}
+        if drain is not None and self.drain_coupling > 0:
+            more |= {"scale_length_nm": self.scale_length_nm, "drain_coupling": self.drain_coupling}
+        rows = sorted(points, key=lambda point: point.gate_voltage_V)
+        if len(rows) > 1 and any(p.capacitance_F_per_m > 0 for p in rows):
+            density = [p.line_density_per_nm for p in rows]
+            slope = [float(per_V_nm(p.capacitance_F_per_m)) for p in rows]
+            more["threshold_by_extrapolation_V"] = threshold_by_extrapolation_V(
+                [p.gate_voltage_V for p in rows], density, slope
+            )
+        for motion in self._motions(found):
+            for n, moved in enumerate(motion.per_nm_V, 1):
+                more[f"step_{n}_moves_with_{motion.of}_V_per_nm"] = moved
+        remarked = self._remarks(full)
+        return Judged(
+            " ".join(text),
+            tuple(Warned(*w) for w in remarked.warnings),
+            remarked.not_modelled,
+            measures_of(found, summary, more),
+        )
+
+    def _remarks(self, full: ChargedSubbands) -> Remarks:
+        """What is to be said of the wire, at the end of the sweep with most carriers."""
+        wire, certified = self.charged.wire, full.certified
+        found = listing(wire, certified)
+        spectrum = spectrum_of(wire, certified, found)
+        total = full.balanced.occupied.total_per_nm
+        return remarks.on(remarks.Outcome(wire, certified, found, spectrum, total, full.balanced.function))
+
+    def _summary(self, points: Sequence[GatePoint]) -> TransistorSummary | None:
+        """The transistor between the ends of the sweep, at the largest drain voltage."""
+        drain = max(self._drains, default=0.0)
+        rows = sorted(points, key=lambda point: point.gate_voltage_V)
+        if drain <= 0 or len(rows) < 2:
+            return None
+        off, on = self.device(rows[0]), self.device(rows[-1])
+        low = min([v for v in self._drains if v > 0])
+        return transistor_summary(off, on, drain, low if low < drain else drain / 2)

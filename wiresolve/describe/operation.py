@@ -67,6 +67,12 @@ class Transport:
     saddle_curvature_eV: float | None = None
     contact_resistance_ohm: float = 0.0
 
+    @property
+    def is_open(self) -> bool:
+        """Whether everything is transmitted, and contacts add no resistance."""
+        ways = (self.mean_free_path_nm, self.transmission, self.saddle_curvature_eV)
+        return all(way is None for way in ways) and self.contact_resistance_ohm == 0
+
     def __post_init__(self) -> None:
         set_ = object.__setattr__
         shortest, far = checks.SHORTEST_nm, LONGEST_CHANNEL_nm

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import functools
 import math
+import re
 from collections.abc import Callable, Sequence
 from contextlib import AbstractContextManager
 from types import MappingProxyType
@@ -84,14 +85,19 @@ def thermal_colour(number: int) -> str:
 
 
 def order_of_appearance(names: Sequence[str]) -> list[int]:
-    """Regions from the core outwards, then patches, then what is outside."""
+    """Regions from the core outwards, then patches, insulators, and what is around and outside."""
 
     def rank(number: int) -> tuple[int, int]:
         kind, _, count = names[number].partition(" ")
-        known = {"core": 0, "layer": 1, "patch": 2, "outside": 4}
+        known = {"core": 0, "layer": 1, "patch": 2, "insulator": 4, "below": 5, "above": 6, "beside": 7, "outside": 8}
         return known.get(kind, 3), int(count) if count.isdigit() else number
 
     return sorted(range(len(names)), key=rank)
+
+
+def goes_on(name: str) -> bool:
+    """Whether a region reaches far beyond what is drawn: a material outside, or the surroundings."""
+    return name in ("outside", "beside") or re.fullmatch(r"(below|above) \d+", name) is not None
 
 
 def line_style(number: int) -> tuple[str, Any]:

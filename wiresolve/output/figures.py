@@ -33,6 +33,7 @@ from wiresolve.output.canvas import (
     coloured,
     dashes_of,
     extent_of,
+    goes_on,
     label_lines,
     line_style,
     mark,
@@ -46,8 +47,9 @@ from wiresolve.output.canvas import (
     styled,
     thermal_colour,
 )
+from wiresolve.output.charge_figure import charge
 from wiresolve.output.outline_figure import sensitivity
-from wiresolve.output.raster import edges, outermost, outlines, raster
+from wiresolve.output.raster import edges, near, outermost, outlines, raster
 from wiresolve.output.valley_names import members, short_valleys
 from wiresolve.result import Result, Subband
 from wiresolve.units import CONDUCTANCE_QUANTUM_SIEMENS, KB
@@ -91,12 +93,16 @@ def _filled(loops: Sequence[Any], colour: tuple[float, float, float]) -> PathPat
 
 
 def _where_seen(result: Result) -> Any:
-    """Points of a frame around the drawn section, or around the modes where the section extends far outside."""
+    """Points of a frame around the section with its insulators, and around the modes where they reach farther."""
     size = np.abs(result.modes[:, :MOST_MODES])
     seen = (size > 2e-3 * size.max(axis=0)).any(axis=1)
-    drawn = np.array([region.name != "outside" for region in result.mesh.regions])
+    drawn = np.array([not goes_on(region.name) for region in result.mesh.regions])
     seen[result.mesh.cells[drawn[result.mesh.region]].ravel()] = True
     return seen
+
+
+def _from_zero(result: Result) -> str:
+    return "Energy (meV)" if result.charge is None else "Energy from the Fermi level (meV)"
 
 
 def _energy(subband: Subband) -> str:
@@ -108,11 +114,15 @@ def _energy(subband: Subband) -> str:
 def section(result: Result) -> Figure:
     """The section to scale: layers in colours in order of appearance, the curved mesh, a scale bar.
 
-    A material that goes on outside fills the frame, which reaches as far as the modes are seen.
+    A material that goes on outside fills the frame, which reaches as far as the modes are seen; of surroundings a
+    margin is shown.
     """
     mesh = result.mesh
     found = edges(mesh)
     left, right, bottom, top = extent_of(mesh.points[_where_seen(result)])
+    if result.problem.surroundings is not None:
+        room = 0.12 * max(right - left, top - bottom)
+        left, right, bottom, top = left - room, right + room, bottom - room, top + room
     frame_mm = 76.0
     scale = frame_mm / max(right - left, 1.25 * (top - bottom))
     wide, high = scale * (right - left), scale * (top - bottom)
@@ -127,8 +137,9 @@ def section(result: Result) -> Figure:
             loops[last] = np.array([[left, bottom], [right, bottom], [right, top], [left, top], [left, bottom]])
         axes.add_patch(_filled(loops, _layer_colour(result, order, number)))
     fine = found.lines[~found.on_outline]
-    axes.add_collection(LineCollection(list(fine[:, ::2]), colors="white", linewidths=0.35, alpha=0.75))
-    axes.add_collection(LineCollection(list(outlines(result.mesh, found)), colors=INK, linewidths=0.6))
+    extent = left, right, bottom, top
+    axes.add_collection(LineCollection(near(fine[:, ::2], extent), colors="white", linewidths=0.35, alpha=0.75))
+    axes.add_collection(LineCollection(near(outlines(mesh, found), extent), colors=INK, linewidths=0.6))
     key = rect(0, 0, COLUMN_MM, below)
     bare(key, (0, COLUMN_MM, 0, below))
     length = round_length(0.3 * (right - left))
@@ -165,7 +176,7 @@ def modes(result: Result) -> Figure:
     height = rows * pitch_y + (5 if notes else 1)
     figure, rect = canvas(PAGE_MM, height)
     found = edges(result.mesh)
-    lines = list(outlines(result.mesh, found))
+    lines = near(outlines(result.mesh, found), extent)
     titles = [f"subband {s.index}, level {s.level}\n{_energy(s)}" for s in shown]
     if named:
         titles = [f"{title}\n{short_valleys(s.valley)}" for title, s in zip(titles, shown, strict=True)]
@@ -224,7 +235,9 @@ def levels(result: Result) -> Figure:
     ladder.set_xlim(-room, 2.25)
     ladder.set_xticks([])
     ladder.spines["bottom"].set_visible(False)
-    ladder.set_ylabel("Energy (meV)")
+    if result.charge is not None and span[0] < 0 < span[1]:
+        ladder.axhline(0.0, color=INK, lw=0.6, ls=(0, (4, 2)), zorder=0)
+    ladder.set_ylabel(_from_zero(result))
     ladder.set_title("Levels ± bar in meV (× states, spin and valleys counted)", loc="left", pad=5, fontsize=7)
     _against_kT(ratios, energies, bars, thermal)
     ratios.set_ylim(*span)
@@ -295,7 +308,7 @@ def density_of_states(result: Result) -> Figure:
     axes.set_xlim(at[0], at[-1])
     axes.set_ylim(0, 1.06 * max(float(np.max(density, initial=0.0)), 1e-15))
     mark(axes, 1e3 * data.singular_at_eV)
-    axes.set_xlabel("Energy (meV)")
+    axes.set_xlabel(_from_zero(result))
     axes.set_ylabel("Density of states (1/(meV nm))")
     axes.set_title("Averages over bins; infinite at the edges marked", loc="left", pad=7, fontsize=7)
     return figure
@@ -350,8 +363,13 @@ def dispersion(result: Result) -> Figure:
 
 @styled
 def conductance(result: Result) -> Figure:
-    """Ballistic conductance against the Fermi level at each temperature, in G0 and in microsiemens."""
-    figure, rect = canvas(COLUMN_MM, 66)
+    """Ballistic conductance against the Fermi level at each temperature, in G0 and in microsiemens.
+
+    With gates or charge the potential is kept as it is at the source's Fermi level, and axis and title say so: what a
+    gate does is another curve (`gate_curve_figures.staircase`).
+    """
+    kept = result.charge is not None
+    figure, rect = canvas(COLUMN_MM, 69.5 if kept else 66)
     axes = rect(12, 11, COLUMN_MM - 28, 66 - 17)
     top, window = 1.0, _with_fermi(result, *_fermi_window(result))
     warm = [t for t in result.problem.carriers.temperature_K if t > 0]
@@ -380,7 +398,11 @@ def conductance(result: Result) -> Figure:
     other.spines["right"].set_visible(True)
     other.set_ylim(0, 1.06 * top * 1e6 * CONDUCTANCE_QUANTUM_SIEMENS)
     other.set_ylabel("Conductance (µS)")
-    axes.set_title("Ballistic, transmission 1; levels marked", loc="left", pad=7, fontsize=7)
+    title = "Ballistic, transmission 1; levels marked"
+    if kept:
+        axes.set_xlabel("Fermi level, the potential kept (meV)")
+        title = "Not the staircase of a gate, which moves the levels too:\n" + title[0].lower() + title[1:]
+    axes.set_title(title, loc="left", pad=7, fontsize=6.5 if kept else 7)
     return figure
 
 
@@ -393,12 +415,22 @@ FIGURES = MappingProxyType(
         "dispersion": dispersion,
         "conductance": conductance,
         "sensitivity": sensitivity,
+        "charge": charge,
     }
 )
 
 
+def drawable(result: Result) -> Sequence[str]:
+    """Names of the figures that the result has data for."""
+    missing = set() if len(result.outline_sensitivity.segments) else {"sensitivity"}
+    missing |= {"charge"} if result.charge is None else set()
+    return [name for name in FIGURES if name not in missing]
+
+
 def save_all(result: Result, folder: str | Path) -> list[Path]:
-    """Write every figure as PNG and SVG into an existing folder; the same result gives the same bytes.
+    """Write every figure that the result has data for, as PNG and SVG, into an existing folder.
+
+    The same result gives the same bytes.
 
     Raises
     ------
@@ -407,8 +439,8 @@ def save_all(result: Result, folder: str | Path) -> list[Path]:
     """
     written = []
     with style():
-        for name, draw in FIGURES.items():
-            figure = draw(result)
+        for name in drawable(result):
+            figure = FIGURES[name](result)
             png, svg = Path(folder) / f"{name}.png", Path(folder) / f"{name}.svg"
             figure.savefig(png, format="png", metadata={"Software": None}, pil_kwargs={"compress_level": 4})
             figure.savefig(svg, format="svg", metadata={"Date": None, "Creator": "wiresolve"})

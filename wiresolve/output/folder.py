@@ -19,7 +19,7 @@ from wiresolve.result import Result
 
 INPUT, RESULT, SUBBANDS, MODES, FIGURES = "input.toml", "result.json", "subbands.csv", "modes.vtu", "figures"
 INPUTS = input_files.FOLDER
-DRAWN = ("section", "modes", "levels", "density_of_states", "dispersion", "conductance", "sensitivity")
+DRAWN = ("section", "modes", "levels", "density_of_states", "dispersion", "conductance", "sensitivity", "charge")
 """Names of the figures, known here without loading what draws them."""
 
 

@@ -110,6 +110,14 @@ def outlines(mesh: Mesh, found: Edges) -> Array:
     return found.lines[drawn]
 
 
+def near(lines: Array, extent: tuple[float, float, float, float]) -> list[Array]:
+    """Those of the polylines (e, n, 2) that may be seen in a frame of left, right, bottom and top."""
+    low, high = lines.min(axis=1), lines.max(axis=1)
+    left, right, bottom, top = extent
+    seen = (high >= [left, bottom]).all(axis=1) & (low <= [right, top]).all(axis=1)
+    return list(lines[seen])
+
+
 @dataclass(frozen=True, eq=False)
 class Raster:
     """Where the pixels of an image lie in a mesh.
@@ -120,6 +128,7 @@ class Raster:
     shape : rows, columns; row 0 at the bottom.
     pixel : (m,) numbers of the pixels inside, row by row.
     nodes, weights : (m, nodes a cell) the value at a pixel is ``sum(weights * f[nodes])``.
+    cell : (m,) the cell in which the pixel lies.
     """
 
     extent: tuple[float, float, float, float]
@@ -127,11 +136,19 @@ class Raster:
     pixel: Ints
     nodes: Ints
     weights: Array
+    cell: Ints
 
     def image(self, values: Array) -> Array:
         """Pixel values (rows, columns) of a function given at the mesh's nodes; NaN outside."""
+        return self._filled(np.einsum("ma,ma->m", self.weights, values[self.nodes]))
+
+    def by_cell(self, values: Array) -> Array:
+        """Pixel values (rows, columns) of what has one value a cell; NaN outside."""
+        return self._filled(values[self.cell])
+
+    def _filled(self, values: Array) -> Array:
         out = np.full(self.shape[0] * self.shape[1], np.nan)
-        out[self.pixel] = np.einsum("ma,ma->m", self.weights, values[self.nodes])
+        out[self.pixel] = values
         return out.reshape(self.shape)
 
 
@@ -170,7 +187,7 @@ def raster(mesh: Mesh, extent: tuple[float, float, float, float], columns: int) 
     bary = np.column_stack([1 - u[chosen] - v[chosen], u[chosen], v[chosen]])
     weights = _functions(degree, np.einsum("mi,mix->mx", bary, reference))
     shown = (left, right, bottom, bottom + rows * step)
-    return Raster(shown, (rows, columns), pixel.astype(np.int64), mesh.cells[cell], weights)
+    return Raster(shown, (rows, columns), pixel.astype(np.int64), mesh.cells[cell], weights, cell)
 
 
 def _subdivision(degree: int) -> Ints:

@@ -351,6 +351,36 @@ def _range(low: float, high: float) -> str:
     return one if abs(high - low) <= 0.01 * max(abs(low), abs(high)) else f"{one} to {other}"
 
 
+def charge_lines(result: Result) -> list[str]:
+    """The gates with their charge, and how well charge and potential agree; empty where the potential was given."""
+    charge = result.charge
+    if charge is None:
+        return []
+    rows = [["charge", "voltage", "lines up at", "charge"], ["on", "V", "V", "e/nm"]]
+    rows += [
+        [f"gate {g.name}", f"{g.voltage_V:.6g}", f"{g.lineup_voltage_V:.6g}", f"{g.charge_per_nm:+.4g}"]
+        for g in charge.gates
+    ]
+    rows += [["pinned surfaces", "", "", f"{charge.pinned_per_nm:+.4g}"]] if charge.pinned_per_nm else []
+    rows += [["dopants, surfaces", "", "", f"{charge.fixed_per_nm:+.4g}"]] if charge.fixed_per_nm else []
+    rows.append(["carriers", "", "", f"{-(result.line_density_per_nm or 0.0):+.4g}"])
+    said = (
+        f"Carriers and potential agree to {charge.residual_V:.1e} V after {charge.passes}"
+        f" pass{'' if charge.passes == 1 else 'es'}; charges balance to {charge.gauss_error:.1e}. Up to"
+        f" {small(1e3 * float(np.nanmax(charge.potential_error_eV)))} meV of the bars come from the potential's mesh."
+        " Steps and curves against the Fermi level keep this potential: what a gate's voltage does, gate-curve tells."
+    )
+    return [*aligned(rows, left={0}), *paragraphs(said)]
+
+
+def small(value: float) -> str:
+    """A number to two digits, rounded up."""
+    if not value > 0:
+        return f"{value:g}"
+    unit = 10.0 ** (math.floor(math.log10(value)) - 1)
+    return f"{math.ceil(value / unit - 1e-9) * unit:.2g}"
+
+
 def by_temperature(text: str) -> str:
     """The verdict with a line of its own for each temperature, and one for what follows them."""
     broken = re.sub(r" (?=At [-+.\de]+ K \()", "\n", text)
@@ -379,6 +409,8 @@ def summary(result: Result, folder: str | Path | None = None, status: str = DONE
         f" mesh{'' if size.passes == 1 else 'es'};"
         f" {result.states_missed} states missed by count."
     )
+    if charged := charge_lines(result):
+        lines += ["", *charged, ""]
     if not result.accuracy_met:
         worst = 1e3 * float(max(result.errors_eV, default=0.0))
         lines += paragraphs(

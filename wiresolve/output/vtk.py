@@ -29,6 +29,10 @@ def write_modes(result: Result, path: str | Path) -> None:
     `axial_mass_m0` (not a number where E(k) starts linearly); and `input_digest`. Coordinates are in nm in the plane z
     = 0. The same result gives the same bytes.
 
+    With gates or charge there are also the point data `potential_V`, `density_per_nm3` and
+    `potential_energy_eV`: the band edge of the first subband's valleys less the potential, from the Fermi level; of two
+    materials that meet the lower one, and not a number where carriers are kept out.
+
     Raises
     ------
     OSError
@@ -40,6 +44,10 @@ def write_modes(result: Result, path: str | Path) -> None:
         psi = np.ascontiguousarray(result.modes[:, column])
         points[f"psi_{subband.index:0{width}d}_per_nm"] = psi
         points[f"density_{subband.index:0{width}d}_per_nm2"] = psi**2
+    if result.charge is not None and (energy := result.potential_energy_eV) is not None:
+        points["potential_V"] = result.charge.potential_V
+        points["density_per_nm3"] = result.charge.density_per_nm3
+        points["potential_energy_eV"] = energy
     fields: dict[str, NDArray[Any]] = {
         "energy_eV": result.energies_eV,
         "error_eV": result.errors_eV,

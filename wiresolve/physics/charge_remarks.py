@@ -41,20 +41,21 @@ class Ring:
 
 
 def rings(
-    borders: Borders, materials: Mapping[str, Material], carrying: str, endless: str | None = None
+    borders: Borders, materials: Mapping[str, Material], carrying: str, endless: frozenset[str] = frozenset()
 ) -> tuple[Ring, ...]:
     """The jumps of permittivity around a region, from the inside outwards; none where a permittivity is not known.
 
     Parameters
     ----------
-    materials : by region. carrying : the region of the first level. endless : the region that goes on outside.
+    materials : by region. carrying : the region of the first level.
+    endless : regions at whose outer boundary no vacuum begins: they go on outside, or a gate's metal is there.
     """
     own = materials[carrying].permittivity
     if own is None:
         return ()
     members, inside = _grown(borders, materials, {carrying}, own), own
     found: list[Ring] = []
-    while endless not in members:
+    while not endless & members:
         touching: dict[str, float] = {}
         for name in members:
             for other, length in borders.around(name).items():

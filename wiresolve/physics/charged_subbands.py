@@ -9,6 +9,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from wiresolve.errors import MeshError
 from wiresolve.fem import estimate
 from wiresolve.fem.enrich import prolong
 from wiresolve.fem.mesh import Mesh
@@ -106,8 +107,16 @@ def certify_charged(
         first = first_size(mesher, channels, wanted, accuracy_eV, charged.within)
         size, needs = first.size, first.needs
         factor = estimate.bar_factor(first.corners)
+        corners = first.corners
         for number in range(1, _MOST_MESHES + 1):
-            meshes = Meshes.of(charged, *mesher.mesh(size))
+            try:
+                meshes = Meshes.of(charged, *mesher.mesh(size))
+            except MeshError:
+                if not best:
+                    raise
+                break  # cells at a singular end became too small: the best mesh so far is kept, with its bars
+            if not best:
+                corners = charged.corners(meshes.coarse, meshes.field, first.corners)
             judged = []
             for k, own in enumerate(volts):
                 before = best[k].balanced if best else None
@@ -123,7 +132,7 @@ def certify_charged(
             needs = tuple(max(each) for each in zip(*(j.done.needs for j in judged), strict=True))
             target = max(accuracy_eV / factor * _AIM / 2 ** max(number - 2, 0), 1e-3 * bar)
             share = np.hstack([j.share_eV for j in judged])
-            size = estimate.finer(meshes.field.space, share, size, first.corners, target)
+            size = estimate.finer(meshes.field.space, share, size, corners, target)
             if unknowns * (bar / (factor * target)) ** 0.25 * (wanted + SPARE) > MOST_VALUES:
                 break
     tell("count", 0.9, "counting the states below the highest wanted one")
@@ -178,7 +187,8 @@ def _on(
     if done.bar_eV <= accuracy_eV:
         done = done.thorough(accuracy_eV).finished()
     changes, share = _potential_error(meshes, balanced, done)
-    widening = tuple(factor * change + balanced.residual_V for change in changes)
+    wide = estimate.bar_factor(charged.corners(meshes.coarse, meshes.field))
+    widening = tuple(wide * change + balanced.residual_V for change in changes)
     wider = done.widened(widening)
     whole = np.zeros((len(meshes.coarse.cells), 0))
     columns = [whole, share[:, None]]
@@ -220,7 +230,10 @@ def _potential_error(meshes: Meshes, balanced: Balanced, done: Pass) -> tuple[li
         unsigned = np.einsum("cq,cqm->m", weights * np.abs(change), held_density)
         each.append(np.maximum(signed, _CANCELLED * unsigned))
         mean += held_density.mean(axis=2) / len(solved)
-    return each, _dual_share(meshes, balanced, better.share_eV_per_nm, mean)
+    share = _dual_share(meshes, balanced, better.share_eV_per_nm, mean)
+    # Products of sizes overrate what cancels: together the cells account for what the states have seen.
+    seen = max(float(change.max()) for change in each)
+    return each, share * (seen / max(float(share.sum()), 1e-300))
 
 
 def _filled(balanced: Balanced, fine: Space) -> tuple[Array, Array]:

@@ -10,8 +10,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe.doping import PARTIAL
+from wiresolve.describe.problem import LOCAL_DENSITY
 from wiresolve.describe.setting import Setting
 from wiresolve.errors import MeshError
+from wiresolve.fem.corners import Corner
+from wiresolve.fem.field_corners import field_corners
 from wiresolve.fem.mesh import Mesh
 from wiresolve.fem.named_edges import NamedEdges, edges_along
 from wiresolve.fem.nodal import NodalFunction
@@ -19,6 +22,7 @@ from wiresolve.fem.space import Space
 from wiresolve.physics.channel import Channel
 from wiresolve.physics.dopants import Dopants
 from wiresolve.physics.electrostatics import Field, Pinned, SheetCharge, poisson_field
+from wiresolve.physics.exchange import LocalDensity
 from wiresolve.physics.nonlinear_poisson import ChargedField
 from wiresolve.physics.occupied import Carriers, charged_potential
 from wiresolve.physics.pencil import Operator
@@ -87,6 +91,17 @@ class ChargedWire:
                 pinned.append(Pinned(edges, edge - surface.pinned_at_eV))
         return poisson_field(space, permittivity, gates, pinned, sheets, density)
 
+    def corners(self, mesh: Mesh, field: Field, others: Sequence[Corner] = ()) -> tuple[Corner, ...]:
+        """The points near which the potential is singular, with others; of two at one place the sharper."""
+        permittivity = [self.wire.materials[r.material].permittivity or 1.0 for r in mesh.regions]
+        held = [*field.gates.values(), *(surface.edges for surface in field.pinned)]
+        found: dict[tuple[float, float], Corner] = {(c.x, c.y): c for c in others}
+        for corner in field_corners(mesh, permittivity, [edges.nodes for edges in held]):
+            known = found.get((corner.x, corner.y))
+            if known is None or corner.exponent < known.exponent:
+                found[corner.x, corner.y] = corner
+        return tuple(found.values())
+
     def _edge_beside(self, mesh: Mesh, edges: NamedEdges) -> Array:
         """(e,) the lowest band edge on the carriers' side of edges."""
         by_region = np.array(
@@ -103,7 +118,23 @@ class ChargedWire:
         dopants, cells = self._dopants(mesh, space)
         operators = tuple(channel.operator_of(mesh) for channel in self.wire.channels)
         carriers = Carriers(space, self.wire.channels, operators, self.temperature_K)
-        return Stage(ChargedField(field, cells), carriers, dopants)
+        exchange = None
+        if self.wire.problem.carriers.interaction == LOCAL_DENSITY:
+            exchange = self._local_density(space, field)
+        return Stage(ChargedField(field, cells), carriers, dopants, exchange)
+
+    def _local_density(self, space: Space, field: Field) -> LocalDensity:
+        """With the masses of the lowest valleys; means over the cells that meet at a point."""
+        group, mesh = self.wire.groups[0], space.mesh
+        by_region = [
+            np.linalg.det(group.inverse_mass[r.material]) ** (-1 / 3) if r.carriers else 1.0 for r in mesh.regions
+        ]
+        values = np.column_stack([np.array(by_region)[mesh.region[space.cells]], field.permittivity[space.cells]])
+        total, count = np.zeros((len(space.nodes), 2)), np.zeros(len(space.nodes))
+        np.add.at(total, space.dofs, values[:, None, :])
+        np.add.at(count, space.dofs, 1.0)
+        mean = total / count[:, None]
+        return LocalDensity(space.nodes, mean[:, 0], mean[:, 1])
 
     def _dopants(self, mesh: Mesh, space: Space) -> tuple[Dopants, NDArray[np.int64]]:
         """Dopants of which only a part is charged, and the cells of these and of carriers."""

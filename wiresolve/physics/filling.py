@@ -60,7 +60,8 @@ class Filling:
     def table(self, low_eV: float, high_eV: float) -> Table:
         """A fast stand-in between two depths, good to seven digits."""
         step = _STEP * KB * self.temperature_K
-        at = low_eV - step + step * np.arange(int(np.ceil((high_eV - low_eV) / step)) + 3)
+        # Nodes lie at multiples of the step: tables of other ranges must agree, or Newton's method sees them differ.
+        at = step * np.arange(np.floor(low_eV / step) - 1, np.ceil(high_eV / step) + 2)
         return Table(float(at[0]), step, *self.both(np.asarray(at, dtype=float)))
 
 

@@ -39,10 +39,10 @@ class Answered:
 def answered(balanced: Balanced, states: NDArray[Any], level: Ints, gate: str) -> Answered:
     """The answer of listed states (nodes, n), whose clusters are `level` (n,), and of all carriers.
 
-    Where masses grow with energy it is a fourth-order difference of four balances close by.
+    Where masses grow with energy, or with exchange, it is a fourth-order difference of four balances close by.
     """
     stage = balanced.stage
-    if any(operator.nonparabolic for operator in stage.carriers.operators):
+    if stage.exchange is not None or any(operator.nonparabolic for operator in stage.carriers.operators):
         found = _by_difference(balanced, gate)
     else:
         found = response(balanced, gate)

@@ -27,6 +27,9 @@ Charge = Callable[[Array], tuple[Array, Array]]
 """Density in e/nm^3 and its derivative by phi in e/(V nm^3), from phi in V; all (k, q), at quadrature points."""
 
 _STEPS = 200
+_NOISE = 1e-14
+_FARTHEST = 1e4
+"""Steps are prolonged by no more than this: where J still falls then, it is rounding that makes it fall."""
 _CONTRACTION = 0.15
 """A factor serves on, and a correction is believed, where it is smaller than the one before by this factor."""
 _ALIKE = 0.5
@@ -200,7 +203,7 @@ class ChargedField:
             if not fresh and not (falls and self._alike(here, step)):
                 factor = None
                 continue
-            small = size <= _ROUNDING_V * max(1.0, float(np.abs(here.phi).max()))
+            small = size <= _ROUNDING_V * max(1.0, float(np.abs(here.phi).max())) or self._is_noise(here, step)
             if small or (falls and size <= tolerance_V and np.isfinite(last)):
                 here = self._at(here.phi + step, charge, answer)
                 return Solution(self._fulfilled(here.phi, here.load), size, iteration, factors, here.load, factor)
@@ -214,6 +217,12 @@ class ChargedField:
         raise ConvergenceError(
             f"the potential still changed by {size:.2g} V after {steps} steps; {tolerance_V:.2g} V was wanted"
         )
+
+    def _is_noise(self, here: _Point, step: Array) -> bool:
+        """Whether all that is left of J's derivative along a step is rounding."""
+        free, block = self._reduced
+        sizes = np.abs(block @ here.phi[free]) + np.abs(here.load[free])
+        return abs(float(step[free] @ here.gradient)) <= _NOISE * float(np.abs(step[free]) @ sizes)
 
     def _alike(self, here: _Point, step: Array) -> bool:
         """Whether the carriers still answer to a step as they did where its factor was made.
@@ -271,6 +280,8 @@ class ChargedField:
             else:
                 high, at_high = part, left
             if not np.isfinite(high):
+                if part > _FARTHEST:
+                    break
                 part *= 4
                 continue
             # The secant's zero, but not so close to an end that the bracket hardly shrinks: J' may be exponential.

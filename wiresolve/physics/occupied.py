@@ -17,10 +17,12 @@ from wiresolve.fem.space import Space
 from wiresolve.physics import local_mass
 from wiresolve.physics.channel import Channel
 from wiresolve.physics.filling import Filling
+from wiresolve.physics.followed_states import LOOSEST, RESIDUAL, Constant, Followed, followed
+from wiresolve.physics.grown_states import CellTables, Grown, cell_tables
 from wiresolve.physics.listing import SPIN
 from wiresolve.physics.pencil import Operator, Pencil, build
-from wiresolve.physics.semiclassical import phase_space
-from wiresolve.physics.unlisted import axial_motion, upright
+from wiresolve.physics.semiclassical import PhaseSpace, phase_space
+from wiresolve.physics.unlisted import upright
 from wiresolve.units import HBAR2_OVER_2M0, KB
 
 Array = NDArray[np.float64]
@@ -30,12 +32,37 @@ REACH = 20.0
 """States are kept up to this many kT above the Fermi level: exp(-20) is 2e-9."""
 _ABOVE_LOWEST = 14.0
 """And up to this many kT above the lowest one, so that an empty wire's few carriers are all counted, to exp(-14)."""
-_SPARE = 2
+_SPARE, _SHARE = 3, 0.2
+"""States carried along beyond those that hold carriers, and the part of these that is added: they lead the others."""
 _MOST = 400
 _PARTED = 1e-6
 """States closer than this many eV are kept or left together: a level is never cut."""
+_WIDEST_TABLE = 4000.0
+"""Potentials further apart than so many kT are only met while a step is looked for: no table then."""
+_REFERENCES = (0.2, 0.9)
+"""Shares of the wanted states at whose energies a growing mass is taken for first states."""
+_FIRST = 1e-4
+_SLOW = 3
+"""States that took more steps than this get a factor of the operator they are in."""
+_BELOW_eV = 1e-4
 _BENT = 6.0
 """How many kT above a state's minimum the growth of its mass along the wire is taken."""
+
+
+@dataclass(frozen=True, eq=False)
+class Kept:
+    """What one channel's states in another potential start from.
+
+    Attributes
+    ----------
+    found : the states, those that hold no carriers too.
+    height_eV : (c, q) the band edge with all potentials, in which they are.
+    complete_eV : below it none is missing.
+    """
+
+    found: Followed
+    height_eV: Array
+    complete_eV: float
 
 
 @dataclass(frozen=True, eq=False)
@@ -49,6 +76,7 @@ class Occupied:
     states : (nodes, m) on the carriers' space.
     density_per_nm2 : (c, q, m) of one carrier at the space's quadrature points; integral 1.
     temperature_K : of the carriers.
+    kept : of each channel what its states in another potential start from.
     """
 
     space: Space
@@ -60,6 +88,7 @@ class Occupied:
     states: NDArray[Any]
     density_per_nm2: Array
     temperature_K: float
+    kept: tuple[Kept | None, ...] = ()
 
     @cached_property
     def scale(self) -> Array:
@@ -104,7 +133,8 @@ class Occupied:
         Trellakis, A. T. Galick, A. Pacelli and U. Ravaioli, J. Appl. Phys. 81, 7880 (1997).
         """
         density, slope = np.zeros(by_V.shape), np.zeros(by_V.shape)
-        low, high = float(by_V.min()), float(by_V.max())
+        # The place of each state itself belongs to the table.
+        low, high = min(float(by_V.min()), 0.0), max(float(by_V.max()), 0.0)
         thermal = KB * self.temperature_K
         for alpha in np.unique(self.alpha_per_eV):
             filling = Filling(self.temperature_K, float(alpha))
@@ -114,15 +144,17 @@ class Occupied:
                 continue
             depths = -self.energy_eV[some]
             table: Callable[[Array], tuple[Array, Array]] = filling.both
-            if thermal > 0:
+            tabulated = 0 < high - low + float(np.ptp(depths)) <= _WIDEST_TABLE * thermal
+            if tabulated:
                 table = filling.table(float(depths.min()) + low, float(depths.max()) + high)
             for i in some:
                 n, rate = table(by_V - self.energy_eV[i])
                 weight = self.density_per_nm2[:, :, i] * self.scale[i]
-                if thermal > 0:
+                if tabulated:
                     # At the place itself the filling is exact: the last pass must not see the table.
                     at, _ = table(np.array(-self.energy_eV[i]))
-                    weight = weight * (self.line_density_per_nm[i] / self.scale[i] / at)
+                    if at > 0:
+                        weight = weight * (self.line_density_per_nm[i] / self.scale[i] / at)
                 density += weight * n
                 slope += weight * rate
         return density, slope
@@ -158,15 +190,45 @@ class Carriers:
         """(q, n) functions at the quadrature points."""
         return np.ascontiguousarray(self.space.tabulated[1][2])
 
-    def in_potential(self, potential_V: NodalFunction, expected: Sequence[int] | None = None) -> Occupied:
+    @cached_property
+    def _tables(self) -> tuple[CellTables | None, ...]:
+        """Of each channel whose masses grow with energy what its T(E) is made of."""
+        pairs = zip(self.operators, self._pencils, strict=True)
+        return tuple(cell_tables(self.space, o, p.kept, p.mass) if o.nonparabolic else None for o, p in pairs)
+
+    @cached_property
+    def _heights(self) -> tuple[Array, ...]:
+        """(c, q) of each channel its band edge with a given potential, without the charge's."""
+        region = self.space.mesh.region[self.space.cells]
+        found = []
+        for operator in self.operators:
+            edge = np.array([float(c.constant[0, 0].real) for c in operator.by_region])[region]
+            found.append(edge[:, None] + operator.potential_on(self.space))
+        return tuple(found)
+
+    @cached_property
+    def _axial(self) -> tuple[Array, ...]:
+        """(c,) of each channel hbar^2/2m along the wire, without what couples it to the section."""
+        region = self.space.mesh.region[self.space.cells]
+        straight = [upright(operator) for operator in self.operators]
+        return tuple(np.array([c.quadratic[2, 2, 0, 0].real for c in o.by_region])[region] for o in straight)
+
+    def in_potential(
+        self,
+        potential_V: NodalFunction,
+        expected: Sequence[int] | None = None,
+        before: Occupied | None = None,
+    ) -> Occupied:
         """All states that can hold carriers in an electrostatic potential.
 
         Parameters
         ----------
         expected : how many each channel had last time.
+        before : these carriers in another potential, from whose states they are followed.
         """
         higher = -potential_V.on(self.space)
-        rows = self._rows(higher, potential_V, expected)
+        starts = before.kept if before is not None and before.space is self.space else ()
+        rows, kept = self._rows(higher, potential_V, expected, starts or (None,) * len(self.channels))
         energy, mass, growth, degeneracy, number, states, density = (list(part) for part in zip(*rows, strict=True))
         return Occupied(
             self.space,
@@ -178,6 +240,7 @@ class Carriers:
             np.hstack(states),
             np.concatenate(density, axis=2),
             self.temperature_K,
+            kept,
         )
 
     def pencils_in(self, potential_V: NodalFunction) -> list[tuple[Pencil, Any, float]]:
@@ -187,10 +250,9 @@ class Carriers:
         """
         raised = self.space.matrix({("1", "1"): -potential_V.on(self.space)})
         found = []
-        for pencil, operator in zip(self._pencils, self.operators, strict=True):
-            cells = phase_space(self.space, replace(operator, potential=_raised(operator, potential_V)))
+        for pencil, height in zip(self._pencils, self._heights, strict=True):
             hamiltonian = pencil.h0 + raised[pencil.kept][:, pencil.kept]
-            found.append((pencil, hamiltonian, cells.bottom_eV - 1e-3 * (cells.energy_of(4) - cells.bottom_eV) - 1e-6))
+            found.append((pencil, hamiltonian, float((height - potential_V.on(self.space)).min()) - _BELOW_eV))
         return found
 
     @cached_property
@@ -203,107 +265,164 @@ class Carriers:
         data = np.broadcast_to(self._values, (cells, len(self._values), count)).ravel()
         return sparse.csr_array((data, (row, column)), shape=(rows.size, len(self.space.nodes)))
 
-    def _rows(self, higher: Array, potential: NodalFunction, expected: Sequence[int] | None) -> list[tuple[Any, ...]]:
-        thermal = KB * self.temperature_K
-        raised = self.space.matrix({("1", "1"): higher})
-        operators = [
-            replace(operator, potential=_raised(operator, potential), smooth=True) for operator in self.operators
-        ]
-        cells = [phase_space(self.space, operator) for operator in operators]
-        order = np.argsort([c.bottom_eV for c in cells])
+    def _rows(
+        self, higher: Array, potential: NodalFunction, expected: Sequence[int] | None, starts: Sequence[Kept | None]
+    ) -> tuple[list[tuple[Any, ...]], tuple[Kept | None, ...]]:
+        raised = self.space.matrix({("1", "1"): higher}) if None in self._tables else None
+        heights = [height + higher for height in self._heights]
+        order = np.argsort([float(height.min()) for height in heights])
         rows: list[tuple[Any, ...]] = [()] * len(self.channels)
+        kept: list[Kept | None] = [None] * len(self.channels)
         lowest = np.inf
-        for number in order:
-            channel, operator, own = self.channels[number], operators[number], cells[number]
-            reach = max(REACH * thermal, lowest + _ABOVE_LOWEST * thermal if np.isfinite(lowest) else -np.inf)
-            count = _SPARE + (expected[number] if expected is not None else int(np.ceil(own.count(np.array(reach)))))
-            if own.bottom_eV > reach:
-                rows[number] = self._empty(int(number))
+        for number in map(int, order):
+            bottom = float(heights[number].min())
+            if np.isfinite(lowest) and bottom > self._reach(lowest):
+                rows[number] = self._empty()
                 continue
-            while True:
-                count = min(count, _MOST, len(self._pencils[number].kept) // 3)
-                energy, states, family = self._solved(int(number), operator, own, raised, count)
-                lowest = min(lowest, float(energy[0]))
-                reach = max(REACH * thermal, lowest + _ABOVE_LOWEST * thermal)
-                if energy[-1] > reach or count >= min(_MOST, len(self._pencils[number].kept) // 3):
-                    break
-                count = max(count + 4, int(1.4 * count))
-            used = int(np.searchsorted(energy, reach))
-            used = max(used, 1 if energy[0] <= lowest else 0)
-            # A level is never cut: the members that follow closely come along.
-            while 0 < used < len(energy) and energy[used] - energy[used - 1] < _PARTED:
-                used += 1
-            rows[number] = self._row(int(number), channel, operator, energy[:used], states[:, :used], family)
-        return rows
+            form = self._form(number, heights[number], raised)
+            known = None if expected is None else expected[number]
+            own = kept[number] = self._states(number, form, heights[number], potential, lowest, starts[number], known)
+            energy = own.found.energy_eV
+            lowest = min(lowest, float(energy[0]))
+            used = self._used(energy, lowest)
+            rows[number] = self._row(number, form, energy[:used], own.found.states[:, :used])
+        return rows, tuple(kept)
 
-    def _empty(self, number: int) -> tuple[Any, ...]:
+    def _form(self, number: int, height: Array, raised: Any) -> Constant | Grown:
+        """The operator of a channel in a potential."""
+        tables = self._tables[number]
+        if tables is not None:
+            return Grown(tables, height)
+        pencil = self._pencils[number]
+        return Constant(pencil.h0 + raised[pencil.kept][:, pencil.kept], pencil.mass)
+
+    def _reach(self, lowest_eV: float) -> float:
+        """Up to which energy states hold carriers."""
+        thermal = KB * self.temperature_K
+        return max(REACH * thermal, lowest_eV + _ABOVE_LOWEST * thermal)
+
+    def _used(self, energy: Array, lowest_eV: float) -> int:
+        """How many of a channel's states hold carriers; the lowest one of all counts, though it may hold none."""
+        used = int(np.searchsorted(energy, self._reach(lowest_eV)))
+        used = max(used, 1 if energy[0] <= lowest_eV else 0)
+        # A level is never cut: the members that follow closely come along.
+        while 0 < used < len(energy) and energy[used] - energy[used - 1] < _PARTED:
+            used += 1
+        return used
+
+    def _tolerance(self, energy: Array, lowest_eV: float) -> Array:
+        """(m,) how large residuals may be: those of states that hold few carriers larger, as these count less."""
+        lowest = min(lowest_eV, float(energy[0]))
+        found = np.full(len(energy), np.inf)
+        used, thermal = self._used(energy, lowest), KB * self.temperature_K
+        above = np.maximum(energy[:used] - max(lowest, 0.0), 0.0)
+        found[:used] = RESIDUAL
+        if thermal > 0:
+            found[:used] = np.minimum(RESIDUAL * np.exp(above / thermal), LOOSEST)
+        return found
+
+    def _states(
+        self,
+        number: int,
+        form: Constant | Grown,
+        height: Array,
+        potential: NodalFunction,
+        lowest_eV: float,
+        start: Kept | None,
+        known: int | None,
+    ) -> Kept:
+        """A channel's states, those that may hold carriers and some more; none is missing, or they are solved anew."""
+        bottom = float(height.min())
+        if start is not None:
+            found = followed(form, start.found, bottom, lambda energy: self._tolerance(energy, lowest_eV))
+            if found is not None:
+                energy = found.energy_eV
+                lowest = min(lowest_eV, float(energy[0]))
+                used = self._used(energy, lowest)
+                clear = _clear(energy, used, self._reach(lowest))
+                complete = start.complete_eV - float(np.abs(height - start.height_eV).max())
+                if clear is not None and complete < max(self._reach(lowest), energy[max(used - 1, 0)]):
+                    complete = clear if form.count_below(clear) == int(np.searchsorted(energy, clear)) else -np.inf
+                if clear is not None and np.isfinite(complete):
+                    if found.rounds > _SLOW or len(energy) < used + _SPARE:
+                        found = replace(found, factors=form.factors(energy, used))
+                    return Kept(_trimmed(found, used), height, complete)
+        most = min(_MOST, form.mass.shape[0] // 3)
+        operator = self.operators[number]
+        operator = replace(operator, potential=_raised(operator, potential), smooth=True)
+        cells = phase_space(self.space, operator)
+        count = known
+        if count is None:
+            reach = self._reach(lowest_eV) if np.isfinite(lowest_eV) else max(REACH * KB * self.temperature_K, bottom)
+            count = int(np.ceil(cells.count(np.array(reach))))
+        while True:
+            count = min(int((1 + _SHARE) * count) + _SPARE, most)
+            found = self._cold(form, operator, cells, count, lowest_eV)
+            energy = found.energy_eV
+            lowest = min(lowest_eV, float(energy[0]))
+            used = self._used(energy, lowest)
+            clear = _clear(energy, used, self._reach(lowest))
+            if count >= most or (clear is not None and form.count_below(clear) <= int(np.searchsorted(energy, clear))):
+                return Kept(_trimmed(found, used), height, -np.inf if clear is None else clear)
+
+    def _cold(
+        self, form: Constant | Grown, operator: Operator, cells: PhaseSpace, count: int, lowest_eV: float
+    ) -> Followed:
+        """States from nothing."""
+        top = cells.energy_of(count)
+        shift = cells.bottom_eV - 1e-3 * (top - cells.bottom_eV) - 1e-6
+        if isinstance(form, Constant):
+            energy, states = eigen.lowest(form.hamiltonian, form.mass, count, shift)
+            return Followed(energy, states, form.factors(energy, self._used(energy, lowest_eV)), 0)
+        floor, blocks = form.floor_eV, []
+        for share in _REFERENCES:
+            at = max(cells.energy_of(max(share * count, 0.5)), floor + 0.1 * (top - floor))
+            blocks.append(eigen.lowest(form.matrix(at), form.mass, count, shift, _FIRST))
+        energy, first = blocks[0]
+        start = Followed(energy, np.hstack([first, blocks[1][1]]), form.factors(energy, count), 0)
+        found = followed(form, start, cells.bottom_eV, lambda e: self._tolerance(e, lowest_eV), count)
+        lowest = -np.inf if found is None else float(found.energy_eV[0])
+        if found is None or lowest <= floor + 1e-3 * (top - cells.bottom_eV):
+            # Where masses are hardly positive, or not at all: this says so.
+            own = local_mass.family(self.space, operator, cells, count)
+            solved = own.lowest(count, cells)
+            return Followed(solved.energy_eV, solved.states, start.factors, 0)
+        return found
+
+    def _empty(self) -> tuple[Any, ...]:
         none = np.zeros(0)
         states = np.zeros((len(self.space.nodes), 0))
         density = np.zeros((*self.space.quadrature_weights.shape, 0))
         return none, none, none, none, np.zeros(0, dtype=np.int64), states, density
 
-    def _solved(
-        self, number: int, operator: Operator, cells: Any, raised: Any, count: int
-    ) -> tuple[Array, NDArray[Any], local_mass.LocalMass | None]:
-        """Energies, states on the unknowns, and T(E) where masses grow."""
-        if operator.nonparabolic:
-            family = local_mass.family(self.space, operator, cells, count)
-            found = family.lowest(count, cells, polished=False)
-            return found.energy_eV, found.states, family
-        pencil = self._pencils[number]
-        shift = cells.bottom_eV - 1e-3 * (cells.energy_of(count) - cells.bottom_eV) - 1e-6
-        hamiltonian = pencil.h0 + raised[pencil.kept][:, pencil.kept]
-        energy, states = eigen.lowest(hamiltonian, pencil.mass, count, shift)
-        return energy, states, None
-
-    def _row(
-        self,
-        number: int,
-        channel: Channel,
-        operator: Operator,
-        energy: Array,
-        states: NDArray[Any],
-        family: local_mass.LocalMass | None,
-    ) -> tuple[Any, ...]:
-        pencil = self._pencils[number]
+    def _row(self, number: int, form: Constant | Grown, energy: Array, states: NDArray[Any]) -> tuple[Any, ...]:
+        channel, pencil = self.channels[number], self._pencils[number]
         full = pencil.spread(states)
-        growth = np.zeros(len(energy))
-        if family is not None:
-            density = self._grown_density(operator, energy, full)
-            mass, growth = axial_motion(family, energy, states, 0, _BENT * KB * max(self.temperature_K, 1.0))
+        if isinstance(form, Grown):
+            density = form.density(energy, states)
+            mass, growth = form.axial_motion(energy, states, _BENT * KB * max(self.temperature_K, 1.0))
         else:
-            values = full[self.space.dofs].transpose(0, 2, 1) @ self._values.T
-            density = (np.abs(values) ** 2).transpose(0, 2, 1)
-            uniform = pencil.uniform_axial_eV_nm2
-            if uniform is not None:
-                mass = np.full(len(energy), HBAR2_OVER_2M0 / uniform)
-            else:
-                along = pencil if not pencil.has(1) else self._upright(number)
-                mass = HBAR2_OVER_2M0 / np.diag(along.expected(2, states)).real
+            density = (self._values @ full[self.space.dofs]) ** 2
+            weights = self.space.quadrature_weights * self._axial[number][:, None]
+            mass, growth = HBAR2_OVER_2M0 / np.einsum("cq,cqm->m", weights, density), np.zeros(len(energy))
         degeneracy = np.full(len(energy), float(SPIN * channel.degeneracy))
         return energy, mass, growth, degeneracy, np.full(len(energy), number), full, density
 
-    def _upright(self, number: int) -> Pencil:
-        return replace(build(self.space, upright(self.operators[number])), kept=self._pencils[number].kept)
 
-    def _grown_density(self, operator: Operator, energy: Array, full: NDArray[Any]) -> Array:
-        """(c, q, m) of states whose mass grows: what -d<T(E) - E M>/dE counts at each place.
+def _trimmed(found: Followed, used: int) -> Followed:
+    """The states that hold carriers and those that are to lead the others."""
+    count = used + _SPARE + int(_SHARE * used)
+    return replace(found, energy_eV=found.energy_eV[:count], states=found.states[:, :count])
 
-        |psi|^2 + alpha / (1 + alpha (E - V))^2 grad psi A grad psi, A at the edge's mass: the second part is what the
-        bands that were folded into the mass hold. It is also what a small change of V sees.
-        """
-        space, region = self.space, self.space.mesh.region[self.space.cells]
-        local = full[space.dofs]
-        values = np.einsum("qa,cam->cqm", self._values, local)
-        slopes = space.gradients_of(local)
-        tensor = np.array([np.asarray(c.quadratic[:2, :2, 0, 0].real) for c in operator.by_region])[region]
-        kinetic = np.einsum("cqxm,cxy,cqym->cqm", slopes.conj(), tensor, slopes, optimize=True).real
-        alpha = np.asarray(operator.nonparabolicity_per_eV)[region][:, None, None]
-        edge = np.array([float(c.constant[0, 0].real) for c in operator.by_region])[region][:, None]
-        height = energy - (edge + operator.potential_on(space))[..., None]
-        density = np.abs(values) ** 2 + alpha / (1 + alpha * height) ** 2 * kinetic
-        total = np.einsum("cq,cqm->m", space.quadrature_weights, density)
-        return np.asarray(density / total)
+
+def _clear(energy: Array, used: int, reach_eV: float) -> float | None:
+    """An energy above the reach and the first `used` states, in the widest of the next gaps; None if all lie below."""
+    low = np.maximum(energy[max(used - 1, 0) : -1], reach_eV)[:_SPARE]
+    width = energy[max(used - 1, 0) + 1 :][:_SPARE] - low
+    if not len(width) or width.max() <= 0:
+        return None
+    widest = int(width.argmax())
+    return float(low[widest] + width[widest] / 2)
 
 
 @dataclass(frozen=True, eq=False)

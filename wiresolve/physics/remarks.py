@@ -132,8 +132,10 @@ class Outcome:
     @cached_property
     def rings(self) -> tuple[Ring, ...]:
         """The jumps of permittivity around where the first level lives."""
-        endless = "outside" if self.wire.problem.section.outside is not None else None
-        return charge_remarks.rings(self.borders, self.materials, self.places[0], endless)
+        endless = {"outside"} if self.wire.problem.section.outside is not None else set()
+        if self.wire.problem.gates:
+            endless |= set(self.borders.free)
+        return charge_remarks.rings(self.borders, self.materials, self.places[0], frozenset(endless))
 
     @property
     def permittivity(self) -> float | None:
@@ -195,7 +197,7 @@ def on(seen: Outcome) -> Remarks:
 def not_modelled(seen: Outcome) -> tuple[str, ...]:
     """What the result leaves out, as far as it matters to this wire."""
     charge = "charge: fixed charge, gates and the carriers' own charge do not move the levels"
-    modelled = seen.wire.problem.charged
+    modelled, transport = seen.wire.problem.charged, seen.wire.problem.transport
     if not modelled and seen.permittivity is not None and seen.spacing_eV is not None:
         limit = charge_remarks.harmless_density_per_nm(seen.spacing_eV, seen.permittivity)
         charge += f" (the carriers' own would, by about the first spacing, at {limit:.2g} per nm)"
@@ -218,7 +220,7 @@ def not_modelled(seen: Outcome) -> tuple[str, ...]:
                 seen.wire.problem.section.outside is None,
             ),
             ("spin-orbit coupling and magnetic field", True),
-            ("scattering: conductance is ballistic, with perfect contacts", True),
+            ("scattering: conductance is ballistic, with perfect contacts", transport is None or transport.is_open),
             ("variation of the section along the wire", True),
         )
         if matters

@@ -166,6 +166,8 @@ class _Channel:
         load = (self.interpolation.T @ lifted)[self.kept]
         further = np.zeros((self.interpolation.shape[1], len(self.energy_eV)))
         used = self.filling > 1e-14 * self.filling.max()
+        if not used.any():
+            return np.asarray(answer)
         further[np.ix_(self.kept, np.flatnonzero(used))] = self._further(load[:, used], self.energy_eV[used])
         return np.asarray(answer + 2 * (self._there * (self.interpolation @ further)) @ self.filling)
 

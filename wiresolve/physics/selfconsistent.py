@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from wiresolve.errors import ConvergenceError
 from wiresolve.fem.nodal import NodalFunction
 from wiresolve.physics.dopants import Dopants
+from wiresolve.physics.exchange import LocalDensity
 from wiresolve.physics.nonlinear_poisson import ChargedField, Solution
 from wiresolve.physics.occupied import Carriers, Occupied
 from wiresolve.physics.semiclassical import free_carriers
@@ -33,6 +34,7 @@ TOLERANCE_V = 1e-6
 MOST_PASSES = 60
 _LAST_V = 2e-9
 """Passes go on until they change the potential by less: what the carriers then lack of balance is below 1e-8."""
+_MOST_POLISHING = 8
 _POISSON_V = 1e-11
 _START_V = 1e-5
 _DEPTH = 4
@@ -44,11 +46,12 @@ _FAINT_PER_NM = 1e-9
 
 @dataclass(frozen=True, eq=False)
 class Stage:
-    """One mesh with its field, what holds carriers, and dopants that are not all charged."""
+    """One mesh with its field, what holds carriers, dopants that are not all charged, and exchange where it counts."""
 
     field: ChargedField
     carriers: Carriers
     dopants: Dopants
+    exchange: LocalDensity | None = None
 
     @property
     def places(self) -> Ints:
@@ -68,6 +71,7 @@ class Balanced:
     occupied : the states in this potential.
     passes : how many times states were solved until a pass changed the potential by less than `TOLERANCE_V`.
     residual_V : by how much the last pass changed it, at most.
+    exchange_V : (n,) what exchange and correlation add to the potential that electrons feel; None without them.
     """
 
     stage: Stage
@@ -76,6 +80,7 @@ class Balanced:
     occupied: Occupied
     passes: int
     residual_V: float
+    exchange_V: Array | None = None
 
     @property
     def potential_V(self) -> Array:
@@ -84,8 +89,8 @@ class Balanced:
 
     @property
     def function(self) -> NodalFunction:
-        """The potential as a function."""
-        return NodalFunction(self.stage.carriers.space.mesh, self.solution.phi)
+        """The potential that electrons feel, as a function."""
+        return _function(self.stage, _felt(self.solution.phi, self.exchange_V))
 
     def charges_per_nm(self) -> dict[str, float]:
         """Charge in e/nm of each gate, and of pinned surfaces."""
@@ -99,10 +104,7 @@ class Balanced:
 
     def density_at_points(self) -> Array:
         """(n,) carriers in 1/nm^3 at the mesh's points, 0 where none may be; by |psi|^2."""
-        space, occupied = self.stage.carriers.space, self.occupied
-        found = np.zeros(len(space.mesh.points))
-        found[space.nodes] = np.abs(occupied.states) ** 2 @ occupied.line_density_per_nm
-        return found
+        return _at_points(self.occupied)
 
     def _load(self) -> Array:
         """(n,) of the carriers in this very potential, the dopants and all that is fixed."""
@@ -162,9 +164,28 @@ def balance(
     ConvergenceError
         It was not reached; the message says how far it came.
     """
+    if before is not None or guess is not None:
+        try:
+            return _balanced(stage, held_V, before, guess, on_pass)
+        except ConvergenceError as fault:
+            _log.debug("from the start given: %s; trying another one", fault)
+    return _balanced(stage, held_V, None, None, on_pass)
+
+
+def _balanced(
+    stage: Stage,
+    held_V: Array,
+    before: Balanced | None,
+    guess: Array | None,
+    on_pass: Callable[[int, float], None] | None,
+) -> Balanced:
     counts: Sequence[int] | None = None
+    occupied: Occupied | None = None
+    exchange = None if stage.exchange is None else np.zeros(len(stage.field.field.space.nodes))
     if before is not None and before.stage is stage:
-        counts = before.occupied.counts(len(stage.carriers.channels))
+        exchange = before.exchange_V
+        occupied = before.occupied
+        counts = occupied.counts(len(stage.carriers.channels))
         potential = _predicted(stage, held_V, before.occupied, before.solution.phi, before.solution.phi).phi
     else:
         potential = start(stage, held_V) if guess is None else guess
@@ -173,30 +194,47 @@ def balance(
     passes, last, reached = 0, np.inf, None
     thermal = KB * stage.carriers.temperature_K
     enough = max(_LAST_V, 1e-7 * thermal)
+    points = len(potential)
+    state = potential if exchange is None else np.concatenate([potential, exchange])
     for number in range(1, MOST_PASSES + 1):
-        occupied = stage.carriers.in_potential(_function(stage, potential), counts)
+        potential, exchange = state[:points], state[points:] if exchange is not None else None
+        occupied = stage.carriers.in_potential(_function(stage, _felt(potential, exchange)), counts, occupied)
         counts = occupied.counts(len(stage.carriers.channels))
         answer = _predicted(stage, held_V, occupied, potential, potential)
-        change = float(np.abs(answer.phi - potential).max())
+        after = answer.phi
+        if stage.exchange is not None:
+            after = np.concatenate([after, stage.exchange.potential_V(_at_points(occupied))])
+        change = float(np.abs(after - state).max())
         _log.debug("pass %d: the potential changed by %.3g V", number, change)
         if on_pass is not None:
             on_pass(number, change)
         if passes == 0 and change <= TOLERANCE_V:
             passes = number
-        stalled = passes and change > 0.5 * last
         last = change
-        if change <= enough or (passes and stalled):
+        if change <= enough or (passes and number >= passes + _MOST_POLISHING):
             reached = answer
+            exchange = after[points:] if exchange is not None else None
             break
-        tried.append(potential)
-        answered.append(answer.phi)
+        tried.append(state)
+        answered.append(after)
         del tried[: -_DEPTH - 1], answered[: -_DEPTH - 1]
-        potential = _combined(tried, answered)
+        state = _combined(tried, answered)
     if reached is None:
         reason = f"carriers and potential did not agree: after {MOST_PASSES} passes they still change by {last:.2g} V"
         raise ConvergenceError(reason)
-    final = stage.carriers.in_potential(_function(stage, reached.phi), counts)
-    return Balanced(stage, held_V, reached, final, passes, last)
+    final = stage.carriers.in_potential(_function(stage, _felt(reached.phi, exchange)), counts, occupied)
+    return Balanced(stage, held_V, reached, final, passes, last, exchange)
+
+
+def _felt(potential: Array, exchange: Array | None) -> Array:
+    return potential if exchange is None else potential + exchange
+
+
+def _at_points(occupied: Occupied) -> Array:
+    """(mesh points,) carriers in 1/nm^3, by |psi|^2."""
+    found = np.zeros(len(occupied.space.mesh.points))
+    found[occupied.space.nodes] = np.abs(occupied.states) ** 2 @ occupied.line_density_per_nm
+    return found
 
 
 def _function(stage: Stage, potential: Array) -> NodalFunction:

@@ -15,7 +15,7 @@ from wiresolve.units import HBAR2_OVER_2M0
 
 Array = NDArray[np.float64]
 
-_NEAR = 0.2
+NEAR = 0.2
 """Part of the reach at which k^2 is taken between the minimum and its end."""
 
 
@@ -35,7 +35,7 @@ def axial_motion(
     still = np.array([_small(states, matrix) for matrix in family.matrices])
     moving = np.array([_small(states, matrix) for matrix in family.axial_matrices(2)])
     product = _small(states, family.mass)
-    steps = np.array([0.0, _NEAR, 1.0]) * reach_eV
+    steps = np.array([0.0, NEAR, 1.0]) * reach_eV
     squares = np.empty((len(energy_eV) - first, 3))
     for row, n in enumerate(range(first, len(energy_eV))):
         for column, step in enumerate(steps):
@@ -44,6 +44,11 @@ def axial_motion(
             metric = np.tensordot(weights, moving, 1)
             values, vectors = dense.eigh(at * product - np.tensordot(weights, still, 1), metric)
             squares[row, column] = values[int(np.argmax(np.abs(metric[n] @ vectors)))]
+    return from_squares(squares, steps)
+
+
+def from_squares(squares: Array, steps: Array) -> tuple[Array, Array]:
+    """Axial mass and growth from k^2 (m, 3) at three steps above each minimum, the first one 0."""
     # At the minimum k^2 vanishes but for the closeness of the states. From there k^2 / d is a straight line in d.
     near, far = ((squares[:, 1:] - squares[:, :1]) / steps[1:]).T
     bend = (far - near) / (steps[2] - steps[1])
