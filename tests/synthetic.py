@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from typing import Any
 
 import gmsh
 import numpy as np
 from scipy import special
 
+from wiresolve.describe.gates import Gate
 from wiresolve.describe.problem import Accuracy, Carriers, Problem
 from wiresolve.describe.section import Layer, Section
 from wiresolve.describe.shapes import Circle, Rectangle
@@ -16,7 +18,18 @@ from wiresolve.fem.mesh import Mesh, Region
 from wiresolve.physics.sensitivity import OutlineSensitivity
 from wiresolve.physics.spectrum import Spectrum
 from wiresolve.physics.tail import Tail
-from wiresolve.result import DensityOfStates, Dispersion, MeshSummary, Result, Subband, ThermalCurve, Verdict, Warned
+from wiresolve.result import (
+    Charge,
+    DensityOfStates,
+    Dispersion,
+    GateCharge,
+    MeshSummary,
+    Result,
+    Subband,
+    ThermalCurve,
+    Verdict,
+    Warned,
+)
 from wiresolve.units import HBAR2_OVER_2M0, KB
 
 CORE_NM, RADIUS_NM, MASS = 8.0, 12.0, 0.067
@@ -231,3 +244,35 @@ def rectangle_result(width_nm: float = 20.0, height_nm: float = 10.0) -> Result:
         summary=MeshSummary(count, len(mesh.points), 4, width_nm * height_nm, 1),
         subbands=other.subbands,
     )
+
+
+def charged_result(count: int = 3, kept_out: bool = False, **changes: Any) -> Result:
+    """A round core in a shell under a wrap gate, its potential 0.1 V - r^2/(2000 nm^2 / V) and its density parabolas.
+
+    `kept_out`: carriers are kept out of the shell, which has no band edge then.
+    """
+    given = core_shell_result(count)
+    mesh, squared = given.mesh, (given.mesh.points**2).sum(axis=1)
+    edge = np.where(mesh.region == 0, np.nan if kept_out else 0.3, 0.0)
+    problem = Problem(
+        title="Round core under a wrap gate",
+        section=given.problem.section,
+        carriers=Carriers(temperature_K=(77.0,)),
+        accuracy=given.problem.accuracy,
+        gates=(Gate("wrap", ("rim",), 0.25, lineup_voltage_V=0.05),),
+    )
+    charge = Charge(
+        gates=(GateCharge("wrap", 0.25, 0.05, 0.0125),),
+        fixed_per_nm=0.0875,
+        pinned_per_nm=0.0,
+        passes=4,
+        residual_V=3.2e-8,
+        gauss_error=4.5e-14,
+        potential_V=0.1 - squared / 2000,
+        density_per_nm3=1e-3 * np.maximum(1 - squared / CORE_NM**2, 0.0),
+        potential_error_eV=np.full(count, 3.14e-5),
+        given_eV=np.zeros(len(squared)),
+    )
+    fields: dict[str, Any] = {"problem": problem, "charge": charge, "line_density_per_nm": 0.1}
+    fields["cell_fields"] = {**given.cell_fields, "band_edge_of_first_valleys_eV": edge}
+    return replace(given, **(fields | changes))

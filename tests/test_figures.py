@@ -11,13 +11,16 @@ from typing import Any
 import numpy as np
 import pytest
 from matplotlib import rcParams
+from matplotlib.contour import ContourSet
 from PIL import Image
 
-from tests.synthetic import CORE_NM, RADIUS_NM, core_shell_result, round_mesh, round_modes
+from tests.synthetic import CORE_NM, RADIUS_NM, charged_result, core_shell_result, round_mesh, round_modes
+from wiresolve.describe.gates import Surroundings
 from wiresolve.describe.problem import Carriers
 from wiresolve.output import figures
 from wiresolve.output.raster import edges, outline, outlines, raster
 from wiresolve.output.tables import subband_table
+from wiresolve.physics.sensitivity import OutlineSensitivity
 from wiresolve.units import CONDUCTANCE_QUANTUM_SIEMENS
 
 
@@ -64,7 +67,7 @@ def test_all_figures_are_written_twice_alike(tmp_path: Path) -> None:
         (tmp_path / name).mkdir()
         figures.save_all(result, tmp_path / name)
     assert dict(rcParams) == before
-    names = {f"{name}.{kind}" for name in figures.FIGURES for kind in ("png", "svg")}
+    names = {f"{name}.{kind}" for name in figures.drawable(result) for kind in ("png", "svg")}
     assert {p.name for p in (tmp_path / "a").iterdir()} == names
     for name in names:
         assert (tmp_path / "a" / name).read_bytes() == (tmp_path / "b" / name).read_bytes(), name
@@ -271,7 +274,7 @@ def test_one_level_without_bar_or_temperature_can_be_drawn(tmp_path: Path) -> No
     result = core_shell_result(1)
     problem = replace(result.problem, carriers=Carriers(temperature_K=(0.0,)))
     bare = replace(result, problem=problem, subbands=(replace(result.subbands[0], error_eV=0.0),), conductance=())
-    assert len(figures.save_all(bare, tmp_path)) == 2 * len(figures.FIGURES)
+    assert len(figures.save_all(bare, tmp_path)) == 2 * len(figures.drawable(bare))
 
 
 def test_neither_pyplot_nor_a_renderer_is_loaded() -> None:
@@ -282,3 +285,96 @@ def test_neither_pyplot_nor_a_renderer_is_loaded() -> None:
     )
     run = subprocess.run([sys.executable, "-c", script], capture_output=True, text=True, check=False)
     assert (run.stdout.strip(), run.stderr) == ("", "")
+
+
+def test_what_there_are_no_data_for_is_not_drawn(tmp_path: Path) -> None:
+    plain, charged = core_shell_result(1), charged_result()
+    assert set(figures.FIGURES) - set(figures.drawable(plain)) == {"sensitivity", "charge"}
+    assert set(figures.FIGURES) - set(figures.drawable(charged)) == {"sensitivity"}
+    segments = OutlineSensitivity(np.array([[[0.0, 0.0], [1.0, 0.0]], [[1.0, 0.0], [1.0, 1.0]]]), np.ones(2), None)
+    assert "sensitivity" in figures.drawable(replace(plain, outline_sensitivity=segments))
+    with pytest.raises(ValueError, match="no charge"):
+        figures.charge(plain)
+    written = figures.save_all(charged, tmp_path)
+    assert {path.stem for path in written} == set(figures.drawable(charged))
+    again = tmp_path / "again"
+    again.mkdir()
+    for path in figures.save_all(charged, again):
+        assert path.read_bytes() == (tmp_path / path.name).read_bytes(), path.name
+
+
+@pytest.mark.parametrize("kept_out", [False, True])
+def test_charge_is_drawn_to_scale_and_true_to_its_values(kept_out: bool) -> None:
+    left, left_bar, right, right_bar = figures.charge(charged_result(kept_out=kept_out)).axes
+    x0, x1, y0, y1 = left.images[0].get_extent()
+    shown = np.ma.filled(left.images[0].get_array().astype(float), np.nan)
+    rows, columns = shown.shape
+    x, y = np.meshgrid(
+        x0 + (np.arange(columns) + 0.5) * (x1 - x0) / columns, y0 + (np.arange(rows) + 0.5) * (y1 - y0) / rows
+    )
+    radius = np.hypot(x, y)
+    core, shell = radius < CORE_NM - 0.1, (radius > CORE_NM + 0.1) & (radius < RADIUS_NM - 0.1)
+    # In meV: the edge, 0 or 300, less the potential of 100 mV at the centre.
+    assert shown[core] == pytest.approx(-100 + radius[core] ** 2 / 2, abs=0.2)
+    if kept_out:
+        assert np.isnan(shown[shell]).all()
+    else:
+        assert shown[shell] == pytest.approx(200 + radius[shell] ** 2 / 2, abs=0.2)
+    # 1e-3 carriers a cubic nanometre are 1e18 a cubic centimetre.
+    dense = np.ma.filled(right.images[0].get_array().astype(float), np.nan)
+    assert dense[core] == pytest.approx(1 - (radius[core] / CORE_NM) ** 2, abs=0.01)
+    for axes in (left, right):
+        (at_x, at_y), (to_x, to_y) = axes.transData.transform([(0, 0), (1, 1)])
+        assert to_x - at_x == pytest.approx(to_y - at_y, rel=1e-9)
+    assert [bar.get_xlabel() for bar in (left_bar, right_bar)] == ["meV from the Fermi level", "10$^{18}$ cm$^{-3}$"]
+    assert ("blank" in figures.charge(charged_result(kept_out=kept_out)).texts[0].get_text()) == kept_out
+
+
+def test_the_fermi_level_is_where_the_band_edge_passes_through_it() -> None:
+    """-0.1 eV + r^2/(500 nm^2 / eV) is zero at r = sqrt(50) nm = 7.0711 nm; between core and shell it only jumps."""
+    result = charged_result()
+    squared = (result.mesh.points**2).sum(axis=1)
+    steep = replace(result.charge, potential_V=0.1 - squared / 500)
+    figure = figures.charge(replace(result, charge=steep))
+    lines = [c for c in figure.axes[0].collections if isinstance(c, ContourSet)]
+    (points,) = [line.get_paths()[0].vertices for line in lines]
+    assert np.hypot(*points.T) == pytest.approx(50**0.5, abs=0.02)
+    assert "Fermi level" in figure.texts[0].get_text()
+    flat = replace(result.charge, potential_V=0.1 + 0 * squared)
+    figure = figures.charge(replace(result, charge=flat))
+    assert not [c for c in figure.axes[0].collections if isinstance(c, ContourSet)]
+    assert "Fermi level" not in figure.texts[0].get_text()
+
+
+def test_figures_of_a_charged_wire_count_from_its_fermi_level() -> None:
+    result, plain = charged_result(), core_shell_result(3)
+    conductance = figures.conductance(result).axes[0]
+    assert "potential kept" in conductance.get_xlabel()
+    assert conductance.get_title(loc="left").startswith("Not the staircase of a gate")
+    assert figures.conductance(plain).axes[0].get_title(loc="left").startswith("Ballistic")
+    assert figures.density_of_states(result).axes[0].get_xlabel() == "Energy from the Fermi level (meV)"
+    assert figures.levels(result).axes[0].get_ylabel() == "Energy from the Fermi level (meV)"
+    assert figures.levels(plain).axes[0].get_ylabel() == "Energy (meV)"
+    below = replace(result, subbands=tuple(replace(s, energy_eV=s.energy_eV - 0.03) for s in result.subbands))
+    dashed = [line for line in figures.levels(below).axes[0].lines if line.is_dashed()]
+    assert [list(line.get_ydata()) for line in dashed] == [[0.0, 0.0]]
+
+
+def test_surroundings_are_shown_as_a_margin_and_not_to_their_ends() -> None:
+    result = charged_result()
+    mesh = result.mesh
+    # The shell as if it were the air around the core: it goes on far beyond what is shown.
+    regions = tuple(replace(r, name="beside", material="air") if r.name == "layer 1" else r for r in mesh.regions)
+    problem = replace(result.problem, surroundings=Surroundings(beside="air"))
+    far = np.where(np.hypot(*mesh.points.T)[:, None] > CORE_NM + 1e-5, 1e3 * mesh.points, mesh.points)
+    wide = replace(
+        result,
+        mesh=replace(mesh, regions=regions, points=far),
+        problem=problem,
+        modes=np.exp(-(far**2).sum(1))[:, None],
+    )
+    low, high = figures.section(wide).axes[0].get_xlim()
+    assert -low == pytest.approx(high)
+    assert 1.1 * CORE_NM < high < 1.5 * CORE_NM
+    (low, high), (bottom, top) = (figures.charge(wide).axes[0].get_xlim(), figures.charge(wide).axes[0].get_ylim())
+    assert max(-low, high, -bottom, top) < 1.1 * CORE_NM

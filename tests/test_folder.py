@@ -25,7 +25,7 @@ def test_a_result_folder_holds_everything(tmp_path: Path) -> None:
     target = folder.write(result, tmp_path / "new" / "deep" / "wire")
     assert target == (tmp_path / "new" / "deep" / "wire").resolve()
     assert names(target) == ["figures", "input.toml", "modes.vtu", "result.json", "subbands.csv"]
-    assert len(names(target / "figures")) == 2 * len(figures.FIGURES)
+    assert len(names(target / "figures")) == 2 * len(figures.drawable(result))
     assert names(target.parent) == ["wire"]
     assert json.loads((target / "result.json").read_text())["status"] == "done"
     assert pyvista.read(target / "modes.vtu").n_cells == len(result.mesh.cells)
@@ -36,7 +36,7 @@ def test_two_runs_write_the_same_bytes(tmp_path: Path) -> None:
     for name in ("a", "b"):
         folder.write(core_shell_result(3), tmp_path / name)
     files = [p.relative_to(tmp_path / "a") for p in (tmp_path / "a").rglob("*") if p.is_file()]
-    assert len(files) == 4 + 2 * len(figures.FIGURES)
+    assert len(files) == 4 + 2 * len(figures.drawable(core_shell_result(3)))
     for file in files:
         assert (tmp_path / "a" / file).read_bytes() == (tmp_path / "b" / file).read_bytes(), file
 
@@ -152,7 +152,7 @@ def test_a_users_own_files_outlive_the_result(tmp_path: Path, drawn: bool) -> No
     folder.write(core_shell_result(2), target, replace=True, figures=drawn)
     assert {name: (target / name).read_text() for name in own} == own
     assert len(json.loads((target / "result.json").read_text())["subbands"]) == 2
-    assert len(names(target / "figures")) == 1 + 2 * len(figures.FIGURES) * drawn
+    assert len(names(target / "figures")) == 1 + 2 * len(figures.drawable(core_shell_result(2))) * drawn
     assert names(tmp_path) == ["wire"]
 
 

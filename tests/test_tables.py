@@ -15,15 +15,17 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from tests.synthetic import core_shell_result
+from tests.synthetic import charged_result, core_shell_result
 from wiresolve.describe.section import Layer
 from wiresolve.describe.wirefile import read
 from wiresolve.output.sources import from_memory
 from wiresolve.output.tables import (
     WIDTH,
     by_temperature,
+    charge_lines,
     result_json,
     significant,
+    small,
     step_table,
     subband_table,
     subbands_csv,
@@ -237,3 +239,54 @@ def test_each_temperature_has_a_line() -> None:
         "Effective dimension 1. At 5 nm: so.",
     ]
     assert by_temperature(text).replace("\n", " ") == text
+
+
+def test_the_gates_and_what_they_balance_are_printed() -> None:
+    result = charged_result()
+    lines = charge_lines(result)
+    assert [line.split() for line in lines[:5]] == [
+        ["charge", "voltage", "lines", "up", "at", "charge"],
+        ["on", "V", "V", "e/nm"],
+        ["gate", "wrap", "0.25", "0.05", "+0.0125"],
+        ["dopants,", "surfaces", "+0.0875"],
+        ["carriers", "-0.1"],
+    ]
+    # Electrons count as negative, so the printed charges add up to nothing.
+    assert sum(float(line.split()[-1]) for line in lines[2:5]) == pytest.approx(0.0, abs=1e-15)
+    said = " ".join(lines[5:])
+    assert "agree to 3.2e-08 V after 4 passes" in said
+    assert "balance to 4.5e-14" in said
+    assert "Up to 0.032 meV of the bars" in said
+    assert "gate-curve" in said
+    assert set(lines) <= set(summary(result).splitlines())
+    assert charge_lines(core_shell_result(1)) == []
+
+
+def test_a_pinned_surface_and_one_pass_are_named() -> None:
+    result = charged_result()
+    pinned = replace(result.charge, gates=(), pinned_per_nm=0.0125, passes=1)
+    lines = charge_lines(replace(result, charge=pinned))
+    assert lines[2].split() == ["pinned", "surfaces", "+0.0125"]
+    assert "after 1 pass;" in " ".join(lines)
+
+
+@given(st.floats(1e-12, 1e6))
+def test_a_small_number_is_never_rounded_down(value: float) -> None:
+    shown = float(small(value))
+    assert value * (1 - 1e-8) <= shown <= 1.11 * value
+
+
+def test_result_json_of_a_charged_wire_holds_gates_and_balance() -> None:
+    found = json.loads(result_json(charged_result()))
+    assert found["gates"] == [
+        {"name": "wrap", "voltage_V": 0.25, "lineup_voltage_V": 0.05, "charge_per_nm": 0.0125},
+    ]
+    assert found["charge"] == {
+        "fixed_per_nm": 0.0875,
+        "pinned_per_nm": 0.0,
+        "passes": 4,
+        "residual_V": 3.2e-8,
+        "gauss_error": 4.5e-14,
+        "potential_error_eV": 3.14e-5,
+    }
+    assert json.loads(result_json(core_shell_result(1)))["charge"] is None

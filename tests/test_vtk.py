@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -11,8 +12,9 @@ import pyvista
 from vtkmodules.vtkCommonCore import vtkIdList
 from vtkmodules.vtkCommonDataModel import VTK_LAGRANGE_TRIANGLE
 
-from tests.synthetic import CORE_NM, RADIUS_NM, core_shell_result, rectangle_result
-from wiresolve.describe.problem import Accuracy, Carriers, Orientation, Problem
+from tests.synthetic import CORE_NM, RADIUS_NM, charged_result, core_shell_result, rectangle_result
+from wiresolve.describe.gates import Gate
+from wiresolve.describe.problem import Accuracy, Carriers, Orientation, Potential, Problem
 from wiresolve.describe.section import Section
 from wiresolve.describe.shapes import Rectangle
 from wiresolve.output.vtk import write_modes, write_section
@@ -134,3 +136,53 @@ def test_cells_have_the_mass_of_the_valleys_that_carry_the_first_subband(tmp_pat
     assert grid.cell_data["axial_mass_of_first_valleys_m0"] == pytest.approx(0.19, abs=0.002)
     assert grid.cell_data[EDGE] == pytest.approx(0.0, abs=1e-12)
     assert grid.field_data["valley_degeneracy"].tolist()[0] == 2
+
+
+def test_a_charged_wire_has_its_potential_its_carriers_and_its_band_edge(tmp_path: Path) -> None:
+    write_modes(charged_result(), tmp_path / "modes.vtu")
+    grid = pyvista.read(tmp_path / "modes.vtu")
+    radius = np.hypot(*grid.points[:, :2].T)
+    assert grid.point_data["potential_V"] == pytest.approx(0.1 - radius**2 / 2000, abs=1e-12)
+    density = grid.point_data["density_per_nm3"]
+    assert density == pytest.approx(1e-3 * np.maximum(1 - (radius / CORE_NM) ** 2, 0), abs=1e-12)
+    # An electron's energy is the band edge less the potential in V: 0 in the core and 0.3 eV in the shell before it. On
+    # the interface itself the core's counts.
+    energy, shell = grid.point_data["potential_energy_eV"], radius > CORE_NM + 1e-5
+    assert energy[shell] == pytest.approx(0.3 - 0.1 + radius[shell] ** 2 / 2000, abs=1e-12)
+    assert energy[~shell] == pytest.approx(-0.1 + radius[~shell] ** 2 / 2000, abs=1e-12)
+
+
+def test_where_carriers_are_kept_out_there_is_no_potential_energy(tmp_path: Path) -> None:
+    result = charged_result(kept_out=True)
+    tilted = replace(result.charge, given_eV=0.01 * result.mesh.points[:, 0])
+    write_modes(replace(result, charge=tilted), tmp_path / "modes.vtu")
+    grid = pyvista.read(tmp_path / "modes.vtu")
+    radius, energy = np.hypot(*grid.points[:, :2].T), grid.point_data["potential_energy_eV"]
+    shell = radius > CORE_NM + 1e-5
+    assert np.isnan(energy[shell]).all()
+    # A potential given beside is part of it.
+    expected = 0.01 * grid.points[:, 0] - 0.1 + radius**2 / 2000
+    assert energy[~shell] == pytest.approx(expected[~shell], abs=1e-12)
+    assert np.isfinite(grid.point_data["potential_V"]).all()
+
+
+def test_the_potential_of_a_wire_between_gates_is_that_of_a_plate_capacitor(tmp_path: Path) -> None:
+    """An empty strip between two gates whose other sides let no field through: phi rises linearly, by Laplace."""
+    given = (Gate("top", ("top",), -0.5, lineup_voltage_V=0.1), Gate("bottom", ("bottom",), -0.8, lineup_voltage_V=0.1))
+    tilted = Potential(field_V_per_nm=(0.004, 0.0))
+    problem = Problem(
+        "strip",
+        Section(Rectangle(8.0, 6.0), "GaAs"),
+        Carriers(temperature_K=(77.0,)),
+        Accuracy(subbands=1, energy_eV=1e-3),
+        potential=tilted,
+        gates=given,
+    )
+    result = solve(problem)
+    write_modes(result, tmp_path / "modes.vtu")
+    grid = pyvista.read(tmp_path / "modes.vtu")
+    x, y = grid.points[:, 0], grid.points[:, 1]
+    potential = -0.75 + 0.3 * y / 6
+    assert grid.point_data["potential_V"] == pytest.approx(potential, abs=1e-9)
+    assert grid.point_data["potential_energy_eV"] == pytest.approx(0.004 * x - potential, abs=1e-9)
+    assert np.abs(grid.point_data["density_per_nm3"]).max() < 1e-20

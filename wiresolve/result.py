@@ -12,6 +12,7 @@ from numpy.typing import ArrayLike, NDArray
 from wiresolve.describe.problem import Problem
 from wiresolve.fem.mesh import Mesh
 from wiresolve.physics import statistics, transport
+from wiresolve.physics.conductance import conductance_through
 from wiresolve.physics.sensitivity import OutlineSensitivity, Sensitivity
 from wiresolve.physics.spectrum import Spectrum
 
@@ -209,8 +210,8 @@ class Result:
         return statistics.fermi_level(self.spectrum, line_density_per_nm, temperature_K)
 
     def conductance_at(self, fermi_eV: ArrayLike, temperature_K: float) -> Array:
-        """Ballistic conductance in units of G0 = 2 e^2/h at Fermi levels in eV, in their shape."""
-        return transport.conductance(self.spectrum, fermi_eV, temperature_K)
+        """Conductance in units of G0 = 2 e^2/h at Fermi levels in eV: ballistic unless told otherwise."""
+        return conductance_through(self.spectrum, fermi_eV, temperature_K, self.problem.transport)
 
     @property
     def potential_energy_eV(self) -> Array | None:

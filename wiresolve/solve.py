@@ -9,18 +9,20 @@ from __future__ import annotations
 import time
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
-from functools import lru_cache
+from functools import lru_cache, partial
 from importlib import metadata
+from math import log, pi
 
 import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe.problem import Problem
 from wiresolve.fem.outline import outline_edges
-from wiresolve.physics import carrying, remarks, spread, statistics, transport, verdict
+from wiresolve.physics import carrying, remarks, spread, statistics, verdict
 from wiresolve.physics.charge_sentence import charge_sentence
 from wiresolve.physics.charged_subbands import ChargedSubbands, certify_charged
 from wiresolve.physics.charged_wire import ChargedWire
+from wiresolve.physics.conductance import conductance_through
 from wiresolve.physics.electrostatics import PINNED
 from wiresolve.physics.ladder import spectrum_of
 from wiresolve.physics.listing import SPIN, Listing, listing
@@ -148,9 +150,11 @@ def _assembled(
         spread.sentence(problem.section, moved[0], level, temperatures[0], float(outcome.above_edge_eV[0]))
         if charged is None
         else charge_sentence(charged.balanced, wire),
+        _rounding(problem),
         *remarked.said,
     )
-    judged = verdict.judge(spectrum, temperatures, fermi, (text for text in said if text))
+    held = "" if charged is None else " at these voltages, in the potential that they and the charge make"
+    judged = verdict.judge(spectrum, temperatures, fermi, (text for text in said if text), held)
     zero_text, zero_value = problem.energy_zero()
     points = np.zeros((len(space.mesh.points), certified.wanted), dtype=found.states.dtype)
     points[space.nodes] = found.states
@@ -173,7 +177,7 @@ def _assembled(
         accuracy_met=certified.met and bool((found.bar_eV <= problem.accuracy.energy_eV).all()),
         dispersion=_dispersion(found, spectrum, certified),
         density_of_states=DensityOfStates(edges, density_of_states.per_eV_nm, density_of_states.singular_at_eV),
-        conductance=_curves(spectrum, temperatures, transport.conductance),
+        conductance=_curves(spectrum, temperatures, partial(conductance_through, given=problem.transport)),
         density=_curves(spectrum, temperatures, statistics.line_density),
         line_density_per_nm=total,
         sensitivities=moved[0],
@@ -185,6 +189,15 @@ def _assembled(
         timings_s=clock.seconds,
         charge=None if charged is None else _charge(wire, charged),
     )
+
+
+def _rounding(problem: Problem) -> str:
+    """What a saddle-shaped constriction adds to the steps, which are judged by temperature alone."""
+    curvature = None if problem.transport is None else problem.transport.saddle_curvature_eV
+    if curvature is None:
+        return ""
+    width = log(81) / (2 * pi) * curvature
+    return f"Tunnelling at the saddle rounds each step further, by {1e3 * width:.3g} meV from 10 to 90 % of its height."
 
 
 def _charge(wire: Wire, charged: ChargedSubbands) -> Charge:

@@ -66,11 +66,18 @@ class WireSweep:
 
     @cached_property
     def _ends(self) -> tuple[ChargedSubbands, ...]:
-        """The subbands at both ends of the sweep, for which the mesh is made."""
+        """The subbands at both ends of the sweep, for which the mesh is made, or where they could be solved."""
         voltages, accuracy = self.problem.voltages, self.problem.accuracy
         assert voltages is not None
-        ends = [{voltages.gate: v} for v in (voltages.from_V, voltages.to_V)]
-        return certify_charged(self.charged, ends, accuracy.subbands, accuracy.energy_eV, self.on_progress)
+        first, last = voltages.from_V, voltages.to_V
+        # One end may be beyond what can be solved: the mesh is then made for what can.
+        for some in ((first, last), (first,), (last,), ((first + last) / 2,)):
+            try:
+                ends = [{voltages.gate: v} for v in some]
+                return certify_charged(self.charged, ends, accuracy.subbands, accuracy.energy_eV, self.on_progress)
+            except ConvergenceError as fault:
+                reason = str(fault)
+        raise ConvergenceError(f"neither end of the sweep nor its middle could be solved: {reason}")
 
     @property
     def meshes(self) -> Meshes:

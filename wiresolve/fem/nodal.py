@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.fem.lagrange import triangle
-from wiresolve.fem.mesh import Mesh
+from wiresolve.fem.mesh import Mesh, is_straight
 from wiresolve.fem.space import Space
 
 Array = NDArray[np.float64]
@@ -63,7 +63,7 @@ class NodalFunction:
             if not len(open_):
                 break
             nodes = self.mesh.points[self.mesh.cells[cell[open_]]]
-            at = _place(nodes, points[open_], self.mesh.degree)
+            at = _place(nodes, points[open_], self.mesh.degree, ~self._straight[cell[open_]])
             outside = np.maximum(-np.minimum(at.min(axis=1), 1 - at.sum(axis=1)), 0.0)
             better = outside < worst[open_]
             some = open_[better]
@@ -75,23 +75,34 @@ class NodalFunction:
         return found.reshape(np.shape(x))
 
     @cached_property
+    def _straight(self) -> NDArray[np.bool_]:
+        return is_straight(self.mesh)
+
+    @cached_property
     def _tree(self) -> Any:
         from scipy.spatial import cKDTree
 
         return cKDTree(self.mesh.points[self.mesh.cells[:, :3]].mean(axis=1))
 
 
-def _place(nodes: Array, points: Array, degree: int) -> Array:
-    """(p, 2) reference places of points in their cells, nodes (p, n, 2), by Newton's method."""
+def _place(nodes: Array, points: Array, degree: int, curved: NDArray[np.bool_]) -> Array:
+    """(p, 2) reference places of points in their cells, nodes (p, n, 2): by Newton's method where these are curved."""
     element = triangle(degree)
     first, second = nodes[:, 1] - nodes[:, 0], nodes[:, 2] - nodes[:, 0]
     at = np.linalg.solve(np.stack([first, second], axis=2), (points - nodes[:, 0])[..., None])[..., 0]
+    # Where a point lies far outside of the chords' triangle, its cell's bend does not bring it in.
+    near = (at.min(axis=1) > -0.5) & (at.sum(axis=1) < 1.5)
+    some = np.flatnonzero(curved & near)
+    if not len(some):
+        return np.asarray(at)
+    nodes, points, inner = nodes[some], points[some], at[some]
     for _ in range(_NEWTON):
-        at = np.clip(at, -0.5, 1.5)
-        rest = points - np.einsum("pn,pnx->px", element.values(at), nodes)
-        jacobian = np.einsum("rpn,pnx->pxr", element.gradients(at), nodes)
+        inner = np.clip(inner, -0.5, 1.5)
+        rest = points - np.einsum("pn,pnx->px", element.values(inner), nodes)
+        jacobian = np.einsum("rpn,pnx->pxr", element.gradients(inner), nodes)
         step = np.linalg.solve(jacobian, rest[..., None])[..., 0]
-        at = at + step
+        inner = inner + step
         if np.abs(step).max() < 1e-12:
             break
+    at[some] = inner
     return np.asarray(at)

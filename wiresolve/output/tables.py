@@ -410,7 +410,7 @@ def summary(result: Result, folder: str | Path | None = None, status: str = DONE
         f" {result.states_missed} states missed by count."
     )
     if charged := charge_lines(result):
-        lines += ["", *charged, ""]
+        lines += ["", *charged]
     if not result.accuracy_met:
         worst = 1e3 * float(max(result.errors_eV, default=0.0))
         lines += paragraphs(

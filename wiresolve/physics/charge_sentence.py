@@ -6,6 +6,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe.curves import Loop
+from wiresolve.physics.capacitance import in_F_per_m, limit_text
+from wiresolve.physics.gate_answer import channel_capacitance
 from wiresolve.physics.selfconsistent import Balanced
 from wiresolve.physics.wire import Wire
 
@@ -21,7 +23,18 @@ def charge_sentence(balanced: Balanced, wire: Wire) -> str:
     if total <= 0:
         return "The wire holds no carriers at these voltages."
     shown = f"{total * 1e7:.3g} per cm"
-    return f"It holds {shown} ({total:.3g} per nm), {where(balanced, wire)}."
+    return f"It holds {shown} ({total:.3g} per nm), {where(balanced, wire)}.{_limit(balanced, wire)}"
+
+
+def _limit(balanced: Balanced, wire: Wire) -> str:
+    """Whether the density of states or the geometry limits the gates' hold, all gates moved together."""
+    names = [gate.name for gate in wire.problem.gates]
+    quantum = float(balanced.occupied.density_slope_per_eV_nm.sum())
+    if not names or not np.isfinite(quantum) or quantum <= 0:
+        return ""
+    geometric = sum(channel_capacitance(balanced.stage, name) for name in names)
+    text = f" It is {limit_text(quantum, geometric)}: {in_F_per_m(quantum) * 1e9:.3g} nF/m by the density of states,"
+    return f"{text} {in_F_per_m(geometric) * 1e9:.3g} nF/m from the gate{'s' if len(names) > 1 else ''} to its surface."
 
 
 def where(balanced: Balanced, wire: Wire) -> str:

@@ -20,6 +20,7 @@ from wiresolve.physics.electrostatics import Field, at_quadrature, improved
 from wiresolve.physics.first_mesh import MOST_VALUES, first_size
 from wiresolve.physics.selfconsistent import Balanced, balance
 from wiresolve.physics.solved import SPARE
+from wiresolve.physics.state_density import state_density
 from wiresolve.physics.subbands import Certified, Pass, certified_pass, solve_all
 
 Array = NDArray[np.float64]
@@ -186,7 +187,7 @@ def _on(
     done = solve_all(meshes.coarse, meshes.fine, channels, needs, wanted, factor, accuracy_eV)
     if done.bar_eV <= accuracy_eV:
         done = done.thorough(accuracy_eV).finished()
-    changes, share = _potential_error(meshes, balanced, done)
+    changes, share = _potential_error(charged, meshes, balanced, done)
     wide = estimate.bar_factor(charged.corners(meshes.coarse, meshes.field))
     widening = tuple(wide * change + balanced.residual_V for change in changes)
     wider = done.widened(widening)
@@ -201,7 +202,7 @@ def _on(
     return _Judged(meshes, balanced, done, wider, np.hstack(columns), widening)
 
 
-def _potential_error(meshes: Meshes, balanced: Balanced, done: Pass) -> tuple[list[Array], Array]:
+def _potential_error(charged: ChargedWire, meshes: Meshes, balanced: Balanced, done: Pass) -> tuple[list[Array], Array]:
     """What degree 6 does to the potential, in every state (m,) of each solved channel, and (c,) where it comes from.
 
     For a state's density w the change of the potential counts int w (phi_6 - phi_4) = int permittivity grad(z_6 - z_4)
@@ -214,7 +215,7 @@ def _potential_error(meshes: Meshes, balanced: Balanced, done: Pass) -> tuple[li
     density, slope = stage.dopants.charge(phi_there)
     solved = [s for s in done.solved if s is not None]
     there = solved[0].enriched.space
-    filled, rate = _filled(balanced, there)
+    filled, rate = _filled(charged, balanced, there)
     density[stage.places] -= filled
     slope[stage.places] -= rate
     held = _fine_held(meshes, balanced)
@@ -223,9 +224,7 @@ def _potential_error(meshes: Meshes, balanced: Balanced, done: Pass) -> tuple[li
     weights = there.quadrature_weights
     each, mean = [], np.zeros(weights.shape)
     for s in solved:
-        psi = np.einsum("qa,cam->cqm", there.tabulated[1][2], s.enriched.states[there.dofs])
-        held_density = np.abs(psi) ** 2
-        held_density = held_density / np.einsum("cq,cqm->m", weights, held_density)
+        held_density = state_density(there, s.operator, s.energy_eV, s.enriched.states)
         signed = np.abs(np.einsum("cq,cqm->m", weights * change, held_density))
         unsigned = np.einsum("cq,cqm->m", weights * np.abs(change), held_density)
         each.append(np.maximum(signed, _CANCELLED * unsigned))
@@ -236,14 +235,21 @@ def _potential_error(meshes: Meshes, balanced: Balanced, done: Pass) -> tuple[li
     return each, share * (seen / max(float(share.sum()), 1e-300))
 
 
-def _filled(balanced: Balanced, fine: Space) -> tuple[Array, Array]:
+def _filled(charged: ChargedWire, balanced: Balanced, fine: Space) -> tuple[Array, Array]:
     """Carriers in 1/nm^3, and what the predictor says of their answer, at the fine space's quadrature points."""
-    occupied = balanced.occupied
-    space = balanced.stage.carriers.space
-    states = prolong(space, fine, occupied.states)
-    values = np.einsum("qa,cam->cqm", fine.tabulated[1][2], states[fine.dofs])
-    density = np.abs(values) ** 2
-    return density @ occupied.line_density_per_nm, density @ np.nan_to_num(occupied.density_slope_per_eV_nm, posinf=0.0)
+    occupied, carriers = balanced.occupied, balanced.stage.carriers
+    shape = fine.quadrature_weights.shape
+    filled, rate = np.zeros(shape), np.zeros(shape)
+    steep = np.nan_to_num(occupied.density_slope_per_eV_nm, posinf=0.0)
+    for number, channel in enumerate(charged.channels_in(balanced.function)):
+        pick = np.flatnonzero(occupied.channel == number)
+        if len(pick):
+            states = prolong(carriers.space, fine, occupied.states[:, pick])
+            operator = channel.operator_of(carriers.space.mesh)
+            density = state_density(fine, operator, occupied.energy_eV[pick], states)
+            filled += density @ occupied.line_density_per_nm[pick]
+            rate += density @ steep[pick]
+    return filled, rate
 
 
 def _fine_held(meshes: Meshes, balanced: Balanced) -> Array:

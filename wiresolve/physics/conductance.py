@@ -7,11 +7,13 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from wiresolve.describe.operation import Transport
 from wiresolve.errors import InputError
 from wiresolve.physics.fermi import checked_temperature
 from wiresolve.physics.rounded import ramp, ramp_window, step, window
 from wiresolve.physics.spectrum import Spectrum
-from wiresolve.physics.transmission import Transmission
+from wiresolve.physics.transmission import Transmission, transmission_of
+from wiresolve.physics.transport import conductance as ballistic
 from wiresolve.units import CONDUCTANCE_QUANTUM_SIEMENS, KB, RESISTANCE_QUANTUM_OHM
 
 Array = NDArray[np.float64]
@@ -83,6 +85,21 @@ def transmitted_conductance(
         grown = ramp(fermi[..., None] - modes.ramp_eV, thermal, width) @ modes.ramp_per_eV
         total = total + np.maximum(grown, 0.0) * transmission.part(modes.beyond)
     return np.asarray(total / 2)
+
+
+def conductance_through(
+    spectrum: Spectrum, fermi_eV: ArrayLike, temperature_K: float, given: Transport | None
+) -> Array:
+    """Linear conductance of a spectrum in units of G0, with the transmission and the contacts that were described.
+
+    Raises
+    ------
+    InputError : for a temperature below zero.
+    """
+    if given is None or given.is_open:
+        return ballistic(spectrum, fermi_eV, temperature_K)
+    through = transmitted_conductance(openings(spectrum), transmission_of(given), fermi_eV, temperature_K)
+    return in_series(through, given.contact_resistance_ohm)
 
 
 def in_series(conductance_G0: ArrayLike, contact_resistance_ohm: float) -> Array:

@@ -16,6 +16,7 @@ Array = NDArray[np.float64]
 _STEP = 0.125
 """Spacing of a table in kT: cubic Hermite pieces then hold six digits of the density."""
 _PANELS, _POINTS = 6, 16
+_CHUNK = 4096
 _THERMAL = 40.0
 """Beyond this many kT above the Fermi level the occupation is below rounding."""
 
@@ -55,7 +56,7 @@ class Filling:
         if alpha == 0:
             unit = float(np.sqrt(thermal / (4 * np.pi * HBAR2_OVER_2M0)))
             return unit * fermi_integral(-0.5, eta), unit / thermal * fermi_integral(-1.5, eta)
-        return _kane(eta, alpha * thermal, float(np.sqrt(thermal / HBAR2_OVER_2M0)), thermal)
+        return _kane(eta, np.full(eta.shape, alpha * thermal), float(np.sqrt(thermal / HBAR2_OVER_2M0)), thermal)
 
     def table(self, low_eV: float, high_eV: float) -> Table:
         """A fast stand-in between two depths, good to seven digits."""
@@ -87,19 +88,65 @@ class Table:
         return value, (left + t * (2 * second + 3 * t * third)) / self.step_eV
 
 
+@dataclass(frozen=True, eq=False)
+class Tables:
+    """The same for many subbands (m,) as functions of how much deeper each has come, with shared nodes."""
+
+    start_eV: float
+    step_eV: float
+    density: Array
+    slope: Array
+
+    def __call__(self, by_eV: Array) -> tuple[Array, Array]:
+        """Densities and slopes (..., m) where all have come deeper by so much, which must lie inside the tables."""
+        place = (by_eV - self.start_eV) / self.step_eV
+        piece = np.clip(place.astype(np.int64), 0, len(self.density) - 2)
+        t = (place - piece)[..., None]
+        low, left = self.density[piece], self.step_eV * self.slope[piece]
+        rise, right = self.density[piece + 1] - low, self.step_eV * self.slope[piece + 1]
+        second, third = 3 * rise - 2 * left - right, left + right - 2 * rise
+        return low + t * (left + t * (second + t * third)), (left + t * (2 * second + 3 * t * third)) / self.step_eV
+
+
+def tables(temperature_K: float, alpha_per_eV: Array, depth_eV: Array, low_eV: float, high_eV: float) -> Tables:
+    """Tables of subbands (m,) with their growths and depths, for all changes of the depths between two values."""
+    thermal = KB * temperature_K
+    step = _STEP * thermal
+    by = low_eV - step + step * np.arange(int(np.ceil((high_eV - low_eV) / step)) + 3)
+    depth = by[:, None] + depth_eV
+    density, slope = np.empty(depth.shape), np.empty(depth.shape)
+    straight = alpha_per_eV == 0
+    if straight.any():
+        density[:, straight], slope[:, straight] = Filling(temperature_K).both(depth[:, straight])
+    if not straight.all():
+        eta = depth[:, ~straight] / thermal
+        growth = np.broadcast_to(alpha_per_eV[~straight] * thermal, eta.shape)
+        unit = float(np.sqrt(thermal / HBAR2_OVER_2M0))
+        density[:, ~straight], slope[:, ~straight] = _kane(eta, growth, unit, thermal)
+    return Tables(float(by[0]), step, density, slope)
+
+
 @cache
 def _gauss() -> tuple[Array, Array]:
     points, weights = np.polynomial.legendre.leggauss(_POINTS)
     return (points + 1) / 2, weights / 2
 
 
-def _kane(eta: Array, growth: float, unit: float, thermal: float) -> tuple[Array, Array]:
+def _kane(eta: Array, growth: Array, unit: float, thermal: float) -> tuple[Array, Array]:
     """1/pi int sqrt(x (1 + growth x)) (-df/dx) dx times `unit`, and its derivative by the depth in eV.
 
     In x = u^2 the integrand of n = 1/pi int k'(x) f dx is smooth; panels end around the Fermi level.
     """
+    flat, growths = np.ravel(eta), np.ravel(growth)
+    both = np.empty((2, len(flat)))
+    for start in range(0, len(flat), _CHUNK):
+        pick = slice(start, start + _CHUNK)
+        both[:, pick] = _kane_row(flat[pick], growths[pick, None], unit, thermal)
+    return both[0].reshape(np.shape(eta)), both[1].reshape(np.shape(eta))
+
+
+def _kane_row(flat: Array, growth: Array, unit: float, thermal: float) -> tuple[Array, Array]:
     points, weights = _gauss()
-    flat = np.ravel(eta)
     high = np.sqrt(np.maximum(flat, 0.0) + _THERMAL)
     low = np.sqrt(np.maximum(flat - _THERMAL, 0.0))
     middle = np.sqrt(np.maximum(flat, 0.0))
@@ -122,4 +169,4 @@ def _kane(eta: Array, growth: float, unit: float, thermal: float) -> tuple[Array
     slope = f * np.exp(-np.logaddexp(0.0, -argument))
     density = unit / np.pi * (w * rate * f).sum(axis=1)
     steep = unit / np.pi / thermal * (w * rate * slope).sum(axis=1)
-    return density.reshape(np.shape(eta)), steep.reshape(np.shape(eta))
+    return density, steep

@@ -77,10 +77,15 @@ def _by_difference(balanced: Balanced, gate: str) -> Response:
     one = np.zeros(len(field.space.nodes))
     one[field.gate_points[gate]] = 1.0
     step = max(_STEP_KT * KB * stage.carriers.temperature_K, _LEAST_V)
-    near, far = (
-        [balance(stage, balanced.held_V + sign * n * step * one[field.held], balanced) for sign in (1, -1)]
-        for n in (1, 2)
-    )
+
+    def close(n: int, guess: Array | None) -> Balanced:
+        return balance(stage, balanced.held_V + n * step * one[field.held], balanced, guess)
+
+    # Each one starts where the polynomial through those before it arrives.
+    here, up = balanced.potential_V, close(1, None)
+    down = close(-1, 2 * here - up.potential_V)
+    rise, bend = up.potential_V - down.potential_V, up.potential_V + down.potential_V - 2 * here
+    near, far = (up, down), (close(2, here + rise + 2 * bend), close(-2, here - rise + 2 * bend))
 
     def slope(of: Any) -> Any:
         return (8 * (of(near[0]) - of(near[1])) - (of(far[0]) - of(far[1]))) / (12 * step)

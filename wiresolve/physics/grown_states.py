@@ -24,13 +24,14 @@ from wiresolve.physics.unlisted import NEAR, from_squares
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-_EXACT = 1e-11
+_EXACT = 1e-10
 _FEWEST, _MOST = 3, 20
 _MARGIN_eV = 1e-3
 _NEWTON = 12
 _GROUPS = 5
 """Factors that serve all states: T(E) is another at each energy."""
-_SETTLED_eV, _EQUAL_eV = 1e-14, 1e-10
+_SETTLED_eV, _EQUAL_eV = 1e-7, 1e-10
+"""A step of Newton's method so small leaves the square of itself; levels closer than that are one."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -197,19 +198,16 @@ class Grown:
         return still, moving
 
     def nodes(self, low_eV: float, high_eV: float) -> Array:
-        """Energies between which T(E) is a polynomial to eleven digits."""
+        """Chebyshev points between two energies, through which T(E) is a polynomial to ten digits.
+
+        1 / (1 + alpha (E - V)) has its pole at V - 1/alpha: the polynomials' error falls with the power of the ellipse
+        around the energies that goes through it (S. N. Bernstein, 1912).
+        """
         middle, half = (low_eV + high_eV) / 2, (high_eV - low_eV) / 2
-        probes = middle + half * np.linspace(-1, 1, 33)
-        alpha = self.tables.alpha_per_eV
-        kinds = np.unique(alpha[alpha > 0])
-        steep = [(a, float(h)) for a in kinds for h in _ends(self.height_eV[alpha == a])]
-        for count in range(_FEWEST, _MOST + 1):
-            points = middle + half * np.cos(np.pi * (np.arange(count) + 0.5) / count)
-            table = _polynomials(points, probes)
-            error = [np.abs((1 / (1 + a * (points - h))) @ table * (1 + a * (probes - h)) - 1).max() for a, h in steep]
-            if not error or max(error) < _EXACT:
-                break
-        return np.asarray(points)
+        far = max((middle - self.floor_eV) / half, 1 + 1e-3)
+        count = int(np.ceil(np.log(1 / _EXACT) / np.log(far + np.sqrt(far**2 - 1)))) + 1
+        count = min(max(count, _FEWEST), _MOST)
+        return np.asarray(middle + half * np.cos(np.pi * (np.arange(count) + 0.5) / count))
 
     def ritz(self, basis: NDArray[Any], count: int, guess_eV: Array) -> tuple[Array, NDArray[Any]]:
         """The lowest states in the span of an orthonormal basis: energies and combinations."""
@@ -219,19 +217,17 @@ class Grown:
         series = _Series.through(points, self._small_still(basis, points))
         energy, turn = np.asarray(guess_eV, dtype=float).copy(), np.empty((basis.shape[1], count))
         for _ in range(_NEWTON):
-            values, vectors = np.linalg.eigh(series.at(energy))
+            # Members of a level share their energy, and then their states come from one solve.
+            level = np.concatenate([[0], np.cumsum(np.diff(energy) > _EQUAL_eV)])
+            first = np.flatnonzero(np.concatenate([[True], np.diff(level) > 0]))
+            values, vectors = np.linalg.eigh(series.at(energy[first]))
             own = np.arange(count)
-            value, turn = values[own, own], vectors[own, :, own].T
-            fall = np.einsum("im,mij,jm->m", turn, series.slope(energy), turn, optimize=True)
-            step = (value - energy) / (1 - fall)
-            energy = energy + step
+            value, turn = values[level, own], vectors[level, :, own].T
+            fall = np.einsum("im,mij,jm->m", turn, series.slope(energy[first])[level], turn, optimize=True)
+            step = (value - energy[first][level]) / (1 - fall)
+            energy = np.sort(energy[first][level] + step)
             if np.abs(step).max() <= _SETTLED_eV:
                 break
-        # Equal energies: their states are taken from one solve.
-        apart = np.flatnonzero(np.diff(energy) > _EQUAL_eV) + 1
-        for pick in np.split(np.arange(count), apart):
-            if len(pick) > 1:
-                turn[:, pick] = np.linalg.eigh(series.at(energy[pick].mean(keepdims=True))[0])[1][:, pick]
         return energy, turn
 
     def _small_still(self, states: NDArray[Any], energies: Array) -> NDArray[Any]:
@@ -280,10 +276,6 @@ class Grown:
         return from_squares(squares, steps)
 
 
-def _ends(height: Array) -> tuple[float, float]:
-    return float(height.min()), float(height.max())
-
-
 @dataclass(frozen=True, eq=False)
 class _Series:
     """Matrices that are polynomials in E: their Chebyshev coefficients (p, m, m) between two energies."""
@@ -313,12 +305,3 @@ class _Series:
 
 def _span(points: Array) -> tuple[float, float]:
     return float(points.max() + points.min()) / 2, float(np.ptp(points)) / 2 or 1.0
-
-
-def _polynomials(points: Array, at: Array) -> Array:
-    """Lagrange polynomials (p, n) of Chebyshev points, at n places."""
-    middle, half = _span(points)
-    table = np.polynomial.chebyshev.chebvander((points - middle) / half, len(points) - 1)
-    return np.asarray(
-        np.linalg.solve(table.T, np.polynomial.chebyshev.chebvander((at - middle) / half, len(points) - 1).T)
-    )

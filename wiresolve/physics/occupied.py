@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Any
@@ -16,7 +16,7 @@ from wiresolve.fem.nodal import NodalFunction
 from wiresolve.fem.space import Space
 from wiresolve.physics import local_mass
 from wiresolve.physics.channel import Channel
-from wiresolve.physics.filling import Filling
+from wiresolve.physics.filling import Filling, tables
 from wiresolve.physics.followed_states import LOOSEST, RESIDUAL, Constant, Followed, followed
 from wiresolve.physics.grown_states import CellTables, Grown, cell_tables
 from wiresolve.physics.listing import SPIN
@@ -37,7 +37,7 @@ _SPARE, _SHARE = 3, 0.2
 _MOST = 400
 _PARTED = 1e-6
 """States closer than this many eV are kept or left together: a level is never cut."""
-_WIDEST_TABLE = 4000.0
+_WIDEST_TABLE = 2000.0
 """Potentials further apart than so many kT are only met while a step is looked for: no table then."""
 _REFERENCES = (0.2, 0.9)
 """Shares of the wanted states at whose energies a growing mass is taken for first states."""
@@ -132,31 +132,25 @@ class Occupied:
         Each state is filled, place by place, as if its bottom had moved down by the local rise: the predictor of A.
         Trellakis, A. T. Galick, A. Pacelli and U. Ravaioli, J. Appl. Phys. 81, 7880 (1997).
         """
-        density, slope = np.zeros(by_V.shape), np.zeros(by_V.shape)
+        thermal = KB * self.temperature_K
         # The place of each state itself belongs to the table.
         low, high = min(float(by_V.min()), 0.0), max(float(by_V.max()), 0.0)
-        thermal = KB * self.temperature_K
-        for alpha in np.unique(self.alpha_per_eV):
-            filling = Filling(self.temperature_K, float(alpha))
-            reached = -self.energy_eV + high >= -2 * REACH * thermal
-            some = np.flatnonzero((self.alpha_per_eV == alpha) & reached)
-            if not len(some):
-                continue
-            depths = -self.energy_eV[some]
-            table: Callable[[Array], tuple[Array, Array]] = filling.both
-            tabulated = 0 < high - low + float(np.ptp(depths)) <= _WIDEST_TABLE * thermal
-            if tabulated:
-                table = filling.table(float(depths.min()) + low, float(depths.max()) + high)
-            for i in some:
-                n, rate = table(by_V - self.energy_eV[i])
-                weight = self.density_per_nm2[:, :, i] * self.scale[i]
-                if tabulated:
-                    # At the place itself the filling is exact: the last pass must not see the table.
-                    at, _ = table(np.array(-self.energy_eV[i]))
-                    if at > 0:
-                        weight = weight * (self.line_density_per_nm[i] / self.scale[i] / at)
-                density += weight * n
-                slope += weight * rate
+        some = np.flatnonzero(-self.energy_eV + high >= -2 * REACH * thermal)
+        depths, growth = -self.energy_eV[some], self.alpha_per_eV[some]
+        if 0 < high - low + 1e-3 * thermal <= _WIDEST_TABLE * thermal:
+            table = tables(self.temperature_K, growth, depths, low, high)
+            n, rate = table(by_V)
+            # At the place itself the filling is exact: the last pass must not see the table.
+            at, _ = table(np.zeros(1))
+            exact = self.line_density_per_nm[some] / self.scale[some]
+            weight = self.scale[some] * np.divide(exact, at[0], out=np.ones(len(some)), where=at[0] > 0)
+            here = self.density_per_nm2[:, :, some] * weight
+            return np.einsum("cqm,cqm->cq", here, n), np.einsum("cqm,cqm->cq", here, rate)
+        density, slope = np.zeros(by_V.shape), np.zeros(by_V.shape)
+        for i in some:
+            n, rate = Filling(self.temperature_K, float(self.alpha_per_eV[i])).both(by_V - self.energy_eV[i])
+            density += self.density_per_nm2[:, :, i] * self.scale[i] * n
+            slope += self.density_per_nm2[:, :, i] * self.scale[i] * rate
         return density, slope
 
 

@@ -20,6 +20,8 @@ _CLOSE_eV = 1e-7
 """Levels nearer than this count as equal: the difference quotient of their filling is its derivative."""
 _OUTER, _INNER = 1e-9, 1e-10
 _MOST_OUTER, _MOST_INNER = 80, 400
+_FAINT = 1e-11
+"""States that hold less than this part of the fullest one's carriers do not count for the answer of states."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -165,14 +167,18 @@ class _Channel:
         answer = (self._there * (self._there @ (self._pairs * inside))).sum(axis=1)
         load = (self.interpolation.T @ lifted)[self.kept]
         further = np.zeros((self.interpolation.shape[1], len(self.energy_eV)))
-        used = self.filling > 1e-14 * self.filling.max()
+        used = self.filling > _FAINT * self.filling.max()
         if not used.any():
             return np.asarray(answer)
-        further[np.ix_(self.kept, np.flatnonzero(used))] = self._further(load[:, used], self.energy_eV[used])
+        weights = self.filling[used] / self.filling.max()
+        further[np.ix_(self.kept, np.flatnonzero(used))] = self._further(load[:, used], self.energy_eV[used], weights)
         return np.asarray(answer + 2 * (self._there * (self.interpolation @ further)) @ self.filling)
 
-    def _further(self, load: Array, energy: Array) -> Array:
-        """(H - E)^-1 of loads within the states that are not kept: conjugate gradients, all columns at once."""
+    def _further(self, load: Array, energy: Array, weights: Array) -> Array:
+        """(H - E)^-1 of loads within the states that are not kept: conjugate gradients, all columns at once.
+
+        Columns count by their weights (m,): those of states that hold few carriers need not be as exact.
+        """
 
         def outside(block: Array) -> Array:
             return np.asarray(block - self.states[self.kept] @ (self._weighted.T @ block))
@@ -188,7 +194,8 @@ class _Channel:
             step = outside(self._factor.solve(residual))
             now = np.einsum("ij,ij->j", residual, step)
             first = np.maximum(now, 1e-300) if first is None else first
-            if (now <= _INNER**2 * first.max()).all():
+            open_ = now * weights**2 > _INNER**2 * (first * weights**2).max()
+            if not open_.any():
                 return answer
             direction = step + direction * (now / before)
             image = self.hamiltonian @ direction - (self.mass @ direction) * energy

@@ -156,8 +156,8 @@ def balance(
     Parameters
     ----------
     held_V : (h,) the potential where it is held.
-    before : the balance at other voltages on the same mesh, from whose states the first potential is predicted.
-    guess : (n,) or else a first potential.
+    before : the balance at other voltages on the same mesh, from whose states all begins.
+    guess : (n,) a first potential, instead of the one that `before` predicts.
 
     Raises
     ------
@@ -186,14 +186,14 @@ def _balanced(
         exchange = before.exchange_V
         occupied = before.occupied
         counts = occupied.counts(len(stage.carriers.channels))
-        potential = _predicted(stage, held_V, before.occupied, before.solution.phi, before.solution.phi).phi
-    else:
-        potential = start(stage, held_V) if guess is None else guess
+        if guess is None:
+            guess = _predicted(stage, held_V, before.occupied, before.solution.phi, before.solution.phi).phi
+    potential = start(stage, held_V) if guess is None else guess
     tried: list[Array] = []
     answered: list[Array] = []
     passes, last, reached = 0, np.inf, None
     thermal = KB * stage.carriers.temperature_K
-    enough = max(_LAST_V, 1e-7 * thermal)
+    enough = max(_LAST_V, 1e-7 * thermal) if stage.exchange is None else _LAST_V / 30
     points = len(potential)
     state = potential if exchange is None else np.concatenate([potential, exchange])
     for number in range(1, MOST_PASSES + 1):

@@ -56,7 +56,11 @@ class Judgement:
 
 
 def judge(
-    spectrum: Spectrum, temperatures_K: Iterable[float], fermi_eV: float | None, remarks: Iterable[str] = ()
+    spectrum: Spectrum,
+    temperatures_K: Iterable[float],
+    fermi_eV: float | None,
+    remarks: Iterable[str] = (),
+    held: str = "",
 ) -> Judgement:
     """Judge a wire from its spectrum.
 
@@ -70,6 +74,7 @@ def judge(
     temperatures_K : one or several, of the carriers.
     fermi_eV : from the energy zero, or None.
     remarks : sentences to append to the text.
+    held : what the first sentence says of the conditions, in place of the Fermi level: " at these gate voltages".
 
     Raises
     ------
@@ -83,7 +88,7 @@ def judge(
     single = _single_subband(spectrum, temperatures, fermi_eV)
     staircase = _staircase(spectrum, temperatures)
     dimension = _dimension(spectrum, temperatures)
-    sentences = [_headline(spectrum, single, staircase, fermi_eV), _ladder(spectrum, staircase)]
+    sentences = [_headline(spectrum, single, staircase, fermi_eV, held), _ladder(spectrum, staircase)]
     sentences += [_at_temperature(row, table) for row, table in zip(single["per_temperature"], staircase, strict=True)]
     sentences += [_dimension_sentence(dimension)]
     sentences += [remark.strip() for remark in remarks]
@@ -201,9 +206,14 @@ def _part_margin(spectrum: Spectrum, direction: int) -> Callable[[Array], Array]
 
 
 def _headline(
-    spectrum: Spectrum, single: dict[str, Any], staircase: tuple[dict[str, Any], ...], fermi_eV: float | None
+    spectrum: Spectrum,
+    single: dict[str, Any],
+    staircase: tuple[dict[str, Any], ...],
+    fermi_eV: float | None,
+    held: str,
 ) -> str:
     where = "" if fermi_eV is None else f" with the Fermi level at {_millivolts(fermi_eV)}"
+    where = held or where
     limit = _up_to(single["holds_up_to_K"], single["searched_up_to_K"])
     count = int((spectrum.level == 1).sum())
     what = "a single-subband channel" if count == 1 else f"a channel of one level, which is {count} subbands,"
