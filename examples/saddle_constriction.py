@@ -32,14 +32,15 @@ def main(picture: str | None = None) -> tuple[ws.GateCurve, np.ndarray]:
     found = np.array([point.conductance_G0 for point in curve.points])
     for step in curve.steps:
         if np.isfinite(step.opens_at_V):
-            print(f"at {step.opens_at_V:.3f} V the conductance begins to rise by {step.height_G0:g} G0")
+            print(f"at {step.opens_at_V:.3f} V a step of {step.height_G0:g} G0 is half open")
     print(f"Buettiker's closed form at T = 0 is met within {np.abs(found - closed).max():.0e} G0")
     if picture:
         figure = Figure(figsize=(5.5, 3.8), dpi=150, layout="constrained")
         axes = figure.subplots()
         voltage = [point.gate_voltage_V for point in curve.points]
-        open_ = [float((point.energy_eV < 0).sum()) for point in curve.points]
-        axes.step(voltage, open_, where="mid", color="#b0b0b0", lw=1, label="levels below the Fermi level")
+        opened = [step for step in curve.steps if np.isfinite(step.opens_at_V)]
+        at, height = [voltage[0], *(s.opens_at_V for s in opened), voltage[-1]], [0, *(s.plateau_G0 for s in opened)]
+        axes.step(at, [*height, height[-1]], where="post", color="#b0b0b0", lw=1, label="without barrier, T = 0")
         axes.plot(voltage, found, color="#0072B2", label="wiresolve, through the saddle")
         axes.plot(voltage, closed, ".", ms=4, color="#262626", label="closed form of its levels, T = 0", zorder=3)
         axes.set(xlabel="Gate voltage (V)", ylabel="Conductance ($G_0 = 2e^2/h$)", title=problem.title)

@@ -3,11 +3,13 @@
     python examples/silicon_sheet.py [PICTURE.png]
 
 The thin direction decides: valleys that are heavy across it (0.92 against 0.19 m0) lie lower, and carry at 0.19 m0
-along the wire. A plate of the sheet's perimeter, eps perimeter/thickness, is below the capacitance of any convex metal
-with that oxide, as field lines spread at corners; the plate of the oxide's outer perimeter is above it.
+along the wire. The capacitance of a metal sheet lies between two closed forms: field lines kept straight across the
+oxide (W. Thomson's principle) give flats/thickness + 2 pi/ln(1 + thickness/radius), a potential that falls evenly
+across it (Dirichlet's) gives perimeter/thickness + pi, each times the permittivity.
 """
 
 import sys
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -21,20 +23,23 @@ WIRE = Path(__file__).resolve().parents[1] / "geometries" / "silicon_sheet.toml"
 WIDTH_nm, HEIGHT_nm, CORNER_nm, OXIDE_nm, OXIDE_PERMITTIVITY = 25.0, 5.0, 2.0, 1.0, 3.9
 
 
-def plates() -> tuple[float, float]:
-    """Plates as large as the inner and the outer perimeter of the oxide, in F/m."""
-    inner = 2 * (WIDTH_nm + HEIGHT_nm) - (8 - 2 * np.pi) * CORNER_nm
-    return tuple(epsilon_0 * OXIDE_PERMITTIVITY * p / OXIDE_nm for p in (inner, inner + 2 * np.pi * OXIDE_nm))
+def bounds() -> tuple[float, float]:
+    """What the capacitance of a metal sheet cannot be below, and above, in F/m."""
+    flats_nm = 2 * (WIDTH_nm + HEIGHT_nm) - 8 * CORNER_nm
+    low = flats_nm / OXIDE_nm + 2 * np.pi / np.log(1 + OXIDE_nm / CORNER_nm)
+    high = (flats_nm + 2 * np.pi * CORNER_nm) / OXIDE_nm + np.pi
+    return epsilon_0 * OXIDE_PERMITTIVITY * low, epsilon_0 * OXIDE_PERMITTIVITY * high
 
 
 def main(picture: str | None = None) -> tuple[ws.GateCurve, tuple[float, float]]:
-    curve = ws.gate_curve(ws.load(WIRE))
-    last, (low, high) = curve.points[-1], plates()
+    problem = ws.load(WIRE)
+    curve = ws.gate_curve(replace(problem, voltages=replace(problem.voltages, count=3)))
+    last, (low, high) = curve.points[-1], bounds()
     upright = sum(n for n, name in zip(last.line_density_by_subband_per_nm, last.valley, strict=True) if "001" in name)
     part = upright / last.line_density_per_nm
     print(f"lowest valleys: {last.valley[0]}; they hold {part:.0%} of {last.line_density_per_nm:.2f} electrons a nm")
     geometric, found = 1e9 * last.geometric_F_per_m, 1e9 * last.capacitance_F_per_m
-    print(f"a metal sheet would have {geometric:.2f} nF/m, plates {1e9 * low:.2f} to {1e9 * high:.2f} nF/m")
+    print(f"a metal sheet would have {geometric:.3f} nF/m, from {1e9 * low:.3f} to {1e9 * high:.3f} by closed forms")
     print(f"with electrons it has {found:.2f} nF/m at {last.gate_voltage_V:g} V")
     if picture:
         figure = Figure(figsize=(6.5, 2.4), dpi=150, layout="constrained")
@@ -43,13 +48,14 @@ def main(picture: str | None = None) -> tuple[ws.GateCurve, tuple[float, float]]
         density = griddata(curve.mesh.points, last.density_per_nm3, (x, y))
         drawn = axes.pcolormesh(x, y, 1e21 * density, cmap="viridis", rasterized=True)
         figure.colorbar(drawn, ax=axes, label="Electrons (cm$^{-3}$)")
-        axes.set(xlabel="x (nm)", ylabel="y (nm)", aspect="equal", title=f"{problem_title(curve)}")
+        axes.set(
+            xlabel="x (nm)",
+            ylabel="y (nm)",
+            aspect="equal",
+            title=f"Silicon sheet, {last.gate_voltage_V:g} V on its gate",
+        )
         figure.savefig(picture)
     return curve, (low, high)
-
-
-def problem_title(curve: ws.GateCurve) -> str:
-    return f"Silicon sheet at {curve.points[-1].gate_voltage_V:g} V on its gate, {curve.temperature_K:g} K"
 
 
 if __name__ == "__main__":

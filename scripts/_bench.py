@@ -1,11 +1,12 @@
 """Speed and memory, never part of a test: ratios in one run, medians, one BLAS thread.
 
-    scripts/bench [cases|geometries|by-hand|semiconductors|growth|start] ...
+    scripts/bench [cases|geometries|by-hand|semiconductors|gates|growth|start] ...
 
 cases       time to certified energies of ten states, each to 1e-6 of the tenth (and a little beyond)
 geometries  every file in geometries/ at its own accuracy, from solve() to the complete result
 by-hand     against two scripts as one would write them by hand, at equal error on a circle
 semiconductors  all valleys of a silicon wire, growing masses, a mesh from elsewhere, sensitivities beside their solve
+gates       passes of gate sweeps beside damped iteration, and warm times of their points
 growth      time and memory of one solve with bars and count, up to 200,000 unknowns
 start       import, --help, and a cold `wiresolve solve geometries/circle.toml` with all outputs
 """
@@ -361,11 +362,18 @@ def start() -> None:
     print(f"wiresolve solve geometries/circle.toml        {cold:6.0f} ms{verdict(cold, 3000)}")
 
 
+def gates() -> None:
+    from _bench_gates import gates as run
+
+    run()
+
+
 PARTS = {
     "cases": cases,
     "geometries": geometries,
     "by-hand": by_hand,
     "semiconductors": semiconductors,
+    "gates": gates,
     "growth": growth,
     "start": start,
 }

@@ -8,7 +8,6 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
-
 from _damped import MIXINGS, damped_passes
 
 ROUND = """title = "round"
@@ -97,6 +96,8 @@ model = "{model}"
 subbands = 10
 energy = "0.1 meV"
 """
+_STEP_V = 5e-4
+"""Balances agree to some nV: differences over less than this would show that."""
 GROWING = "nonparabolicity = 1.5"
 # name, text, diameter, range in V, temperatures, most passes
 SWEEPS: tuple[tuple[str, str, float, float, float, tuple[float, ...], int], ...] = (
@@ -155,7 +156,7 @@ def capacitance_check(sweep: Any, here: Any) -> tuple[float, float]:
 
     stage, gate = here.stage, sweep._swept
     answer = response(here, gate).carriers_per_V_nm
-    step = max(0.05 * KB * stage.carriers.temperature_K, 2e-5)
+    step = max(0.05 * KB * stage.carriers.temperature_K, _STEP_V)
     one = sweep.meshes.field.held_values({gate: 1.0})
     at = [balanced(stage, here.held_V + n * step * one, here).occupied.total_per_nm for n in (1, -1, 2, -2)]
     found = (8 * (at[0] - at[1]) - (at[2] - at[3])) / (12 * step)
@@ -187,7 +188,9 @@ def damped() -> None:
                 ratios.append(best[0] / own)
                 print(f"  {name:26s} {kelvin:5g} K {voltage:6.3f} V  {own:3d}  damped {best[0]} (mixing {best[1]})")
             ratio = min(ratios)
-            print(f"  at least {ratio:.1f} times fewer{'  within' if ratio >= least else '  BELOW'} {least:g}", flush=True)
+            print(
+                f"  at least {ratio:.1f} times fewer{'  within' if ratio >= least else '  BELOW'} {least:g}", flush=True
+            )
 
 
 def balanced_from(stage: Any, held: Any, first: Any) -> int:
@@ -217,14 +220,16 @@ def as_functions(stage: Any, held: Any) -> tuple[Any, Any]:
 
 def warm() -> None:
     print("\na warm point of a sweep, all its numbers and bars: CPU seconds, the median of five")
-    cases = (
-        ("round wrap gate", ROUND, {"diameter": 30, "low": -0.1, "high": 0.75, "kelvin": 77}, 0.3, 1),
-        ("the same, mass grows", ROUND, {"diameter": 30, "low": -0.1, "high": 0.75, "kelvin": 77, "growth": GROWING}, 0.3, 1),
-        ("doped hexagon, back gate", HEXAGON, {"diameter": 40, "low": -2.0, "high": 4.0, "kelvin": 4.2}, 1.5, 1),
-        ("the same, mass grows", HEXAGON, {"diameter": 40, "low": -2.0, "high": 4.0, "kelvin": 4.2, "growth": GROWING}, 1.5, 1),
+    wrapped: dict[str, Any] = {"diameter": 30, "low": -0.1, "high": 0.75, "kelvin": 77}
+    backed: dict[str, Any] = {"diameter": 40, "low": -2.0, "high": 4.0, "kelvin": 4.2}
+    cases: tuple[tuple[str, str, dict[str, Any], float, int], ...] = (
+        ("round wrap gate", ROUND, wrapped, 0.3, 1),
+        ("the same, mass grows", ROUND, wrapped | {"growth": GROWING}, 0.3, 1),
+        ("doped hexagon, back gate", HEXAGON, backed, 1.5, 1),
+        ("the same, mass grows", HEXAGON, backed | {"growth": GROWING}, 1.5, 1),
         ("silicon, three groups", SILICON, {"model": "parabolic"}, 15.0, 50),
         ("the same, mass grows", SILICON, {"model": "nonparabolic"}, 15.0, 50),
-    )  # fmt: skip
+    )
     for name, text, fields, limit, times in cases:
         begun = time.process_time()
         sweep = sweep_of(text, **fields)

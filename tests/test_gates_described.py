@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import replace
 
 import pytest
@@ -288,9 +289,12 @@ def test_the_summary_names_everything_with_its_unit() -> None:
     rows = dict(describe(wirefile.parse(EVERYTHING)))
     assert "acceptors 2e+16 cm^-3" in rows["section.core"]
     assert "donors 1e+18 cm^-3 ionised in part from 6 meV" in rows["section.layers[1]"]
-    for word in ("'finger'", "'top' and 'side 3'", "3 nm of HfO2", "4600 meV", "-0.25 V", "nm long"):
+    for word in ("'finger'", "'top' and 'side 3'", "3 nm of HfO2", "4.6 eV", "-0.25 V", "nm long"):
         assert word in rows["gates[1]"]
-    assert "at the end of the surroundings" in rows["gates[2]"]
+    assert "at the end of what lies below" in rows["gates[2]"]
+    assert "nm long" not in rows["gates[2]"]
+    assert rows["gates[2]"].endswith("outside of its sweep")
+    assert "if all dopants are charged" in rows["fixed_charge"]
     assert "-2e+11 cm^-2" in rows["surfaces[1]"]
     assert rows["surroundings.below"] == "100 nm of SiO2, then 20000 nm of Si, then gate 'back'"
     assert rows["voltages"] == "gate 'back' from -0.5 V to 1 V in 7 points, 0.25 V apart"
@@ -309,6 +313,22 @@ def test_the_summary_names_everything_with_its_unit() -> None:
     assert "sunk 0.3 nm" in dict(describe(round_wire))["surroundings.below"]
     hexagon = replace(round_wire, section=Section(Hexagon(60), "InAs"))
     assert "sunk" not in dict(describe(hexagon))["surroundings.below"]
+
+
+def test_the_summary_adds_up_the_fixed_charge() -> None:
+    """A ring from 10 to 20 nm around: pi (20^2 - 10^2) nm^2 of 1e-3 donors a nm^3, and 2 pi 20 nm of -1e-3 e/nm^2."""
+    shell = Layer(10, "GaAs", doping=Doping(1e-3))
+    rim = Surface(("rim",), charge_per_nm2=-1e-3)
+    charged = Problem("a", Section(Circle(20), "GaAs", (shell,)), COLD, surfaces=(rim,))
+    text = dict(describe(charged))["fixed_charge"]
+    assert float(text.split()[0]) == pytest.approx(math.pi * 0.3 - math.pi * 0.04, rel=1e-5)
+    assert "carriers balance it" in text
+    gated = replace(charged, surfaces=(), gates=(Gate("wrap", ("rim",), lineup_voltage_V=0.0),))
+    text = dict(describe(gated))["fixed_charge"]
+    assert float(text.split()[0]) == pytest.approx(math.pi * 0.3, rel=1e-5)
+    assert "balance" not in text
+    plain = replace(gated, section=Section(Circle(20), "GaAs"))
+    assert "fixed_charge" not in dict(describe(plain))
 
 
 def test_resistances_have_units() -> None:

@@ -14,7 +14,7 @@ import click
 import pytest
 
 import wiresolve.cli
-from wiresolve.describe import material_file, plain, shape_tables, wirefile
+from wiresolve.describe import gate_tables, material_file, plain, shape_tables, wirefile
 from wiresolve.describe.problem import Carriers, Orientation, Problem
 from wiresolve.describe.section import Layer, Section
 from wiresolve.describe.shapes import Circle
@@ -123,7 +123,7 @@ def test_generated_parts_of_the_readme_are_fresh() -> None:
 
 
 def test_wire_and_materials_file_of_the_readme_are_valid(tmp_path: Path) -> None:
-    block, lab = code_blocks("toml")
+    block, lab, *_ = code_blocks("toml")
     problem = wirefile.parse(block, REPOSITORY)
     assert problem.title == tomllib.loads(block)["title"]
     assert problem.accuracy.subbands == 10
@@ -133,6 +133,33 @@ def test_wire_and_materials_file_of_the_readme_are_valid(tmp_path: Path) -> None
     along = Orientation((1, 1, 0), (0, 0, 1))
     problem = Problem("wire", wire, Carriers(temperature_K=(300,)), materials=(silicon, oxide), orientation=along)
     assert problem.shared_valleys() == ("Delta", "L")
+
+
+def test_gates_of_the_readme_are_valid() -> None:
+    *_, wrap, back = code_blocks("toml")
+    problem = wirefile.parse(wrap, REPOSITORY)
+    assert problem.charged
+    assert problem.voltages is not None
+    section = wrap.partition("[[gates]]")[0]
+    on_oxide = wirefile.parse(f'{section}{back}\n[carriers]\ntemperature = "4.2 K"\n', REPOSITORY)
+    assert [gate.name for gate in on_oxide.gates] == ["back"]
+    assert on_oxide.surroundings is not None
+    assert on_oxide.surroundings.below_gate == "back"
+
+
+def test_all_keys_of_gates_and_charge_are_documented() -> None:
+    reference = README.partition("### The keys")[2].partition("\n### ")[0]
+    given = {
+        "gates": gate_tables.GATE_KEYS,
+        "surfaces": gate_tables.SURFACE_KEYS,
+        "surroundings": gate_tables.SURROUNDINGS_KEYS,
+        "voltages": gate_tables.VOLTAGES_KEYS,
+        "transport": gate_tables.TRANSPORT_KEYS,
+    }
+    assert set(given) == set(gate_tables.DEVICE_KEYS)
+    keys = [f"{table}.{key}" for table, names in given.items() for key in names]
+    keys += [*gate_tables.DOPING_KEYS, "carriers.interaction"]
+    assert [key for key in keys if f"`{key}`" not in reference] == []
 
 
 def test_all_keys_of_the_wire_file_are_documented() -> None:
@@ -147,11 +174,34 @@ def test_all_keys_of_the_wire_file_are_documented() -> None:
 
 
 def test_script_of_the_readme_runs(tmp_path: Path) -> None:
-    (block,) = code_blocks("python")
+    block = code_blocks("python")[0]
     run = subprocess.run([sys.executable, "-W", "error", "-c", block], cwd=tmp_path, capture_output=True, text=True)
     assert run.returncode == 0, run.stderr
     assert run.stdout.strip()
     assert (tmp_path / "results" / "from_python" / "result.json").is_file()
+
+
+def test_sweep_of_the_readme_runs(tmp_path: Path) -> None:
+    _, block = code_blocks("python")
+    *_, wrap, _ = code_blocks("toml")
+    # Three points in place of nine, and coarser: it has to run, not to be good.
+    short = (
+        wrap.replace("count = 9", "count = 3").replace('"0.5 meV"', '"5 meV"').replace("subbands = 6", "subbands = 2")
+    )
+    assert short != wrap
+    (tmp_path / "wire.toml").write_text(short, encoding="utf-8")
+    run = subprocess.run([sys.executable, "-W", "error", "-c", block], cwd=tmp_path, capture_output=True, text=True)
+    assert run.returncode == 0, run.stderr
+    assert len(run.stdout.splitlines()) >= 1
+    reference = README.partition("### What comes out of it")[2].partition("\n## ")[0]
+    for file in ("gate_curve.csv", "transistor.csv"):
+        lines = (tmp_path / "results" / "curve" / file).read_text(encoding="utf-8").splitlines()
+        head = next(line for line in lines if not line.startswith("#"))
+        columns = [
+            column.replace("_wrap_", "_NAME_") for column in head.split(",") if not re.search(r"_2(_|$)", column)
+        ]
+        assert "gate_voltage_V" in columns
+        assert [name for name in columns if f"`{name}`" not in reference] == []
 
 
 def test_pins_cover_the_dependencies() -> None:

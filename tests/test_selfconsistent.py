@@ -121,11 +121,12 @@ def test_start_does_not_matter() -> None:
 
 @pytest.mark.parametrize(("temperature", "voltage"), [(77.0, 0.3), (4.2, 0.45), (4.2, 0.035)])
 def test_capacitance_is_the_slope_of_the_carriers(temperature: float, voltage: float) -> None:
-    points = around(round_wire(temperature), voltage, 0.1 * KB * temperature)
-    slope = fourth_order({n: p.occupied.total_per_nm for n, p in points.items()}, 0.1 * KB * temperature)
+    step = 0.05 * KB * temperature
+    points = around(round_wire(temperature), voltage, step)
+    slope = fourth_order({n: p.occupied.total_per_nm for n, p in points.items()}, step)
     found = response(points[0], GATE)
     assert found.carriers_per_V_nm == pytest.approx(slope, rel=1e-6)
-    on_gate = fourth_order({n: p.charges_per_nm()[GATE] for n, p in points.items()}, 0.1 * KB * temperature)
+    on_gate = fourth_order({n: p.charges_per_nm()[GATE] for n, p in points.items()}, step)
     assert found.charges_per_V_nm[GATE] == pytest.approx(on_gate, rel=1e-6)
     assert found.charges_per_V_nm[GATE] == pytest.approx(found.carriers_per_V_nm, rel=1e-7)
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
+from wiresolve.describe import drawing
 from wiresolve.describe.doping import PARTIAL, Doping
 from wiresolve.describe.gates import Gate, Slab, Surroundings, Touch
 from wiresolve.describe.problem import Problem
@@ -31,8 +32,27 @@ def rows(problem: Problem) -> Rows:
             found.append((f"surfaces[{k}]", f"{_touches(surface.touches)}, {_nm(face.length_nm)} long, {what}"))
         if problem.surroundings is not None:
             found += _surroundings(problem.surroundings, drawn, problem)
+        if fixed := _fixed(problem, drawn):
+            found.append(("fixed_charge", fixed))
         found.append(("carriers.interaction", problem.carriers.interaction))
     return found + _operation(problem)
+
+
+def _fixed(problem: Problem, drawn: Setting) -> str:
+    """The charge of dopants and surfaces for each nm of wire, and what balances it; empty without any."""
+    section, areas = problem.section, drawing.visible_areas(problem.section)
+    charge = sum(section.doping_of(name).net_per_nm3 * area for name, area in areas.items())
+    lines = zip(problem.surfaces, drawn.surfaces, strict=True)
+    charge += sum((surface.charge_per_nm2 or 0.0) * face.length_nm for surface, face in lines)
+    parts = [section.doping_of(name) for name in areas]
+    if charge == 0 and not any(part.any for part in parts):
+        return ""
+    text = f"{charge:+.6g} e/nm"
+    if any(part.ionisation == PARTIAL for part in parts):
+        text += " if all dopants are charged"
+    if not drawn.gates and all(surface.pinned_at_eV is None for surface in problem.surfaces):
+        text += "; no gate and no pinned surface, so that carriers balance it"
+    return text
 
 
 def doped(doping: Doping) -> str:
@@ -47,16 +67,19 @@ def doped(doping: Doping) -> str:
 
 
 def _gate(problem: Problem, gate: Gate, face: Boundary) -> str:
-    words = [f"'{gate.name}'", f"on {_touches(gate.touches)}" if gate.touches else "at the end of the surroundings"]
+    given = problem.surroundings
+    end = "below" if given is not None and gate.name == given.below_gate else "above"
+    words = [f"'{gate.name}'", f"on {_touches(gate.touches)}" if gate.touches else f"at the end of what lies {end}"]
     if (between := gate.insulator) is not None:
         carriers = ", carriers admitted" if between.carriers == ADMITTED else ""
         words.append(f"around {_nm(between.thickness_nm)} of {between.material}{carriers}")
-    words.append(f"{_nm(face.length_nm)} long")
-    lineup = f"lines up at {_volt(problem.lineup_V(gate))}"
-    words.append(
-        lineup if gate.work_function_eV is None else f"{lineup} (work function {_energy(gate.work_function_eV)})"
-    )
-    return ", ".join([*words, f"at {_volt(gate.voltage_V)}"])
+    if gate.touches:
+        words.append(f"{_nm(face.length_nm)} long")
+    lineup = f"line-up voltage {_volt(problem.lineup_V(gate))}"
+    if gate.work_function_eV is not None:
+        lineup += f" (work function {gate.work_function_eV:.6g} eV)"
+    swept = problem.voltages is not None and problem.voltages.gate == gate.name
+    return ", ".join([*words, lineup, f"voltage {_volt(gate.voltage_V)}{' outside of its sweep' if swept else ''}"])
 
 
 def _surroundings(given: Surroundings, drawn: Setting, problem: Problem) -> Rows:
@@ -68,7 +91,8 @@ def _surroundings(given: Surroundings, drawn: Setting, problem: Problem) -> Rows
     found.append(("surroundings.beside", str(given.beside)))
     if drawn.box is not None:
         (x0, y0), (x1, y1) = drawn.box
-        found.append(("surroundings.size", f"{_nm(x1 - x0)} wide, {_nm(y1 - y0)} high"))
+        size = f"{_nm(x1 - x0)} wide, {_nm(y1 - y0)} high"
+        found.append(("surroundings.size", f"{size}, far enough to be endless"))
     return found
 
 

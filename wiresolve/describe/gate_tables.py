@@ -15,6 +15,10 @@ from wiresolve.units import parse_quantity
 DOPING_KEYS = ("donors", "acceptors", "ionisation", "donor_depth", "acceptor_depth")
 DEVICE_KEYS = ("gates", "surfaces", "surroundings", "voltages", "transport")
 GATE_KEYS = ("name", "touches", "insulator", "lineup_voltage", "work_function", "voltage")
+SURFACE_KEYS = ("touches", "pinned_at", "charge_density")
+SURROUNDINGS_KEYS = ("below", "above", "beside")
+VOLTAGES_KEYS = ("gate", "from", "to", "count", "drain")
+TRANSPORT_KEYS = ("length", "mean_free_path", "transmission", "saddle", "contact_resistance")
 _TOUCHES = 'write e.g. touches = "rim", or a list of edges'
 
 
@@ -89,7 +93,7 @@ def _gate(table: Table) -> Gate:
 
 
 def _surface(table: Table) -> Surface:
-    table.only(("touches", "pinned_at", "charge_density"))
+    table.only(SURFACE_KEYS)
     touches = _touches(table)
     pinned = table.optional_quantity("pinned_at", "energy")
     charge = table.optional_quantity("charge_density", "sheet density")
@@ -97,7 +101,7 @@ def _surface(table: Table) -> Surface:
 
 
 def _surroundings(table: Table) -> Surroundings:
-    table.only(("below", "above", "beside"))
+    table.only(SURROUNDINGS_KEYS)
     values: dict[str, Any] = {}
     for side in ("below", "above"):
         slabs, gate = _stack(table, side)
@@ -135,7 +139,7 @@ def _stack(table: Table, side: str) -> tuple[tuple[Slab, ...], str | None]:
 
 
 def _voltages(table: Table, gates: list[str]) -> Voltages:
-    table.only(("gate", "from", "to", "count", "drain"))
+    table.only(VOLTAGES_KEYS)
     if "gate" in table or len(gates) > 1:
         gate = table.text("gate", f'"{gates[0]}"' if gates else '"wrap"')
     elif gates:
@@ -154,7 +158,7 @@ def _voltages(table: Table, gates: list[str]) -> Voltages:
 
 
 def _transport(table: Table) -> Transport:
-    table.only(("length", "mean_free_path", "transmission", "saddle", "contact_resistance"))
+    table.only(TRANSPORT_KEYS)
     if not table.data:
         raise InputError(table.path, "is empty", remedy='write e.g. contact_resistance = "500 ohm", or take it out')
     values: dict[str, Any] = {

@@ -69,7 +69,8 @@ def charge(result: Result) -> Figure:
         _Panel("Potential energy of electrons", "meV from the Fermi level", energy, *_ends(energy), _DEEP),
         _Panel("Density of carriers", "10$^{18}$ cm$^{-3}$", density, 0.0, _ends(density)[1], _DENSE),
     )
-    notes = [f"Band edge of the {short_valleys(valleys)} valleys" if len(members(valleys)[1]) else "Band edge"]
+    named = f" of the {short_valleys(valleys)} valleys" if len(members(valleys)[1]) else ""
+    notes = [f"Potential energy is the band edge{named} less the potential"]
     below, above = 28.0, 7.0
     height = above + high + below
     figure, rect = canvas(PAGE_MM, height)

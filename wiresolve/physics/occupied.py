@@ -42,7 +42,7 @@ _WIDEST_TABLE = 2000.0
 _REFERENCES = (0.2, 0.9)
 """Shares of the wanted states at whose energies a growing mass is taken for first states."""
 _FIRST = 1e-4
-_SLOW = 3
+_SLOW = 6
 """States that took more steps than this get a factor of the operator they are in."""
 _BELOW_eV = 1e-4
 _BENT = 6.0
