@@ -13,7 +13,6 @@ from pathlib import Path
 import numpy as np
 from matplotlib.figure import Figure
 from scipy.constants import e, epsilon_0, k
-from scipy.interpolate import PchipInterpolator
 from scipy.special import expit
 
 import wiresolve as ws
@@ -43,10 +42,11 @@ def main(picture: str | None = None) -> tuple[ws.GateCurve, np.ndarray, tuple[fl
         figure = Figure(figsize=(5.5, 3.8), dpi=150, layout="constrained")
         axes = figure.subplots()
         voltage = [point.gate_voltage_V for point in curve.points]
-        fine = np.linspace(voltage[0], voltage[-1], 1001)
-        levels = PchipInterpolator(voltage, [point.energy_eV for point in curve.points])(fine)
-        axes.plot(fine, expit(-levels / thermal_eV).sum(axis=1), color="#8c8c8c", lw=1, label="sum over its levels")
-        axes.plot(voltage, found, "o", ms=3, color="#0072B2", label="wiresolve")
+        opened = [step for step in curve.steps if np.isfinite(step.opens_at_V)]
+        at, height = [voltage[0], *(s.opens_at_V for s in opened), voltage[-1]], [0, *(s.plateau_G0 for s in opened)]
+        axes.step(at, [*height, height[-1]], where="post", color="#b0b0b0", lw=1, label="where levels open")
+        axes.plot(voltage, found, "o", ms=4, color="#0072B2", label="wiresolve, 4.2 K")
+        axes.plot(voltage, landauer, ".", ms=3, color="#262626", label="sum over its levels")
         axes.set(xlim=(voltage[0], voltage[-1]), ylim=(0, None), xlabel="Voltage of the back gate (V)")
         axes.set(ylabel="Conductance ($G_0 = 2e^2/h$)", title=f"InAs hexagon at {curve.temperature_K:g} K")
         axes.grid(axis="y", color="#e4e4e4")

@@ -32,13 +32,13 @@ class OpenStep:
     coupling: float
     error_eV: float
 
-    def at(self, voltage_V: float, coupling: float, rest_eV: float, kelvin: float) -> OpenStep:
+    def at(self, voltage_V: float, coupling: float, rest_eV: float) -> OpenStep:
         """The same at a voltage where its level is within `rest_eV` of the Fermi level."""
         step = replace(
             self.step,
             opens_at_V=voltage_V,
             error_V=(self.error_eV + rest_eV) / coupling,
-            width_V=THERMAL_WIDTH_KT * KB * kelvin / coupling,
+            width_V=self.step.width_V * self.coupling / coupling,
         )
         return replace(self, step=step, coupling=coupling)
 
@@ -56,7 +56,10 @@ def steps_of(problem: Problem, points: Sequence[GatePoint]) -> tuple[OpenStep, .
     degeneracy, valley = rows[-1].degeneracy, rows[-1].valley
     order = np.argsort(np.where(np.isfinite(found.voltage_V), found.voltage_V, np.inf), kind="stable")
     steps: list[OpenStep] = []
-    plateau, members = 0.0, list[int]()
+    # What is open where the sweep begins keeps its place in the count.
+    open_before = rows[0].energy_eV < 0
+    before = len(np.unique(rows[0].level[open_before]))
+    plateau, members = float(rows[0].degeneracy[open_before].sum()) / 2, list[int]()
     for place, n in enumerate(order):
         members.append(int(n))
         following = order[place + 1] if place + 1 < len(order) else None
@@ -68,18 +71,25 @@ def steps_of(problem: Problem, points: Sequence[GatePoint]) -> tuple[OpenStep, .
         plateau += height
         first = members[0]
         step = GateStep(
-            level=len(steps) + 1,
+            level=before + len(steps) + 1,
             valley=valley[first],
             opens_at_V=float(np.mean(found.voltage_V[members])),
             error_V=float(np.max(found.error_V[members])),
             height_G0=height,
             plateau_G0=plateau,
-            width_V=float(found.width_V[first]),
+            width_V=_width_eV(problem) / float(found.coupling[first]),
         )
         bar = float(found.error_V[first] * found.coupling[first])
         steps.append(OpenStep(step, min(members), float(found.coupling[first]), bar))
         members = []
     return tuple(steps)
+
+
+def _width_eV(problem: Problem) -> float:
+    """Full width at half height of dG/dE: 3.53 kT, and 0.561 hbar omega of a saddle, their squares added."""
+    thermal = THERMAL_WIDTH_KT * KB * problem.carriers.temperature_K[0]
+    curvature = None if problem.transport is None else problem.transport.saddle_curvature_eV
+    return float(np.hypot(thermal, 2 * np.arccosh(np.sqrt(2)) / np.pi * (curvature or 0.0)))
 
 
 def _together(voltage: Array, error: Array, one: int, other: int) -> bool:
@@ -138,9 +148,13 @@ def _opening(problem: Problem, rows: Sequence[GatePoint], steps: Sequence[OpenSt
         text = f"Design estimate: {span}, {len(steps)} steps open, the first {len(some)} at {opened}"
     heights = _listed([f"{s.height_G0:.3g}" for s in some])
     text += f", of {heights} G0"
-    if kelvin > 0:
-        text += f", each {1e3 * some[0].width_V:.3g} mV wide at {kelvin:g} K"
-        text += f" ({THERMAL_WIDTH_KT:.2f} kT = {1e3 * THERMAL_WIDTH_KT * KB * kelvin:.3g} meV over the coupling)"
+    width = _width_eV(problem)
+    if width > 0:
+        each = "" if len(some) == 1 else "the first "
+        text += f", {each}{1e3 * some[0].width_V:.3g} mV wide at {kelvin:g} K ({1e3 * width:.3g} meV over the coupling)"
+    already = len(np.unique(first.level[first.energy_eV < 0]))
+    if already:
+        text += f"; {_counted(already, 'level')} {'is' if already == 1 else 'are'} open where the sweep begins"
     return text + "."
 
 
@@ -174,7 +188,7 @@ def _rests_on(problem: Problem) -> str:
     scale = "the work function and the affinity" if work else "the line-up voltage"
     text = f"All voltages rest on {scale} given and on an insulator without charge of its own"
     transport = problem.transport
-    if transport is None or (transport.mean_free_path_nm is None and transport.transmission is None):
+    if transport is None or transport.is_open:
         text += ", step heights and currents on contacts and a channel that scatter nothing"
     return text + "."
 

@@ -12,15 +12,17 @@ import numpy as np
 from wiresolve.describe.dimensions import dimensions
 from wiresolve.describe.mesh_shape import ImportedMesh
 from wiresolve.describe.problem import Problem
-from wiresolve.errors import WiresolveError
+from wiresolve.errors import ConvergenceError, WiresolveError
 from wiresolve.gate_result import GateStep
-from wiresolve.physics.charged_subbands import certify_charged
+from wiresolve.physics.charged_subbands import ChargedSubbands, certify_charged
 from wiresolve.physics.charged_wire import ChargedWire
+from wiresolve.physics.selfconsistent import balance
 from wiresolve.physics.wire import Wire
 
 MOST_STEPS, MOST_DIMENSIONS = 3, 3
 SMALL_nm = 5.0
 """Dimensions below this are varied by a tenth of a nanometre in all, others by half of one."""
+_MOST_SECANTS, _CLOSE_eV = 6, 2e-6
 _COARSER = 5.0
 """How much less exact than the sweep these solves may be: their errors are alike on both sides and cancel."""
 
@@ -41,8 +43,8 @@ def step_motions(
 ) -> tuple[Motion, ...]:
     """The motion of up to three steps with up to three dimensions: two of the section, and the swept gate's insulator.
 
-    A step at V of a subband that falls by `coupling` eV a volt moves by (dE/dlength) / coupling, dE/dlength being the
-    difference of two solves at V, the length a quarter of a nanometre (of small ones a twentieth) longer and shorter.
+    Each step is solved for on two other wires, the length a quarter of a nanometre (of small ones a twentieth) longer
+    and shorter; half a nanometre is no differential where levels feel their own charge.
 
     Parameters
     ----------
@@ -61,17 +63,38 @@ def step_motions(
         if on_progress is not None:
             on_progress("fabrication error", number / len(lengths), path)
         off = 0.25 if value >= SMALL_nm else 0.05
-        energies = []
+        opened = []
         try:
             for sign in (1, -1):
                 wire = ChargedWire(Wire(change(value + sign * off)))
                 solved = certify_charged(wire, volts, wanted, accuracy)
-                energies.append([float(s.certified.energy_eV[n]) for s, (_, n, _) in zip(solved, some, strict=True)])
+                opened.append([_opens(wire, s, gate, *of) for s, of in zip(solved, some, strict=True)])
         except WiresolveError:
             continue  # the changed section cannot be drawn or solved: nothing is said of this dimension
-        rise = (np.array(energies[0]) - np.array(energies[1])) / (2 * off)
-        found.append(Motion(path, value, tuple(float(r / c) for r, (_, _, c) in zip(rise, some, strict=True))))
+        rise = (np.array(opened[0]) - np.array(opened[1])) / (2 * off)
+        found.append(Motion(path, value, tuple(float(r) for r in rise)))
     return tuple(found)
+
+
+def _opens(
+    wire: ChargedWire, solved: ChargedSubbands, gate: str, step: GateStep, subband: int, coupling: float
+) -> float:
+    """The voltage at which a subband meets the Fermi level on another wire, by secants."""
+    balanced, voltage = solved.balanced, step.opens_at_V
+    known = [(voltage, float(solved.certified.energy_eV[subband]))]
+    for _ in range(_MOST_SECANTS):
+        at, energy = known[-1]
+        if abs(energy) <= _CLOSE_eV:
+            break
+        if len(known) > 1 and known[-1][1] != known[-2][1]:
+            coupling = (known[-2][1] - energy) / (at - known[-2][0])
+        if not coupling > 0:
+            raise ConvergenceError("a level does not fall with the gate's voltage")
+        voltage = at + energy / coupling
+        held = solved.meshes.field.held_values(wire.gate_V({gate: voltage}))
+        balanced = balance(balanced.stage, held, balanced)
+        known.append((voltage, float(np.sort(balanced.occupied.energy_eV)[subband])))
+    return known[-1][0]
 
 
 def _lengths(problem: Problem) -> list[tuple[str, float, Callable[[float], Problem]]]:

@@ -71,7 +71,7 @@ class WireSweep:
         assert voltages is not None
         first, last = voltages.from_V, voltages.to_V
         # One end may be beyond what can be solved: the mesh is then made for what can.
-        for some in ((first, last), (first,), (last,), ((first + last) / 2,)):
+        for some in ((first, last, (first + last) / 2), (first,), (last,), ((first + last) / 2,)):
             try:
                 ends = [{voltages.gate: v} for v in some]
                 return certify_charged(self.charged, ends, accuracy.subbands, accuracy.energy_eV, self.on_progress)
@@ -146,7 +146,7 @@ class WireSweep:
         problem, balanced = self.problem, solved.balanced
         kelvin, occupied = problem.carriers.temperature_K[0], solved.balanced.occupied
         rows = listed_rows(solved)
-        answer = answered(balanced, rows.states, rows.level, self._swept)
+        answer = answered(balanced, rows.density_per_nm2, rows.level, self._swept)
         quantum = float(occupied.density_slope_per_eV_nm.sum())
         series = parts(answer.carriers_per_V_nm, self.geometric_per_V_nm, quantum)
         order = np.argsort(occupied.energy_eV, kind="stable")
@@ -242,7 +242,7 @@ class WireSweep:
                 voltage = following if low[0] < following < high[0] else (low[0] + high[0]) / 2
         except (ConvergenceError, IndexError):
             return one
-        return one.at(known[-1][0], max(coupling, 1e-12), rest, self.problem.carriers.temperature_K[0])
+        return one.at(known[-1][0], max(coupling, 1e-12), rest)
 
     def _held(self, voltage: float) -> Array:
         """The held potentials at a voltage of the swept gate."""
@@ -262,11 +262,19 @@ class WireSweep:
             device = self.device(point)
             drains = np.array(self._drains)
             run = device.at(0.0, drains)
+            # What the carriers hold back of each volt: their density of states beside the capacitance.
+            left = 1 / (1 + device.density_slope(run.level_shift_eV, drains) / device.capacitance_per_V_nm)
+            rows = zip(drains, run.current_A, run.line_density_per_nm, left, strict=True)
             found += [
                 TransistorPoint(
-                    point.gate_voltage_V, float(v), float(i), float(n), device.gate_coupling, device.drain_coupling
+                    point.gate_voltage_V,
+                    float(v),
+                    float(i),
+                    float(n),
+                    float(device.gate_coupling * part),
+                    float(device.drain_coupling * part),
                 )
-                for v, i, n in zip(drains, run.current_A, run.line_density_per_nm, strict=True)
+                for v, i, n, part in rows
             ]
         return tuple(found)
 
@@ -278,7 +286,9 @@ class WireSweep:
     def device(self, point: GatePoint) -> Transistor:
         """The channel as a transistor whose gate voltage counts from a point's."""
         rows = Rows(point.filled_energy_eV, point.filled_axial_mass, point.filled_degeneracy, point.filled_alpha_per_eV)
+        # Half-way the source holds as much as the drain, and of gate and charge what is left.
         empty = point.more["empty_coupling"]
+        rest = 1 - 2 * self.drain_coupling
         total = float(per_V_nm(point.capacitance_F_per_m))
         # dU/dV = -empty + (dn/dV)/C at each point: what of the coupling is lost to charge tells the capacitance.
         capacitance = self.geometric_per_V_nm / max(empty, _EMPTY)
@@ -288,7 +298,8 @@ class WireSweep:
         # A saddle's tunnelling belongs to a constriction, not to the top of a long barrier.
         kind = self.transmission if self.transmission.width_eV == 0 else Open()
         kelvin = self.problem.carriers.temperature_K[0]
-        return Transistor(rows, kind, kelvin, empty, self.drain_coupling, capacitance, point.line_density_per_nm)
+        held = point.line_density_per_nm
+        return Transistor(rows, kind, kelvin, rest * empty, self.drain_coupling, capacitance / rest, held)
 
     @cached_property
     def drain_coupling(self) -> float:

@@ -16,7 +16,8 @@ from wiresolve.fem.space import Space
 Array = NDArray[np.float64]
 
 _NEWTON = 12
-_CANDIDATES = 6
+_FEW, _MANY = 4, 32
+"""Cells looked at for a point: the nearest few, and more where it lies in none of them."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -55,24 +56,36 @@ class NodalFunction:
     def __call__(self, x: Array, y: Array) -> Array:
         """Values at any points; outside the mesh those of the nearest cell, at its nearest edge."""
         points = np.column_stack([np.ravel(x), np.ravel(y)])
-        element = triangle(self.mesh.degree)
         found, worst = np.zeros(len(points)), np.full(len(points), np.inf)
-        _, near = self._tree.query(points, k=min(_CANDIDATES, len(self.mesh.cells)))
-        for cell in near.reshape(len(points), min(_CANDIDATES, len(self.mesh.cells))).T:
-            open_ = np.flatnonzero(worst > 1e-9)
+        for count in (_FEW, _MANY):
+            left = np.flatnonzero(worst > 1e-9)
+            if not len(left):
+                break
+            most = min(count, len(self.mesh.cells))
+            _, near = self._tree.query(points[left], k=most)
+            self._look(points, near.reshape(len(left), most), left, found, worst)
+        return found.reshape(np.shape(x))
+
+    def _look(
+        self, points: Array, near: NDArray[np.int64], left: NDArray[np.int64], found: Array, worst: Array
+    ) -> None:
+        """Fill in values of the points `left` from the cells `near` each, where they lie less far outside."""
+        element = triangle(self.mesh.degree)
+        for column in near.T:
+            still = worst[left] > 1e-9
+            open_, cell = left[still], column[still]
             if not len(open_):
                 break
-            nodes = self.mesh.points[self.mesh.cells[cell[open_]]]
-            at = _place(nodes, points[open_], self.mesh.degree, ~self._straight[cell[open_]])
+            nodes = self.mesh.points[self.mesh.cells[cell]]
+            at = _place(nodes, points[open_], self.mesh.degree, ~self._straight[cell])
             outside = np.maximum(-np.minimum(at.min(axis=1), 1 - at.sum(axis=1)), 0.0)
             better = outside < worst[open_]
             some = open_[better]
             inside = np.clip(at[better], 0.0, 1.0)
             inside /= np.maximum(inside.sum(axis=1, keepdims=True), 1.0)
             shapes = element.values(inside)
-            found[some] = np.einsum("pn,pn->p", shapes, self.values[self.mesh.cells[cell[some]]])
+            found[some] = np.einsum("pn,pn->p", shapes, self.values[self.mesh.cells[cell[better]]])
             worst[some] = outside[better]
-        return found.reshape(np.shape(x))
 
     @cached_property
     def _straight(self) -> NDArray[np.bool_]:

@@ -16,6 +16,7 @@ Array = NDArray[np.float64]
 QUANTUM_LIMITED_BELOW = 1.0
 """C_quantum / C_geometric below which more than half of a change of the gate voltage moves the levels, and less than
 half of it falls over the insulator: that is what the limit is named for."""
+_EMPTY = 1e-9
 DEEPLY_LIMITED_BELOW = 0.1
 """Below, ten parts of eleven move the levels: the gate voltage reads as an energy scale within a tenth."""
 
@@ -65,7 +66,8 @@ def parts(total_per_V_nm: ArrayLike, geometric_per_V_nm: ArrayLike, quantum_per_
     total, geometric, quantum = np.broadcast_arrays(
         *(np.asarray(c, dtype=float) for c in (total_per_V_nm, geometric_per_V_nm, quantum_per_V_nm))
     )
-    empty = (total == 0) | (quantum == 0)
+    # In an empty wire what is left of two nearly equal numbers is rounding.
+    empty = (total == 0) | (quantum <= _EMPTY * geometric)
     with np.errstate(divide="ignore", invalid="ignore"):
         centroid = 1 / (1 / total - 1 / geometric - 1 / quantum)
     return CapacitanceParts(total, geometric, quantum, np.where(empty, np.nan, centroid))

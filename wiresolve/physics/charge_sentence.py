@@ -13,6 +13,8 @@ from wiresolve.physics.wire import Wire
 
 Array = NDArray[np.float64]
 
+FEWEST_PER_NM = 1e-9
+"""Fewer than one carrier in a metre is none."""
 NEAR = 0.3
 """A place is near a corner, or a face, within this part of the section's inner radius."""
 
@@ -20,8 +22,8 @@ NEAR = 0.3
 def charge_sentence(balanced: Balanced, wire: Wire) -> str:
     """How many carriers there are and where they are, in a sentence or two."""
     total = balanced.occupied.total_per_nm
-    if total <= 0:
-        return "The wire holds no carriers at these voltages."
+    if total < FEWEST_PER_NM:
+        return "The wire is pinched off: it holds no carriers at these voltages."
     shown = f"{total * 1e7:.3g} per cm"
     return f"It holds {shown} ({total:.3g} per nm), {where(balanced, wire)}.{_limit(balanced, wire)}"
 
@@ -38,50 +40,56 @@ def _limit(balanced: Balanced, wire: Wire) -> str:
 
 
 def where(balanced: Balanced, wire: Wire) -> str:
-    """Where the carriers are: "mostly in the middle", "along the faces" or "in the corners", by their densities.
+    """Where the carriers are: densest in the middle, along the faces or in the corners of the part that holds most.
 
-    The mean densities of three parts of the carriers' area are compared: near corners of its outline, near its faces
-    (both within `NEAR` of the inner radius), and the rest.
+    Mean densities of three parts of it are compared: near corners of its outline, near its faces (both within `NEAR` of
+    its inner radius), and the rest.
     """
-    share, area = shares(balanced, wire)
-    known = {name: share[name] / area[name] for name in share if area[name] > 0}
-    most = max(known, key=lambda name: known[name])
+    name, share, area = shares(balanced, wire)
+    known = {kind: share[kind] / area[kind] for kind in share if area[kind] > 0}
+    most = max(known, key=lambda kind: known[kind])
     words = {"middle": "densest in the middle", "faces": "densest along the faces", "corners": "densest in the corners"}
-    parts = ", ".join(f"{100 * share[name]:.0f} % {at}" for name, at in _PLACES if area[name] > 0)
-    return f"{words[most]} ({parts})"
+    parts = ", ".join(f"{100 * share[kind]:.0f} % {at}" for kind, at in _PLACES if area[kind] > 0)
+    several = sum(region.carriers for region in balanced.stage.carriers.space.mesh.regions) > 1
+    return f"{words[most]}{f' of {name}' if several else ''} ({parts})"
 
 
 _PLACES = (("middle", "in the middle"), ("faces", "near faces"), ("corners", "near corners"))
 
 
-def shares(balanced: Balanced, wire: Wire) -> tuple[dict[str, float], dict[str, float]]:
-    """The carriers' shares in the middle, near faces and near corners, and the shares of the area."""
-    space = balanced.stage.carriers.space
-    weights, points = space.quadrature_weights, space.quadrature_points
-    density = balanced.occupied.carriers_per_nm3
-    walls = space.mesh.points[space.nodes[space.wall]]
+def shares(balanced: Balanced, wire: Wire) -> tuple[str, dict[str, float], dict[str, float]]:
+    """The region that holds most carriers; its carriers' shares in the middle, near faces and near corners; and the
+    same of its area."""
     from scipy.spatial import cKDTree
 
-    depth, _ = cKDTree(walls).query(points.reshape(-1, 2))
-    inner = float(depth.max())
-    corners = _corners(wire)
-    near_face = depth.reshape(weights.shape) < NEAR * inner
+    space = balanced.stage.carriers.space
+    region, held = space.mesh.region[space.cells], space.quadrature_weights * balanced.occupied.carriers_per_nm3
+    number = int(np.argmax(np.bincount(region, held.sum(axis=1), minlength=len(space.mesh.regions))))
+    name, inside = space.mesh.regions[number].name, region == number
+    on_edge = np.zeros(len(space.nodes), dtype=bool)
+    on_edge[np.intersect1d(space.dofs[inside], space.dofs[~inside])] = True
+    on_edge[np.intersect1d(space.dofs[inside], np.flatnonzero(space.wall))] = True
+    points, weights = space.quadrature_points[inside], space.quadrature_weights[inside]
+    depth, _ = cKDTree(space.mesh.points[space.nodes[on_edge]]).query(points.reshape(-1, 2))
+    near = NEAR * float(depth.max())
+    near_face = depth.reshape(weights.shape) < near
     near_corner = np.zeros(weights.shape, dtype=bool)
+    corners = _corners(wire, name)
     if len(corners):
         away, _ = cKDTree(corners).query(points.reshape(-1, 2))
-        near_corner = away.reshape(weights.shape) < 2 * NEAR * inner
+        near_corner = away.reshape(weights.shape) < np.sqrt(2) * near
     kinds = {"corners": near_corner, "faces": near_face & ~near_corner, "middle": ~near_face & ~near_corner}
-    held, all_of = float((weights * density).sum()), float(weights.sum())
-    share = {name: float((weights * density)[here].sum()) / held for name, here in kinds.items()}
-    return share, {name: float(weights[here].sum()) / all_of for name, here in kinds.items()}
+    total, whole = float(held[inside].sum()), float(weights.sum())
+    share = {kind: float(held[inside][here].sum()) / total for kind, here in kinds.items()}
+    return name, share, {kind: float(weights[here].sum()) / whole for kind, here in kinds.items()}
 
 
-def _corners(wire: Wire) -> Array:
-    """(n, 2) corners of the outlines of all pieces that admit carriers, with less than 150 degrees inside."""
+def _corners(wire: Wire, name: str) -> Array:
+    """(n, 2) corners of the outline of a piece with less than 150 degrees inside."""
     found = [
         point
         for piece in wire.inner
-        if piece.carriers
+        if piece.name == name
         for point, angle in Loop(piece.loop.segments).corners()
         if angle < np.radians(150)
     ]

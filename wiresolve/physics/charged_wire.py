@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from wiresolve.describe.doping import PARTIAL
 from wiresolve.describe.problem import LOCAL_DENSITY
 from wiresolve.describe.setting import Setting
-from wiresolve.errors import MeshError
+from wiresolve.errors import InputError, MeshError
 from wiresolve.fem.corners import Corner
 from wiresolve.fem.field_corners import field_corners
 from wiresolve.fem.mesh import Mesh
@@ -103,13 +103,20 @@ class ChargedWire:
         return tuple(found.values())
 
     def _edge_beside(self, mesh: Mesh, edges: NamedEdges) -> Array:
-        """(e,) the lowest band edge on the carriers' side of edges."""
-        by_region = np.array(
-            [self.wire.edge_eV(r.material, r.offset_eV) if r.carriers else np.inf for r in mesh.regions]
-        )
-        sides = np.where(edges.cells >= 0, by_region[mesh.region[np.maximum(edges.cells, 0)]], np.inf)
-        lowest = sides.min(axis=1)
-        return np.asarray(np.where(np.isfinite(lowest), lowest, 0.0))
+        """(e,) the band edge beside edges: the lowest of what admits carriers there, else that of the section's layer."""
+        regions, section = mesh.regions, self.wire.problem.section
+        own = {piece.name for piece in section.pieces()}
+        known = [r.name in own and self.wire.materials[r.material].conduction_edge_eV is not None for r in regions]
+        edge = [self.wire.edge_eV(r.material, r.offset_eV) for r in regions]
+        admitted = np.array([e if r.carriers else np.inf for e, r in zip(edge, regions, strict=True)])
+        drawn = np.array([e if k else np.inf for e, k in zip(edge, known, strict=True)])
+        there = mesh.region[np.maximum(edges.cells, 0)]
+        lowest, other = (np.where(edges.cells >= 0, e[there], np.inf).min(axis=1) for e in (admitted, drawn))
+        found = np.where(np.isfinite(lowest), lowest, other)
+        if not np.isfinite(found).all():
+            rule = "is the band edge of a material that has none"
+            raise InputError("surfaces.pinned_at", rule, remedy="give that material a conduction_edge")
+        return np.asarray(found)
 
     def stage(self, mesh: Mesh, poisson: Field | None = None) -> Stage:
         """A mesh with all that charge needs."""

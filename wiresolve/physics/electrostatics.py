@@ -194,7 +194,9 @@ class Field:
         load (fixed charge included by the caller) cancel to rounding where the equation holds at all free points, and
         for no load they are the derivatives of the energy by the voltages.
         """
-        residual = self.stiffness @ phi - load
+        # A constant has no field: without it rounding does not make charge of a high voltage.
+        level = float(phi[self.held].mean()) if len(self.held) else 0.0
+        residual = self.stiffness @ (phi - level) - load
         found, of_gates = {}, np.zeros(len(residual), dtype=bool)
         for name, points in self.gate_points.items():
             found[name] = float(residual[points].sum())

@@ -36,8 +36,8 @@ class Answered:
     carriers_per_V_nm: float
 
 
-def answered(balanced: Balanced, states: NDArray[Any], level: Ints, gate: str) -> Answered:
-    """The answer of listed states (nodes, n), whose clusters are `level` (n,), and of all carriers.
+def answered(balanced: Balanced, density_per_nm2: Array, level: Ints, gate: str) -> Answered:
+    """The answer of listed states, whose densities are (c, q, n) and clusters `level` (n,), and of all carriers.
 
     Where masses grow with energy, or with exchange, it is a fourth-order difference of four balances close by.
     """
@@ -46,21 +46,16 @@ def answered(balanced: Balanced, states: NDArray[Any], level: Ints, gate: str) -
         found = _by_difference(balanced, gate)
     else:
         found = response(balanced, gate)
-    seen = _seen(stage.carriers.space, found.potential, states)
+    seen = _seen(stage.carriers.space, found.potential, density_per_nm2)
     shared = np.array([seen[level == number].mean() for number in level])
-    empty = _seen(stage.carriers.space, _empty(stage, gate), states[:, :1])
+    empty = _seen(stage.carriers.space, _empty(stage, gate), density_per_nm2[:, :, :1])
     return Answered(shared, float(empty[0]), found.carriers_per_V_nm)
 
 
-def _seen(space: Space, potential: Array, states: NDArray[Any]) -> Array:
-    """(n,) mean of a potential (mesh points,) in each state."""
-    here = potential[space.nodes]
-    values = space.tabulated[1][2]
-    at = here[space.dofs] @ values.T
-    psi = np.einsum("qa,cam->cqm", values, states[space.dofs])
-    weights = space.quadrature_weights
-    total = np.einsum("cq,cqm->m", weights, np.abs(psi) ** 2)
-    return np.asarray(np.einsum("cq,cqm->m", weights * at, np.abs(psi) ** 2) / total)
+def _seen(space: Space, potential: Array, density_per_nm2: Array) -> Array:
+    """(n,) mean of a potential (mesh points,) over densities (c, q, n) of integral 1."""
+    at = potential[space.nodes][space.dofs] @ space.tabulated[1][2].T
+    return np.asarray(np.einsum("cq,cqm->m", space.quadrature_weights * at, density_per_nm2))
 
 
 def _empty(stage: Stage, gate: str) -> Array:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -12,6 +13,8 @@ from wiresolve.physics import modes
 from wiresolve.physics.charged_subbands import ChargedSubbands
 from wiresolve.physics.filling import Filling
 from wiresolve.physics.listing import SPIN
+from wiresolve.physics.state_density import state_density
+from wiresolve.physics.subbands import Certified
 from wiresolve.units import HBAR2_OVER_2M0
 
 Array = NDArray[np.float64]
@@ -20,7 +23,10 @@ Ints = NDArray[np.int64]
 
 @dataclass(frozen=True, eq=False)
 class ListedRows:
-    """(n,) of each listed subband by energy, and (nodes, n) canonical states on the carriers' space."""
+    """(n,) of each listed subband by energy, (nodes, n) canonical states on the carriers' space, and their densities.
+
+    `density_per_nm2` (c, q, n) is theirs at the space's quadrature points, that of folded bands included.
+    """
 
     energy_eV: Array
     error_eV: Array
@@ -30,6 +36,7 @@ class ListedRows:
     level: Ints
     line_density_per_nm: Array
     states: NDArray[Any]
+    density_per_nm2: Array
 
 
 def listed_rows(solved: ChargedSubbands) -> ListedRows:
@@ -62,4 +69,17 @@ def listed_rows(solved: ChargedSubbands) -> ListedRows:
         certified.level,
         held,
         np.column_stack([states[c][:, i] for c, i in certified.entries]),
+        _densities(certified, states),
     )
+
+
+def _densities(certified: Certified, states: Sequence[NDArray[Any]]) -> Array:
+    """(c, q, n) of the listed states."""
+    space = certified.space
+    found = np.empty((*space.quadrature_weights.shape, certified.wanted))
+    for c, solved in enumerate(certified.solved):
+        rows = np.flatnonzero(certified.entries[:, 0] == c)
+        if len(rows):
+            own = certified.entries[rows, 1]
+            found[:, :, rows] = state_density(space, solved.operator, solved.energy_eV[own], states[c][:, own])
+    return found

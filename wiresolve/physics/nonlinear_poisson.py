@@ -28,6 +28,8 @@ Charge = Callable[[Array], tuple[Array, Array]]
 
 _STEPS = 200
 _NOISE = 1e-14
+_STUCK_V, _STUCK = 1e-8, 3
+"""Corrections below so many volts that new factors do not make smaller, so many times, are rounding."""
 _FARTHEST = 1e4
 """Steps are prolonged by no more than this: where J still falls then, it is rounding that makes it fall."""
 _CONTRACTION = 0.15
@@ -190,7 +192,7 @@ class ChargedField:
         free, block = self._reduced
         answer = (self.field.stiffness @ beyond)[free] - block @ beyond[free]
         here = self._at(beyond, charge, answer)
-        factor, factors, last = kept, 0, np.inf
+        factor, factors, last, least, stuck = kept, 0, np.inf, np.inf, 0
         for iteration in range(1, steps + 1):
             fresh = factor is None
             if factor is None:
@@ -203,7 +205,11 @@ class ChargedField:
             if not fresh and not (falls and self._alike(here, step)):
                 factor = None
                 continue
+            if fresh and size <= _STUCK_V:
+                stuck = stuck + 1 if size > 0.5 * least else 0
+                least = min(least, size)
             small = size <= _ROUNDING_V * max(1.0, float(np.abs(here.phi).max())) or self._is_noise(here, step)
+            small = small or stuck >= _STUCK
             if small or (falls and size <= tolerance_V and np.isfinite(last)):
                 here = self._at(here.phi + step, charge, answer)
                 return Solution(self._fulfilled(here.phi, here.load), size, iteration, factors, here.load, factor)

@@ -48,7 +48,10 @@ def transistor_summary(off: Transistor, on: Transistor, drain_V: float, low_drai
     slope = lowering = float("nan")
     if least > 0:
         slope = float(off.subthreshold_slope_mV_per_decade(0.0, drain_V))
-        lowering = off.barrier_lowering_mV_per_V(least, low_drain_V, drain_V)
+        try:
+            lowering = off.barrier_lowering_mV_per_V(least, low_drain_V, drain_V)
+        except InputError:  # that current cannot flow at the low drain voltage at all
+            lowering = float("nan")
     return TransistorSummary(
         on_current_A=most,
         off_current_A=least,
