@@ -33,7 +33,7 @@ def bounds() -> tuple[float, float]:
 
 def main(picture: str | None = None) -> tuple[ws.GateCurve, tuple[float, float]]:
     problem = ws.load(WIRE)
-    curve = ws.gate_curve(replace(problem, voltages=replace(problem.voltages, count=3)))
+    curve = ws.gate_curve(replace(problem, voltages=replace(problem.voltages, count=2)))
     last, (low, high) = curve.points[-1], bounds()
     upright = sum(n for n, name in zip(last.line_density_by_subband_per_nm, last.valley, strict=True) if "001" in name)
     part = upright / last.line_density_per_nm

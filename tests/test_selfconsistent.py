@@ -145,7 +145,7 @@ def test_couplings_are_slopes_of_the_levels() -> None:
     here, step = round_wire(77.0), 0.1 * KB * 77.0
     points = around(here, 0.3, step)
     occupied = points[0].occupied
-    found = answered(points[0], occupied.states[:, :3], np.array([1, 2, 2]), GATE)
+    found = answered(points[0], occupied.density_per_nm2[:, :, :3], np.array([1, 2, 2]), GATE)
     energies = {n: float(p.occupied.energy_eV[0]) for n, p in points.items()}
     assert found.coupling[0] == pytest.approx(-fourth_order(energies, step), rel=1e-6)
     pair = {n: float(p.occupied.energy_eV[1:3].mean()) for n, p in points.items()}
@@ -182,7 +182,7 @@ def test_growing_masses_answer_as_differences_say() -> None:
     step = 0.2 * KB * 300.0
     points = around(here, 0.5, step)
     slope = fourth_order({n: p.occupied.total_per_nm for n, p in points.items()}, step)
-    found = answered(point, point.occupied.states[:, :1], np.array([1]), GATE)
+    found = answered(point, point.occupied.density_per_nm2[:, :, :1], np.array([1]), GATE)
     assert found.carriers_per_V_nm == pytest.approx(slope, rel=1e-5)
     energies = {n: float(p.occupied.energy_eV[0]) for n, p in points.items()}
     assert found.coupling[0] == pytest.approx(-fourth_order(energies, step), rel=1e-4)
@@ -286,5 +286,5 @@ def test_exchange_slope_is_that_of_the_carriers() -> None:
     step = 0.2 * KB * 77.0
     points = {n: here.at({GATE: 0.3 + n * step}, point) for n in (-2, -1, 1, 2)}
     slope = fourth_order({n: p.occupied.total_per_nm for n, p in points.items()}, step)
-    found = answered(point, point.occupied.states[:, :1], np.array([1]), GATE)
+    found = answered(point, point.occupied.density_per_nm2[:, :, :1], np.array([1]), GATE)
     assert found.carriers_per_V_nm == pytest.approx(slope, rel=1e-4)

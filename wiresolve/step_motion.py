@@ -69,7 +69,7 @@ def step_motions(
                 wire = ChargedWire(Wire(change(value + sign * off)))
                 solved = certify_charged(wire, volts, wanted, accuracy)
                 opened.append([_opens(wire, s, gate, *of) for s, of in zip(solved, some, strict=True)])
-        except WiresolveError:
+        except (WiresolveError, IndexError):
             continue  # the changed section cannot be drawn or solved: nothing is said of this dimension
         rise = (np.array(opened[0]) - np.array(opened[1])) / (2 * off)
         found.append(Motion(path, value, tuple(float(r) for r in rise)))

@@ -23,11 +23,11 @@ from wiresolve.physics.charged_wire import ChargedWire
 from wiresolve.physics.gate_answer import answered, channel_capacitance
 from wiresolve.physics.gate_steps import threshold_by_extrapolation_V
 from wiresolve.physics.ladder import spectrum_of
-from wiresolve.physics.listed_rows import listed_rows
+from wiresolve.physics.listed_rows import ListedRows, followed_rows, listed_rows
 from wiresolve.physics.listing import listing
 from wiresolve.physics.remarks import Remarks
 from wiresolve.physics.scale_length import drain_coupling, scale_length_nm
-from wiresolve.physics.selfconsistent import Balanced, balance
+from wiresolve.physics.selfconsistent import Balanced, Stage, balance
 from wiresolve.physics.thermoelectric import thermoelectric
 from wiresolve.physics.transistor import Rows, Transistor
 from wiresolve.physics.transistor_summary import TransistorSummary, transistor_summary
@@ -55,7 +55,6 @@ class WireSweep:
     problem: Problem
     on_progress: Progress | None = None
     _last: tuple[float, Balanced] | None = field(default=None, repr=False)
-    _needs: tuple[int, ...] = field(default=(), repr=False)
     _opened: tuple[OpenStep, ...] | None = field(default=None, repr=False)
     _moved: tuple[Motion, ...] | None = field(default=None, repr=False)
 
@@ -102,7 +101,7 @@ class WireSweep:
     @cached_property
     def geometric_per_V_nm(self) -> float:
         """The swept gate's capacitance to the section as if it were a metal."""
-        return channel_capacitance(self._ends[0].balanced.stage, self._swept)
+        return channel_capacitance(self._stage, self._swept)
 
     @cached_property
     def scale_length_nm(self) -> float:
@@ -113,39 +112,52 @@ class WireSweep:
         mass = poisson.space.matrix({("1", "1"): poisson.permittivity})
         return scale_length_nm(stiffness, mass, poisson.free)
 
+    @cached_property
+    def _stage(self) -> Stage:
+        """The mesh with as many states of each group of valleys as the list takes anywhere, and two more."""
+        stage = self._ends[0].balanced.stage
+        needs = tuple(2 + max(each) for each in zip(*(end.needs for end in self._ends), strict=True))
+        return replace(stage, carriers=replace(stage.carriers, least=needs))
+
+    @cached_property
+    def _bar_eV(self) -> Array:
+        """(wanted,) the widest bar of each listed subband at the voltages for which the mesh is made."""
+        return np.asarray(np.max([end.certified.bar_eV for end in self._ends], axis=0))
+
     def point(self, gate_voltage_V: float, previous: GatePoint | None) -> GatePoint:
         """The point at a voltage of the swept gate.
+
+        Its bars are the widest of those at the voltages for which the mesh was made, and what the balance leaves.
 
         Raises
         ------
         ConvergenceError
             Carriers and potential could not be brought to agree.
         """
-        solved = self._solved(gate_voltage_V, previous)
-        return self._measured(gate_voltage_V, solved)
-
-    def _solved(self, voltage: float, previous: GatePoint | None) -> ChargedSubbands:
-        meshes, accuracy = self.meshes, self.problem.accuracy
-        stage = self._ends[0].balanced.stage
-        held = self._held(voltage)
-        before, guess = None, None
+        held, before, guess = self._held(gate_voltage_V), None, None
         if previous is not None and self._last is not None and self._last[0] == previous.gate_voltage_V:
             before = self._last[1]
         elif previous is not None and len(previous.potential_V):
             guess = previous.potential_V.copy()
-            guess[meshes.field.held] = held
-        balanced = balance(stage, held, before, guess)
-        self._last = voltage, balanced
-        needs = self._needs or self._ends[0].needs
-        factor = self._ends[0].bar_factor
-        found = certify_on(self.charged, meshes, balanced, needs, accuracy.subbands, accuracy.energy_eV, factor)
-        self._needs = found.needs
-        return found
+            guess[self.meshes.field.held] = held
+        balanced = balance(self._stage, held, before, guess)
+        self._last = gate_voltage_V, balanced
+        return self._measured(gate_voltage_V, balanced, self._listed(balanced))
 
-    def _measured(self, voltage: float, solved: ChargedSubbands) -> GatePoint:
-        problem, balanced = self.problem, solved.balanced
-        kelvin, occupied = problem.carriers.temperature_K[0], solved.balanced.occupied
-        rows = listed_rows(solved)
+    def _listed(self, balanced: Balanced) -> ListedRows:
+        """The listed subbands from the balance's own states, or solved for where these are not all."""
+        accuracy, first = self.problem.accuracy, self._ends[0]
+        rows = followed_rows(balanced, accuracy.subbands, self._bar_eV + balanced.residual_V)
+        if rows is not None:
+            return rows
+        wanted, energy = accuracy.subbands, accuracy.energy_eV
+        return listed_rows(
+            certify_on(self.charged, self.meshes, balanced, first.needs, wanted, energy, first.bar_factor)
+        )
+
+    def _measured(self, voltage: float, balanced: Balanced, rows: ListedRows) -> GatePoint:
+        problem = self.problem
+        kelvin, occupied = problem.carriers.temperature_K[0], balanced.occupied
         answer = answered(balanced, rows.density_per_nm2, rows.level, self._swept)
         quantum = float(occupied.density_slope_per_eV_nm.sum())
         series = parts(answer.carriers_per_V_nm, self.geometric_per_V_nm, quantum)
@@ -156,7 +168,7 @@ class WireSweep:
         resistance = 0.0 if problem.transport is None else problem.transport.contact_resistance_ohm
         heat = thermoelectric(opened, self.transmission, np.array(0.0), kelvin)
         modes = np.zeros((len(self.mesh.points), len(rows.energy_eV)))
-        modes[solved.certified.space.nodes] = rows.states
+        modes[balanced.stage.carriers.space.nodes] = rows.states
         return GatePoint(
             gate_voltage_V=voltage,
             voltages_V={gate.name: gate.voltage_V for gate in problem.gates} | {self._swept: voltage},
@@ -223,7 +235,7 @@ class WireSweep:
         high = min(((v, e) for v, e in energies if e <= 0 and v >= one.step.opens_at_V), default=None)
         if low is None or high is None:
             return one
-        stage, last = self._ends[0].balanced.stage, self._last
+        stage, last = self._stage, self._last
         before = None if last is None else last[1]
         voltage, coupling, rest = one.step.opens_at_V, one.coupling, math.inf
         known = [low, high]

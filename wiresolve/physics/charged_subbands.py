@@ -13,11 +13,12 @@ from wiresolve.errors import MeshError
 from wiresolve.fem import estimate
 from wiresolve.fem.enrich import prolong
 from wiresolve.fem.mesh import Mesh
-from wiresolve.fem.meshing import Mesher
+from wiresolve.fem.meshing import Mesher, SizeField
 from wiresolve.fem.space import Space
 from wiresolve.physics.charged_wire import ChargedWire
 from wiresolve.physics.electrostatics import Field, at_quadrature, improved
 from wiresolve.physics.first_mesh import MOST_VALUES, first_size
+from wiresolve.physics.occupied import CoarseMeshError
 from wiresolve.physics.selfconsistent import Balanced, balance
 from wiresolve.physics.solved import SPARE
 from wiresolve.physics.state_density import state_density
@@ -118,10 +119,16 @@ def certify_charged(
                 break  # cells at a singular end became too small: the best mesh so far is kept, with its bars
             if not best:
                 corners = charged.corners(meshes.coarse, meshes.field, first.corners)
-            judged = []
-            for k, own in enumerate(volts):
-                before = best[k].balanced if best else None
-                judged.append(_judged(charged, meshes, own, needs, wanted, factor, accuracy_eV, before))
+            try:
+                judged = []
+                for k, own in enumerate(volts):
+                    before = best[k].balanced if best else None
+                    judged.append(_judged(charged, meshes, own, needs, wanted, factor, accuracy_eV, before))
+            except CoarseMeshError as fault:
+                if not fault.finer_helps or number == _MOST_MESHES:
+                    raise
+                size = _smaller(size)
+                continue
             bar, unknowns = max(j.done.bar_eV for j in judged), len(meshes.coarse.points)
             tell("mesh", 0.1 + 0.08 * number, f"mesh {number}: {unknowns} points, widest bar {1e3 * bar:.3g} meV")
             _log.debug("mesh %d: %d points, bar %.3g eV", number, unknowns, bar)
@@ -138,6 +145,12 @@ def certify_charged(
                 break
     tell("count", 0.9, "counting the states below the highest wanted one")
     return tuple(_finished(charged, one, wanted, accuracy_eV, number, factor) for one in best)
+
+
+def _smaller(size: SizeField) -> SizeField:
+    """Cells of about half the area everywhere."""
+    sizes = None if size.sizes_nm is None else 0.7 * size.sizes_nm
+    return replace(size, largest_nm=0.7 * size.largest_nm, sizes_nm=sizes)
 
 
 def certify_on(

@@ -20,11 +20,12 @@ from wiresolve.fem.named_edges import NamedEdges, edges_along
 from wiresolve.fem.nodal import NodalFunction
 from wiresolve.fem.space import Space
 from wiresolve.physics.channel import Channel
+from wiresolve.physics.charged_potential import charged_potential
 from wiresolve.physics.dopants import Dopants
 from wiresolve.physics.electrostatics import Field, Pinned, SheetCharge, poisson_field
 from wiresolve.physics.exchange import LocalDensity
 from wiresolve.physics.nonlinear_poisson import ChargedField
-from wiresolve.physics.occupied import Carriers, charged_potential
+from wiresolve.physics.occupied import Carriers
 from wiresolve.physics.pencil import Operator
 from wiresolve.physics.selfconsistent import Stage
 from wiresolve.physics.wire import Wire
@@ -103,7 +104,7 @@ class ChargedWire:
         return tuple(found.values())
 
     def _edge_beside(self, mesh: Mesh, edges: NamedEdges) -> Array:
-        """(e,) the band edge beside edges: the lowest of what admits carriers there, else that of the section's layer."""
+        """(e,) the band edge beside edges: the lowest that carriers meet there, else that of the section's layer."""
         regions, section = mesh.regions, self.wire.problem.section
         own = {piece.name for piece in section.pieces()}
         known = [r.name in own and self.wire.materials[r.material].conduction_edge_eV is not None for r in regions]

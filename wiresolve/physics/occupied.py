@@ -11,11 +11,13 @@ import numpy as np
 import scipy.sparse as sparse
 from numpy.typing import NDArray
 
+from wiresolve.errors import ConvergenceError
 from wiresolve.fem import eigen
 from wiresolve.fem.nodal import NodalFunction
 from wiresolve.fem.space import Space
 from wiresolve.physics import local_mass
 from wiresolve.physics.channel import Channel
+from wiresolve.physics.charged_potential import charged_potential
 from wiresolve.physics.filling import Filling, tables
 from wiresolve.physics.followed_states import LOOSEST, RESIDUAL, Constant, Followed, followed
 from wiresolve.physics.grown_states import CellTables, Grown, cell_tables
@@ -34,7 +36,7 @@ _ABOVE_LOWEST = 14.0
 """And up to this many kT above the lowest one, so that an empty wire's few carriers are all counted, to exp(-14)."""
 _SPARE, _SHARE = 3, 0.2
 """States carried along beyond those that hold carriers, and the part of these that is added: they lead the others."""
-_MOST = 400
+_MOST = 600
 _PARTED = 1e-6
 """States closer than this many eV are kept or left together: a level is never cut."""
 _WIDEST_TABLE = 2000.0
@@ -47,6 +49,14 @@ _SLOW = 6
 _BELOW_eV = 1e-4
 _BENT = 6.0
 """How many kT above a state's minimum the growth of its mass along the wire is taken."""
+
+
+class CoarseMeshError(ConvergenceError):
+    """More states hold carriers than are solved: on a finer mesh they may be (`finer_helps`), or there are too many."""
+
+    def __init__(self, finer_helps: bool, count: int) -> None:
+        self.finer_helps = finer_helps
+        super().__init__(f"more than {count} states of one group of valleys hold carriers: too many for subbands")
 
 
 @dataclass(frozen=True, eq=False)
@@ -163,12 +173,14 @@ class Carriers:
     space : of the cells that admit carriers.
     channels : groups of valleys.
     operators : one a channel, without the charge's potential.
+    least : so many states of each channel are solved, whether they hold carriers or not.
     """
 
     space: Space
     channels: Sequence[Channel]
     operators: tuple[Operator, ...]
     temperature_K: float
+    least: tuple[int, ...] = ()
 
     @property
     def degeneracies(self) -> tuple[int, ...]:
@@ -249,6 +261,12 @@ class Carriers:
             found.append((pencil, hamiltonian, float((height - potential_V.on(self.space)).min()) - _BELOW_eV))
         return found
 
+    def described(self, number: int, potential_V: NodalFunction) -> tuple[Pencil, Operator]:
+        """A channel's pencil at constant masses, without the charge, and its operator with the charge's potential."""
+        operator = self.operators[number]
+        charged = replace(operator, potential=charged_potential(operator.potential, potential_V), smooth=True)
+        return self._pencils[number], charged
+
     @cached_property
     def interpolation(self) -> sparse.csr_array:
         """(cells x quadrature points, nodes) values of functions at the quadrature points."""
@@ -304,13 +322,17 @@ class Carriers:
             used += 1
         return used
 
-    def _tolerance(self, energy: Array, lowest_eV: float) -> Array:
+    def _lead(self, number: int, energy: Array, used: int) -> int:
+        """How many of a channel's states are wanted: those that hold carriers, and at least `least`."""
+        return max(used, min(self.least[number], len(energy)) if self.least else 0)
+
+    def _tolerance(self, number: int, energy: Array, lowest_eV: float) -> Array:
         """(m,) how large residuals may be: those of states that hold few carriers larger, as these count less."""
         lowest = min(lowest_eV, float(energy[0]))
         found = np.full(len(energy), np.inf)
         used, thermal = self._used(energy, lowest), KB * self.temperature_K
         above = np.maximum(energy[:used] - max(lowest, 0.0), 0.0)
-        found[:used] = RESIDUAL
+        found[: self._lead(number, energy, used)] = RESIDUAL
         if thermal > 0:
             found[:used] = np.minimum(RESIDUAL * np.exp(above / thermal), LOOSEST)
         return found
@@ -328,11 +350,11 @@ class Carriers:
         """A channel's states, those that may hold carriers and some more; none is missing, or they are solved anew."""
         bottom = float(height.min())
         if start is not None:
-            found = followed(form, start.found, bottom, lambda energy: self._tolerance(energy, lowest_eV))
+            found = followed(form, start.found, bottom, lambda e: self._tolerance(number, e, lowest_eV))
             if found is not None:
                 energy = found.energy_eV
                 lowest = min(lowest_eV, float(energy[0]))
-                used = self._used(energy, lowest)
+                used = self._lead(number, energy, self._used(energy, lowest))
                 clear = _clear(energy, used, self._reach(lowest))
                 complete = start.complete_eV - float(np.abs(height - start.height_eV).max())
                 if clear is not None and complete < max(self._reach(lowest), energy[max(used - 1, 0)]):
@@ -343,24 +365,32 @@ class Carriers:
                     return Kept(_trimmed(found, used), height, complete)
         most = min(_MOST, form.mass.shape[0] // 3)
         operator = self.operators[number]
-        operator = replace(operator, potential=_raised(operator, potential), smooth=True)
+        operator = replace(operator, potential=charged_potential(operator.potential, potential), smooth=True)
         cells = phase_space(self.space, operator)
         count = known
         if count is None:
             reach = self._reach(lowest_eV) if np.isfinite(lowest_eV) else max(REACH * KB * self.temperature_K, bottom)
             count = int(np.ceil(cells.count(np.array(reach))))
         while True:
-            count = min(int((1 + _SHARE) * count) + _SPARE, most)
-            found = self._cold(form, operator, cells, count, lowest_eV)
+            count = min(max(int((1 + _SHARE) * count), *self.least[number : number + 1], 0) + _SPARE, most)
+            found = self._cold(number, form, operator, cells, count, lowest_eV)
             energy = found.energy_eV
             lowest = min(lowest_eV, float(energy[0]))
-            used = self._used(energy, lowest)
+            used = self._lead(number, energy, self._used(energy, lowest))
             clear = _clear(energy, used, self._reach(lowest))
+            if count >= most and energy[-1] <= self._reach(lowest):
+                raise CoarseMeshError(len(self._pencils[number].kept) // 3 < _MOST, count)
             if count >= most or (clear is not None and form.count_below(clear) <= int(np.searchsorted(energy, clear))):
                 return Kept(_trimmed(found, used), height, -np.inf if clear is None else clear)
 
     def _cold(
-        self, form: Constant | Grown, operator: Operator, cells: PhaseSpace, count: int, lowest_eV: float
+        self,
+        number: int,
+        form: Constant | Grown,
+        operator: Operator,
+        cells: PhaseSpace,
+        count: int,
+        lowest_eV: float,
     ) -> Followed:
         """States from nothing."""
         top = cells.energy_of(count)
@@ -374,7 +404,7 @@ class Carriers:
             blocks.append(eigen.lowest(form.matrix(at), form.mass, count, shift, _FIRST))
         energy, first = blocks[0]
         start = Followed(energy, np.hstack([first, blocks[1][1]]), form.factors(energy, count), 0)
-        found = followed(form, start, cells.bottom_eV, lambda e: self._tolerance(e, lowest_eV), count)
+        found = followed(form, start, cells.bottom_eV, lambda e: self._tolerance(number, e, lowest_eV), count)
         lowest = -np.inf if found is None else float(found.energy_eV[0])
         if found is None or lowest <= floor + 1e-3 * (top - cells.bottom_eV):
             # Where masses are hardly positive, or not at all: this says so.
@@ -417,31 +447,3 @@ def _clear(energy: Array, used: int, reach_eV: float) -> float | None:
         return None
     widest = int(width.argmax())
     return float(low[widest] + width[widest] / 2)
-
-
-@dataclass(frozen=True, eq=False)
-class Raised:
-    """A given potential energy with the charge's on top of it."""
-
-    given: Any
-    potential_V: NodalFunction
-
-    def on(self, space: Space) -> Array:
-        """(c, q) eV at the quadrature points of a space over the same triangles."""
-        at = space.quadrature_points
-        return np.asarray(np.asarray(self.given(at[..., 0], at[..., 1]), dtype=float) - self.potential_V.on(space))
-
-    def __call__(self, x: Array, y: Array) -> Array:
-        """In eV at any points."""
-        return np.asarray(np.asarray(self.given(x, y), dtype=float) - self.potential_V(x, y))
-
-
-def _raised(operator: Operator, potential_V: NodalFunction) -> Any:
-    return charged_potential(operator.potential, potential_V)
-
-
-def charged_potential(given: Any, potential_V: NodalFunction) -> Any:
-    """The electron's potential energy: what was given, and minus the electrostatic potential."""
-    if given is None:
-        return NodalFunction(potential_V.mesh, -potential_V.values)
-    return Raised(given, potential_V)
