@@ -12,17 +12,18 @@ import numpy as np
 from wiresolve.describe.dimensions import dimensions
 from wiresolve.describe.mesh_shape import ImportedMesh
 from wiresolve.describe.problem import Problem
-from wiresolve.errors import ConvergenceError, WiresolveError
+from wiresolve.errors import WiresolveError
 from wiresolve.gate_result import GateStep
 from wiresolve.physics.charged_subbands import ChargedSubbands, certify_charged
 from wiresolve.physics.charged_wire import ChargedWire
-from wiresolve.physics.selfconsistent import balance
+from wiresolve.physics.opening import opening, subband_eV
+from wiresolve.physics.selfconsistent import Balanced, balance
 from wiresolve.physics.wire import Wire
 
 MOST_STEPS, MOST_DIMENSIONS = 3, 3
 SMALL_nm = 5.0
 """Dimensions below this are varied by a tenth of a nanometre in all, others by half of one."""
-_MOST_SECANTS, _CLOSE_eV = 6, 2e-6
+_CLOSE_eV = 2e-6
 _COARSER = 5.0
 """How much less exact than the sweep these solves may be: their errors are alike on both sides and cancel."""
 
@@ -69,7 +70,7 @@ def step_motions(
                 wire = ChargedWire(Wire(change(value + sign * off)))
                 solved = certify_charged(wire, volts, wanted, accuracy)
                 opened.append([_opens(wire, s, gate, *of) for s, of in zip(solved, some, strict=True)])
-        except (WiresolveError, IndexError):
+        except WiresolveError:
             continue  # the changed section cannot be drawn or solved: nothing is said of this dimension
         rise = (np.array(opened[0]) - np.array(opened[1])) / (2 * off)
         found.append(Motion(path, value, tuple(float(r) for r in rise)))
@@ -79,22 +80,18 @@ def step_motions(
 def _opens(
     wire: ChargedWire, solved: ChargedSubbands, gate: str, step: GateStep, subband: int, coupling: float
 ) -> float:
-    """The voltage at which a subband meets the Fermi level on another wire, by secants."""
-    balanced, voltage = solved.balanced, step.opens_at_V
-    known = [(voltage, float(solved.certified.energy_eV[subband]))]
-    for _ in range(_MOST_SECANTS):
-        at, energy = known[-1]
-        if abs(energy) <= _CLOSE_eV:
-            break
-        if len(known) > 1 and known[-1][1] != known[-2][1]:
-            coupling = (known[-2][1] - energy) / (at - known[-2][0])
-        if not coupling > 0:
-            raise ConvergenceError("a level does not fall with the gate's voltage")
-        voltage = at + energy / coupling
+    """The voltage at which a subband meets the Fermi level on another wire."""
+    carriers = solved.balanced.stage.carriers
+    stage = replace(solved.balanced.stage, carriers=replace(carriers, least=tuple(2 + n for n in solved.needs)))
+    before: Balanced | None = None
+
+    def energy_at(voltage: float) -> float:
+        nonlocal before
         held = solved.meshes.field.held_values(wire.gate_V({gate: voltage}))
-        balanced = balance(balanced.stage, held, balanced)
-        known.append((voltage, float(np.sort(balanced.occupied.energy_eV)[subband])))
-    return known[-1][0]
+        before = balance(stage, held, before, solved.balanced.potential_V if before is None else None)
+        return subband_eV(before, subband)
+
+    return opening(energy_at, step.opens_at_V, coupling, _CLOSE_eV).voltage_V
 
 
 def _lengths(problem: Problem) -> list[tuple[str, float, Callable[[float], Problem]]]:

@@ -25,6 +25,7 @@ from wiresolve.physics.gate_steps import threshold_by_extrapolation_V
 from wiresolve.physics.ladder import spectrum_of
 from wiresolve.physics.listed_rows import ListedRows, followed_rows, listed_rows
 from wiresolve.physics.listing import listing
+from wiresolve.physics.opening import opening, subband_eV
 from wiresolve.physics.remarks import Remarks
 from wiresolve.physics.scale_length import drain_coupling, scale_length_nm
 from wiresolve.physics.selfconsistent import Balanced, Stage, balance
@@ -41,8 +42,8 @@ Progress = Callable[[str, float, str], None]
 
 MIDDLE = 0.5
 """Where the drain's field is taken: half-way along the channel, where the barrier of a symmetric one is highest."""
-_MOST_SOLVED, _MOST_SECANTS = 12, 8
-"""Steps whose voltage is solved for, not interpolated, and how many solves each may take."""
+_MOST_SOLVED = 12
+"""Steps whose voltage is solved for, not interpolated."""
 _CLOSE_eV = 1e-6
 _EMPTY = 1e-9
 """Below this part of the geometric capacitance an answer says nothing of the channel's capacitance."""
@@ -231,30 +232,22 @@ class WireSweep:
         """The voltage at which a level is at the Fermi level, by secants between the points beside it."""
         rows = sorted(points, key=lambda point: point.gate_voltage_V)
         energies = [(p.gate_voltage_V, float(p.energy_eV[one.subband])) for p in rows]
-        low = max(((v, e) for v, e in energies if e > 0 and v <= one.step.opens_at_V), default=None)
-        high = min(((v, e) for v, e in energies if e <= 0 and v >= one.step.opens_at_V), default=None)
-        if low is None or high is None:
-            return one
-        stage, last = self._stage, self._last
-        before = None if last is None else last[1]
-        voltage, coupling, rest = one.step.opens_at_V, one.coupling, math.inf
-        known = [low, high]
+        low = max((v for v, e in energies if e > 0 and v <= one.step.opens_at_V), default=-math.inf)
+        high = min((v for v, e in energies if e <= 0 and v >= one.step.opens_at_V), default=math.inf)
+        stage = self._stage
+        before = None if self._last is None else self._last[1]
+
+        def energy_at(voltage: float) -> float:
+            nonlocal before
+            before = balance(stage, self._held(voltage), before)
+            return subband_eV(before, one.subband)
+
+        close = 0.1 * max(one.error_eV, _CLOSE_eV)
         try:
-            for _ in range(_MOST_SECANTS):
-                before = balance(stage, self._held(voltage), before)
-                energy = float(np.sort(before.occupied.energy_eV)[one.subband])
-                rest = abs(energy)
-                known.append((voltage, energy))
-                low, high = ((voltage, energy), high) if energy > 0 else (low, (voltage, energy))
-                near = sorted(known, key=lambda at: abs(at[1]))[:2]
-                coupling = (near[0][1] - near[1][1]) / (near[1][0] - near[0][0])
-                if rest <= 0.1 * max(one.error_eV, _CLOSE_eV):
-                    break
-                following = voltage + energy / coupling if coupling > 0 else math.nan
-                voltage = following if low[0] < following < high[0] else (low[0] + high[0]) / 2
-        except (ConvergenceError, IndexError):
+            found = opening(energy_at, one.step.opens_at_V, one.coupling, close, low, high)
+        except ConvergenceError:
             return one
-        return one.at(known[-1][0], max(coupling, 1e-12), rest)
+        return one.at(found.voltage_V, max(found.coupling, 1e-12), found.rest_eV)
 
     def _held(self, voltage: float) -> Array:
         """The held potentials at a voltage of the swept gate."""

@@ -30,7 +30,9 @@ Progress = Callable[[str, float, str], None]
 _log = logging.getLogger(__name__)
 
 _AIM = 0.6
-_MOST_MESHES = 10
+_MOST_MESHES = 12
+_MOST_STALLED = 5
+"""Meshes after one another without a better bar: the first ones may be too coarse to tell."""
 _CANCELLED = 0.5
 """Changes of the potential that cancel in a state count at least by this part of what they are one by one."""
 
@@ -135,7 +137,7 @@ def certify_charged(
             stalled = 0 if bar < 0.7 * worst else stalled + 1
             if bar < worst:
                 best, worst = judged, bar
-            if bar <= accuracy_eV or stalled >= 3:
+            if bar <= accuracy_eV or stalled >= _MOST_STALLED:
                 break
             needs = tuple(max(each) for each in zip(*(j.done.needs for j in judged), strict=True))
             target = max(accuracy_eV / factor * _AIM / 2 ** max(number - 2, 0), 1e-3 * bar)
@@ -277,7 +279,7 @@ def _dual_share(meshes: Meshes, balanced: Balanced, share: Array, density: Array
     """(c,) in V: each cell's part in what the mean density of the states sees of the potential's change."""
     coarse, fine, field = meshes.field, meshes.fine_field, balanced.stage.field
     if not len(coarse.held):
-        return np.sqrt(share)  # nothing to solve against: any change counts
+        return np.sqrt(np.maximum(share, 0.0))  # nothing to solve against: any change counts
     here = balanced.occupied.density_per_nm2
     mean = here.mean(axis=2) if here.shape[2] else np.zeros(here.shape[:2])
     load_density = np.zeros((len(field.cells), here.shape[1]))

@@ -212,6 +212,10 @@ def not_modelled(seen: Outcome) -> tuple[str, ...]:
             (charge, not modelled),
             ("exchange and correlation: electrons feel their mean charge alone", modelled and _mean_field(seen)),
             ("holes, and traps at surfaces whose charge follows the gate", modelled),
+            (
+                "the hold of source and drain on an empty channel",
+                bool(seen.wire.problem.gates) and not _has_length(seen),
+            ),
             (images, True),
             ("strain from lattice mismatch", several),
             (f"growth of the mass with energy in {', '.join(unknown)}: no value is known", bool(unknown)),
@@ -229,6 +233,11 @@ def not_modelled(seen: Outcome) -> tuple[str, ...]:
 
 def _mean_field(seen: Outcome) -> bool:
     return seen.wire.problem.carriers.interaction == HARTREE
+
+
+def _has_length(seen: Outcome) -> bool:
+    transport = seen.wire.problem.transport
+    return transport is not None and transport.length_nm is not None
 
 
 def _growth(seen: Outcome, material: str) -> bool:
