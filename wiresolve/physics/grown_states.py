@@ -12,6 +12,7 @@ from functools import cached_property
 from typing import Any
 
 import numpy as np
+import scipy.linalg as dense
 import scipy.sparse as sparse
 from numpy.typing import NDArray
 
@@ -32,6 +33,15 @@ _GROUPS = 5
 """Factors that serve all states: T(E) is another at each energy."""
 _SETTLED_eV, _EQUAL_eV = 1e-7, 1e-10
 """A step of Newton's method so small leaves the square of itself; levels closer than that are one."""
+
+
+_LARGE = 60
+"""From so many basis functions on lines are worth while."""
+_LINES, _LINE_eV = 4, 0.15
+"""Straight lines in E that stand for T(E), and how far apart in eV."""
+_BESIDE_eV = 2e-4
+"""States closer than this are corrected as one space."""
+_CORRECTIONS, _ALIKE = 12, 1e-11
 
 
 @dataclass(frozen=True, eq=False)
@@ -215,6 +225,8 @@ class Grown:
         low, high = float(guess_eV.min()) - margin, float(guess_eV.max()) + margin
         points = self.nodes(max(low, self.floor_eV + 1e-3 * (high - self.floor_eV)), high)
         series = _Series.through(points, self._small_still(basis, points))
+        if basis.shape[1] >= _LARGE and (quick := linearised(series, count, guess_eV)) is not None:
+            return quick
         energy, turn = np.asarray(guess_eV, dtype=float).copy(), np.empty((basis.shape[1], count))
         for _ in range(_NEWTON):
             # Members of a level share their energy, and then their states come from one solve.
@@ -276,6 +288,83 @@ class Grown:
         return from_squares(squares, steps)
 
 
+def linearised(series: _Series, count: int, guess_eV: Array) -> tuple[Array, NDArray[Any]] | None:
+    """The lowest states of a small T(E) from straight lines in E, corrected until they are exact; None if they resist.
+
+    T(E) is taken as a straight line at a few energies, where one problem S x = E B x serves all states near by; what
+    the line misses is put right by first-order perturbation theory with the states of that problem. States that lie
+    close together are corrected as one space.
+    """
+    energy = np.sort(np.asarray(guess_eV, dtype=float)[:count])
+    low, high = series.middle_eV - series.half_eV, series.middle_eV + series.half_eV
+    parts = max(1, min(_LINES, int(np.ceil(np.ptp(energy) / _LINE_eV))))
+    edges = np.linspace(energy[0], energy[-1], parts + 1)
+    found_energy, found_turn = [], []
+    taken = 0
+    for part in range(parts):
+        at = float(edges[part] + edges[part + 1]) / 2
+        slope = series.slope(np.array([at]))[0]
+        whole = np.eye(len(slope)) - slope
+        try:
+            values, vectors = dense.eigh(series.at(np.array([at]))[0] - at * slope, whole)
+        except np.linalg.LinAlgError:
+            return None
+        end = count if part == parts - 1 else min(int(np.searchsorted(values, edges[part + 1])), count)
+        # A state at the border of two lines belongs to one of them, a level too.
+        while taken < end < count and values[end] - values[end - 1] < _BESIDE_eV:
+            end += 1
+        if end <= taken:
+            continue
+        if values[end - 1] > high or values[taken] < low:
+            return None
+        own = _corrected(series, values, vectors, np.arange(taken, end))
+        if own is None:
+            return None
+        found_energy.append(own[0])
+        found_turn.append(own[1])
+        taken = end
+    energy = np.concatenate(found_energy) if found_energy else np.zeros(0)
+    if len(energy) < count or (np.diff(energy) < -_SETTLED_eV).any():
+        return None
+    return energy, np.hstack(found_turn)
+
+
+def _corrected(
+    series: _Series, values: Array, vectors: NDArray[Any], own: NDArray[np.int64]
+) -> tuple[Array, NDArray[Any]] | None:
+    """Energies and states (d, m) of the numbers `own` among those of a line, made exact."""
+    energy, states = values[own].copy(), vectors[:, own].copy()
+    cluster = np.concatenate([[0], np.cumsum(np.diff(energy) > _BESIDE_eV)])
+    members = [pick for n in range(int(cluster[-1]) + 1) if len(pick := np.flatnonzero(cluster == n)) > 1]
+    alone = np.bincount(cluster)[cluster] == 1
+    close = cluster == np.full(len(values), -1)[:, None]
+    close[own] = cluster[own - own[0]][:, None] == cluster
+    for _ in range(_CORRECTIONS):
+        before = energy.copy()
+        image, fall = series.applied(energy, states), series.applied(energy, states, slope=True)
+        value = np.einsum("im,im->m", states, image - states * energy)
+        rate = np.einsum("im,im->m", states, fall - states)
+        energy[alone] -= (value / rate)[alone]
+        for pick in members:
+            middle = float(energy[pick].mean())
+            block = states[:, pick]
+            line = series.slope(np.array([middle]))[0] @ block
+            inner = block.T @ (series.at(np.array([middle]))[0] @ block) - middle * (block.T @ line)
+            weight = block.T @ block - block.T @ line
+            energy[pick], turn = dense.eigh((inner + inner.T) / 2, (weight + weight.T) / 2)
+            states[:, pick] = block @ turn
+        rest = series.applied(energy, states) - states * energy
+        gap = energy - values[:, None]
+        with np.errstate(divide="ignore", invalid="ignore"):
+            share = np.where(close, 0.0, (vectors.T @ rest) / gap)
+        if not np.isfinite(share).all() or np.abs(share).max() > 0.5:
+            return None
+        states = states + vectors @ share
+        if np.abs(share).max() <= _ALIKE and np.abs(energy - before).max() <= _SETTLED_eV:
+            return energy, states / np.linalg.norm(states, axis=0)
+    return None
+
+
 @dataclass(frozen=True, eq=False)
 class _Series:
     """Matrices that are polynomials in E: their Chebyshev coefficients (p, m, m) between two energies."""
@@ -295,6 +384,19 @@ class _Series:
         """(n, m, m)."""
         x = (energy_eV - self.middle_eV) / self.half_eV
         return np.asarray(np.tensordot(np.polynomial.chebyshev.chebvander(x, len(self.parts) - 1), self.parts, 1))
+
+    def applied(self, energy_eV: Array, states: NDArray[Any], slope: bool = False) -> NDArray[Any]:
+        """T(E), or its derivative, of each state (m, n) at its own energy (n,)."""
+        x, count = (energy_eV - self.middle_eV) / self.half_eV, len(self.parts)
+        weights = np.polynomial.chebyshev.chebvander(x, count - 1)
+        if slope:
+            weights = (
+                np.polynomial.chebyshev.chebval(x, np.polynomial.chebyshev.chebder(np.eye(count))).T / self.half_eV
+            )
+        found = np.zeros_like(states)
+        for k, part in enumerate(self.parts):
+            found += (part @ states) * weights[:, k]
+        return found
 
     def slope(self, energy_eV: Array) -> Array:
         """(n, m, m) derivative by E."""
