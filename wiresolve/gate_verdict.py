@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,14 +13,18 @@ from numpy.typing import NDArray
 from wiresolve.describe.problem import Problem
 from wiresolve.gate_result import GatePoint, GateStep
 from wiresolve.physics.capacitance import limit_text
+from wiresolve.physics.conductance import in_series
 from wiresolve.physics.gate_steps import THERMAL_WIDTH_KT, gate_steps
 from wiresolve.physics.transistor_summary import TransistorSummary
+from wiresolve.physics.transmission import transmission_of
 from wiresolve.step_motion import Motion
 from wiresolve.units import KB
 
 Array = NDArray[np.float64]
 
 HALF_nm = 0.5
+PLATEAU_WIDTHS, SHOULDER_WIDTHS = 10 / THERMAL_WIDTH_KT, 4 / THERMAL_WIDTH_KT
+"""Equal steps 10 kT apart have 95 % of contrast between them, 4 kT apart 22 %: in widths of 3.53 kT."""
 _STEPS = 3
 
 
@@ -59,7 +64,9 @@ def steps_of(problem: Problem, points: Sequence[GatePoint]) -> tuple[OpenStep, .
     # What is open where the sweep begins keeps its place in the count.
     open_before = rows[0].energy_eV < 0
     before = len(np.unique(rows[0].level[open_before]))
-    plateau, members = float(rows[0].degeneracy[open_before].sum()) / 2, list[int]()
+    through = transmission_of(problem.transport).part(np.arange(energy.shape[1]))
+    resistance = 0.0 if problem.transport is None else problem.transport.contact_resistance_ohm
+    plateau, members = float((rows[0].degeneracy * through)[open_before].sum()) / 2, list[int]()
     for place, n in enumerate(order):
         members.append(int(n))
         following = order[place + 1] if place + 1 < len(order) else None
@@ -67,7 +74,7 @@ def steps_of(problem: Problem, points: Sequence[GatePoint]) -> tuple[OpenStep, .
             continue
         if not math.isfinite(found.voltage_V[n]):
             break
-        height = float(degeneracy[members].sum()) / 2
+        height = float((degeneracy * through)[members].sum()) / 2
         plateau += height
         first = members[0]
         step = GateStep(
@@ -76,7 +83,7 @@ def steps_of(problem: Problem, points: Sequence[GatePoint]) -> tuple[OpenStep, .
             opens_at_V=float(np.mean(found.voltage_V[members])),
             error_V=float(np.max(found.error_V[members])),
             height_G0=height,
-            plateau_G0=plateau,
+            plateau_G0=float(in_series(plateau, resistance)),
             width_V=_width_eV(problem) / float(found.coupling[first]),
         )
         bar = float(found.error_V[first] * found.coupling[first])
@@ -96,6 +103,27 @@ def _together(voltage: Array, error: Array, one: int, other: int) -> bool:
     if not (math.isfinite(voltage[one]) and math.isfinite(voltage[other])):
         return math.isfinite(voltage[one]) == math.isfinite(voltage[other])
     return bool(abs(voltage[other] - voltage[one]) <= error[one] + error[other])
+
+
+def warnings_of(points: Sequence[GatePoint], steps: Sequence[OpenStep]) -> list[tuple[str, str, str]]:
+    """Warnings (code, text, remedy) on what the list of subbands, or the points of the sweep, leave out."""
+    rows = sorted(points, key=lambda point: point.gate_voltage_V)
+    last, notes = rows[-1], []
+    filled, listed = int((last.filled_energy_eV < 0).sum()), int((last.energy_eV < 0).sum())
+    if filled > listed:
+        text = (
+            f"at {last.gate_voltage_V:.4g} V {filled} subbands lie below the Fermi level and {len(last.energy_eV)} are"
+        )
+        text += " listed: further steps open that are not told"
+        notes.append(("steps-unlisted", text, f"ask for subbands = {filled + 2} under [accuracy]"))
+    widths = [one.step.width_V for one in steps if math.isfinite(one.step.width_V)]
+    apart = max((b.gate_voltage_V - a.gate_voltage_V for a, b in pairwise(rows)), default=0.0)
+    if widths and 0 < min(widths) < apart:
+        count = math.ceil((last.gate_voltage_V - rows[0].gate_voltage_V) / min(widths)) + 1
+        text = f"points of the sweep are up to {apart:.3g} V apart, and the narrowest step is {min(widths):.2g} V wide:"
+        text += " figures and columns show no staircase (the steps' own voltages are solved for)"
+        notes.append(("sweep-coarse", text, f"sweep a shorter way, or in count = {count} points"))
+    return notes
 
 
 def sentences(
@@ -145,17 +173,31 @@ def _opening(problem: Problem, rows: Sequence[GatePoint], steps: Sequence[OpenSt
     opened = _listed([f"{s.opens_at_V:.4g} V" for s in some])
     text = f"Design estimate: {span}, {_counted(len(some), 'step')} open at {opened}"
     if len(steps) > len(some):
-        text = f"Design estimate: {span}, {len(steps)} steps open, the first {len(some)} at {opened}"
+        least = "at least " if (rows[-1].filled_energy_eV < 0).sum() > (rows[-1].energy_eV < 0).sum() else ""
+        text = f"Design estimate: {span}, {least}{len(steps)} steps open, the first {len(some)} at {opened}"
     heights = _listed([f"{s.height_G0:.3g}" for s in some])
     text += f", of {heights} G0"
     width = _width_eV(problem)
     if width > 0:
         each = "" if len(some) == 1 else "the first "
         text += f", {each}{1e3 * some[0].width_V:.3g} mV wide at {kelvin:g} K ({1e3 * width:.3g} meV over the coupling)"
+        text += _told_apart(some)
     already = len(np.unique(first.level[first.energy_eV < 0]))
     if already:
         text += f"; {_counted(already, 'level')} {'is' if already == 1 else 'are'} open where the sweep begins"
     return text + "."
+
+
+def _told_apart(steps: Sequence[GateStep]) -> str:
+    """Whether a plateau is seen between the first two steps: about 10 kT apart they are, below 2.6 kT they are one."""
+    if len(steps) < 2:
+        return ""
+    apart = (steps[1].opens_at_V - steps[0].opens_at_V) / steps[0].width_V
+    if apart >= PLATEAU_WIDTHS:
+        return ", far enough apart for a plateau after the first"
+    if apart >= SHOULDER_WIDTHS:
+        return ", so close that the first leaves a shoulder and no plateau"
+    return ", so close that the first two cannot be told apart"
 
 
 def _moved(steps: Sequence[OpenStep], motions: Sequence[Motion]) -> str:

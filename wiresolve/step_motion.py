@@ -57,7 +57,8 @@ def step_motions(
     if not some or not lengths:
         return ()
     gate, wanted = problem.voltages.gate, 1 + max(n for _, n, _ in some)
-    volts: list[Mapping[str, float]] = [{gate: step.opens_at_V} for step, _, _ in some]
+    # One mesh, made for the last step, serves all of them.
+    volts: list[Mapping[str, float]] = [{gate: some[-1][0].opens_at_V}]
     accuracy = _COARSER * problem.accuracy.energy_eV
     found = []
     for number, (path, value, change) in enumerate(lengths):
@@ -68,8 +69,8 @@ def step_motions(
         try:
             for sign in (1, -1):
                 wire = ChargedWire(Wire(change(value + sign * off)))
-                solved = certify_charged(wire, volts, wanted, accuracy)
-                opened.append([_opens(wire, s, gate, *of) for s, of in zip(solved, some, strict=True)])
+                solved = certify_charged(wire, volts, wanted, accuracy)[0]
+                opened.append([_opens(wire, solved, gate, *of) for of in some])
         except WiresolveError:
             continue  # the changed section cannot be drawn or solved: nothing is said of this dimension
         rise = (np.array(opened[0]) - np.array(opened[1])) / (2 * off)

@@ -11,10 +11,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.describe.problem import Problem
-from wiresolve.errors import ConvergenceError
+from wiresolve.errors import ConvergenceError, InputError
 from wiresolve.fem.mesh import Mesh
 from wiresolve.gate_result import GatePoint, GateStep, Judged, TransistorPoint
-from wiresolve.gate_verdict import OpenStep, measures_of, sentences, steps_of
+from wiresolve.gate_verdict import OpenStep, measures_of, sentences, steps_of, warnings_of
 from wiresolve.physics import conductance, remarks
 from wiresolve.physics.capacitance import in_F_per_m, parts, per_V_nm
 from wiresolve.physics.charge_sentence import where
@@ -77,6 +77,8 @@ class WireSweep:
                 return certify_charged(self.charged, ends, accuracy.subbands, accuracy.energy_eV, self.on_progress)
             except ConvergenceError as fault:
                 reason = str(fault)
+            except InputError as fault:
+                reason = _beyond(fault)
         raise ConvergenceError(f"neither end of the sweep nor its middle could be solved: {reason}")
 
     @property
@@ -141,7 +143,10 @@ class WireSweep:
         elif previous is not None and len(previous.potential_V):
             guess = previous.potential_V.copy()
             guess[self.meshes.field.held] = held
-        balanced = balance(self._stage, held, before, guess)
+        try:
+            balanced = balance(self._stage, held, before, guess)
+        except InputError as fault:
+            raise ConvergenceError(_beyond(fault)) from fault
         self._last = gate_voltage_V, balanced
         return self._measured(gate_voltage_V, balanced, self._listed(balanced))
 
@@ -341,7 +346,7 @@ class WireSweep:
         remarked = self._remarks(full)
         return Judged(
             " ".join(text),
-            tuple(Warned(*w) for w in remarked.warnings),
+            tuple(Warned(*w) for w in (*warnings_of(points, found), *remarked.warnings)),
             remarked.not_modelled,
             measures_of(found, summary, more),
         )
@@ -363,3 +368,10 @@ class WireSweep:
         off, on = self.device(rows[0]), self.device(rows[-1])
         low = min([v for v in self._drains if v > 0])
         return transistor_summary(off, on, drain, low if low < drain else drain / 2)
+
+
+def _beyond(fault: InputError) -> str:
+    """What is wrong at a voltage that takes the masses out of their model; raises any other error again."""
+    if fault.field != "carriers.model":
+        raise fault
+    return str(fault)

@@ -49,7 +49,8 @@ class Voltages:
     def points(self) -> tuple[float, ...]:
         """The gate's voltages in V, from the first to the last."""
         last = self.count - 1
-        return tuple((self.from_V * (last - k) + self.to_V * k) / last for k in range(self.count))
+        # Twelve digits: 0.3 V, not 0.29999999999999993 V.
+        return tuple(float(f"{(self.from_V * (last - k) + self.to_V * k) / last:.12g}") for k in range(self.count))
 
 
 @dataclass(frozen=True)
@@ -97,10 +98,9 @@ class Transport:
         if len(used) > 1:
             rule = f"is given beside {used[0]}: each says what is transmitted"
             raise InputError(used[1], rule, remedy="keep one of them")
-        if self.length_nm is not None and path is None:
+        if self.length_nm is not None and path is None and self.transmission is None:
             rule = "is missing: a length alone does not say what is transmitted"
-            raise InputError(
-                "mean_free_path", rule, remedy='write e.g. mean_free_path = "200 nm", or leave the length out'
-            )
+            remedy = 'write e.g. mean_free_path = "200 nm", or transmission = 1 for a ballistic channel'
+            raise InputError("mean_free_path", rule, remedy=remedy)
         if path is not None and self.length_nm is None:
             raise InputError("length", "is missing beside a mean free path", remedy='write e.g. length = "100 nm"')

@@ -49,19 +49,38 @@ def _column(curve: GateCurve, name: str) -> Array:
     return np.array([getattr(p, name) for p in curve.points], dtype=float)
 
 
+def _places(valley: Sequence[str]) -> list[tuple[str, int]]:
+    """Of each listed subband its group of valleys, and which of that group's it is: what stays where groups cross."""
+    seen: dict[str, int] = {}
+    found = []
+    for name in valley:
+        found.append((name, seen.get(name, 0)))
+        seen[name] = found[-1][1] + 1
+    return found
+
+
+def _followed(curve: GateCurve) -> dict[tuple[str, int], int]:
+    """The level of each subband at the last point that lists it, in the order of energies there."""
+    last: dict[tuple[str, int], tuple[float, int]] = {}
+    for point in curve.converged:
+        rows = zip(_places(point.valley), point.energy_eV.tolist(), point.level.tolist(), strict=True)
+        last |= {place: (energy, level) for place, energy, level in rows}
+    return {place: last[place][1] for place in sorted(last, key=lambda p: last[p][0])}
+
+
 def _by_subband(curve: GateCurve, name: str) -> Array:
-    """(points, most subbands), NaN where a point lists fewer."""
-    most = max(len(p.energy_eV) for p in curve.points)
-    rows = [np.asarray(getattr(p, name), dtype=float) for p in curve.points]
-    return np.array([np.pad(row, (0, most - len(row)), constant_values=np.nan) for row in rows])
+    """(points, subbands) each followed within its group of valleys; NaN where a point does not list it."""
+    places = {place: n for n, place in enumerate(_followed(curve))}
+    found = np.full((len(curve.points), len(places)), np.nan)
+    for row, point in zip(found, curve.points, strict=True):
+        for place, value in zip(_places(point.valley), np.asarray(getattr(point, name), dtype=float), strict=True):
+            row[places[place]] = value
+    return found
 
 
 def _lines_of_levels(curve: GateCurve) -> list[tuple[int, str]]:
-    """Level and valleys of each listed subband, from the last point that lists it."""
-    found: dict[int, tuple[int, str]] = {}
-    for point in curve.converged:
-        found |= dict(enumerate(zip(point.level.tolist(), point.valley, strict=True)))
-    return [found[n] for n in sorted(found)]
+    """Level and valleys of each followed subband."""
+    return [(level, valley) for (valley, _), level in _followed(curve).items()]
 
 
 def _title(axes: Axes, curve: GateCurve, text: str, pad: float = 5) -> None:

@@ -16,6 +16,7 @@ from collections.abc import Callable, Iterator, Mapping
 from contextlib import contextmanager, suppress
 from pathlib import Path
 from typing import IO, Any
+from zipfile import BadZipFile
 
 import numpy as np
 
@@ -171,7 +172,7 @@ class Points:
             with np.load(stem.with_suffix(".npz"), allow_pickle=False) as fields:
                 found |= {name: fields[name] for name in FIELDS}
             return GatePoint(**{f.name: _typed(f.type, found[f.name]) for f in dataclasses.fields(GatePoint)})
-        except (OSError, ValueError, KeyError, TypeError, EOFError):
+        except (OSError, ValueError, KeyError, TypeError, EOFError, BadZipFile):
             return None
 
     def _store(self, name: str, content: bytes) -> None:

@@ -10,6 +10,8 @@ import re
 from collections.abc import Sequence
 from pathlib import Path
 
+import numpy as np
+
 from wiresolve.gate_result import ZERO_TEXT, GateCurve, GatePoint, TransistorPoint
 from wiresolve.output.sources import unsure
 from wiresolve.output.tables import DONE, MOST_ROWS, aligned, cell, json_text, paragraphs, significant, with_bar
@@ -38,6 +40,7 @@ def gate_curve_csv(curve: GateCurve, status: str = DONE) -> str:
     head += [*single, *(f"charge_on_{_word(name)}_per_nm" for name in charged)]
     listed = {"energy_{}_eV": "energy_eV", "error_{}_eV": "error_eV", "level_{}": "level"}
     listed |= {"line_density_{}_per_nm": "line_density_by_subband_per_nm", "coupling_{}": "coupling"}
+    listed |= {"valley_{}": "valley"}
     head += [name.format(n + 1) for name in listed for n in range(most)]
     further = list(dict.fromkeys(name for p in curve.points for name in p.more))
     last = ("passes", "residual_V", "gauss_error", "converged", "note")
@@ -54,7 +57,7 @@ def gate_curve_csv(curve: GateCurve, status: str = DONE) -> str:
         row += [getattr(point, name) for name in single]
         row += [point.gate_charge_per_nm.get(name) for name in charged]
         for name in listed.values():
-            values = getattr(point, name).tolist()
+            values = list(np.asarray(getattr(point, name)).tolist())
             row += [*values, *[None] * (most - len(values))]
         row += [point.more.get(name) for name in further]
         row += [getattr(point, name) for name in last[:-1]] + [" ".join(point.note.split())]

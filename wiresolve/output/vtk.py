@@ -6,6 +6,7 @@ Only VTK's data model and XML modules are loaded: nothing here draws, so no disp
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -17,6 +18,9 @@ from wiresolve.result import Result
 
 if TYPE_CHECKING:
     from vtkmodules.vtkCommonDataModel import vtkUnstructuredGrid
+
+SEEN = 4.0
+SURROUNDINGS = ("below", "above", "beside")
 
 
 def write_modes(result: Result, path: str | Path) -> None:
@@ -82,7 +86,8 @@ def grid(
 
     Parameters
     ----------
-    mesh : its cells list their nodes in the order that VTK uses too.
+    mesh : its cells list their nodes in the order that VTK uses too. Surroundings farther away than `SEEN` sizes of
+        all else are left out, or nothing of the wire would be seen.
     point_data, cell_data : arrays of shape (points,) and (cells,) by name.
     field_data, texts : numbers and lists of strings that belong to the whole file.
     """
@@ -102,6 +107,19 @@ def grid(
             array.InsertNextValue(line)
         target.AddArray(array)
 
+    if (near := _near(mesh)) is not None:
+        kept, used = near
+        number = np.full(len(mesh.points), -1)
+        number[used] = np.arange(len(used))
+        point_data = {name: values[used] for name, values in (point_data or {}).items()}
+        cell_data = {name: values[kept] for name, values in (cell_data or {}).items()}
+        mesh = replace(
+            mesh,
+            points=mesh.points[used],
+            cells=number[mesh.cells[kept]],
+            region=mesh.region[kept],
+            corners=number[mesh.corners][number[mesh.corners] >= 0],
+        )
     out = vtkUnstructuredGrid()
     xyz = np.zeros((len(mesh.points), 3))
     xyz[:, :2] = mesh.points
@@ -131,6 +149,20 @@ def grid(
     for name, lines in (texts or {}).items():
         attach_texts(out.GetFieldData(), name, lines)
     return out
+
+
+def _near(mesh: Mesh) -> tuple[NDArray[np.int64], NDArray[np.int64]] | None:
+    """Cells and points without the surroundings farther than `SEEN` sizes of the rest; None where all are near."""
+    far = np.array([region.name.split()[0] in SURROUNDINGS for region in mesh.regions])
+    if not far.any():
+        return None
+    corner = mesh.points[mesh.cells[:, :3]]
+    own = corner[~far[mesh.region]].reshape(-1, 2)
+    low, high = own.min(axis=0), own.max(axis=0)
+    reach = SEEN * float((high - low).max())
+    inside = ((corner >= low - reach) & (corner <= high + reach)).all(axis=(1, 2))
+    kept = np.flatnonzero(inside | ~far[mesh.region])
+    return kept, np.unique(mesh.cells[kept])
 
 
 def save(data: vtkUnstructuredGrid, path: str | Path) -> None:
