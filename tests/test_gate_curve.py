@@ -195,7 +195,7 @@ def test_the_csv_holds_the_points_exactly() -> None:
         assert float(row["level_spacing_eV"]) == point.more["level_spacing_eV"]
         assert float(row["charge_on_wrap_per_nm"]) == point.gate_charge_per_nm["wrap"]
     units = ("_V", "_nm", "_m", "_eV", "_G0", "_S")
-    plain = ("gate_coupling", "coupling_", "level_", "passes", "gauss_error", "converged", "note")
+    plain = ("gate_coupling", "coupling_", "level_", "valley_", "passes", "gauss_error", "converged", "note")
     assert [h for h in table[0] if not h.endswith(units) and not h.startswith(plain)] == []
 
 

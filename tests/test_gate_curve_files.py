@@ -52,7 +52,7 @@ def sweeps(monkeypatch: pytest.MonkeyPatch) -> list[PlateSweep]:
 
 def solve_with(monkeypatch: pytest.MonkeyPatch, made: list[PlateSweep], **how: Any) -> None:
     solver = recording(made, **how)
-    monkeypatch.setattr(importlib.import_module("wiresolve.solve"), "sweep_of", solver, raising=False)
+    monkeypatch.setattr(importlib.import_module("wiresolve.sweep"), "sweep_of", solver, raising=False)
 
 
 def run(*words: str) -> Result:
@@ -177,7 +177,7 @@ def test_a_fault_of_the_mesh_leaves_nothing(here: Path, monkeypatch: pytest.Monk
     def refuse(_: Any) -> PlateSweep:
         raise fault
 
-    monkeypatch.setattr(importlib.import_module("wiresolve.solve"), "sweep_of", refuse, raising=False)
+    monkeypatch.setattr(importlib.import_module("wiresolve.sweep"), "sweep_of", refuse, raising=False)
     result = run("gate-curve", "wire.toml")
     assert result.exit_code == fault.exit_code  # type: ignore[attr-defined]
     assert left(here) == ["wire.toml"]
@@ -367,8 +367,8 @@ import importlib
 from tests.gate_sweeps import PlateSweep
 from wiresolve.cli import main
 
-solve = importlib.import_module("wiresolve.solve")
-solve.sweep_of = lambda problem: PlateSweep(problem, delay_s=0.3)
+sweep = importlib.import_module("wiresolve.sweep")
+sweep.sweep_of = lambda problem: PlateSweep(problem, delay_s=0.3)
 main(["gate-curve", "wire.toml", "--out", "out", "--no-figures"])
 """
 

@@ -193,8 +193,8 @@ def said(steps: list[OpenStep], motions: tuple[Motion, ...] = ()) -> str:
 
 def test_no_step_is_said() -> None:
     text = said([])
-    assert "no step opens between 0 V and 0.45 V on gate 'wrap'" in text
-    assert "closed all over the sweep" in text
+    assert "no listed subband opens between 0 V and 0.45 V on gate 'wrap'" in text
+    assert "the first is closed where the sweep begins" in text
 
 
 def test_one_step_is_said() -> None:

@@ -46,13 +46,16 @@ def loaded(name: str) -> ModuleType:
 
 def swept(problem: ws.Problem, **changed: Any) -> ws.Problem:
     assert problem.voltages is not None
-    return replace(problem, voltages=replace(problem.voltages, **changed))
+    coarse = replace(problem.accuracy, energy_eV=changed.pop("accuracy_eV", problem.accuracy.energy_eV))
+    return replace(problem, voltages=replace(problem.voltages, **changed), accuracy=coarse)
 
 
 def run(name: str, path: Path, **changed: Any) -> Any:
     """What an example's `main` returns where the sweep of its wire file is changed; its picture is looked at."""
     module, load = loaded(name), ws.load
     with pytest.MonkeyPatch.context() as patch:
+        # What other sizes do to the steps has tests of its own.
+        patch.setattr("wiresolve.sweep.step_motions", lambda *_: ())
         if changed:
             patch.setattr(ws, "load", lambda wire: swept(load(wire), **changed))
         found = module.main(str(path))
@@ -96,7 +99,7 @@ OFF_V, NEXT_V, ON_V = -0.2, 0.1, 0.7
 
 @pytest.fixture(scope="module")
 def channel(ran: Callable[..., Any]) -> Any:
-    return ran("silicon_wrap_gate", from_V=OFF_V, to_V=ON_V, count=4, drain_V=(0.05, DRAIN_V))
+    return ran("silicon_wrap_gate", accuracy_eV=1e-3, from_V=OFF_V, to_V=ON_V, count=4, drain_V=(0.05, DRAIN_V))
 
 
 def test_silicon_wrap_gate(channel: Any) -> None:
@@ -195,7 +198,7 @@ def test_silicon_channel_stays_below_the_ballistic_limit(channel: Any) -> None:
 
 @pytest.fixture(scope="module")
 def sheet(ran: Callable[..., Any]) -> Any:
-    return ran("silicon_sheet", to_V=0.4)
+    return ran("silicon_sheet", to_V=0.4, accuracy_eV=2e-3)
 
 
 def test_silicon_sheet(sheet: Any) -> None:

@@ -51,9 +51,9 @@ Solver = Callable[[Problem], Sweep]
 
 def solver_of(problem: Problem) -> Sweep:
     """The sweep of finite elements."""
-    from wiresolve.sweep import WireSweep
+    from wiresolve.sweep import sweep_of
 
-    return WireSweep(problem)
+    return sweep_of(problem)
 
 
 def checked(problem: Problem) -> Problem:

@@ -58,7 +58,10 @@ def steps_of(problem: Problem, points: Sequence[GatePoint]) -> tuple[OpenStep, .
         np.array([getattr(p, name) for p in rows]) for name in ("energy_eV", "coupling", "error_eV")
     )
     found = gate_steps([p.gate_voltage_V for p in rows], energy, coupling, error, kelvin)
-    degeneracy, valley = rows[-1].degeneracy, rows[-1].valley
+    # Where groups of valleys cross, a number in the list is another subband farther on: that where it opens counts.
+    after = [int(np.argmax(below)) if (below := energy[:, n] <= 0).any() else -1 for n in range(energy.shape[1])]
+    degeneracy = np.array([rows[i].degeneracy[n] for n, i in enumerate(after)])
+    valley = [rows[i].valley[n] for n, i in enumerate(after)]
     order = np.argsort(np.where(np.isfinite(found.voltage_V), found.voltage_V, np.inf), kind="stable")
     steps: list[OpenStep] = []
     # What is open where the sweep begins keeps its place in the count.
@@ -168,7 +171,7 @@ def _opening(problem: Problem, rows: Sequence[GatePoint], steps: Sequence[OpenSt
     span = f"between {first.gate_voltage_V:.4g} V and {final.gate_voltage_V:.4g} V on gate '{gate}'"
     if not steps:
         state = "open" if first.energy_eV[0] < 0 else "closed"
-        return f"Design estimate: no step opens {span}; the channel is {state} all over the sweep."
+        return f"Design estimate: no listed subband opens {span}; the first is {state} where the sweep begins."
     some = [s.step for s in steps[:_STEPS]]
     opened = _listed([f"{s.opens_at_V:.4g} V" for s in some])
     text = f"Design estimate: {span}, {_counted(len(some), 'step')} open at {opened}"
@@ -181,17 +184,17 @@ def _opening(problem: Problem, rows: Sequence[GatePoint], steps: Sequence[OpenSt
     if width > 0:
         each = "" if len(some) == 1 else "the first "
         text += f", {each}{1e3 * some[0].width_V:.3g} mV wide at {kelvin:g} K ({1e3 * width:.3g} meV over the coupling)"
-        text += _told_apart(some)
+        text += _told_apart(some, final.gate_voltage_V - first.gate_voltage_V)
     already = len(np.unique(first.level[first.energy_eV < 0]))
     if already:
         text += f"; {_counted(already, 'level')} {'is' if already == 1 else 'are'} open where the sweep begins"
     return text + "."
 
 
-def _told_apart(steps: Sequence[GateStep]) -> str:
+def _told_apart(steps: Sequence[GateStep], span_V: float) -> str:
     """Whether a plateau is seen between the first two steps: about 10 kT apart they are, below 2.6 kT they are one."""
     if len(steps) < 2:
-        return ""
+        return ", wider than the sweep: no plateau is seen" if steps[0].width_V > span_V else ""
     apart = (steps[1].opens_at_V - steps[0].opens_at_V) / steps[0].width_V
     if apart >= PLATEAU_WIDTHS:
         return ", far enough apart for a plateau after the first"

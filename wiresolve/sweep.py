@@ -370,6 +370,11 @@ class WireSweep:
         return transistor_summary(off, on, drain, low if low < drain else drain / 2)
 
 
+def sweep_of(problem: Problem) -> WireSweep:
+    """What solves the points of a problem's sweep."""
+    return WireSweep(problem)
+
+
 def _beyond(fault: InputError) -> str:
     """What is wrong at a voltage that takes the masses out of their model; raises any other error again."""
     if fault.field != "carriers.model":

@@ -40,7 +40,7 @@ class Voltages:
         row = tuple(given) if isinstance(given, Sequence) and not isinstance(given, str) else (given,)
         if len(row) > MOST_DRAINS:
             raise InputError("drain", f"must be at most {MOST_DRAINS} voltages", f"{len(row)} of them")
-        drains = tuple(checks.in_range("drain", v, -HIGHEST_V, HIGHEST_V, "V") for v in row)
+        drains = tuple(checks.in_range("drain", v, 0, HIGHEST_V, "V") for v in row)
         if len(set(drains)) < len(drains):
             raise InputError("drain", "the same voltage is given twice", list(drains))
         set_(self, "drain_V", drains)

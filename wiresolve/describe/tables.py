@@ -120,7 +120,10 @@ class Table:
         value = self.data[key]
         if not isinstance(value, dict):
             given = "a list of tables" if isinstance(value, list) else value
-            raise InputError(self.at(key), "must be one table", given, f"write [{self.at(key)}] once")
+            # A table in an entry of a list has no [heading] that TOML knows.
+            listed = "[" in self.path
+            remedy = f"write {key} = {{...}} with its keys inside" if listed else f"write [{self.at(key)}] once"
+            raise InputError(self.at(key), "must be one table", given, remedy)
         return Table(self.at(key), value)
 
     def tables(self, key: str) -> list[Table]:

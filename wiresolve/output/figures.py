@@ -398,7 +398,9 @@ def conductance(result: Result) -> Figure:
     other.spines["right"].set_visible(True)
     other.set_ylim(0, 1.06 * top * 1e6 * CONDUCTANCE_QUANTUM_SIEMENS)
     other.set_ylabel("Conductance (µS)")
-    title = "Ballistic, transmission 1; levels marked"
+    transport = result.problem.transport
+    open_ = transport is None or transport.is_open
+    title = "Ballistic, transmission 1; levels marked" if open_ else "With transmission and contacts; levels marked"
     if kept:
         axes.set_xlabel("Fermi level, the potential kept (meV)")
         title = "Not the staircase of a gate, which moves the levels too:\n" + title[0].lower() + title[1:]

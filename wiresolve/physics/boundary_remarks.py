@@ -109,7 +109,12 @@ def on_soft_walls(seen: Sequence[Wall], above_edge_eV: float, place: str) -> lis
             text += ", if they are held at all"
         elif wall.depth_nm is not None:
             text += f", about as if that wall stood {wall.depth_nm:.2g} nm farther out"
-    remedy = f'write carriers = "admitted" for {wall.region}, or outside = "{wall.material}"'
+    kind = wall.region.split()[0]
+    remedy = f'write carriers = "admitted" for {wall.region}'
+    if kind in ("below", "above", "beside"):  # no carriers are solved for in surroundings
+        remedy = f"draw {wall.region} as a layer or patch of the section, carriers admitted"
+    elif kind != "insulator":  # an outside material is refused where a gate ends the section
+        remedy += f', or outside = "{wall.material}"'
     if wall.depth_nm is None and wall.height_eV > 0:
         remedy += ", with an electron_mass for it"
     return [("soft-wall", text, remedy)]

@@ -58,7 +58,8 @@ class ChargedWire:
     @cached_property
     def within(self) -> tuple[float, float, float, float]:
         """(x, y, radius, rate): a circle that holds section and insulators, and how cells grow outside."""
-        near = [p for p in self.wire.inner if p.name.split()[0] not in ("below", "above", "beside")]
+        insulators = [p for p in self.setting.around if p.name.startswith("insulator ")]
+        near = [*insulators, *self.wire.problem.section.pieces()]
         points = np.vstack([p.loop.sample(16) for p in near])
         middle = (points.min(axis=0) + points.max(axis=0)) / 2
         radius = float(np.hypot(*(points - middle).T).max())

@@ -82,7 +82,7 @@ def _by_difference(balanced: Balanced, gate: str) -> Response:
 
     charges = {name: slope(lambda b, n=name: b.charges_per_nm()[n]) for name in field.gate_points}
     return Response(
-        slope(lambda b: b.potential_V),
+        slope(lambda b: b.felt_V),
         slope(lambda b: b.occupied.carriers_per_nm3),
         float(slope(lambda b: b.occupied.total_per_nm)),
         charges,
@@ -90,13 +90,15 @@ def _by_difference(balanced: Balanced, gate: str) -> Response:
 
 
 def channel_capacitance(stage: Stage, gate: str) -> float:
-    """Capacitance in e/(V nm) between a gate and the section as if all that admits carriers were a metal.
+    """Capacitance in e/(V nm) between a gate and the section as if all of it that admits carriers were a metal.
 
     All other gates and pinned surfaces are at its potential.
     """
     field, space = stage.field.field, stage.carriers.space
     inside = np.zeros(len(field.space.nodes), dtype=bool)
-    inside[space.nodes] = True
+    regions = space.mesh.regions
+    own = np.array([not region.name.startswith("insulator ") for region in regions])[space.mesh.region[space.cells]]
+    inside[space.mesh.cells[space.cells[own]]] = True
     potential = np.zeros(len(inside))
     potential[field.gate_points[gate]] = 1.0
     free = np.flatnonzero(~inside & ~field.is_held)

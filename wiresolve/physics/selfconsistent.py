@@ -88,9 +88,14 @@ class Balanced:
         return self.solution.phi
 
     @property
+    def felt_V(self) -> Array:
+        """(n,) the potential that electrons feel at the mesh's points: with exchange and correlation."""
+        return _felt(self.solution.phi, self.exchange_V)
+
+    @property
     def function(self) -> NodalFunction:
         """The potential that electrons feel, as a function."""
-        return _function(self.stage, _felt(self.solution.phi, self.exchange_V))
+        return _function(self.stage, self.felt_V)
 
     def charges_per_nm(self) -> dict[str, float]:
         """Charge in e/nm of each gate, and of pinned surfaces."""
