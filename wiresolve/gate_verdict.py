@@ -151,11 +151,15 @@ def sentences(
     said = [_opening(problem, rows, steps, kelvin)]
     said += [_moved(steps, motions)] if motions else []
     if last.line_density_per_nm > 0 and last.quantum_F_per_m > 0:
-        limit = limit_text(last.quantum_F_per_m, last.geometric_F_per_m)
+        limit, geometry = limit_text(last.quantum_F_per_m, last.geometric_F_per_m), ""
+        state = "the gate lies on the channel itself"
+        if math.isfinite(last.geometric_F_per_m):
+            state = f"the channel is {limit}"
+            geometry = f"{1e9 * last.geometric_F_per_m:.3g} nF/m by geometry and "
         said.append(
-            f"At {last.gate_voltage_V:.4g} V the channel is {limit}: the gate's capacitance is"
-            f" {1e9 * last.capacitance_F_per_m:.3g} nF/m, of {1e9 * last.geometric_F_per_m:.3g} nF/m by geometry and"
-            f" {1e9 * last.quantum_F_per_m:.3g} nF/m by the density of states; a volt on the gate moves the first level"
+            f"At {last.gate_voltage_V:.4g} V {state}: the gate's capacitance is"
+            f" {1e9 * last.capacitance_F_per_m:.3g} nF/m, of {geometry}"
+            f"{1e9 * last.quantum_F_per_m:.3g} nF/m by the density of states; a volt on the gate moves the first level"
             f" by {last.gate_coupling:.3g} eV."
         )
         said.append(f"It holds {last.line_density_per_nm * 1e7:.3g} carriers per cm there, {where}.")
@@ -231,7 +235,11 @@ def _as_transistor(run: TransistorSummary, drain_V: float, rows: Sequence[GatePo
 def _rests_on(problem: Problem) -> str:
     work = [g for g in problem.gates if g.work_function_eV is not None]
     scale = "the work function and the affinity" if work else "the line-up voltage"
-    text = f"All voltages rest on {scale} given and on an insulator without charge of its own"
+    text = f"All voltages rest on {scale} given and on "
+    charged = any(surface.charge_per_nm2 is not None for surface in problem.surfaces)
+    text += "the charges given" if charged else "an insulator without charge of its own"
+    if any(surface.pinned_at_eV is not None for surface in problem.surfaces):
+        text += " and a surface that stays pinned"
     transport = problem.transport
     if transport is None or transport.is_open:
         text += ", step heights and currents on contacts and a channel that scatter nothing"

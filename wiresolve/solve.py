@@ -153,7 +153,10 @@ def _assembled(
         _rounding(problem),
         *remarked.said,
     )
-    held = "" if charged is None else " at these voltages, in the potential that they and the charge make"
+    held = ""
+    if charged is not None:
+        held = " at these voltages, in the potential that they and the charge make"
+        held = held if problem.gates else " in the potential that its charge makes"
     judged = verdict.judge(spectrum, temperatures, fermi, (text for text in said if text), held)
     zero_text, zero_value = problem.energy_zero()
     points = np.zeros((len(space.mesh.points), certified.wanted), dtype=found.states.dtype)
@@ -192,12 +195,15 @@ def _assembled(
 
 
 def _rounding(problem: Problem) -> str:
-    """What a saddle-shaped constriction adds to the steps, which are judged by temperature alone."""
-    curvature = None if problem.transport is None else problem.transport.saddle_curvature_eV
-    if curvature is None:
+    """What transmission, contacts or a saddle do to the steps, which are judged by temperature alone."""
+    transport = problem.transport
+    if transport is None or transport.is_open:
         return ""
-    width = log(81) / (2 * pi) * curvature
-    return f"Tunnelling at the saddle rounds each step further, by {1e3 * width:.3g} meV from 10 to 90 % of its height."
+    text = "Steps are those of a ballistic wire; what [transport] says counts in the curves of the conductance."
+    if transport.saddle_curvature_eV is not None:
+        width = log(81) / (2 * pi) * transport.saddle_curvature_eV
+        text += f" Tunnelling at the saddle rounds each step further, by {1e3 * width:.3g} meV from 10 to 90 % of it."
+    return text
 
 
 def _charge(wire: Wire, charged: ChargedSubbands) -> Charge:

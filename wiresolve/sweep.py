@@ -303,7 +303,7 @@ class WireSweep:
         # dU/dV = -empty + (dn/dV)/C at each point: what of the coupling is lost to charge tells the capacitance.
         capacitance = self.geometric_per_V_nm / max(empty, _EMPTY)
         lost = empty - point.gate_coupling
-        if total > _EMPTY * self.geometric_per_V_nm and lost > _EMPTY:
+        if total > _EMPTY * min(self.geometric_per_V_nm, 1.0) and lost > _EMPTY:
             capacitance = total / lost
         # A saddle's tunnelling belongs to a constriction, not to the top of a long barrier.
         kind = self.transmission if self.transmission.width_eV == 0 else Open()

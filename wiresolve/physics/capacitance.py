@@ -9,7 +9,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from wiresolve.physics.fermi import checked_temperature
 from wiresolve.physics.transistor import States
-from wiresolve.units import FARAD_PER_M
+from wiresolve.units import EPSILON0_PER_V_NM, FARAD_PER_M
 
 Array = NDArray[np.float64]
 
@@ -67,7 +67,7 @@ def parts(total_per_V_nm: ArrayLike, geometric_per_V_nm: ArrayLike, quantum_per_
         *(np.asarray(c, dtype=float) for c in (total_per_V_nm, geometric_per_V_nm, quantum_per_V_nm))
     )
     # In an empty wire what is left of two nearly equal numbers is rounding.
-    empty = (total == 0) | (quantum <= _EMPTY * geometric)
+    empty = (total == 0) | (quantum <= _EMPTY * np.where(np.isinf(geometric), EPSILON0_PER_V_NM, geometric))
     with np.errstate(divide="ignore", invalid="ignore"):
         centroid = 1 / (1 / total - 1 / geometric - 1 / quantum)
     return CapacitanceParts(total, geometric, quantum, np.where(empty, np.nan, centroid))

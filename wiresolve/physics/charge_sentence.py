@@ -35,6 +35,8 @@ def _limit(balanced: Balanced, wire: Wire) -> str:
     if not names or not np.isfinite(quantum) or quantum <= 0:
         return ""
     geometric = sum(channel_capacitance(balanced.stage, name) for name in names)
+    if not np.isfinite(geometric):
+        return " A gate lies on the channel itself."
     text = f" It is {limit_text(quantum, geometric)}: {in_F_per_m(quantum) * 1e9:.3g} nF/m by the density of states,"
     return f"{text} {in_F_per_m(geometric) * 1e9:.3g} nF/m from the gate{'s' if len(names) > 1 else ''} to its surface."
 

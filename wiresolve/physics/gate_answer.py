@@ -92,13 +92,15 @@ def _by_difference(balanced: Balanced, gate: str) -> Response:
 def channel_capacitance(stage: Stage, gate: str) -> float:
     """Capacitance in e/(V nm) between a gate and the section as if all of it that admits carriers were a metal.
 
-    All other gates and pinned surfaces are at its potential.
+    All other gates and pinned surfaces are at its potential. Infinite where the gate lies on that metal.
     """
     field, space = stage.field.field, stage.carriers.space
     inside = np.zeros(len(field.space.nodes), dtype=bool)
     regions = space.mesh.regions
     own = np.array([not region.name.startswith("insulator ") for region in regions])[space.mesh.region[space.cells]]
     inside[space.mesh.cells[space.cells[own]]] = True
+    if inside[field.gate_points[gate]].any():
+        return np.inf
     potential = np.zeros(len(inside))
     potential[field.gate_points[gate]] = 1.0
     free = np.flatnonzero(~inside & ~field.is_held)

@@ -56,7 +56,10 @@ class CoarseMeshError(ConvergenceError):
 
     def __init__(self, finer_helps: bool, count: int) -> None:
         self.finer_helps = finer_helps
-        super().__init__(f"more than {count} states of one group of valleys hold carriers: too many for subbands")
+        super().__init__(
+            f"more than {count} states of one group of valleys hold carriers, too many for subbands:"
+            " take a thinner wire, a lower temperature or a voltage that fills it less"
+        )
 
 
 @dataclass(frozen=True, eq=False)
