@@ -49,3 +49,14 @@ class ConvergenceError(WiresolveError, RuntimeError):
     """An iteration did not converge, or states of the discrete problem could not be accounted for."""
 
     exit_code = 4
+
+
+class CoarseMeshError(ConvergenceError):
+    """More states hold carriers than are solved: on a finer mesh they may be (`finer_helps`), or there are too many."""
+
+    def __init__(self, finer_helps: bool, count: int) -> None:
+        self.finer_helps = finer_helps
+        super().__init__(
+            f"more than {count} states of one group of valleys hold carriers, too many for subbands:"
+            " take a thinner wire, a lower temperature or a voltage that fills it less"
+        )

@@ -48,9 +48,10 @@ class Voltages:
     @property
     def points(self) -> tuple[float, ...]:
         """The gate's voltages in V, from the first to the last."""
-        last = self.count - 1
-        # Twelve digits: 0.3 V, not 0.29999999999999993 V.
-        return tuple(float(f"{(self.from_V * (last - k) + self.to_V * k) / last:.12g}") for k in range(self.count))
+        last, size = self.count - 1, max(abs(self.from_V), abs(self.to_V))
+        # Twelve digits: 0.3 V, not 0.29999999999999993 V; and 0 V, not -3e-17 V.
+        exact = [(self.from_V * (last - k) + self.to_V * k) / last for k in range(self.count)]
+        return tuple(float(f"{v:.12g}") if abs(v) > 1e-12 * size else 0.0 for v in exact)
 
 
 @dataclass(frozen=True)

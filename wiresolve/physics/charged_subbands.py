@@ -9,7 +9,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from wiresolve.errors import MeshError
+from wiresolve.errors import CoarseMeshError, MeshError
 from wiresolve.fem import estimate
 from wiresolve.fem.enrich import prolong
 from wiresolve.fem.mesh import Mesh
@@ -18,7 +18,6 @@ from wiresolve.fem.space import Space
 from wiresolve.physics.charged_wire import ChargedWire
 from wiresolve.physics.electrostatics import Field, at_quadrature, improved
 from wiresolve.physics.first_mesh import MOST_VALUES, first_size
-from wiresolve.physics.occupied import CoarseMeshError
 from wiresolve.physics.selfconsistent import Balanced, balance
 from wiresolve.physics.solved import SPARE
 from wiresolve.physics.state_density import state_density

@@ -16,6 +16,7 @@ import scipy.linalg as dense
 import scipy.sparse as sparse
 from numpy.typing import NDArray
 
+from wiresolve.errors import ConvergenceError
 from wiresolve.fem import eigen
 from wiresolve.fem.space import Space
 from wiresolve.physics.followed_states import split_energies
@@ -35,7 +36,7 @@ _SETTLED_eV, _EQUAL_eV = 1e-7, 1e-10
 """A step of Newton's method so small leaves the square of itself; levels closer than that are one."""
 
 
-_LARGE = 60
+_LARGE, _LARGEST = 60, 250
 """From so many basis functions on lines are worth while."""
 _LINES, _LINE_eV = 4, 0.15
 """Straight lines in E that stand for T(E), and how far apart in eV."""
@@ -227,6 +228,9 @@ class Grown:
         series = _Series.through(points, self._small_still(basis, points))
         if basis.shape[1] >= _LARGE and (quick := linearised(series, count, guess_eV)) is not None:
             return quick
+        if basis.shape[1] > _LARGEST:
+            rule = f"{count} states whose masses grow steeply with energy could not be told apart; a lower voltage, or"
+            raise ConvergenceError(f'{rule} model = "parabolic", can be solved')
         energy, turn = np.asarray(guess_eV, dtype=float).copy(), np.empty((basis.shape[1], count))
         for _ in range(_NEWTON):
             # Members of a level share their energy, and then their states come from one solve.

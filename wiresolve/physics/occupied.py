@@ -11,7 +11,7 @@ import numpy as np
 import scipy.sparse as sparse
 from numpy.typing import NDArray
 
-from wiresolve.errors import ConvergenceError
+from wiresolve.errors import CoarseMeshError
 from wiresolve.fem import eigen
 from wiresolve.fem.nodal import NodalFunction
 from wiresolve.fem.space import Space
@@ -36,7 +36,7 @@ _ABOVE_LOWEST = 14.0
 """And up to this many kT above the lowest one, so that an empty wire's few carriers are all counted, to exp(-14)."""
 _SPARE, _SHARE = 3, 0.2
 """States carried along beyond those that hold carriers, and the part of these that is added: they lead the others."""
-_MOST = 600
+_MOST, _TOO_MANY = 600, 1.3
 _PARTED = 1e-6
 """States closer than this many eV are kept or left together: a level is never cut."""
 _WIDEST_TABLE = 2000.0
@@ -49,17 +49,6 @@ _SLOW = 6
 _BELOW_eV = 1e-4
 _BENT = 6.0
 """How many kT above a state's minimum the growth of its mass along the wire is taken."""
-
-
-class CoarseMeshError(ConvergenceError):
-    """More states hold carriers than are solved: on a finer mesh they may be (`finer_helps`), or there are too many."""
-
-    def __init__(self, finer_helps: bool, count: int) -> None:
-        self.finer_helps = finer_helps
-        super().__init__(
-            f"more than {count} states of one group of valleys hold carriers, too many for subbands:"
-            " take a thinner wire, a lower temperature or a voltage that fills it less"
-        )
 
 
 @dataclass(frozen=True, eq=False)
@@ -374,6 +363,8 @@ class Carriers:
         if count is None:
             reach = self._reach(lowest_eV) if np.isfinite(lowest_eV) else max(REACH * KB * self.temperature_K, bottom)
             count = int(np.ceil(cells.count(np.array(reach))))
+            if count > _TOO_MANY * most:
+                raise CoarseMeshError(len(self._pencils[number].kept) // 3 < _MOST, most)
         while True:
             count = min(max(int((1 + _SHARE) * count), *self.least[number : number + 1], 0) + _SPARE, most)
             found = self._cold(number, form, operator, cells, count, lowest_eV)

@@ -40,8 +40,9 @@ _START_V = 1e-5
 _DEPTH = 4
 """How many passes are combined."""
 _COLDEST_START_K = 4.0
-_FAINT_PER_NM = 1e-9
-"""A balance of charge is judged against no less than this: one carrier in a metre."""
+_FAINT_PER_NM = 1e-5
+"""A balance of charge is judged against no less than this, one carrier in a tenth of a millimetre: rounding makes 1e-14
+of it at each volt."""
 
 
 @dataclass(frozen=True, eq=False)
