@@ -17,6 +17,7 @@ from wiresolve.fem.meshing import Mesher, SizeField
 from wiresolve.fem.space import Space
 from wiresolve.physics.charged_wire import ChargedWire
 from wiresolve.physics.electrostatics import Field, at_quadrature, improved
+from wiresolve.physics.filled_states import filled_error, filled_needs
 from wiresolve.physics.first_mesh import MOST_VALUES, first_size
 from wiresolve.physics.selfconsistent import Balanced, balance
 from wiresolve.physics.solved import SPARE
@@ -198,18 +199,20 @@ def _on(
     accuracy_eV: float,
 ) -> _Judged:
     channels = charged.channels_in(balanced.function)
-    done = solve_all(meshes.coarse, meshes.fine, channels, needs, wanted, factor, accuracy_eV)
+    solved = filled_needs(balanced, needs)
+    done = solve_all(meshes.coarse, meshes.fine, channels, solved, wanted, factor, accuracy_eV)
     if done.bar_eV <= accuracy_eV:
         done = done.thorough(accuracy_eV).finished()
     changes, share = _potential_error(charged, meshes, balanced, done)
+    filled = filled_error(balanced, done.solved)
     wide = estimate.bar_factor(charged.corners(meshes.coarse, meshes.field))
-    widening = tuple(wide * change + balanced.residual_V for change in changes)
+    widening = tuple(wide * (change + filled.shift_eV) + balanced.residual_V for change in changes)
     wider = done.widened(widening)
     whole = np.zeros((len(meshes.coarse.cells), 0))
     columns = [whole, share[:, None]]
     cells = wider.space.cells
-    for _, bars, own in wider.states:
-        if len(bars):
+    for own in (filled.share_eV[:, None], *(own for _, bars, own in wider.states if len(bars))):
+        if own.any():
             spread = np.zeros((len(meshes.coarse.cells), own.shape[1]))
             spread[cells] = own
             columns.append(spread)
