@@ -173,6 +173,7 @@ def test_points_of_a_sweep_end_exactly_where_they_should() -> None:
     assert (sweep.points[0], sweep.points[-1], len(sweep.points)) == (-0.3, 0.7, 11)
     assert sweep.points == pytest.approx([-0.3 + 0.1 * k for k in range(11)], abs=1e-15)
     assert Voltages("wrap", 0.7, -0.3, 2).points == (0.7, -0.3)
+    assert Voltages("wrap", -0.2, 0.6, 9).points[2] == 0.0
 
 
 def test_the_line_up_follows_from_the_work_function() -> None:

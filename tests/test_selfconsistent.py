@@ -157,7 +157,9 @@ def test_geometric_capacitance_of_the_wrap_is_coaxial() -> None:
     wire = independent_round.INAS
     coaxial = 2 * pi * independent_round.EPSILON0_PER_V_NM * wire.insulator_permittivity
     coaxial /= log(1 + wire.insulator_nm / wire.radius_nm)
-    assert channel_capacitance(round_wire(77.0).stage, GATE) == pytest.approx(coaxial, rel=1e-8)
+    wire = replace(wire, temperature_K=4.2, gate_potential_V=HIGHEST_V)
+    stage = on_mesh(of_round(wire, 4, 1e-5)).stage
+    assert channel_capacitance(stage, GATE) == pytest.approx(coaxial, rel=1e-8)
 
 
 @pytest.mark.parametrize("temperature", [300.0, 77.0])
@@ -268,6 +270,14 @@ def test_exchange_lowers_levels_and_draws_carriers_in() -> None:
     assert point.occupied.total_per_nm > plain.occupied.total_per_nm
     assert point.gauss_error <= 1e-8
     assert point.residual_V <= 1e-7
+
+
+def test_couplings_are_slopes_of_the_levels_with_exchange_too() -> None:
+    here, point = with_exchange()
+    found = answered(point, point.occupied.density_per_nm2[:, :, :1], np.array([1]), GATE)
+    step = 0.02 * KB * 77.0
+    energies = {n: float(here.at({GATE: 0.3 + n * step}, point).occupied.energy_eV[0]) for n in (-2, -1, 1, 2)}
+    assert found.coupling[0] == pytest.approx(-fourth_order(energies, step), rel=1e-4)
 
 
 def test_exchange_is_that_of_the_density_in_balance() -> None:
