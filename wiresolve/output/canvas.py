@@ -5,8 +5,9 @@ from __future__ import annotations
 import functools
 import math
 import re
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from contextlib import AbstractContextManager
+from pathlib import Path
 from types import MappingProxyType
 from typing import TYPE_CHECKING, Any, TypeVar
 
@@ -257,3 +258,24 @@ def coloured(values: Any) -> Any:
         table[:-1, channel] = np.rint(255 * np.interp(steps, stops, colours[:, channel]))
     table[-1] = (255, 255, 255, 0)
     return table[np.where(inside, np.rint(half * t).astype(np.int64) + half, -1)]
+
+
+def save(
+    made: Mapping[str, Callable[[Drawn], Figure]], names: Sequence[str], thing: Drawn, folder: str | Path
+) -> list[Path]:
+    """Draw the named figures of a thing and write each as PNG and SVG; the same thing gives the same bytes.
+
+    Raises
+    ------
+    OSError
+        A file cannot be written.
+    """
+    written = []
+    with style():
+        for name in names:
+            figure = made[name](thing)
+            png, svg = Path(folder) / f"{name}.png", Path(folder) / f"{name}.svg"
+            figure.savefig(png, format="png", metadata={"Software": None}, pil_kwargs={"compress_level": 4})
+            figure.savefig(svg, format="svg", metadata={"Date": None, "Creator": "wiresolve"})
+            written += [png, svg]
+    return written

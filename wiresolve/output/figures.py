@@ -41,9 +41,9 @@ from wiresolve.output.canvas import (
     order_of_appearance,
     panels,
     round_length,
+    save,
     shortened,
     small_energy,
-    style,
     styled,
     thermal_colour,
 )
@@ -439,12 +439,4 @@ def save_all(result: Result, folder: str | Path) -> list[Path]:
     OSError
         A file cannot be written.
     """
-    written = []
-    with style():
-        for name in drawable(result):
-            figure = FIGURES[name](result)
-            png, svg = Path(folder) / f"{name}.png", Path(folder) / f"{name}.svg"
-            figure.savefig(png, format="png", metadata={"Software": None}, pil_kwargs={"compress_level": 4})
-            figure.savefig(svg, format="svg", metadata={"Date": None, "Creator": "wiresolve"})
-            written += [png, svg]
-    return written
+    return save(FIGURES, drawable(result), result, folder)

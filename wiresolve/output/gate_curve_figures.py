@@ -24,8 +24,8 @@ from wiresolve.output.canvas import (
     label_lines,
     line_style,
     mark,
+    save,
     shortened,
-    style,
     styled,
 )
 from wiresolve.output.valley_names import short_valleys
@@ -331,12 +331,4 @@ def save_all(curve: GateCurve, folder: str | Path) -> list[Path]:
     OSError
         A file cannot be written.
     """
-    written = []
-    with style():
-        for name in drawable(curve):
-            figure = FIGURES[name](curve)
-            png, svg = Path(folder) / f"{name}.png", Path(folder) / f"{name}.svg"
-            figure.savefig(png, format="png", metadata={"Software": None}, pil_kwargs={"compress_level": 4})
-            figure.savefig(svg, format="svg", metadata={"Date": None, "Creator": "wiresolve"})
-            written += [png, svg]
-    return written
+    return save(FIGURES, drawable(curve), curve, folder)
