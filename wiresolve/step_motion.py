@@ -82,8 +82,7 @@ def _opens(
     wire: ChargedWire, solved: ChargedSubbands, gate: str, step: GateStep, subband: int, coupling: float
 ) -> float:
     """The voltage at which a subband meets the Fermi level on another wire."""
-    carriers = solved.balanced.stage.carriers
-    stage = replace(solved.balanced.stage, carriers=replace(carriers, least=tuple(2 + n for n in solved.needs)))
+    stage = solved.balanced.stage.listing(solved.needs)
     before: Balanced | None = None
 
     def energy_at(voltage: float) -> float:

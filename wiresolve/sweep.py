@@ -119,8 +119,7 @@ class WireSweep:
     def _stage(self) -> Stage:
         """The mesh with as many states of each group of valleys as the list takes anywhere, and two more."""
         stage = self._ends[0].balanced.stage
-        needs = tuple(2 + max(each) for each in zip(*(end.needs for end in self._ends), strict=True))
-        return replace(stage, carriers=replace(stage.carriers, least=needs))
+        return stage.listing([max(each) for each in zip(*(end.needs for end in self._ends), strict=True)])
 
     @cached_property
     def _bar_eV(self) -> Array:

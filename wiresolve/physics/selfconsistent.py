@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import logging
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -58,6 +58,10 @@ class Stage:
     def places(self) -> Ints:
         """(k,) which of the field's charged cells admit carriers, in the order of the carriers' cells."""
         return np.searchsorted(self.field.cells, self.carriers.space.cells)
+
+    def listing(self, needs: Sequence[int]) -> Stage:
+        """The same with as many states of each group of valleys as a list takes, and two more, always solved."""
+        return replace(self, carriers=replace(self.carriers, least=tuple(2 + n for n in needs)))
 
 
 @dataclass(frozen=True, eq=False)
