@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from functools import cache
 from typing import Any
 
 import mpmath
@@ -38,6 +39,11 @@ TABLE: dict[float, dict[int, Sequence[str]]] = {
 """Roots k_m,n, n = 1, 2..., by inner radius (the outer one is 1) and m: the lowest of those that are tabulated."""
 
 
+MOST = 12
+"""Roots that are polished, more than any entry asks for."""
+
+
+@cache
 def roots(inner: float) -> list[tuple[float, int]]:
     """(k, m) of the lowest states in ascending order, bracketed by SciPy and polished by mpmath to 20 digits."""
 
@@ -47,14 +53,16 @@ def roots(inner: float) -> list[tuple[float, int]]:
     def exact(k: Any, m: int) -> Any:
         return mpmath.besselj(m, inner * k) * mpmath.bessely(m, k) - mpmath.besselj(m, k) * mpmath.bessely(m, inner * k)
 
-    found = []
     grid = np.linspace(1.0, 20.0, 2000)
+    brackets = []
     for m in range(8):
         values = cross(grid, m)
-        for i in np.flatnonzero(np.sign(values[:-1]) * np.sign(values[1:]) < 0):
-            with mpmath.workdps(20):
-                ends = (mpmath.mpf(float(grid[i])), mpmath.mpf(float(grid[i + 1])))
-                found.append((float(mpmath.findroot(lambda k, m=m: exact(k, m), ends, solver="anderson")), m))
+        brackets += [(i, m) for i in np.flatnonzero(np.sign(values[:-1]) * np.sign(values[1:]) < 0)]
+    found = []
+    for i, m in sorted(brackets)[:MOST]:
+        with mpmath.workdps(20):
+            ends = (mpmath.mpf(float(grid[i])), mpmath.mpf(float(grid[i + 1])))
+            found.append((float(mpmath.findroot(lambda k, m=m: exact(k, m), ends, solver="anderson")), m))
     return sorted(found)
 
 
