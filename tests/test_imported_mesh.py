@@ -30,7 +30,7 @@ from wiresolve.fem import cad_file
 from wiresolve.fem.meshing import Mesher, SizeField
 from wiresolve.fem.space import Space
 from wiresolve.loading import load
-from wiresolve.output.folder import write
+from wiresolve.output.writing import write
 from wiresolve.result import Result
 from wiresolve.solve import solve
 from wiresolve.units import HBAR2_OVER_2M0

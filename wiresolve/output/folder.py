@@ -1,102 +1,68 @@
-"""The result folder: written beside its target and renamed, so that it is there whole or not at all."""
+"""The folder of a result."""
 
 from __future__ import annotations
 
-import errno
-import os
-import secrets
-import shutil
-from collections.abc import Iterator
-from contextlib import contextmanager, suppress
-from dataclasses import dataclass
 from pathlib import Path
 
-from wiresolve.describe import input_files, wirefile
+from wiresolve.describe import wirefile
 from wiresolve.describe.problem import Problem
-from wiresolve.errors import InputError
 from wiresolve.output import tables, vtk
+from wiresolve.output.extras import Extras
+from wiresolve.output.target import FIGURES, INPUT, INPUTS, MEASURED, Contents, check_target, filling
 from wiresolve.result import Result
 
-INPUT, RESULT, SUBBANDS, MODES, FIGURES = "input.toml", "result.json", "subbands.csv", "modes.vtu", "figures"
-INPUTS = input_files.FOLDER
+RESULT, SUBBANDS, MODES, REPORT = "result.json", "subbands.csv", "modes.vtu", "report.html"
+VOLUME, ALONG_AXIS, POINTS, ELEMENTS = "volume.vtu", "along_axis", "modes.npz", "matrix_elements.csv"
 DRAWN = ("section", "modes", "levels", "density_of_states", "dispersion", "conductance", "sensitivity", "charge")
 """Names of the figures, known here without loading what draws them."""
-
-
-@dataclass(frozen=True)
-class Contents:
-    """What a kind of result folder holds of its own: `marker`, by which it is known, `entries` and figures' names."""
-
-    name: str
-    marker: str
-    entries: tuple[str, ...]
-    drawn: tuple[str, ...]
-
-
-SOLVED = Contents("result", RESULT, (INPUT, RESULT, SUBBANDS, MODES, FIGURES, INPUTS), DRAWN)
+SOLVED = Contents(
+    "result",
+    RESULT,
+    (
+        *(INPUT, INPUTS, RESULT, SUBBANDS, MODES, FIGURES, REPORT),
+        *(VOLUME, ALONG_AXIS, f"{ALONG_AXIS}.pvd", POINTS, ELEMENTS, MEASURED),
+    ),
+    DRAWN,
+)
 
 
 def write(
     result: Result,
     folder: str | Path,
+    extras: Extras,
     *,
     replace: bool = False,
-    figures: bool = True,
     status: str = tables.DONE,
     field: str = "folder",
 ) -> Path:
-    """Write a result into a folder: `input.toml`, `result.json`, `subbands.csv`, `modes.vtu` and `figures/`.
+    """Write a result into a folder: `input.toml`, `result.json`, `subbands.csv`, `modes.vtu`, and what `extras` names.
 
     Files that the wire file names (meshes, outlines, potentials) are copied into `inputs/`, where `input.toml` looks.
 
     Everything goes into a fresh hidden folder beside the target, which is then renamed; whatever stops it on the way
     leaves no part of a result, and an older one as it was. What else lies in the folder of an older result (notes, a
-    script, a picture of one's own under `figures`) goes over into the new one.
-
-    Parameters
-    ----------
-    result : what to write.
-    folder : the target; folders on the way to it are made.
-    replace : whether an older result there may be replaced. Nothing but a result or an empty folder ever is.
-    figures : whether to draw the figures.
-    status : a mark on the result ("done" where nothing is held against it), kept in its files.
-    field : what an error calls the target.
-
-    Returns
-    -------
-    The folder's absolute path.
-
-    Raises
-    ------
-    InputError
-        The target exists (and is not to be or cannot be replaced), cannot be written, or the disk is full.
+    script, a picture of one's own under `figures`) goes over into the new one. Parameters and errors are those of
+    `wiresolve.output.writing.write`.
     """
-    target = check_target(folder, replace=replace, field=field)
+    target = check_target(folder, replace=replace, field=field, contents=SOLVED)
     with filling(target, SOLVED, field) as fresh:
         write_input(result.problem, fresh)
         tables.write_json(result, fresh / RESULT, status)
         tables.write_subbands(result, fresh / SUBBANDS, status)
-        vtk.write_modes(result, fresh / MODES)
-        if figures:
+        vtk.write_modes(result, fresh / MODES, linear=extras.linear)
+        _write_fields(result, fresh, extras)
+        _write_elements(result, fresh, extras)
+        write_measured(extras, fresh)
+        if extras.figures:
             from wiresolve.output.figures import save_all
 
             (fresh / FIGURES).mkdir()
-            save_all(result, fresh / FIGURES)
+            save_all(result, fresh / FIGURES, measured=extras.measured)
+        if extras.report:
+            from wiresolve.output.report import write_report
+
+            write_report(fresh, fresh / REPORT)
     return target
-
-
-@contextmanager
-def filling(target: Path, contents: Contents, field: str) -> Iterator[Path]:
-    """A fresh folder beside `target` to fill, put in its place at the end; nothing is left of it on failure.
-
-    Raises
-    ------
-    InputError
-        It cannot be written or the disk is full.
-    """
-    with readable(target, field), _parents(target), _fresh_beside(target) as fresh:
-        yield fresh
-        _put_in_place(fresh, target, contents)
 
 
 def write_input(problem: Problem, fresh: Path) -> None:
@@ -107,175 +73,34 @@ def write_input(problem: Problem, fresh: Path) -> None:
         (fresh / path).write_bytes(content)
 
 
-def check_target(folder: str | Path, *, replace: bool, field: str = "folder", contents: Contents = SOLVED) -> Path:
-    """The absolute path of a target that a result can be written to; nothing is left behind by looking.
+def write_measured(extras: Extras, fresh: Path) -> None:
+    """The points that are laid over the staircase, where there are."""
+    if extras.measured is not None:
+        from wiresolve.output.measured import write
 
-    Raises
-    ------
-    InputError
-        As for `write`; called before a run, it saves the run.
-    """
-    path = Path(folder)
-    with readable(path, field):
-        target = path.resolve()
-        if target.exists():
-            if not target.is_dir():
-                raise InputError(field, "is a file, and a result is a folder", str(path), "give another name")
-            if not replace:
-                raise InputError(field, "exists already", str(path), _how_to_replace(field))
-            if any(target.iterdir()) and not ((target / contents.marker).is_file() and (target / INPUT).is_file()):
-                rule = f"exists and holds no {contents.name}, so it is not replaced"
-                raise InputError(field, rule, str(path), "give another name")
-        _try_place(target, path, field)
-    return target
+        write(extras.measured, fresh / MEASURED)
 
 
-def check_file(
-    path: str | Path, *, replace: bool, field: str = "path", suffix: str = "", source: str | Path | None = None
-) -> Path:
-    """The absolute path of a single file that can be written; nothing is left behind by looking.
+def _write_fields(result: Result, fresh: Path, extras: Extras) -> None:
+    """What ParaView opens beside the modes: the wire as a volume, and the modes as they change along the axis."""
+    if extras.extrude_nm is not None:
+        from wiresolve.output.volume import write_volume
 
-    Parameters
-    ----------
-    path : the file.
-    replace : whether it may be there already.
-    field : what an error calls it.
-    suffix : how the name of a file ends that may be replaced at all, like ".vtu"; any where empty.
-    source : a file that is read, hence never written.
+        write_volume(result, fresh / VOLUME, extras.extrude_nm, linear=extras.linear)
+    if extras.axial_frames:
+        from wiresolve.output.series import write_along_axis
 
-    Raises
-    ------
-    InputError
-        It exists and is not to be replaced, is a folder, is `source`, or cannot be written there.
-    """
-    given = Path(path)
-    with readable(given, field):
-        target = given.resolve()
-        if target.is_dir():
-            raise InputError(field, "is a folder, and a file is wanted", str(path), "give another name")
-        if target.exists():
-            if source is not None and target.samefile(source):
-                raise InputError(field, "is the input file itself", str(path), "give another name")
-            if suffix and target.suffix.lower() != suffix:
-                rule = f"exists and is no {suffix} file, so it is not replaced"
-                raise InputError(field, rule, str(path), "give another name")
-            if not replace:
-                raise InputError(field, "exists already", str(path), _how_to_replace(field))
-        _try_place(target, given, field)
-    return target
+        write_along_axis(result, fresh, extras.axial_frames, name=ALONG_AXIS, linear=extras.linear)
 
 
-def _how_to_replace(field: str) -> str:
-    """What to say to whoever typed an option, or called a function."""
-    return f"give another name, or {'say --replace' if field.startswith('--') else 'pass replace=True'}"
+def _write_elements(result: Result, fresh: Path, extras: Extras) -> None:
+    """What others compute on."""
+    if extras.points:
+        from wiresolve.output.quadrature import write_points
 
+        write_points(result, fresh / POINTS)
+    if extras.matrix_elements:
+        from wiresolve.mode_elements import matrix_elements
+        from wiresolve.output.matrix_element_tables import write_matrix_elements
 
-def _try_place(target: Path, given: Path, field: str) -> None:
-    """Make and remove a folder beside `target`: asking for permissions does not see every read-only disk."""
-    place = next(p for p in target.parents if p.exists())
-    if not place.is_dir():
-        raise InputError(field, f"cannot be made, {place} is a file", str(given), "give another name")
-    probe = _beside(place / target.name, "probe")
-    probe.mkdir()
-    probe.rmdir()
-
-
-def _beside(target: Path, purpose: str) -> Path:
-    return target.with_name(f".{target.name[:80]}.{secrets.token_hex(4)}.{purpose}")
-
-
-@contextmanager
-def writing(target: Path, field: str) -> Iterator[Path]:
-    """A path beside `target` to write one file to, renamed to `target` at the end and removed on failure.
-
-    Raises
-    ------
-    InputError
-        The file cannot be written or the disk is full.
-    """
-    with readable(target, field), _parents(target):
-        fresh = _beside(target, "partial")
-        try:
-            yield fresh
-            os.replace(fresh, target)
-        finally:
-            with suppress(OSError):
-                fresh.unlink()
-
-
-@contextmanager
-def _fresh_beside(target: Path) -> Iterator[Path]:
-    fresh = _beside(target, "partial")
-    try:
-        fresh.mkdir()
-        yield fresh
-    finally:
-        shutil.rmtree(fresh, ignore_errors=True)
-
-
-@contextmanager
-def _parents(target: Path) -> Iterator[None]:
-    """Make the folders on the way to `target`; if what follows fails, remove those that were made."""
-    missing = [p for p in target.parents if not p.exists()]
-    try:
-        target.parent.mkdir(parents=True, exist_ok=True)
-        yield
-    except BaseException:
-        for parent in missing:
-            with suppress(OSError):
-                parent.rmdir()
-        raise
-
-
-def _put_in_place(fresh: Path, target: Path, contents: Contents) -> None:
-    """Rename `fresh` to `target`, with the user's own entries of the folder that was there; undone on failure.
-
-    Those entries are never in a folder that gets removed: they leave the old one last, and return to it first.
-    """
-    old = _beside(target, "old")
-    own: list[Path] = []
-    try:
-        if target.exists():
-            own = _own_entries(target, fresh, contents)
-            os.replace(target, old)
-        os.replace(fresh, target)
-        for entry in own:
-            (target / entry).parent.mkdir(exist_ok=True)
-            os.replace(old / entry, target / entry)
-    except BaseException:
-        if old.exists():
-            for entry in own:
-                if not os.path.lexists(old / entry):
-                    os.replace(target / entry, old / entry)
-            if target.exists():
-                os.replace(target, fresh)
-            os.replace(old, target)
-        raise
-    shutil.rmtree(old, ignore_errors=True)
-
-
-def _own_entries(folder: Path, fresh: Path, contents: Contents) -> list[Path]:
-    """Relative paths of what lies in a result folder and is none of what this program writes there.
-
-    Copies of input files are known by their names only: those that `fresh` does not bring along stay.
-    """
-    own = [Path(p.name) for p in folder.iterdir() if p.name not in contents.entries]
-    copies = folder / INPUTS
-    if copies.is_dir() and not copies.is_symlink():
-        own += [Path(INPUTS, p.name) for p in copies.iterdir() if not (fresh / INPUTS / p.name).exists()]
-    drawn, pictures = {f"{name}.{kind}" for name in contents.drawn for kind in ("png", "svg")}, folder / FIGURES
-    if pictures.is_dir() and not pictures.is_symlink():
-        own += [Path(FIGURES, p.name) for p in pictures.iterdir() if p.name not in drawn]
-    return own
-
-
-@contextmanager
-def readable(target: Path, field: str) -> Iterator[None]:
-    """Turn the operating system's refusals into errors that a user can act on."""
-    try:
-        yield
-    except OSError as fault:
-        full = fault.errno in (errno.ENOSPC, errno.EDQUOT)
-        reason = "the disk is full" if full else f"cannot be written ({fault.strerror or fault})"
-        remedy = "make room, or give a folder on another disk" if full else "give a folder that you may write to"
-        raise InputError(field, reason, str(target), remedy) from fault
+        write_matrix_elements(matrix_elements(result), fresh / ELEMENTS)

@@ -25,7 +25,7 @@ from wiresolve.errors import InputError
 from wiresolve.fem.mesh import Mesh
 from wiresolve.gate_curve import Progress, Solver, Sweep, checked, gate_curve, solver_of
 from wiresolve.gate_result import FIELDS, GateCurve, GatePoint
-from wiresolve.output.folder import readable
+from wiresolve.output.target import readable
 from wiresolve.solve import versions
 
 FORMAT = "wiresolve-sweep-points-1"
@@ -225,7 +225,7 @@ def swept(
         finished = points.open(restart)
 
     def made(given: Problem) -> Sweep:
-        sweep = (solver or solver_of)(given)
+        sweep = solver(given) if solver is not None else solver_of(given, on_progress)
         with readable(points.folder, points.field):
             points.begin(sweep.mesh)
         if on_start is not None:
