@@ -1,11 +1,11 @@
-"""Modes and meshes as VTK files (`.vtu`) of curved Lagrange triangles, through VTK's own writer.
+"""Modes and meshes as VTK files (`.vtu`), curved Lagrange triangles or flat ones, through VTK's own writer.
 
 Only VTK's data model and XML modules are loaded: nothing here draws, so no display or graphics library is needed.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -14,57 +14,52 @@ import numpy as np
 from numpy.typing import NDArray
 
 from wiresolve.fem.mesh import Mesh
+from wiresolve.output.fields import Fields, flat_cells
+from wiresolve.output.mode_fields import mode_fields
 from wiresolve.result import Result
 
 if TYPE_CHECKING:
     from vtkmodules.vtkCommonDataModel import vtkUnstructuredGrid
 
-SEEN = 4.0
-SURROUNDINGS = ("below", "above", "beside")
+Ints = NDArray[np.int64]
+CURVED = "curved, of degree {degree}: integrals are exact with the cells' own functions"
+FLAT = "flat, through the nodes of curved cells of degree {degree}: integrals are approximate"
+_COMPRESSION = 3
+"""Of zlib; higher levels take twice as long and save nothing."""
 
 
-def write_modes(result: Result, path: str | Path) -> None:
-    """Write the envelope functions of a result on its curved mesh.
+def write_modes(result: Result, path: str | Path, *, linear: bool = False) -> None:
+    """Write the envelope functions of a result on its mesh.
 
     Point data: `psi_01_per_nm`, ... (normalised to 1 over the section) and `density_01_per_nm2`, ... (their squares at
-    the nodes). Cell data: `layer` and `material` (indices into the field data `layer_names`, `material_names`) and the
-    cell fields of the result (`axial_mass_of_first_valleys_m0`, `band_edge_of_first_valleys_eV`). Field data, one value
-    a subband: `energy_eV`, `error_eV`, `level`, `valley` (label of its group), `spin_degeneracy`, `valley_degeneracy`,
-    `axial_mass_m0` (not a number where E(k) starts linearly); and `input_digest`. Coordinates are in nm in the plane z
-    = 0. The same result gives the same bytes.
+    the nodes); of complex modes `psi_01_real_per_nm`, `psi_01_imaginary_per_nm` and `phase_01_rad` in place of the
+    first; `carriers_01_per_nm3`, ..., what each subband holds, where a Fermi level is known; `potential_energy_eV`, the
+    band edge of the first subband's valleys with the potential, from the energy zero (points where it jumps are there
+    once for each region; not a number where carriers are kept out). With gates or charge also `potential_V` and
+    `density_per_nm3`.
 
-    With gates or charge there are also the point data `potential_V`, `density_per_nm3` and
-    `potential_energy_eV`: the band edge of the first subband's valleys less the potential, from the Fermi level; of two
-    materials that meet the lower one, and not a number where carriers are kept out.
+    Cell data: `layer` and `material` (indices into the field data `layer_names`, `material_names`) and the cell fields
+    of the result (`axial_mass_of_first_valleys_m0`, `band_edge_of_first_valleys_eV`). Field data, one value a subband:
+    `subband`, `energy_eV`, `error_eV`, `level`, `valley` (label of its group), `k_min_per_nm`, `spin_degeneracy`,
+    `valley_degeneracy`, `axial_mass_m0` (not a number where E(k) starts linearly), `line_density_per_nm` where known;
+    and `title`, `energy_zero`, `input_digest`, `cells`. Coordinates are in nm in the plane z = 0. The same result gives
+    the same bytes.
+
+    Parameters
+    ----------
+    linear : flat triangles through the nodes of the curved cells, for programs that know no others; integrals over
+        them are approximate, as the field data `cells` says. Texts are UTF-8 numbers there (`input_digest_utf8`; lines
+        end with 10), because many programs know no strings.
 
     Raises
     ------
     OSError
         The file cannot be written.
     """
-    width = max(2, len(str(len(result.subbands))))
-    points: dict[str, NDArray[Any]] = {}
-    for column, subband in enumerate(result.subbands):
-        psi = np.ascontiguousarray(result.modes[:, column])
-        points[f"psi_{subband.index:0{width}d}_per_nm"] = psi
-        points[f"density_{subband.index:0{width}d}_per_nm2"] = psi**2
-    if result.charge is not None and (energy := result.potential_energy_eV) is not None:
-        points["potential_V"] = result.charge.potential_V
-        points["density_per_nm3"] = result.charge.density_per_nm3
-        points["potential_energy_eV"] = energy
-    fields: dict[str, NDArray[Any]] = {
-        "energy_eV": result.energies_eV,
-        "error_eV": result.errors_eV,
-        "level": np.array([s.level for s in result.subbands], dtype=np.int32),
-        "spin_degeneracy": np.array([s.spin_degeneracy for s in result.subbands], dtype=np.int32),
-        "valley_degeneracy": np.array([s.valley_degeneracy for s in result.subbands], dtype=np.int32),
-        "axial_mass_m0": np.array([np.nan if s.axial_mass is None else s.axial_mass for s in result.subbands]),
-    }
-    texts = {"valley": [s.valley for s in result.subbands], "input_digest": [result.problem.digest]}
-    save(grid(result.mesh, points, result.cell_fields, fields, texts), path)
+    save(plane(mode_fields(result), linear=linear), path)
 
 
-def write_section(mesh: Mesh, path: str | Path) -> None:
+def write_section(mesh: Mesh, path: str | Path, *, linear: bool = False) -> None:
     """Write a mesh alone, with `layer` and `material` on its cells.
 
     Raises
@@ -72,7 +67,7 @@ def write_section(mesh: Mesh, path: str | Path) -> None:
     OSError
         The file cannot be written.
     """
-    save(grid(mesh), path)
+    save(plane(Fields(mesh, active="layer"), linear=linear), path)
 
 
 def grid(
@@ -80,93 +75,106 @@ def grid(
     point_data: Mapping[str, NDArray[Any]] | None = None,
     cell_data: Mapping[str, NDArray[Any]] | None = None,
     field_data: Mapping[str, NDArray[Any]] | None = None,
-    texts: Mapping[str, list[str]] | None = None,
+    texts: Mapping[str, Sequence[str]] | None = None,
+    *,
+    linear: bool = False,
+    active: str = "",
 ) -> vtkUnstructuredGrid:
-    """A VTK grid of `VTK_LAGRANGE_TRIANGLE` cells with named arrays.
+    """A VTK grid of a mesh with named arrays.
 
     Parameters
     ----------
-    mesh : its cells list their nodes in the order that VTK uses too. Surroundings farther away than `SEEN` sizes of
-        all else are left out, or nothing of the wire would be seen.
+    mesh : surroundings farther away than four sizes of all else are left out.
     point_data, cell_data : arrays of shape (points,) and (cells,) by name.
     field_data, texts : numbers and lists of strings that belong to the whole file.
+    linear, active : as in `plane`, and the array that is shown at first.
+    """
+    given = Fields(mesh, point_data or {}, cell_data or {}, {}, field_data or {}, texts or {}, active)
+    return plane(given, linear=linear)
+
+
+def plane(fields: Fields, *, linear: bool = False) -> vtkUnstructuredGrid:
+    """A VTK grid of fields in the plane z = 0.
+
+    Parameters
+    ----------
+    linear : flat triangles through the nodes, in place of `VTK_LAGRANGE_TRIANGLE` cells of the mesh's degree.
+    """
+    from vtkmodules.vtkCommonDataModel import VTK_LAGRANGE_TRIANGLE, VTK_TRIANGLE
+
+    fields = prepared(fields, linear=linear)
+    mesh = fields.mesh
+    cells, kind = mesh.cells, VTK_LAGRANGE_TRIANGLE
+    if linear:
+        parts = flat_cells(mesh.degree)
+        cells, kind = cells[:, parts].reshape(-1, 3), VTK_TRIANGLE
+        repeated = {name: np.repeat(values, len(parts)) for name, values in fields.cells.items()}
+        fields = replace(fields, cells=repeated)
+    return assembled(np.column_stack([mesh.points, np.zeros(len(mesh.points))]), cells, kind, fields)
+
+
+def prepared(fields: Fields, *, linear: bool) -> Fields:
+    """Fields as they are written: with regions, without what is far away, jumps torn apart, kind of cells said."""
+    made, said = fields.with_regions().near().torn(), (FLAT if linear else CURVED).format(degree=fields.mesh.degree)
+    return replace(made, texts={**made.texts, "cells": [said]})
+
+
+def assembled(points: NDArray[np.float64], cells: Ints, kind: int, fields: Fields) -> vtkUnstructuredGrid:
+    """A VTK grid of one kind of cells.
+
+    Parameters
+    ----------
+    points : (n, 3) in nm.
+    cells : (c, nodes per cell) in the order that VTK has for `kind`.
+    fields : the arrays, of these numbers of points and cells. With flat cells texts are written as numbers.
     """
     from vtkmodules.util.numpy_support import numpy_to_vtk, numpy_to_vtkIdTypeArray
     from vtkmodules.vtkCommonCore import vtkPoints, vtkStringArray
-    from vtkmodules.vtkCommonDataModel import VTK_LAGRANGE_TRIANGLE, vtkCellArray, vtkUnstructuredGrid
+    from vtkmodules.vtkCommonDataModel import VTK_TRIANGLE, VTK_WEDGE, vtkCellArray, vtkUnstructuredGrid
 
-    def attach(target: Any, name: str, values: NDArray[Any]) -> None:
-        array = numpy_to_vtk(np.ascontiguousarray(values), deep=True)
-        array.SetName(name)
-        target.AddArray(array)
+    if kind in (VTK_TRIANGLE, VTK_WEDGE):
+        fields = fields.with_texts_as_numbers()
 
-    def attach_texts(target: Any, name: str, lines: list[str]) -> None:
+    def attach(target: Any, arrays: Mapping[str, NDArray[Any]]) -> None:
+        for name, values in arrays.items():
+            array = numpy_to_vtk(np.ascontiguousarray(values), deep=True)
+            array.SetName(name)
+            target.AddArray(array)
+
+    out = vtkUnstructuredGrid()
+    places = vtkPoints()
+    places.SetData(numpy_to_vtk(np.ascontiguousarray(points), deep=True))
+    out.SetPoints(places)
+    count, nodes = cells.shape
+    lists = vtkCellArray()
+    lists.SetData(
+        numpy_to_vtkIdTypeArray(np.arange(count + 1, dtype=np.int64) * nodes, deep=True),
+        numpy_to_vtkIdTypeArray(np.ascontiguousarray(cells, dtype=np.int64).ravel(), deep=True),
+    )
+    out.SetCells(kind, lists)
+    attach(out.GetCellData(), fields.cells)
+    attach(out.GetPointData(), fields.points)
+    attach(out.GetFieldData(), fields.numbers)
+    for name, lines in fields.texts.items():
         array = vtkStringArray()
         array.SetName(name)
         for line in lines:
             array.InsertNextValue(line)
-        target.AddArray(array)
-
-    if (near := _near(mesh)) is not None:
-        kept, used = near
-        number = np.full(len(mesh.points), -1)
-        number[used] = np.arange(len(used))
-        point_data = {name: values[used] for name, values in (point_data or {}).items()}
-        cell_data = {name: values[kept] for name, values in (cell_data or {}).items()}
-        mesh = replace(
-            mesh,
-            points=mesh.points[used],
-            cells=number[mesh.cells[kept]],
-            region=mesh.region[kept],
-            corners=number[mesh.corners][number[mesh.corners] >= 0],
-        )
-    out = vtkUnstructuredGrid()
-    xyz = np.zeros((len(mesh.points), 3))
-    xyz[:, :2] = mesh.points
-    points = vtkPoints()
-    points.SetData(numpy_to_vtk(xyz, deep=True))
-    out.SetPoints(points)
-    count, nodes = mesh.cells.shape
-    cells = vtkCellArray()
-    cells.SetData(
-        numpy_to_vtkIdTypeArray(np.arange(count + 1, dtype=np.int64) * nodes, deep=True),
-        numpy_to_vtkIdTypeArray(np.ascontiguousarray(mesh.cells, dtype=np.int64).ravel(), deep=True),
-    )
-    out.SetCells(VTK_LAGRANGE_TRIANGLE, cells)
-
-    names = list(dict.fromkeys(region.material for region in mesh.regions))
-    of_region = np.array([names.index(region.material) for region in mesh.regions], dtype=np.int32)
-    attach(out.GetCellData(), "layer", np.asarray(mesh.region, dtype=np.int32))
-    attach(out.GetCellData(), "material", of_region[mesh.region])
-    for name, values in (cell_data or {}).items():
-        attach(out.GetCellData(), name, values)
-    for name, values in (point_data or {}).items():
-        attach(out.GetPointData(), name, values)
-    for name, values in (field_data or {}).items():
-        attach(out.GetFieldData(), name, values)
-    attach_texts(out.GetFieldData(), "layer_names", [region.name for region in mesh.regions])
-    attach_texts(out.GetFieldData(), "material_names", names)
-    for name, lines in (texts or {}).items():
-        attach_texts(out.GetFieldData(), name, lines)
+        out.GetFieldData().AddArray(array)
+    for data in (out.GetPointData(), out.GetCellData()):
+        if fields.active and data.HasArray(fields.active):
+            data.SetActiveScalars(fields.active)
     return out
 
 
-def _near(mesh: Mesh) -> tuple[NDArray[np.int64], NDArray[np.int64]] | None:
-    """Cells and points without the surroundings farther than `SEEN` sizes of the rest; None where all are near."""
-    far = np.array([region.name.split()[0] in SURROUNDINGS for region in mesh.regions])
-    if not far.any():
-        return None
-    corner = mesh.points[mesh.cells[:, :3]]
-    own = corner[~far[mesh.region]].reshape(-1, 2)
-    low, high = own.min(axis=0), own.max(axis=0)
-    reach = SEEN * float((high - low).max())
-    inside = ((corner >= low - reach) & (corner <= high + reach)).all(axis=(1, 2))
-    kept = np.flatnonzero(inside | ~far[mesh.region])
-    return kept, np.unique(mesh.cells[kept])
+def save(data: vtkUnstructuredGrid, path: str | Path, *, compressed: bool = False) -> None:
+    """Write a grid as a `.vtu` file; OSError where it cannot be written.
 
-
-def save(data: vtkUnstructuredGrid, path: str | Path) -> None:
-    """Write a grid as a `.vtu` file; OSError where it cannot be written."""
+    Parameters
+    ----------
+    compressed : by zlib, for arrays that repeat themselves; the digits of a mode are as good as random, and a quarter
+        of their size costs three quarters of the time.
+    """
     from vtkmodules.vtkIOXML import vtkXMLUnstructuredGridWriter
 
     # VTK reports a full disk on its own error stream and returns; written to memory first, Python raises OSError.
@@ -174,7 +182,12 @@ def save(data: vtkUnstructuredGrid, path: str | Path) -> None:
     writer.SetInputData(data)
     writer.SetDataModeToAppended()
     writer.SetHeaderTypeToUInt64()
+    if compressed:
+        writer.SetCompressorTypeToZLib()
+        writer.SetCompressionLevel(_COMPRESSION)
+    else:
+        writer.SetCompressorTypeToNone()
     writer.WriteToOutputStringOn()
     if not writer.Write():
         raise RuntimeError("VTK could not serialise the mesh")
-    Path(path).write_text(writer.GetOutputString(), encoding="ascii")
+    Path(path).write_text(writer.GetOutputString(), encoding="utf-8")
