@@ -14,16 +14,23 @@ Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
 
-def canonical(pencil: Pencil, states: NDArray[Any], level: Ints, whole: int) -> NDArray[Any]:
+def canonical(
+    pencil: Pencil, states: NDArray[Any], level: Ints, whole: int, frame: tuple[Array, float] | None = None
+) -> NDArray[Any]:
     """States (n, m) of a one-band pencil turned within each level to one frame, with one sign each.
 
     In a level the frame diagonalises a function that is even in y and holds all angular harmonics, with a small odd
     part; the sign makes the overlap with a skew exponential positive. Levels from the number `whole` on may be cut and
     are left as they are.
+
+    Parameters
+    ----------
+    frame : the function's centre and size, `frame_of` another pencil; the pencil's own unless given.
     """
     space = pencil.space
-    place = (space.mesh.points[space.nodes[pencil.kept]] - space.center_nm) @ np.array([1, 1j])
-    place = 0.8 * place / np.abs(place).max()
+    center, reach = frame or frame_of(pencil)
+    place = (space.mesh.points[space.nodes[pencil.kept]] - center) @ np.array([1, 1j])
+    place = 0.8 * place / reach
     weight = (1 / (1 - place)).real + 1e-3 * place.imag
     skew = np.exp(1.3 * place.real + 0.7 * place.imag)
     out = np.array(states)
@@ -38,6 +45,13 @@ def canonical(pencil: Pencil, states: NDArray[Any], level: Ints, whole: int) -> 
     overlap = skew @ (pencil.mass @ out)
     phase = np.where(np.abs(overlap) > 0, overlap / np.maximum(np.abs(overlap), 1e-300), 1.0)
     return np.asarray(out * np.conj(phase) if np.iscomplexobj(out) else out * np.sign(phase))
+
+
+def frame_of(pencil: Pencil) -> tuple[Array, float]:
+    """Centre (2,) and size in nm of the function that tells a level's states apart: of the section, not of a mesh."""
+    space = pencil.space
+    center = space.center_nm
+    return center, float(np.hypot(*(space.mesh.points[space.nodes] - center).T).max())
 
 
 def shares(space: Space, states: NDArray[Any]) -> dict[str, Array]:

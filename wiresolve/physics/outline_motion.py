@@ -83,6 +83,12 @@ def outline_motion(section: Section, edges: OutlineEdges) -> OutlineMotion:
     return OutlineMotion(edges, tuple(fields), velocity, outward, tuple(unmoved))
 
 
+def growths(section: Section, edges: OutlineEdges) -> dict[str, Array]:
+    """By how much each edge moves to its right when one of the outlines grows by 1, (e,), by the growth's name."""
+    pieces = section.pieces()
+    return dict(_growths(pieces, _places(pieces, edges), edges))
+
+
 @dataclass(frozen=True, eq=False)
 class _Places:
     """Where edges lie: number of the piece and of the segment of its loop (e,), and parameters of their nodes (e, n).
