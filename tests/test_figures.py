@@ -2,23 +2,35 @@
 
 from __future__ import annotations
 
+import io
+import re
 import subprocess
 import sys
+import zlib
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
+from xml.etree import ElementTree
 
 import numpy as np
 import pytest
-from matplotlib import rcParams
+from fontTools.ttLib import TTFont
+from matplotlib import get_data_path, rc_context, rcParams
 from matplotlib.contour import ContourSet
+from matplotlib.figure import Figure
+from matplotlib.text import Text
 from PIL import Image
 
+from tests.gate_sweeps import PlateSweep, swept_problem
 from tests.synthetic import CORE_NM, RADIUS_NM, charged_result, core_shell_result, round_mesh, round_modes
 from wiresolve.describe.gates import Surroundings
 from wiresolve.describe.problem import Carriers
-from wiresolve.output import figures
+from wiresolve.gate_curve import gate_curve
+from wiresolve.output import figures, gate_curve_figures
+from wiresolve.output.canvas import CYCLE, FAINT
 from wiresolve.output.raster import edges, outline, outlines, raster
+from wiresolve.output.section_figure import MOST_MODES
+from wiresolve.output.style import DPI
 from wiresolve.output.tables import subband_table
 from wiresolve.physics.sensitivity import OutlineSensitivity
 from wiresolve.units import CONDUCTANCE_QUANTUM_SIEMENS
@@ -67,13 +79,13 @@ def test_all_figures_are_written_twice_alike(tmp_path: Path) -> None:
         (tmp_path / name).mkdir()
         figures.save_all(result, tmp_path / name)
     assert dict(rcParams) == before
-    names = {f"{name}.{kind}" for name in figures.drawable(result) for kind in ("png", "svg")}
+    names = {f"{name}.{kind}" for name in figures.drawable(result) for kind in ("png", "svg", "pdf")}
     assert {p.name for p in (tmp_path / "a").iterdir()} == names
     for name in names:
         assert (tmp_path / "a" / name).read_bytes() == (tmp_path / "b" / name).read_bytes(), name
     for path in (tmp_path / "a").glob("*.png"):
         with Image.open(path) as image:
-            colours = np.unique(np.asarray(image.convert("RGB")).reshape(-1, 3), axis=0)
+            colours = np.unique(np.asarray(image.convert("RGB")).astype(np.int64) @ [1 << 16, 1 << 8, 1])
             width_mm = image.width / image.info["dpi"][0] * 25.4
         assert len(colours) > 20, path
         assert width_mm == pytest.approx(86, abs=0.3) or width_mm == pytest.approx(178, abs=0.3), path
@@ -113,12 +125,17 @@ def words(axes: Any) -> list[str]:
     return [text.get_text() for text in axes.texts]
 
 
+def titles(figure: Figure) -> list[Text]:
+    """Of the modes, panel by panel."""
+    return [text for text in figure.axes[0].texts if text.get_text().startswith("subband")]
+
+
 def test_titles_of_modes_have_the_bars_of_the_table() -> None:
     result = core_shell_result(2)
     sharp = replace(result, subbands=tuple(replace(s, error_eV=3e-9) for s in result.subbands))
     table = subband_table(sharp)[2 : 2 + len(sharp.subbands)]
-    for axes, row in zip(figures.modes(sharp).axes, table, strict=True):
-        energy = axes.get_title().splitlines()[1].removesuffix(" meV")
+    for title, row in zip(titles(figures.modes(sharp)), table, strict=True):
+        energy = title.get_text().splitlines()[1].removesuffix(" meV")
         assert energy.endswith("± 0.000004") or energy.endswith("± 0.000003")
         assert energy in row
 
@@ -141,6 +158,11 @@ def test_a_long_bar_of_kT_is_cut_and_says_so() -> None:
         assert box.y1 <= ladder.title.get_window_extent().y0
 
 
+def curves_of(axes: Any) -> list[Any]:
+    """The lines of the dispersion without those that lead to labels."""
+    return [line for line in axes.lines if len(line.get_xdata()) > 3 and line.get_color() != FAINT]
+
+
 def test_labels_of_the_dispersion_stay_in_the_frame_and_have_lines() -> None:
     result = core_shell_result(30)
     figure = figures.dispersion(result)
@@ -153,7 +175,7 @@ def test_labels_of_the_dispersion_stay_in_the_frame_and_have_lines() -> None:
         box = text.get_window_extent()
         assert frame.y0 - 1 <= box.y0 and box.y1 <= frame.y1 + 1 and box.x1 <= figure.bbox.x1
     assert min(np.diff(heights), default=99) > 0.8 * 7 / 72 * figure.dpi
-    curves = [line for line in axes.lines if len(line.get_xdata()) > 3]
+    curves = curves_of(axes)
     looks = {
         (s.level, line.get_color(), str(line._dash_pattern)) for s, line in zip(result.subbands, curves, strict=True)
     }
@@ -178,17 +200,18 @@ def of_valleys(count: int) -> Any:
 
 def test_modes_name_their_valleys() -> None:
     figure = figures.modes(of_valleys(4))
-    assert [axes.get_title().splitlines()[2] for axes in figure.axes] == [
+    assert [title.get_text().splitlines()[2] for title in titles(figure)] == [
         "Delta [001]",
         "Delta [100] [010] and 1 more",
         "L [1-11] [1-1-1]",
         "Delta [001]",
     ]
-    assert [text.get_text() for text in figure.texts] == ["of valleys that are alike one is shown"]
-    boxes = [axes.title.get_window_extent() for axes in figure.axes]
+    (note,) = [text.get_text() for text in figure.texts]
+    assert note.endswith("of valleys that are alike one is shown")
+    boxes = [title.get_window_extent() for title in titles(figure)]
     assert all(box.x0 >= 0 and box.x1 <= figure.bbox.x1 and box.y1 <= figure.bbox.y1 for box in boxes)
-    plain = figures.modes(core_shell_result(4))
-    assert not plain.texts and len(plain.axes[0].get_title().splitlines()) == 2
+    plain = figures.modes(core_shell_result(1))
+    assert not plain.texts and len(titles(plain)[0].get_text().splitlines()) == 2
 
 
 def test_groups_of_valleys_have_lines_of_their_own() -> None:
@@ -203,7 +226,7 @@ def test_groups_of_valleys_have_lines_of_their_own() -> None:
         assert box.y1 <= figure.axes[0].xaxis.label.get_window_extent().y0 or draw is figures.levels
         shown = {"L [1-11] [1-1-1]", "Delta [001]", "Delta [100] [010] and 1 more"}
         assert shown <= handles
-    curves = [line for line in figures.dispersion(result).axes[0].lines if len(line.get_xdata()) > 3]
+    curves = curves_of(figures.dispersion(result).axes[0])
     dashes = [str(line._dash_pattern) for line in curves]
     assert dashes[0] == dashes[3] and len(set(dashes)) == 3
     assert not figures.dispersion(core_shell_result(4)).legends
@@ -265,7 +288,7 @@ def test_one_subband_and_many(tmp_path: Path) -> None:
     for count in (1, 30):
         result = core_shell_result(count)
         grid = figures.modes(result)
-        assert len(grid.axes) == min(count, figures.MOST_MODES)
+        assert len(titles(grid)) == min(count, MOST_MODES)
         figures.levels(result)
         figures.dispersion(result)
 
@@ -274,7 +297,7 @@ def test_one_level_without_bar_or_temperature_can_be_drawn(tmp_path: Path) -> No
     result = core_shell_result(1)
     problem = replace(result.problem, carriers=Carriers(temperature_K=(0.0,)))
     bare = replace(result, problem=problem, subbands=(replace(result.subbands[0], error_eV=0.0),), conductance=())
-    assert len(figures.save_all(bare, tmp_path)) == 2 * len(figures.drawable(bare))
+    assert len(figures.save_all(bare, tmp_path)) == 3 * len(figures.drawable(bare))
 
 
 def test_neither_pyplot_nor_a_renderer_is_loaded() -> None:
@@ -326,7 +349,7 @@ def test_charge_is_drawn_to_scale_and_true_to_its_values(kept_out: bool) -> None
     for axes in (left, right):
         (at_x, at_y), (to_x, to_y) = axes.transData.transform([(0, 0), (1, 1)])
         assert to_x - at_x == pytest.approx(to_y - at_y, rel=1e-9)
-    assert [bar.get_xlabel() for bar in (left_bar, right_bar)] == ["meV from the Fermi level", "10$^{18}$ cm$^{-3}$"]
+    assert [bar.get_xlabel() for bar in (left_bar, right_bar)] == ["meV from the Fermi level", "10¹⁸ cm⁻³"]
     assert ("blank" in figures.charge(charged_result(kept_out=kept_out)).texts[0].get_text()) == kept_out
 
 
@@ -378,3 +401,191 @@ def test_surroundings_are_shown_as_a_margin_and_not_to_their_ends() -> None:
     assert 1.1 * CORE_NM < high < 1.5 * CORE_NM
     (low, high), (bottom, top) = (figures.charge(wide).axes[0].get_xlim(), figures.charge(wide).axes[0].get_ylim())
     assert max(-low, high, -bottom, top) < 1.1 * CORE_NM
+
+
+def pdf_streams(content: bytes) -> list[bytes]:
+    """What a PDF holds, decompressed."""
+    found = []
+    for match in re.finditer(rb"stream\r?\n(.*?)\r?\nendstream", content, re.DOTALL):
+        try:
+            found.append(zlib.decompress(match[1]))
+        except zlib.error:
+            found.append(match[1])
+    return found
+
+
+def pdf_text(content: bytes) -> list[str]:
+    """The lines of text of a PDF whose fonts are of two-byte codes, by the tables that tell their letters."""
+    streams = pdf_streams(content)
+    letters: dict[int, str] = {}
+    for stream in streams:
+        for first, _, texts in re.findall(rb"<([0-9a-f]{4})> <([0-9a-f]{4})> \[([^]]*)\]", stream):
+            for place, text in enumerate(re.findall(rb"<([0-9a-f]*)>", texts)):
+                letters[int(first, 16) + place] = bytes.fromhex(text.decode()).decode("utf-16-be")
+    found = []
+    for block in re.findall(rb"BT\n(.*?)\nET", b"".join(s for s in streams if b"BT\n" in s), re.DOTALL):
+        shown = b"".join(re.findall(rb"\(((?:\\.|[^\\)])*)\)", block, re.DOTALL))
+        codes = re.sub(rb"\\(.)", rb"\1", shown, flags=re.DOTALL)
+        found.append("".join(letters[int.from_bytes(codes[k : k + 2], "big")] for k in range(0, len(codes), 2)))
+    return found
+
+
+def svg_text(content: str) -> list[str]:
+    spaced = "{http://www.w3.org/2000/svg}text"
+    return ["".join(text.itertext()) for text in ElementTree.fromstring(content).iter(spaced)]
+
+
+def shown_text(figure: Figure) -> set[str]:
+    """Every line of text of a figure but the numbers along its axes."""
+    texts = list(figure.texts)
+    for axes in figure.axes:
+        texts += [*axes.texts, axes.title, axes._left_title]
+        texts += [axes.xaxis.label, axes.yaxis.label] if axes.axison else []
+    for legend in (*figure.legends, *(axes.get_legend() for axes in figure.axes)):
+        texts += [] if legend is None else legend.get_texts()
+    return {line for text in texts for line in text.get_text().splitlines()}
+
+
+def test_text_stays_text_in_svg_and_pdf(tmp_path: Path) -> None:
+    segments = np.array([[[0.0, 0.0], [1.0, 0.0]], [[1.0, 0.0], [1.0, 1.0]]])
+    outline = OutlineSensitivity(segments, np.array([1.0, -1.0]), None)
+    for result in (replace(core_shell_result(6), outline_sensitivity=outline), charged_result()):
+        figures.save_all(result, tmp_path)
+        for name in figures.drawable(result):
+            wanted = shown_text(figures.FIGURES[name](result))
+            assert wanted, name
+            content = (tmp_path / f"{name}.pdf").read_bytes()
+            assert wanted <= set(svg_text((tmp_path / f"{name}.svg").read_text(encoding="utf-8"))), name
+            assert wanted <= set(pdf_text(content)), name
+            # TrueType, embedded; no letters as drawings of their own (Type 3).
+            assert content.count(b"/CIDFontType2") == content.count(b"/FontFile2") >= 1
+            assert b"/Type3" not in content and b"/CreationDate" not in content
+
+
+def test_every_kind_of_file_has_the_width_of_a_column_or_a_page(tmp_path: Path) -> None:
+    result = core_shell_result(6)
+    figures.save_all(result, tmp_path)
+    for name in figures.drawable(result):
+        svg = (tmp_path / f"{name}.svg").read_text(encoding="utf-8")
+        box = re.search(rb"/MediaBox \[ 0 0 ([\d.]+) ([\d.]+) \]", (tmp_path / f"{name}.pdf").read_bytes())
+        svg_box = re.search(r'<svg[^>]* width="([\d.]+)pt" height="([\d.]+)pt"|<svg[^>]* height="([\d.]+)pt"', svg)
+        assert box is not None and svg_box is not None
+        wide_pt = float(re.search(r'<svg[^>]*\bwidth="([\d.]+)pt"', svg)[1])  # type: ignore[index]
+        # A point is 1/72 inch, an inch 25.4 mm.
+        for points in (float(box[1]), wide_pt):
+            assert min(abs(points * 25.4 / 72 - width) for width in (86, 178)) < 0.01
+
+
+def test_callers_settings_change_nothing(tmp_path: Path) -> None:
+    result, files = core_shell_result(4), {}
+    odd = {"font.size": 22, "font.family": "serif", "axes.grid": True, "svg.fonttype": "path", "pdf.fonttype": 3}
+    odd |= {"savefig.dpi": 40, "lines.marker": "x", "axes.facecolor": "0.5", "savefig.bbox": "tight"}
+    for name, settings in (("plain", {}), ("odd", odd)):
+        with rc_context(settings):
+            figure = figures.conductance(result)
+        with rc_context(odd if name == "plain" else {}):
+            for kind in ("png", "svg", "pdf"):
+                path = tmp_path / f"{name}.{kind}"
+                figure.savefig(path)
+                files[name, kind] = path.read_bytes()
+    for kind in ("png", "svg", "pdf"):
+        assert files["plain", kind] == files["odd", kind]
+    (tmp_path / "all").mkdir()
+    figures.save_all(result, tmp_path / "all")
+    # As saved with the others, whoever saves it.
+    for kind in ("svg", "pdf"):
+        assert files["plain", kind] == (tmp_path / "all" / f"conductance.{kind}").read_bytes()
+
+
+def test_notebooks_show_a_figure_at_its_size() -> None:
+    content, about = figures.dispersion(core_shell_result(2))._repr_png_()  # type: ignore[attr-defined]
+    with Image.open(io.BytesIO(content)) as image:
+        assert image.width / image.info["dpi"][0] * 25.4 == pytest.approx(86, abs=0.3)
+    assert about["width"] == round(86 / 25.4 * 96)
+
+
+def test_modes_of_a_level_are_joined() -> None:
+    """Levels of a round hard wall: one, two, two, one, two, ... entries."""
+    figure = figures.modes(core_shell_result(6))
+    axes = figure.axes[0]
+    joins = [line for line in axes.lines if len(line.get_xdata()) == 2]
+    assert len(joins) == 2
+    for line, (first, last) in zip(joins, ((1, 2), (3, 4)), strict=True):
+        ends = [titles(figure)[n].get_window_extent() for n in (first, last)]
+        left, right = axes.transData.transform(np.column_stack(line.get_data()))
+        assert left[0] < ends[0].x0 and ends[1].x1 < right[0]
+        assert left[1] >= max(box.y1 for box in ends)
+    (note,) = [text.get_text() for text in figure.texts]
+    assert note == "modes of one level are joined by a line"
+    alone = figures.modes(core_shell_result(1))
+    assert not alone.axes[0].lines and not alone.texts
+
+
+def test_pixels_of_modes_lie_within_their_outlines() -> None:
+    """Eight modes in two rows: each picture is 24 nm wide within a frame 1 % wider on both sides, as its outline is."""
+    figure = figures.modes(core_shell_result(8))
+    axes = figure.axes[0]
+    (image,) = axes.images
+    left, right, bottom, top = image.get_extent()
+    inked = np.asarray(image.get_array())[:, :, 3] > 0
+    rows, columns = inked.shape
+    assert ((right - left) / columns, (top - bottom) / rows) == pytest.approx((25.4 / DPI, 25.4 / DPI))
+    (path,) = [patch for patch in axes.patches if not patch.get_fill()]
+    points = path.get_path().vertices
+    at = np.floor((points - [left, bottom]) / (25.4 / DPI)).astype(int)
+    # Inked pixels end where the outlines do, to a pixel.
+    assert np.flatnonzero(inked.any(axis=0))[[0, -1]] == pytest.approx([at[:, 0].min(), at[:, 0].max()], abs=1)
+    assert np.flatnonzero(inked.any(axis=1))[[0, -1]] == pytest.approx([at[:, 1].min(), at[:, 1].max()], abs=1)
+
+
+def test_the_font_of_figures_is_a_part_of_dejavu() -> None:
+    """The same outlines and widths, hence the same look; letters that it lacks come from the whole font."""
+    part = TTFont(Path(figures.__file__).with_name("fonts") / "figures.ttf")
+    whole = TTFont(Path(get_data_path(), "fonts", "ttf", "DejaVuSans.ttf"))
+    assert {"GPOS", "GSUB", "MATH"}.isdisjoint(part.keys())
+    letters, others = part.getBestCmap(), whole.getBestCmap()
+    assert set(map(chr, range(33, 127))) | set("µ²°±×–−“”←→↓↑…") <= set(map(chr, letters))
+    for code, name in letters.items():
+        assert part["hmtx"][name] == whole["hmtx"][others[code]]
+    assert part["name"].getDebugName(1) == "DejaVu Sans Figures"
+    assert "Bitstream" in (Path(figures.__file__).with_name("fonts") / "LICENSE_DEJAVU").read_text(encoding="utf-8")
+
+
+def test_rare_letters_are_drawn_too(recwarn: pytest.WarningsRecorder, tmp_path: Path) -> None:
+    result = core_shell_result(1)
+    spelt = replace(result, problem=replace(result.problem, title="Ж wire, Ω"))
+    figures.section(spelt).savefig(tmp_path / "rare.pdf")
+    assert not recwarn.list
+    assert "Ж wire, Ω" in "".join(pdf_text((tmp_path / "rare.pdf").read_bytes()))
+
+
+def test_colours_are_those_that_were_published() -> None:
+    """M. Okabe and K. Ito, Color Universal Design (2008): red, green and blue of their eight colours, from memory."""
+    published = {
+        "blue": (0, 114, 178),
+        "orange": (230, 159, 0),
+        "bluish green": (0, 158, 115),
+        "reddish purple": (204, 121, 167),
+        "sky blue": (86, 180, 233),
+        "vermilion": (213, 94, 0),
+        "yellow": (240, 228, 66),
+        "black": (0, 0, 0),
+    }
+    assert [tuple(bytes.fromhex(code[1:])) for code in CYCLE] == list(published.values())
+
+
+def test_units_stand_on_every_axis() -> None:
+    unit = re.compile(r"\((m?eV|V|µA|µS|nm|1/nm|1/\(meV nm\)|nF/m|G0 = 2e²/h)\)$|\bmeV\b|cm⁻³$")
+    plain, charged, curve = core_shell_result(6), charged_result(), gate_curve(swept_problem(), solver=PlateSweep)
+    drawn = [figures.FIGURES[name](result) for result in (plain, charged) for name in figures.drawable(result)]
+    drawn += [gate_curve_figures.FIGURES[name](curve) for name in gate_curve_figures.drawable(curve)]
+    labels = [
+        axis.label.get_text()
+        for figure in drawn
+        for axes in figure.axes
+        if axes.axison
+        for axis in (axes.xaxis, axes.yaxis)
+    ]
+    named = [label for label in labels if label]
+    assert len(named) > 25
+    assert [label for label in named if not unit.search(label)] == []

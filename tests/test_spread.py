@@ -9,13 +9,15 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from matplotlib.collections import LineCollection
+from matplotlib.colors import LinearSegmentedColormap
+from matplotlib.patches import PathPatch
 
 from tests.synthetic import core_shell_result
 from tests.truth._wires import material, wire
 from wiresolve.describe.section import Layer, Section
 from wiresolve.describe.shapes import Circle, Polygon, Rectangle
 from wiresolve.fem.outline import outline_edges
+from wiresolve.output.canvas import ENDS
 from wiresolve.output.outline_figure import sensitivity
 from wiresolve.output.tables import sensitivity_table, subbands_csv
 from wiresolve.physics.outline_motion import outline_motion
@@ -158,6 +160,11 @@ def test_along_a_rectangle() -> None:
     assert found.spacing_eV_per_nm2 is None
 
 
+def pairs(patch: PathPatch) -> np.ndarray:
+    """The pieces of straight line that a patch draws, (m, 2, 2)."""
+    return np.asarray(patch.get_path().vertices).reshape(-1, 2, 2)
+
+
 def test_figure_shows_what_was_found() -> None:
     corner = np.array([[-5.0, -3.0], [5.0, -3.0], [5.0, 3.0], [-5.0, 3.0]])
     segments = np.stack([corner, np.roll(corner, -1, axis=0)], axis=1)
@@ -166,9 +173,18 @@ def test_figure_shows_what_was_found() -> None:
     figure = sensitivity(both)
     first, first_bar, second, _ = figure.axes
     for axes, shown in ((first, values), (second, -values)):
-        casing, lines = (c for c in axes.collections if isinstance(c, LineCollection))
-        np.testing.assert_allclose(lines.get_array(), 1e3 * shown)
-        assert len(casing.get_segments()) == 4
+        casing, *shades = (p for p in axes.get_children() if isinstance(p, PathPatch))
+        assert len(casing.get_path().vertices) == 2 * len(segments)
+        colour = [
+            next(s.get_edgecolor() for s in shades if any((pair == own).all() for pair in pairs(s))) for own in segments
+        ]
+        # One colour for one value, and the map's own: as far from its middle as the value is from zero.
+        assert colour[0] == colour[2] and len({*colour}) == 3
+        # The extreme of the outline may lie beyond the colours' ends, which are those of the next one.
+        top = np.sort(np.abs(shown))[-2]
+        ends = LinearSegmentedColormap.from_list("signed", ENDS)
+        for value, own in zip(shown, colour, strict=True):
+            np.testing.assert_allclose(own, ends(np.clip((value / top + 1) / 2, 0, 1)), atol=0.02)
         assert (axes.get_xlabel(), axes.get_ylabel()) == ("x (nm)", "y (nm)")
     assert first_bar.get_xlabel().startswith("meV")
     one = core_shell_result(outline_sensitivity=OutlineSensitivity(segments, values, None))

@@ -1,99 +1,40 @@
-"""What all figures share: sizes in mm, style, colours, and axes placed in mm."""
+"""What all figures share: sizes and places in mm, colours, marks and labels."""
 
 from __future__ import annotations
 
-import functools
 import math
 import re
 from collections.abc import Callable, Mapping, Sequence
-from contextlib import AbstractContextManager
 from pathlib import Path
-from types import MappingProxyType
-from typing import TYPE_CHECKING, Any, TypeVar
+from typing import TYPE_CHECKING, Any, Literal
 
-import matplotlib
 import numpy as np
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.colors import to_rgb
 from matplotlib.figure import Figure
+from matplotlib.patches import PathPatch
+from matplotlib.path import Path as Outline
 from matplotlib.ticker import MaxNLocator
 from matplotlib.transforms import blended_transform_factory
 
+from wiresolve.describe.appearance import CYCLE as CYCLE
+from wiresolve.describe.appearance import INK as INK
+from wiresolve.describe.appearance import order_of_appearance as order_of_appearance
+from wiresolve.output.style import DPI, Drawing
+from wiresolve.output.target import PICTURES
 from wiresolve.result import Result
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-Drawn = TypeVar("Drawn")
-"""What is drawn: a result or a gate curve."""
 COLUMN_MM, PAGE_MM = 86.0, 178.0
 _DASHES: tuple[Any, ...] = ("-", (0, (4, 1.4)), (0, (1.4, 0.9)), (0, (5, 1.2, 1, 1.2)), (0, (8, 2)), (0, (2, 2)))
-CYCLE = ("#0072B2", "#E69F00", "#009E73", "#CC79A7", "#56B4E9", "#D55E00", "#F0E442", "#000000")
-INK, FAINT = "#262626", "#8c8c8c"
-_DPI = 200
-STYLE = MappingProxyType(
-    {
-        "font.family": "DejaVu Sans",
-        "font.size": 8.0,
-        "axes.titlesize": 8.0,
-        "axes.labelsize": 8.0,
-        "xtick.labelsize": 7.0,
-        "ytick.labelsize": 7.0,
-        "legend.fontsize": 7.0,
-        "legend.frameon": False,
-        "axes.linewidth": 0.6,
-        "axes.edgecolor": INK,
-        "axes.labelcolor": INK,
-        "axes.spines.top": False,
-        "axes.spines.right": False,
-        "text.color": INK,
-        "xtick.color": INK,
-        "ytick.color": INK,
-        "xtick.major.width": 0.6,
-        "ytick.major.width": 0.6,
-        "xtick.major.size": 2.5,
-        "ytick.major.size": 2.5,
-        "lines.linewidth": 1.2,
-        "path.simplify": True,
-        "svg.fonttype": "none",
-        "svg.hashsalt": "wiresolve",
-        "figure.dpi": _DPI,
-        "savefig.dpi": _DPI,
-    }
-)
-
-
-def style() -> AbstractContextManager[None]:
-    """This module's style in place of the caller's settings, for the time of a `with` block."""
-    settings: dict[Any, Any] = dict(STYLE)
-    return matplotlib.rc_context(settings)
-
-
-def styled(draw: Callable[[Drawn], Figure]) -> Callable[[Drawn], Figure]:
-    """Draw in this module's style whatever the caller's settings are, and leave those alone."""
-
-    @functools.wraps(draw)
-    def drawn(result: Drawn) -> Figure:
-        with style():
-            return draw(result)
-
-    return drawn
+FAINT, GRID = "#8c8c8c", "#e4e4e4"
 
 
 def thermal_colour(number: int) -> str:
     """The colour of the carriers' temperature of that number, the same in all figures."""
     return CYCLE[(number + 1) % len(CYCLE)]
-
-
-def order_of_appearance(names: Sequence[str]) -> list[int]:
-    """Regions from the core outwards, then patches, insulators, and what is around and outside."""
-
-    def rank(number: int) -> tuple[int, int]:
-        kind, _, count = names[number].partition(" ")
-        known = {"core": 0, "layer": 1, "patch": 2, "insulator": 4, "below": 5, "above": 6, "beside": 7, "outside": 8}
-        return known.get(kind, 3), int(count) if count.isdigit() else number
-
-    return sorted(range(len(names)), key=rank)
 
 
 def goes_on(name: str) -> bool:
@@ -114,13 +55,39 @@ def dashes_of(labels: Sequence[str]) -> dict[str, Any]:
 
 def canvas(width_mm: float, height_mm: float) -> tuple[Figure, Callable[[float, float, float, float], Axes]]:
     """A figure, and a function that adds axes to it by left, bottom, width and height in mm."""
-    figure = Figure(figsize=(width_mm / 25.4, height_mm / 25.4))
+    figure = Drawing(figsize=(width_mm / 25.4, height_mm / 25.4))
     FigureCanvasAgg(figure)
 
     def rect(left: float, bottom: float, width: float, height: float) -> Axes:
         return figure.add_axes((left / width_mm, bottom / height_mm, width / width_mm, height / height_mm))
 
     return figure, rect
+
+
+def trace(
+    axes: Axes,
+    lines: Any,
+    colour: Any,
+    width: float,
+    *,
+    zorder: float = 2,
+    alpha: float | None = None,
+    cap: Literal["butt", "round"] = "butt",
+) -> None:
+    """Draw polylines, (m, n, 2) in data coordinates, as one path: there may be thousands of them."""
+    points = np.asarray(lines, dtype=float)
+    if not points.size:
+        return
+    codes = np.full(points.shape[:2], Outline.LINETO)
+    codes[:, 0] = Outline.MOVETO
+    path = Outline(points.reshape(-1, 2), codes.ravel())
+    style: dict[str, Any] = {"capstyle": cap, "joinstyle": "round", "alpha": alpha, "zorder": zorder}
+    axes.add_artist(PathPatch(path, fill=False, ec=colour, lw=width, **style))
+
+
+def titled(axes: Axes, text: str, size: float = 7.0, pad: float = 5.0) -> None:
+    """A title flush left above the axes, at a fixed height: Matplotlib would measure all labels to find one."""
+    axes.set_title(text, loc="left", pad=pad, fontsize=size, linespacing=1.3, y=1.0)
 
 
 def bare(axes: Axes, extent: tuple[float, float, float, float]) -> None:
@@ -188,14 +155,16 @@ def label_lines(axes: Axes, start: float, at: Sequence[float], texts: Sequence[s
     if not at:
         return
     frame = axes.get_window_extent()
-    wide, high = frame.width / _DPI * 25.4, frame.height / _DPI * 25.4
+    wide, high = frame.width / DPI * 25.4, frame.height / DPI * 25.4
     low, top = axes.get_ylim()
     gap = gap_mm / high * (top - low)
     places = spread(at, gap, (low + gap / 2, top - gap / 2))
     bends = [start + mm / wide for mm in (0.0, 2.2, 3.2)]
     across = axes.get_yaxis_transform()
-    for height, place, text in zip(at, places, texts, strict=True):
-        axes.plot(bends, [height, place, place], color=FAINT, lw=0.5, clip_on=False, transform=across)
+    # One line with gaps.
+    heights = np.column_stack([at, places, places, np.full(len(at), np.nan)])
+    axes.plot([*bends, np.nan] * len(at), heights.ravel(), color=FAINT, lw=0.5, clip_on=False, transform=across)
+    for place, text in zip(places, texts, strict=True):
         axes.text(bends[2] + 0.6 / wide, place, text, transform=across, va="center", fontsize=7)
 
 
@@ -240,6 +209,18 @@ def mark_fermi(axes: Axes, result: Result, along: str) -> None:
         axes.annotate("Fermi level", (0, part), shift, ha="left", va=side, zorder=4, **style)
 
 
+def with_fermi(result: Result, low: float, high: float) -> tuple[float, float]:
+    """A range in meV, widened by up to a third of itself where that brings the wire file's Fermi level into view."""
+    level, room = result.problem.fermi_level_eV, 0.3 * (high - low)
+    if level is None or not low - room <= 1e3 * level <= high + room:
+        return low, high
+    return min(low, 1e3 * level - 0.1 * room), max(high, 1e3 * level + 0.1 * room)
+
+
+def from_zero(result: Result) -> str:
+    return "Energy (meV)" if result.charge is None else "Energy from the Fermi level (meV)"
+
+
 ENDS = ("#00395c", "#2f8fca", "#ffffff", "#ee8647", "#7d3200")
 
 
@@ -260,10 +241,8 @@ def coloured(values: Any) -> Any:
     return table[np.where(inside, np.rint(half * t).astype(np.int64) + half, -1)]
 
 
-def save(
-    made: Mapping[str, Callable[[Drawn], Figure]], names: Sequence[str], thing: Drawn, folder: str | Path
-) -> list[Path]:
-    """Draw the named figures of a thing and write each as PNG and SVG; the same thing gives the same bytes.
+def save(made: Mapping[str, Callable[[], Figure]], folder: str | Path) -> list[Path]:
+    """Draw each of the named figures once and write it as PNG, SVG and PDF; the same thing gives the same bytes.
 
     Raises
     ------
@@ -271,11 +250,11 @@ def save(
         A file cannot be written.
     """
     written = []
-    with style():
-        for name in names:
-            figure = made[name](thing)
-            png, svg = Path(folder) / f"{name}.png", Path(folder) / f"{name}.svg"
-            figure.savefig(png, format="png", metadata={"Software": None}, pil_kwargs={"compress_level": 4})
-            figure.savefig(svg, format="svg", metadata={"Date": None, "Creator": "wiresolve"})
-            written += [png, svg]
+    for name, draw in made.items():
+        figure = draw()
+        for kind in PICTURES:
+            path = Path(folder) / f"{name}.{kind}"
+            more: dict[str, Any] = {"pil_kwargs": {"compress_level": 3}} if kind == "png" else {}
+            figure.savefig(path, format=kind, **more)
+            written.append(path)
     return written

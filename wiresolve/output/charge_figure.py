@@ -6,13 +6,13 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
-from matplotlib.collections import LineCollection
 from matplotlib.colors import LinearSegmentedColormap, Normalize
 from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 
-from wiresolve.output.canvas import ENDS, INK, PAGE_MM, canvas, extent_of, goes_on, styled
+from wiresolve.output.canvas import ENDS, INK, PAGE_MM, canvas, extent_of, goes_on, trace
 from wiresolve.output.raster import Raster, edges, near, outlines, raster
+from wiresolve.output.style import styled
 from wiresolve.output.valley_names import members, short_valleys
 from wiresolve.result import Result
 
@@ -67,7 +67,7 @@ def charge(result: Result) -> Figure:
     valleys = result.subbands[0].valley
     shown = (
         _Panel("Potential energy of electrons", "meV from the Fermi level", energy, *_ends(energy), _DEEP),
-        _Panel("Density of carriers", "10$^{18}$ cm$^{-3}$", density, 0.0, _ends(density)[1], _DENSE),
+        _Panel("Density of carriers", "10¹⁸ cm⁻³", density, 0.0, _ends(density)[1], _DENSE),
     )
     named = f" of the {short_valleys(valleys)} valleys" if len(members(valleys)[1]) else ""
     notes = [f"Potential energy is the band edge{named} less the potential"]
@@ -79,10 +79,10 @@ def charge(result: Result) -> Figure:
         at_x = place * slot + 14 + (slot - 20 - wide) / 2
         axes = rect(at_x, below, wide, high)
         _picture(axes, pixels, panel, extent)
-        axes.add_collection(LineCollection(lines, colors=INK, linewidths=0.6, zorder=3))
+        trace(axes, lines, INK, 0.6, zorder=3)
         if place == 0 and _fermi(axes, pixels, energy, pixels.by_cell(mesh.region.astype(float))):
             notes.append("dashed where it passes through the Fermi level")
-        axes.set_title(panel.title, fontsize=8, pad=4)
+        axes.set_title(panel.title, fontsize=8, pad=4, y=1.0)
         axes.xaxis.set_major_locator(MaxNLocator(max(1, min(6, round(wide / 11)))))
         axes.yaxis.set_major_locator(MaxNLocator(max(1, min(6, round(high / 9)))))
         _bar(figure, rect(place * slot + 18, below - 14.5, slot - 28, 2.6), panel)

@@ -1,9 +1,10 @@
-"""Figures of a gate curve: each function returns a Matplotlib figure; `save_all` writes PNG and SVG."""
+"""Figures of a gate curve: each function returns a Matplotlib figure; `save_all` writes PNG, SVG and PDF."""
 
 from __future__ import annotations
 
 import math
 from collections.abc import Callable, Sequence
+from functools import partial
 from pathlib import Path
 from types import MappingProxyType
 from typing import TYPE_CHECKING
@@ -17,6 +18,7 @@ from wiresolve.gate_result import Array, GateCurve
 from wiresolve.output.canvas import (
     COLUMN_MM,
     CYCLE,
+    GRID,
     INK,
     PAGE_MM,
     canvas,
@@ -26,8 +28,11 @@ from wiresolve.output.canvas import (
     mark,
     save,
     shortened,
-    styled,
+    titled,
 )
+from wiresolve.output.measured import GATE_VOLTAGE, Measured
+from wiresolve.output.measured_points import lay_over
+from wiresolve.output.style import styled
 from wiresolve.output.valley_names import short_valleys
 from wiresolve.units import CONDUCTANCE_QUANTUM_SIEMENS, KB
 
@@ -86,7 +91,7 @@ def _lines_of_levels(curve: GateCurve) -> list[tuple[int, str]]:
 def _title(axes: Axes, curve: GateCurve, text: str, pad: float = 5) -> None:
     """A title, with a line about the crosses where points failed (see `_room`)."""
     note = "\n× did not converge" if curve.failed else ""
-    axes.set_title(text + note, loc="left", pad=pad, fontsize=6.5, linespacing=1.3)
+    titled(axes, text + note, 6.5, pad)
 
 
 def _room(curve: GateCurve) -> float:
@@ -145,18 +150,32 @@ def levels(curve: GateCurve) -> Figure:
 
 
 @styled
-def staircase(curve: GateCurve) -> Figure:
-    """Conductance against gate voltage in G0 and in microsiemens, the voltages at which steps open marked."""
+def staircase(curve: GateCurve, measured: Measured | None = None) -> Figure:
+    """Conductance against gate voltage in G0 and in microsiemens, the voltages at which steps open marked.
+
+    Measured points are laid over it where they are given (`output.measured`).
+
+    Raises
+    ------
+    InputError
+        The measured points are not against a gate voltage.
+    """
+    if measured is not None:
+        measured.require(GATE_VOLTAGE)
     figure, rect = canvas(COLUMN_MM, 68 + _room(curve))
     axes = rect(13, 12, COLUMN_MM - 29, 68 - 20)
     voltages, conductance = _voltages(curve), _column(curve, "conductance_G0")
-    axes.plot(voltages, conductance, "-o", color=CYCLE[0], lw=1.2, ms=1.8)
-    top = max(1.0, 1.06 * float(np.nanmax(conductance)))
+    axes.plot(voltages, conductance, "-o", color=CYCLE[0], lw=1.2, ms=1.8, label="computed")
+    axes.set_xlim(float(voltages.min()), float(voltages.max()))
+    highest = float(np.nanmax(conductance))
+    if measured is not None:
+        highest = max(highest, lay_over(axes, measured))
+        axes.legend(loc="upper left", handlelength=1.4, borderpad=0.2)
+    top = max(1.0, 1.06 * highest)
     axes.set_ylim(0, top)
     axes.set_yticks(np.arange(0, math.floor(top) + 1, max(1, math.ceil(top / 12))))
-    axes.grid(axis="y", color="#e4e4e4", lw=0.5)
+    axes.grid(axis="y", color=GRID, lw=0.5)
     axes.set_axisbelow(True)
-    axes.set_xlim(float(voltages.min()), float(voltages.max()))
     mark(axes, _opened(curve))
     _across(axes, curve)
     axes.set_ylabel("Conductance (G0 = 2e²/h)")
@@ -215,7 +234,7 @@ def density_and_capacitance(curve: GateCurve) -> Figure:
     lower.yaxis.set_major_formatter(lambda value, _: f"{value:g}")
     _across(lower, curve)
     lower.set_ylabel("Capacitance (nF/m)")
-    lower.set_title("1/all = 1/geometric + 1/quantum + 1/centroid", loc="left", pad=5, fontsize=6.5)
+    titled(lower, "1/all = 1/geometric + 1/quantum + 1/centroid", 6.5)
     figure.legend(handles=lower.lines[3::-1], loc="lower center", ncols=4, handlelength=1.4, columnspacing=1.0)
     return figure
 
@@ -301,7 +320,7 @@ def output(curve: GateCurve) -> Figure:
     axes.set_xlabel("Drain voltage (V)")
     axes.set_ylabel("Current (µA)")
     more = f", {len(some)} of {len(gates)} shown" if len(some) < len(gates) else ""
-    axes.set_title(f"At {curve.temperature_K:g} K; gate voltages on the right{more}", loc="left", pad=6, fontsize=6.5)
+    titled(axes, f"At {curve.temperature_K:g} K; gate voltages on the right{more}", 6.5, 6)
     return figure
 
 
@@ -323,12 +342,17 @@ def drawable(curve: GateCurve) -> Sequence[str]:
     return [name for name in FIGURES if name not in missing]
 
 
-def save_all(curve: GateCurve, folder: str | Path) -> list[Path]:
-    """Write every figure as PNG and SVG into an existing folder; the same curve gives the same bytes.
+def save_all(curve: GateCurve, folder: str | Path, measured: Measured | None = None) -> list[Path]:
+    """Write every figure as PNG, SVG and PDF into an existing folder; the same curve gives the same bytes.
+
+    Measured points are laid over the staircase.
 
     Raises
     ------
+    InputError
+        The measured points are not against a gate voltage.
     OSError
         A file cannot be written.
     """
-    return save(FIGURES, drawable(curve), curve, folder)
+    made = {name: partial(FIGURES[name], curve) for name in drawable(curve)}
+    return save(made | {"staircase": partial(staircase, curve, measured)}, folder)

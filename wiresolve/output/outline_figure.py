@@ -5,12 +5,12 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
-from matplotlib.collections import LineCollection
 from matplotlib.colors import LinearSegmentedColormap, Normalize
 from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 
-from wiresolve.output.canvas import COLUMN_MM, ENDS, INK, PAGE_MM, canvas, extent_of, styled
+from wiresolve.output.canvas import COLUMN_MM, ENDS, INK, PAGE_MM, canvas, extent_of, trace
+from wiresolve.output.style import styled
 from wiresolve.output.valley_names import members
 from wiresolve.result import Result
 
@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 
 _SHOWN = 0.98
 """Share of the outlines' length whose values the colours span: in the corners values have no bound."""
-_LINE_PT, _CASING_PT = 3.4, 4.4
+_LINE_PT, _CASING_PT, _SHADES = 3.4, 4.4, 128
 
 
 @styled
@@ -78,12 +78,12 @@ def _drawn(axes: Axes, segments: Any, values: Any, extent: tuple[float, float, f
     order = np.argsort(np.abs(values))
     inner = np.cumsum(length[order]) <= _SHOWN * length.sum()
     top = float(np.abs(values[order][inner]).max(initial=0.0)) or float(np.abs(values).max(initial=0.0)) or 1.0
-    casing = LineCollection(list(segments), colors=INK, linewidths=_CASING_PT, capstyle="round")
-    axes.add_collection(casing)
-    lines = LineCollection(list(segments), cmap=_map(), norm=Normalize(-top, top), linewidths=_LINE_PT)
-    lines.set_capstyle("round")
-    lines.set_array(values)
-    axes.add_collection(lines)
+    trace(axes, segments, INK, _CASING_PT, zorder=2, cap="round")
+    # A path for each of the colours in place of one for each segment.
+    colours, share = _map(), np.clip((values / top + 1) / 2, 0, 1)
+    shade = np.rint(_SHADES * share).astype(int)
+    for number in np.unique(shade):
+        trace(axes, segments[shade == number], colours(number / _SHADES), _LINE_PT, zorder=2.1, cap="round")
     axes.set_xlim(*extent[:2])
     axes.set_ylim(*extent[2:])
     axes.set_aspect("equal")
