@@ -259,6 +259,11 @@ class Section:
         )
         set_(self, "material", VOID if largest is None else largest.material)
 
+    def _repr_html_(self) -> str:
+        from wiresolve.describe.section_picture import svg
+
+        return svg(self.visible(), self.outside)
+
     def pieces(self) -> tuple[Piece, ...]:
         """What is painted, later over earlier: the outermost layer first, inwards to the core, then the patches."""
         return self._pieces
