@@ -25,6 +25,12 @@ system_libraries=(
     "libEGL.so.1 libegl1"
 )
 
+# What the checks need to look at a report as its readers do: a program, then its package on Debian.
+test_programs=(
+    "chromium chromium"
+    "chromedriver chromium-driver"
+)
+
 say() { printf 'wiresolve: %s\n' "$*" >&2; }
 
 stop() {
@@ -61,28 +67,37 @@ for line in sys.argv[1:]:
 PYTHON
 }
 
-# Installs missing system libraries as root where there is apt-get; elsewhere names the line to type and stops.
-# $1: the interpreter whose loader is asked.
-require_libraries() {
-    local missing names packages
+# Of the programs named in `test_programs`, the lines of those that are not on the path.
+missing_programs() {
+    local line
+    for line in "${test_programs[@]}"; do
+        command -v "${line%% *}" >/dev/null || printf '%s\n' "$line"
+    done
+}
+
+# Installs as root where there is apt-get what a function says is missing; elsewhere names the line to type and stops.
+# $1: what it is ("system libraries"); then the function that prints lines of a name and its package, and its arguments.
+require() {
+    local kind=$1 missing names packages
+    shift
     [[ $(uname -s) == Linux ]] || return 0
-    missing=$(missing_libraries "$1")
+    missing=$("$@")
     [[ -n $missing ]] || return 0
     names=$(cut -d' ' -f1 <<<"$missing" | paste -sd' ')
     packages=$(cut -d' ' -f2 <<<"$missing" | paste -sd' ')
     if ! command -v apt-get >/dev/null; then
-        stop "system libraries are missing: $names; install the packages that hold them (Debian calls them $packages)"
+        stop "$kind are missing: $names; install the packages that hold them (Debian calls them $packages)"
     fi
     if [[ $(id -u) != 0 ]]; then
-        stop "system libraries are missing: $names; type this line, then try again: sudo apt-get install --yes $packages"
+        stop "$kind are missing: $names; type this line, then try again: sudo apt-get install --yes $packages"
     fi
     say "installing the system packages $packages"
     # shellcheck disable=SC2086  # a list of package names
     if ! { apt-get update -qq && DEBIAN_FRONTEND=noninteractive apt-get install -qq --yes --no-install-recommends $packages; } >/dev/null 2>&1; then
         stop "could not install them; type this line to see why: apt-get update && apt-get install --yes $packages"
     fi
-    missing=$(missing_libraries "$1" | cut -d' ' -f1 | paste -sd' ')
-    [[ -z $missing ]] || stop "system libraries are still missing after that: $missing"
+    missing=$("$@" | cut -d' ' -f1 | paste -sd' ')
+    [[ -z $missing ]] || stop "$kind are still missing after that: $missing"
 }
 
 # What an environment depends on, as one line: it is made anew or completed when this changes.
@@ -136,7 +151,8 @@ prepare_environment() {
         esac
     done
     system_python=$(find_python)
-    require_libraries "$system_python"
+    require "system libraries" missing_libraries "$system_python"
+    [[ $purpose == run ]] || require "programs for the checks" missing_programs
     # Two scripts started at once must not make the same environment at once.
     if command -v flock >/dev/null; then
         exec 9<"$repository/pyproject.toml"

@@ -56,12 +56,25 @@ class _Piece:
 
 
 @dataclass(frozen=True, eq=False)
+class Cubics:
+    """The spline of a table: on each cell a cubic in the distance to its left knot, then a parabola in k.
+
+    `knots_per_nm` (m,), `coefficients` (4, m - 1) of the powers 3, 2, 1, 0; beyond the last knot E grows by
+    `beyond_eV_nm2` k^2.
+    """
+
+    knots_per_nm: Array
+    coefficients: Array
+    beyond_eV_nm2: float
+
+
+@dataclass(frozen=True, eq=False)
 class TabulatedBand:
     """E(k) for k >= 0 (E is even): a cubic spline through a table, then a parabola with the axial mass.
 
     `turning_eV` (t,) are the energies where modes open or close and `turning_modes` (t,) by how many (their sum over
     the energies below E is the number of modes M(E) that run in one direction); `singular` (t,) tells whether E(k) is
-    flat there. `lowest_eV` is the band's minimum, `k_min_per_nm` where it lies.
+    flat there. `lowest_eV` is the band's minimum, `k_min_per_nm` where it lies; `cubics` None for a closed form.
     """
 
     pieces: tuple[_Piece, ...]
@@ -70,6 +83,7 @@ class TabulatedBand:
     singular: NDArray[np.bool_]
     lowest_eV: float
     k_min_per_nm: float
+    cubics: Cubics | None = None
 
     def energy(self, k_per_nm: Array) -> Array:
         """E(k) at wave numbers from 0 up, in their shape."""
@@ -183,6 +197,7 @@ def tabulated_band(k_per_nm: Array, band_eV: Array, lowest_eV: float, axial_mass
         singular=flat[turns],
         lowest_eV=lowest_eV,
         k_min_per_nm=float(marks[np.argmin(energies)]),
+        cubics=Cubics(k_per_nm, coefficients, curvature),
     )
 
 
