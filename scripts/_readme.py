@@ -1,4 +1,4 @@
-"""Writes the generated blocks of README.md: the table of agreed digits and the commands.
+"""Writes the generated blocks of README.md: the table of agreed digits, the commands and the keys of wire files.
 
     python scripts/_readme.py            writes them anew
     python scripts/_readme.py --check    exit code 1 where README.md differs from what would be written
@@ -11,42 +11,119 @@ from __future__ import annotations
 import argparse
 import re
 import sys
+from collections.abc import Iterable, Mapping
 from pathlib import Path
 
 import click
 
 import wiresolve.cli
 from agreed_digits import REPOSITORY, load, summary, table
+from wiresolve.commands.options import Command
+from wiresolve.describe import device_keys, wire_keys
+from wiresolve.describe.key_kinds import Choice, Key, spelled
 
 
 def commands() -> dict[str, click.Command]:
     """The real commands of the command line by name."""
-    groups = [thing for thing in vars(wiresolve.cli).values() if isinstance(thing, click.Group)]
-    return dict(groups[0].commands)
+    return dict(wiresolve.cli.program.commands)
 
 
 def argument_text(parameter: click.Parameter) -> str:
     """How an argument or an option is written: `FILE`, `--out DIR`, `--json`."""
+    choices = " or ".join(parameter.type.choices) if isinstance(parameter.type, click.Choice) else ""
     if isinstance(parameter, click.Argument):
-        text = parameter.metavar or (parameter.name or "").upper()
+        text = (parameter.metavar or (parameter.name or "").upper()).strip("[]")
         return text if parameter.required else f"[{text}]"
     name = ", ".join(parameter.opts)
     takes_value = isinstance(parameter, click.Option) and not parameter.is_flag and not parameter.count
-    return f"{name} {parameter.metavar or parameter.type.name.upper()}" if takes_value else name
+    return f"{name} {choices or parameter.metavar or parameter.type.name.upper()}" if takes_value else name
+
+
+def option_text(option: click.Option) -> str:
+    """What an option does, with its default."""
+    text = " ".join((option.help or "").split())
+    return f"{text} [default: {option.default}]" if option.show_default and option.default is not None else text
+
+
+def option_table(command: click.Command) -> list[str]:
+    """The options as a Markdown table; nothing where there are none."""
+    options = [p for p in command.params if isinstance(p, click.Option) and not p.hidden]
+    rows = [f"| `{argument_text(p)}` | {option_text(p)} |" for p in options]
+    return ["\n".join(["| option | what it does |", "| --- | --- |", *rows])] if rows else []
 
 
 def command_reference() -> str:
-    """One paragraph and one table of options for each command, in Markdown."""
-    parts = []
+    """Of the program and of each command: how it is called, what it does, its options, an example, in Markdown."""
+    parts = ["**`wiresolve [OPTIONS] COMMAND`**", *option_table(wiresolve.cli.program)]
     for name, command in commands().items():
         arguments = [p for p in command.params if isinstance(p, click.Argument)]
-        options = [p for p in command.params if isinstance(p, click.Option) and not p.hidden]
         parts.append(f"**`{' '.join(['wiresolve', name, *map(argument_text, arguments)])}`**")
         parts.append(" ".join((command.help or "").split("\f")[0].split()))
-        if options:
-            rows = [f"| `{argument_text(p)}` | {' '.join((p.help or '').split())} |" for p in options]
-            parts.append("\n".join(["| option | what it does |", "| --- | --- |", *rows]))
+        parts += option_table(command)
+        assert isinstance(command, Command)
+        parts.append(f"Example: `{command.example}`")
     return "\n\n".join(parts)
+
+
+def key_table(keys: Iterable[Key], prefix: str = "") -> str:
+    """Keys of a wire file as a Markdown table."""
+    rows = [f"| `{prefix}{key.name}` | {example(key)} | {key.text} |" for key in keys]
+    return "\n".join(["| key | such as | meaning |", "| --- | --- | --- |", *rows])
+
+
+def example(key: Key) -> str:
+    """A value of a key, as code."""
+    text = spelled(key.kind)
+    words = [f'"{word}"' for word in key.kind.words] if isinstance(key.kind, Choice) else [text]
+    # Of many words one is enough: all units of a length, all shapes.
+    return " or ".join(f"`{word}`" for word in (words if len(words) <= 4 else words[:1])) if text else ""
+
+
+def without(keys: Iterable[Key], *names: str) -> list[Key]:
+    """The keys but those of these names."""
+    return [key for key in keys if key.name not in names]
+
+
+def key_references() -> dict[str, str]:
+    """The blocks about keys of wire files by name."""
+    doping = [key.name for key in device_keys.DOPING]
+    tables = wire_keys.TABLES
+    run = {name: tables[name] for name in ("carriers", "accuracy", "orientation", "potential")}
+    gates = {
+        "gates": tables["gate"],
+        "surfaces": tables["surface"],
+        "surroundings": tables["surroundings"],
+        "voltages": tables["voltages"],
+        "transport": tables["transport"],
+    }
+    shapes = "\n".join(f"| `{name}` | {sizes} |" for name, sizes in wire_keys.SHAPES.items())
+    interaction = [key for key in run["carriers"] if key.name == "interaction"]
+    run["carriers"] = tuple(without(run["carriers"], "interaction"))
+    return {
+        "keys of the file": key_table(wire_keys.TOP),
+        "keys of the section": key_table([wire_keys.SHAPE[0], *without(wire_keys.SECTION_OWN, *doping)]),
+        "keys of shapes": f"| shape | sizes |\n| --- | --- |\n{shapes}\n\n{key_table(wire_keys.SHAPE[1:])}",
+        "keys of layers": key_table(without(wire_keys.LAYER, *doping)),
+        "keys of patches": key_table(without(wire_keys.PATCH, *doping)),
+        "keys of outlines": key_table(wire_keys.OUTLINE),
+        "keys of meshes": key_table(wire_keys.MESH),
+        "keys of materials": key_table(wire_keys.MATERIAL),
+        "keys of valleys": key_table(wire_keys.VALLEY),
+        "keys of the run": joined(run),
+        "keys of gates and charge": joined(
+            gates,
+            key_table(device_keys.DOPING, ""),
+            key_table(interaction, "carriers."),
+        ),
+    }
+
+
+def joined(tables: Mapping[str, Iterable[Key]], *more: str) -> str:
+    """One Markdown table of several ones, each key with the name of its table."""
+    parts = [key_table(keys, f"{name}.") for name, keys in tables.items()]
+    head, *_ = parts
+    rows = [row for part in (*parts, *more) for row in part.split("\n")[2:]]
+    return "\n".join([*head.split("\n")[:2], *rows])
 
 
 def agreed_digits() -> str:
@@ -64,7 +141,7 @@ def renewed(text: str) -> str:
     ValueError
         where a block is not there exactly once.
     """
-    blocks = {"agreed-digits": agreed_digits(), "commands": command_reference()}
+    blocks = {"agreed-digits": agreed_digits(), "commands": command_reference(), **key_references()}
     for name, content in blocks.items():
         pattern = re.compile(rf"(<!-- begin: {name} -->\n).*?(<!-- end: {name} -->)", re.DOTALL)
         if len(pattern.findall(text)) != 1:

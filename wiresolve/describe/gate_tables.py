@@ -19,6 +19,8 @@ SURFACE_KEYS = ("touches", "pinned_at", "charge_density")
 SURROUNDINGS_KEYS = ("below", "above", "beside")
 VOLTAGES_KEYS = ("gate", "from", "to", "count", "drain")
 TRANSPORT_KEYS = ("length", "mean_free_path", "transmission", "saddle", "contact_resistance")
+INSULATOR_KEYS, SLAB_KEYS = ("material", "thickness", "carriers"), ("material", "thickness")
+ARC_KEYS, STACK_END_KEYS = ("from", "to"), ("gate",)
 _TOUCHES = 'write e.g. touches = "rim", or a list of edges'
 
 
@@ -64,7 +66,7 @@ def _touches(table: Table) -> tuple[Touch, ...]:
         path = f"{where}[{k}]" if isinstance(given, list) else where
         if isinstance(entry, dict):
             arc = Table(path, entry)
-            arc.only(("from", "to"))
+            arc.only(ARC_KEYS)
             ends = [arc.quantity(key, "angle", sample) for key, sample in (("from", '"30 deg"'), ("to", '"150 deg"'))]
             found.append(under(path, lambda ends=ends: ArcPart(*ends)))  # type: ignore[misc]
         elif isinstance(entry, str):
@@ -80,7 +82,7 @@ def _gate(table: Table) -> Gate:
     insulator = None
     if "insulator" in table:
         part = table.table("insulator")
-        part.only(("material", "thickness", "carriers"))
+        part.only(INSULATOR_KEYS)
         material, thickness = part.text("material", '"HfO2"'), part.quantity("thickness", "length", '"3 nm"')
         options = {"carriers": part.data["carriers"]} if "carriers" in part else {}
         insulator = under(part.path, lambda: Insulator(material, thickness, **options))
@@ -121,13 +123,13 @@ def _stack(table: Table, side: str) -> tuple[tuple[Slab, ...], str | None]:
         path = f"{where}[{k}]"
         if isinstance(entry, dict) and "gate" not in entry:
             part = Table(path, entry)
-            part.only(("material", "thickness"))
+            part.only(SLAB_KEYS)
             material, thickness = part.text("material", '"SiO2"'), part.quantity("thickness", "length", '"100 nm"')
             slabs.append(under(path, lambda m=material, t=thickness: Slab(m, t)))  # type: ignore[misc]
             continue
         if isinstance(entry, dict):
             part = Table(path, entry)
-            part.only(("gate",))
+            part.only(STACK_END_KEYS)
             entry = part.text("gate", '"back"')
         elif not isinstance(entry, str):
             raise InputError(path, "must be a layer {material, thickness} or the name of a gate", entry)

@@ -57,6 +57,18 @@ class Files:
         return input_files.read(where, path, self.folder)
 
 
+def keys_of(shape: str, others: tuple[str, ...]) -> tuple[str, ...]:
+    """The keys of a table with a shape, which has the keys `others` whatever its shape is."""
+    if shape == "mesh":
+        # What it is made of is said group by group.
+        return ("shape", *MESH_KEYS, *(key for key in others if key not in GROUP_KEYS))
+    if shape == "outline":
+        return ("shape", *OUTLINE_KEYS, *others)
+    corners = () if shape in ("circle", "ellipse") else ("corner_radius",)
+    points = ("points", "unit") if shape == "polygon" else ()
+    return ("shape", *LENGTH_KEYS[shape], *points, *corners, "rotation", *others)
+
+
 def shape(table: Table, others: tuple[str, ...], files: Files) -> Shape:
     """The shape that a table's keys give; no keys but its own and `others` may stand there."""
     every = {key for keys in LENGTH_KEYS.values() for key in keys} | {"points", "unit", "corner_radius", "rotation"}
@@ -73,13 +85,11 @@ def shape(table: Table, others: tuple[str, ...], files: Files) -> Shape:
     if not isinstance(kind, str) or kind not in SHAPES:
         checks.choice(table.at("shape"), kind, (*SHAPES, "outline", "mesh"))
     assert isinstance(kind, str)
-    own = LENGTH_KEYS[kind]
-    options = ("rotation",) if kind in ("circle", "ellipse") else ("corner_radius", "rotation")
-    points = ("points", "unit") if kind == "polygon" else ()
-    if "corner_radius" in table and "corner_radius" not in options:
+    own, allowed = LENGTH_KEYS[kind], keys_of(kind, others)
+    if "corner_radius" in table and "corner_radius" not in allowed:
         raise InputError(table.at("corner_radius"), f"a {kind} has no corners to round", remedy="take the key out")
     article = "an" if kind[0] in "aeiou" else "a"
-    table.only(("shape", *own, *points, *options, *others), f"{article} {kind}")
+    table.only(allowed, f"{article} {kind}")
     values: dict[str, Any] = {}
     for key in own:
         if key in table:
@@ -119,8 +129,7 @@ def _mesh(table: Table, others: tuple[str, ...], files: Files) -> ImportedMesh:
     if "group_materials" not in others and "layers" not in others:
         remedy = "use it as the section's shape, and paint patches over it"
         raise InputError(table.at("shape"), "a mesh cannot be a patch", remedy=remedy)
-    # What it is made of is said group by group.
-    table.only(("shape", *MESH_KEYS, *(key for key in others if key not in GROUP_KEYS)), "a mesh")
+    table.only(keys_of("mesh", others), "a mesh")
     file, unit = files.read(table), _unit(table)
     array = table.text("array", '"region"') if "array" in table else None
     rotation = table.optional_quantity("rotation", "angle") or 0.0
@@ -158,7 +167,7 @@ def groups(table: Table) -> tuple[Group, ...]:
 
 
 def _outline(table: Table, others: tuple[str, ...], files: Files) -> Outline:
-    table.only(("shape", *OUTLINE_KEYS, *others), "an outline")
+    table.only(keys_of("outline", others), "an outline")
     file = files.read(table)
     if ("unit" in table) == ("scale" in table):
         rule, remedy = "is given beside a unit: an outline needs one of them, not both", "take one of the two out"

@@ -29,6 +29,11 @@ TOP_KEYS = (
 SECTION_KEYS = ("material", "outside", "layers", "patches", "carriers", "offset", "lattice_temperature", *DOPING_KEYS)
 LAYER_KEYS = ("thickness", "material", "sides", "carriers", "offset", *DOPING_KEYS)
 PATCH_KEYS = ("material", "center", "carriers", "offset", *DOPING_KEYS)
+ORIENTATION_KEYS = ("axis", "up")
+POTENTIAL_KEYS = ("field", "harmonic", *POTENTIAL_FILE_KEYS)
+HARMONIC_KEYS = ("x", "y")
+CARRIER_KEYS = ("kind", "temperature", "fermi_level", "model", "interaction")
+ACCURACY_KEYS = ("subbands", "energy")
 
 
 def read(path: str | Path, draw: DrawFile | None = None) -> Problem:
@@ -188,13 +193,13 @@ def _materials(top: Table, folder: str | Path | None) -> tuple[Material, ...]:
 
 
 def _orientation(table: Table) -> Orientation:
-    table.only(("axis", "up"))
+    table.only(ORIENTATION_KEYS)
     axis, up = table.required("axis", "[1, 1, 0]"), table.required("up", "[0, 0, 1]")
     return under(table.path, lambda: Orientation(axis, up))
 
 
 def _potential(table: Table, files: Files) -> Potential:
-    table.only(("field", "harmonic", *POTENTIAL_FILE_KEYS))
+    table.only(POTENTIAL_KEYS)
     along = spacing = None
     if "field" in table:
         row = table.row("field", 2, 'two electric fields, e.g. ["0.01 V/nm", "0 V/nm"]')
@@ -202,7 +207,7 @@ def _potential(table: Table, files: Files) -> Potential:
         along = (x, y)
     if "harmonic" in table:
         well = table.table("harmonic")
-        well.only(("x", "y"))
+        well.only(HARMONIC_KEYS)
         spacing = (well.quantity("x", "energy", '"5 meV"'), well.quantity("y", "energy", '"5 meV"'))
     given = potential_file(table, files)
     if along is None and spacing is None and given is None:
@@ -213,7 +218,7 @@ def _potential(table: Table, files: Files) -> Potential:
 
 
 def _carriers(table: Table) -> Carriers:
-    table.only(("kind", "temperature", "fermi_level", "model", "interaction"))
+    table.only(CARRIER_KEYS)
     given = table.required("temperature", '"300 K"')
     rows = given if isinstance(given, list) else [given]
     where = table.at("temperature")
@@ -225,7 +230,7 @@ def _carriers(table: Table) -> Carriers:
 
 
 def _accuracy(table: Table) -> Accuracy:
-    table.only(("subbands", "energy"))
+    table.only(ACCURACY_KEYS)
     energy, count = table.optional_quantity("energy", "energy"), table.data.get("subbands", 10)
     return under(table.path, lambda: Accuracy(count, 1e-4 if energy is None else energy))
 
