@@ -205,10 +205,10 @@ class PlateSweep:
 WARNED = Warned("open-barrier", "The barrier is 4 nm thick and leaks.", "Make the shell thicker.")
 
 
-def recording(into: list[PlateSweep], **how: Any) -> Callable[[Problem], PlateSweep]:
+def recording(into: list[PlateSweep], **how: Any) -> Callable[..., PlateSweep]:
     """A solver that keeps the sweeps it makes in a list."""
 
-    def made(problem: Problem) -> PlateSweep:
+    def made(problem: Problem, on_progress: object = None) -> PlateSweep:
         into.append(PlateSweep(problem, **how))
         return into[-1]
 

@@ -2,12 +2,17 @@
 
 from __future__ import annotations
 
+import contextlib
 import errno
 import importlib
+import inspect
 import json
 import os
+import re
+import shutil
 import subprocess
 import sys
+import threading
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
@@ -20,9 +25,10 @@ from click.testing import CliRunner, Result
 import wiresolve as ws
 from tests.synthetic import core_shell_result
 from wiresolve.cli import program
-from wiresolve.doctor import GMSH_LIBRARIES, examine, gmsh_starts, missing_library
+from wiresolve.commands.doctor import GMSH_LIBRARIES, examine, gmsh_starts, missing_library
+from wiresolve.commands.terminal import EVEN_STAGES, Pace
 from wiresolve.errors import ConvergenceError, MeshError
-from wiresolve.output import figures, folder
+from wiresolve.output import figures, folder, writing
 
 GOOD = """title = "A round probe"
 [section]
@@ -255,7 +261,7 @@ def test_a_read_only_place_is_refused_before_solving(here: Path, monkeypatch: py
 def test_a_full_disk_leaves_nothing(here: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     answer_with(monkeypatch, lambda: core_shell_result(1))
 
-    def refuse(*_: object) -> None:
+    def refuse(*_: object, **__: object) -> None:
         raise OSError(errno.ENOSPC, os.strerror(errno.ENOSPC))
 
     monkeypatch.setattr(folder.vtk, "write_modes", refuse)
@@ -270,7 +276,7 @@ def test_an_interrupted_write_keeps_the_last_result(here: Path, monkeypatch: pyt
     assert run("solve", "wire.toml", "--no-figures").exit_code == 0
     before = (here / "results" / "wire" / "result.json").read_bytes()
 
-    def interrupt(*_: object) -> None:
+    def interrupt(*_: object, **__: object) -> None:
         raise KeyboardInterrupt
 
     answer_with(monkeypatch, lambda: core_shell_result(2))
@@ -430,7 +436,7 @@ def test_the_doctor_finds_eight_wires_right() -> None:
 
 
 def test_the_doctor_reports_what_is_wrong(monkeypatch: pytest.MonkeyPatch) -> None:
-    doctor = importlib.import_module("wiresolve.doctor")
+    doctor = importlib.import_module("wiresolve.commands.doctor")
     broken = doctor.Finding(False, "Gmsh needs the system library libGLU.so.1")
     monkeypatch.setattr(doctor, "gmsh_starts", lambda: broken)
     result = run("doctor")
@@ -441,12 +447,224 @@ def test_the_doctor_reports_what_is_wrong(monkeypatch: pytest.MonkeyPatch) -> No
 
 
 def test_a_wrong_energy_fails_the_doctor() -> None:
-    known = importlib.import_module("wiresolve.known_wires")
+    known = importlib.import_module("wiresolve.commands.known_wires")
     wire = known.rectangle()
     shifted = replace(wire, exact_eV=tuple(1.0001 * energy for energy in wire.exact_eV))
     ok, text = known.compare(shifted)
     assert not ok
     assert text.startswith("NOT OK")
+
+
+def test_options_reach_what_is_written(here: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    answer_with(monkeypatch, lambda: core_shell_result(1))
+    (here / "points.csv").write_text("fermi_level_meV,conductance_G0\n10,0.1\n30,1.0\n")
+    asked: dict[str, Any] = {}
+    known = set(inspect.signature(writing.write).parameters)
+    monkeypatch.setattr(writing, "write", lambda result, folder, **options: asked.update(options))
+    assert run("solve", "wire.toml", "--quiet").exit_code == 0
+    plain = {"report": False, "vtk": "curved", "points": False, "matrix_elements": False, "figures": True}
+    assert asked == {**plain, "axial_frames": 0, "replace": True, "status": "done", "field": "--out"}
+    words = ("--report", "--vtk", "linear", "--extrude", "0.03 um", "--axial-frames", "5", "--points")
+    words += ("--matrix-elements", "--measured", "points.csv", "--no-figures", "--out", "out")
+    assert run("solve", "wire.toml", "--quiet", *words).exit_code == 0
+    measured = asked.pop("measured")
+    assert measured.x.tolist() == pytest.approx([0.010, 0.030])
+    fuller = {"report": True, "vtk": "linear", "points": True, "matrix_elements": True, "figures": False}
+    fuller |= {"axial_frames": 5, "replace": False, "status": "done", "field": "--out"}
+    assert asked.pop("extrude_nm") == pytest.approx(30.0)
+    assert asked == fuller
+    # Each of them is one that `write` has.
+    assert {*fuller, "extrude_nm", "measured"} <= known
+
+
+@pytest.mark.parametrize(
+    ("words", "says"),
+    [
+        (("--extrude", "30"), "--extrude: the unit is missing"),
+        (("--extrude", "30 eV"), "--extrude: must be a length"),
+        (("--extrude", "0 nm"), "--extrude: must be positive"),
+        (("--axial-frames", "1"), "--axial-frames"),
+        (("--vtk", "round"), "--vtk"),
+        (("--measured", "none.csv"), "--measured: there is no such file"),
+        (("--measured", "wire.toml"), "--measured: has no column"),
+        (("--measured", "gate.csv"), "--measured: is against a gate voltage"),
+        (("--quiet", "--verbose"), "--verbose and --quiet contradict each other"),
+        (("-v", "--quiet"), "--verbose and --quiet contradict each other"),
+    ],
+)
+def test_what_cannot_be_written_is_said_before_solving(
+    here: Path, monkeypatch: pytest.MonkeyPatch, words: tuple[str, ...], says: str
+) -> None:
+    fail_with(monkeypatch, AssertionError("the solver was started"))
+    (here / "gate.csv").write_text("gate_voltage_V,conductance_uS\n0.1,0.1\n")
+    result = run("solve", "wire.toml", *words)
+    assert (result.exit_code, result.stdout) == (2, "")
+    assert says in one_line(result)
+
+
+def test_the_log_goes_to_stderr_and_stops_with_the_command(here: Path) -> None:
+    result = run("mesh", "wire.toml", "-v")
+    assert result.exit_code == 0
+    lines = result.stderr.strip().splitlines()
+    assert any("mesh" in line and "unknowns" in line for line in lines)
+    assert all(line.startswith("wiresolve: ") for line in lines)
+    assert "curved cells" in result.stdout
+    again = run("mesh", "wire.toml")
+    assert (again.exit_code, again.stderr) == (0, "")
+
+
+def test_data_for_programs(here: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    checked = json.loads(run("check", "wire.toml", "--json").stdout)
+    assert checked["section"]["diameter"] == "10.0 nm"
+    assert checked["carriers"]["kind"] == "electrons"
+    meshed = json.loads(run("mesh", "wire.toml", "--json").stdout)
+    assert meshed["area_by_layer_nm2"]["core"] == pytest.approx(78.5398163397, rel=1e-9)  # pi 5^2
+    assert meshed["cells_by_layer"] == {"core": meshed["cells"]}
+    assert (meshed["degree"], meshed["accuracy_met"]) == (4, True)
+    for words in (("check", "wire.toml"), ("mesh", "wire.toml")):
+        quiet = run(*words, "--quiet")
+        assert (quiet.exit_code, quiet.stdout, quiet.stderr) == (0, "", "")
+    doctor = importlib.import_module("wiresolve.commands.doctor")
+    monkeypatch.setattr(doctor, "examine", lambda: iter([doctor.Finding(True, "a"), doctor.Finding(False, "b")]))
+    found = run("doctor", "--json")
+    assert found.exit_code == 1
+    assert json.loads(found.stdout) == {
+        "sound": False,
+        "findings": [{"ok": True, "text": "a"}, {"ok": False, "text": "b"}],
+    }
+
+
+def test_data_stay_data_on_a_plain_terminal(here: Path) -> None:
+    text = GOOD.replace("A round probe", "Größe \U0001d53c, ħω")
+    (here / "wire.toml").write_text(text, encoding="utf-8")
+    plain = CliRunner(charset="ascii")
+    assert json.loads(plain.invoke(program, ["check", "wire.toml", "--json"]).stdout)["title"] == "Größe \U0001d53c, ħω"
+    schemas = importlib.import_module("wiresolve.output.schema")
+    assert json.loads(plain.invoke(program, ["schema", "wire"]).stdout) == schemas.wire_schema()
+
+
+@pytest.mark.skipif(not hasattr(os, "openpty"), reason="this system has no pseudo-terminals")
+def test_a_bar_is_drawn_on_a_terminal(here: Path) -> None:
+    ours, theirs = os.openpty()
+    drawn: list[bytes] = []
+
+    def read() -> None:
+        with contextlib.suppress(OSError):  # the end of a terminal
+            while data := os.read(ours, 4096):
+                drawn.append(data)
+
+    reader = threading.Thread(target=read)
+    reader.start()
+    command = [sys.executable, "-m", "wiresolve", "mesh", "wire.toml"]
+    shown = {**os.environ, "TERM": "xterm", "NO_COLOR": "1"}
+    done = subprocess.run(command, stdout=subprocess.PIPE, stderr=theirs, env=shown, text=True, check=False)
+    os.close(theirs)
+    reader.join(20)
+    os.close(ours)
+    assert done.returncode == 0
+    assert "curved cells" in done.stdout
+    text = b"".join(drawn).decode()
+    assert "mesh" in text
+    assert "0:00:0" in text
+    assert not re.search(r"\x1b\[(3|4)\d", text)  # NO_COLOR is heeded
+
+
+@pytest.mark.parametrize("kind", ["wire", "result", "gate-curve"])
+def test_schemas_are_printed(kind: str) -> None:
+    schemas = importlib.import_module("wiresolve.output.schema")
+    result = run("schema", kind)
+    assert (result.exit_code, result.stderr) == (0, "")
+    assert json.loads(result.stdout) == schemas.schema(kind)
+
+
+def test_a_report_is_written_of_a_result(here: Path) -> None:
+    assert run("solve", "wire.toml", "--no-figures", "--accuracy", "1 meV").exit_code == 0
+    place = here / "results" / "wire"
+    result = run("report", "results/wire")
+    assert (result.exit_code, result.stdout, result.stderr) == (0, "File: results/wire/report.html\n", "")
+    assert (place / "report.html").read_text(encoding="utf-8").lstrip().lower().startswith("<!doctype html>")
+    assert run("report", "results/wire", "--quiet").exit_code == 0  # its own page may be written anew
+    (here / "mine.html").write_text("mine")
+    refused = run("report", "results/wire", "--out", "mine.html")
+    assert "--out: exists already" in one_line(refused)
+    assert (refused.exit_code, (here / "mine.html").read_text()) == (2, "mine")
+    assert run("report", "results/wire", "--out", "mine.html", "--replace").exit_code == 0
+    assert (here / "mine.html").read_bytes() == (place / "report.html").read_bytes()
+    assert left(place) == ["input.toml", "modes.vtu", "report.html", "result.json", "subbands.csv"]
+
+
+@pytest.mark.parametrize(
+    ("place", "says"),
+    [("none", "there is no such folder"), ("wire.toml", "is no folder"), ("empty", "holds no result")],
+)
+def test_a_report_of_no_result(here: Path, place: str, says: str) -> None:
+    (here / "empty").mkdir()
+    result = run("report", place)
+    assert (result.exit_code, result.stdout) == (2, "")
+    assert f"RESULT_DIR: {says}" in one_line(result)
+    assert left(here) == ["empty", "wire.toml"]
+    assert left(here / "empty") == []
+
+
+@pytest.mark.parametrize("shell", ["bash", "zsh", "fish"])
+def test_scripts_for_completion(shell: str) -> None:
+    result = run("completion", shell)
+    assert result.exit_code == 0
+    assert f"_WIRESOLVE_COMPLETE={shell}_complete" in result.stdout
+    assert "wiresolve" in result.stdout
+    if path := shutil.which(shell):
+        parsed = subprocess.run([path, "-n"], input=result.stdout, capture_output=True, text=True, check=False)
+        assert (parsed.returncode, parsed.stderr) == (0, "")
+
+
+@pytest.mark.parametrize(
+    ("typed", "proposed"),
+    [
+        ("wiresolve ga", {"gate-curve"}),
+        ("wiresolve solve --ax", {"--axial-frames"}),
+        ("wiresolve solve --vtk ", {"curved", "linear"}),
+        ("wiresolve new tr", {"triangle", "trapezoid"}),
+        ("wiresolve schema ", {"wire", "result", "gate-curve"}),
+        ("wiresolve materials InA", {"InAs"}),
+    ],
+)
+def test_what_a_shell_proposes(typed: str, proposed: set[str]) -> None:
+    words = typed.split(" ")
+    asked = {"_WIRESOLVE_COMPLETE": "bash_complete", "COMP_WORDS": typed, "COMP_CWORD": str(len(words) - 1)}
+    done = subprocess.run(
+        [sys.executable, "-m", "wiresolve"], env={**os.environ, **asked}, capture_output=True, text=True, check=False
+    )
+    assert (done.returncode, done.stderr) == (0, "")
+    assert {line.partition(",")[2] for line in done.stdout.split()} >= proposed
+    assert all(line.partition(",")[2].startswith(words[-1]) for line in done.stdout.split())
+
+
+@pytest.mark.parametrize("words", ["--help", "solve --help", "new", "new circle", "completion zsh"])
+def test_what_answers_at_once_loads_nothing_heavy(words: str) -> None:
+    script = (
+        "import sys\nfrom wiresolve.cli import main\n"
+        f"try: main({words.split()!r})\nexcept SystemExit as end: assert not end.code\n"
+        "print('loaded:', *sorted({name.split('.')[0] for name in sys.modules}))"
+    )
+    done = subprocess.run([sys.executable, "-c", script], capture_output=True, text=True, check=True)
+    assert {"numpy", "scipy", "rich", "matplotlib"} & set(done.stdout.rpartition("loaded:")[2].split()) == set()
+
+
+def test_time_left_follows_the_pace() -> None:
+    now = [0.0]
+    pace = Pace(lambda: now[0])
+    stage = EVEN_STAGES[0]
+    assert pace.left(stage, 0.0) == ""
+    now[0] = 1.0
+    assert pace.left(stage, 0.1) == ""  # too early to say
+    now[0] = 10.0
+    assert pace.left(stage, 0.25) == "about 30 s left"
+    assert pace.left("mesh", 0.5) == ""
+    now[0] = 20.0
+    assert pace.left("mesh", 0.6) == ""  # meshes take longer and longer
+    assert pace.left(stage, 0.5) == ""
+    now[0] = 24.0
+    assert pace.left(stage, 0.75) == "about 4 s left"
 
 
 def test_help_and_version() -> None:
@@ -464,8 +682,8 @@ def test_the_package_loads_names_lazily_and_keeps_solve_a_function() -> None:
         "from wiresolve.solve import solve\n"
         "import wiresolve.solve\n"
         "assert ws.solve is solve, ws.solve\n"
-        "assert set(ws.__all__) <= set(dir(ws))\n"
-        "for name in ws.__all__: getattr(ws, name)\n"
+        "assert set(ws._HOMES) <= set(dir(ws))\n"
+        "for name in ws._HOMES: getattr(ws, name)\n"
         "assert ws.shapes.Circle(diameter_nm=3.0).kind == 'circle'\n"
         "try: ws.frob\n"
         "except AttributeError as fault: print(fault)\n"

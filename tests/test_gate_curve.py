@@ -16,9 +16,10 @@ import pytest
 import wiresolve as ws
 from tests.gate_sweeps import PlateSweep, recording, swept_problem
 from wiresolve.errors import ConvergenceError, InputError
-from wiresolve.gate_curve import GateCurve, GatePoint, gate_curve, rounded_time
+from wiresolve.gate_curve import GateCurve, GatePoint, gate_curve
 from wiresolve.gate_result import GateStep, failed_point
 from wiresolve.output.gate_curve_tables import gate_curve_csv, gate_curve_json, step_table, summary, transistor_csv
+from wiresolve.physics.pace import rounded_time
 from wiresolve.units import KB
 
 

@@ -7,7 +7,14 @@
     ws.write(result, "results/wire")
     ws.figures.modes(result).savefig("modes.png")
 
-A problem with gates and a sweep of voltages has a gate curve, which is written likewise: `ws.gate_curve(problem)`.
+    Describe      Problem, Section, Layer, Patch, shapes, Material, Valley, Orientation, Carriers, Accuracy, Potential
+    Run           load, solve, gate_curve, mesh, write
+    Look at       Result, GateCurve, figures, gate_curve_figures, measured
+    Compute on    matrix_elements, form_factors
+    Faults        WiresolveError
+
+`help(ws.solve)`, `help(ws.Section)` and so on tell the rest. A problem with gates and a sweep of voltages has a gate
+curve, which is written likewise: `ws.gate_curve(problem)`.
 
 Lengths are in nm, energies in eV, temperatures in K, masses in those of the free electron. Names are loaded when they
 are first used (PEP 562).
@@ -21,44 +28,31 @@ from types import ModuleType
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from wiresolve.describe import shapes
-    from wiresolve.describe.materials import Material
-    from wiresolve.describe.problem import Accuracy, Carriers, Orientation, Potential, Problem
-    from wiresolve.describe.section import Layer, Patch, Section
-    from wiresolve.describe.valley import Valley
-    from wiresolve.errors import WiresolveError
-    from wiresolve.gate_curve import gate_curve
-    from wiresolve.gate_result import GateCurve
-    from wiresolve.loading import load
-    from wiresolve.output import figures, gate_curve_figures
-    from wiresolve.output.writing import write
-    from wiresolve.physics.section_mesh import mesh
-    from wiresolve.result import Result
-    from wiresolve.solve import solve
+    from wiresolve.describe import shapes as shapes
+    from wiresolve.describe.materials import Material as Material
+    from wiresolve.describe.problem import Accuracy as Accuracy
+    from wiresolve.describe.problem import Carriers as Carriers
+    from wiresolve.describe.problem import Orientation as Orientation
+    from wiresolve.describe.problem import Potential as Potential
+    from wiresolve.describe.problem import Problem as Problem
+    from wiresolve.describe.section import Layer as Layer
+    from wiresolve.describe.section import Patch as Patch
+    from wiresolve.describe.section import Section as Section
+    from wiresolve.describe.valley import Valley as Valley
+    from wiresolve.errors import WiresolveError as WiresolveError
+    from wiresolve.gate_curve import gate_curve as gate_curve
+    from wiresolve.gate_result import GateCurve as GateCurve
+    from wiresolve.loading import load as load
+    from wiresolve.mode_elements import form_factors as form_factors
+    from wiresolve.mode_elements import matrix_elements as matrix_elements
+    from wiresolve.output import figures as figures
+    from wiresolve.output import gate_curve_figures as gate_curve_figures
+    from wiresolve.output import measured as measured
+    from wiresolve.output.writing import write as write
+    from wiresolve.physics.section_mesh import mesh as mesh
+    from wiresolve.result import Result as Result
+    from wiresolve.solve import solve as solve
 
-__all__ = [
-    "Accuracy",
-    "Carriers",
-    "GateCurve",
-    "Layer",
-    "Material",
-    "Orientation",
-    "Patch",
-    "Potential",
-    "Problem",
-    "Result",
-    "Section",
-    "Valley",
-    "WiresolveError",
-    "figures",
-    "gate_curve",
-    "gate_curve_figures",
-    "load",
-    "mesh",
-    "shapes",
-    "solve",
-    "write",
-]
 __version__ = "0.1.0"
 
 _HOMES = {
@@ -76,9 +70,12 @@ _HOMES = {
     "Valley": "wiresolve.describe.valley:Valley",
     "WiresolveError": "wiresolve.errors:WiresolveError",
     "figures": "wiresolve.output.figures:",
+    "form_factors": "wiresolve.mode_elements:form_factors",
     "gate_curve": "wiresolve.gate_curve:gate_curve",
     "gate_curve_figures": "wiresolve.output.gate_curve_figures:",
     "load": "wiresolve.loading:load",
+    "matrix_elements": "wiresolve.mode_elements:matrix_elements",
+    "measured": "wiresolve.output.measured:",
     "mesh": "wiresolve.physics.section_mesh:mesh",
     "shapes": "wiresolve.describe.shapes:",
     "solve": "wiresolve.solve:solve",

@@ -11,18 +11,22 @@ import logging
 import os
 import sys
 from collections.abc import Sequence
-from pathlib import Path
-from typing import TYPE_CHECKING, Any, NoReturn
+from typing import Any, NoReturn
 
 import click
 
-from wiresolve.cli_gate_curve import gate_curve
-from wiresolve.doctor import GMSH_LIBRARIES, examine, missing_library
+from wiresolve.commands.doctor import GMSH_LIBRARIES, missing_library
+from wiresolve.commands.gate_curve import gate_curve
+from wiresolve.commands.input import check, materials, mesh
+from wiresolve.commands.install import VARIABLE, completion, doctor
+from wiresolve.commands.options import write_example
+from wiresolve.commands.report import report
+from wiresolve.commands.solve import solve
+from wiresolve.commands.start import new, schema
+from wiresolve.commands.terminal import INTERRUPTED, complain, heed_signals, log_to_stderr
 from wiresolve.errors import InputError, WiresolveError
-from wiresolve.terminal import ACCURACY_MISSED, INTERRUPTED, complain, heed_signals, judged, progress, read_problem, say
 
-if TYPE_CHECKING:
-    pass
+EXAMPLE = "wiresolve new circle > my.toml && wiresolve solve my.toml"
 
 
 class _Program(click.Group):
@@ -41,7 +45,7 @@ class _Program(click.Group):
         given = list(sys.argv[1:] if args is None else args)
         debug = "--debug" in given or bool(os.environ.get("WIRESOLVE_DEBUG"))
         try:
-            code = super().main(given, "wiresolve", complete_var, standalone_mode=False, **extra)
+            code = super().main(given, "wiresolve", complete_var or VARIABLE, standalone_mode=False, **extra)
         except BaseException as fault:
             code = _explain(fault, debug)
         sys.exit(code if isinstance(code, int) else 0)
@@ -52,6 +56,14 @@ class _Program(click.Group):
         except KeyboardInterrupt as fault:
             # Left to itself, click prints an empty line for it.
             raise click.Abort(*fault.args) from fault
+
+    def list_commands(self, ctx: click.Context) -> list[str]:
+        """The commands in the order in which a newcomer needs them."""
+        return list(self.commands)
+
+    def format_epilog(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
+        """Write an example."""
+        write_example(formatter, EXAMPLE)
 
 
 def _explain(fault: BaseException, debug: bool) -> int:
@@ -70,7 +82,8 @@ def _explain(fault: BaseException, debug: bool) -> int:
         return INTERRUPTED
     if isinstance(fault, click.UsageError):
         path = fault.ctx.command_path if fault.ctx else "wiresolve"
-        complain(f"{fault.format_message().rstrip('.')} (see '{path} --help')")
+        said = " ".join(fault.format_message().replace(",\n", ", ").split()).rstrip(".")
+        complain(f"{said} (see '{path} --help')")
         return fault.exit_code
     if isinstance(fault, click.ClickException):
         complain(fault.format_message())
@@ -103,175 +116,20 @@ def _show_version(context: click.Context, _: click.Parameter, wanted: bool) -> N
     "--version", is_flag=True, is_eager=True, expose_value=False, callback=_show_version, help="Print the version."
 )
 @click.option("--debug", is_flag=True, help="Log to stderr and show where a fault arose (also WIRESOLVE_DEBUG=1).")
-def program(debug: bool) -> None:
+@click.pass_context
+def program(context: click.Context, debug: bool) -> None:
     """Subbands of a nanowire's section, each energy with its error bar, and what they mean for conductance.
 
-    A wire file (TOML) describes the wire. "wiresolve check FILE" shows how it is understood, "wiresolve solve FILE"
-    answers.
+    A wire file (TOML) describes the wire. "wiresolve new" prints one to start from, "wiresolve check" shows how it is
+    understood, "wiresolve solve" answers. Exit codes: 0 done; 1 internal fault; 2 invalid input, or a warning under
+    --strict; 3 no mesh; 4 not converged; 5 less accurate than asked; 130 interrupted.
     """
     if debug or os.environ.get("WIRESOLVE_DEBUG"):
-        logging.basicConfig(level=logging.INFO, stream=sys.stderr, force=True)
-        logging.getLogger("wiresolve").setLevel(logging.DEBUG)
+        context.call_on_close(log_to_stderr())
 
 
-_file = click.argument("file", type=click.Path(path_type=Path))
-
-
-@program.command()
-@_file
-@click.option("--out", type=click.Path(path_type=Path), help="Folder for the result [default: results/NAME].")
-@click.option("--replace", is_flag=True, help="Replace an older result in --out; other files there stay.")
-@click.option("--accuracy", metavar="ENERGY", help='Wanted error of each energy, e.g. "0.1 meV", over the file\'s.')
-@click.option("--json", "as_json", is_flag=True, help="Print result.json instead of the verdict and the table.")
-@click.option("--quiet", is_flag=True, help="Print nothing but errors (and what --json asks for).")
-@click.option("--strict", is_flag=True, help="Exit with 2 if there is any warning.")
-@click.option("--no-figures", is_flag=True, help="Draw no figures.")
-def solve(
-    file: Path,
-    out: Path | None,
-    replace: bool,
-    accuracy: str | None,
-    as_json: bool,
-    quiet: bool,
-    strict: bool,
-    no_figures: bool,
-) -> int:
-    """Find the subbands of a wire and write them out.
-
-    The folder holds input.toml, result.json, subbands.csv, modes.vtu (for ParaView) and figures. Without --out it is
-    results/NAME in the current folder and takes the place of the last one; a folder named by --out is never
-    overwritten unless --replace is given.
-    """
-    from wiresolve.output.folder import check_target, write
-    from wiresolve.output.tables import DONE, result_json, summary
-
-    problem = read_problem(file, accuracy)
-    folder = Path("results") / file.stem if out is None else out
-    may_replace = replace or out is None
-    check_target(folder, replace=may_replace, field="--out")
-    from wiresolve.solve import solve as find
-
-    with progress(not quiet) as report:
-        result = find(problem, on_progress=report)
-        heed_signals()
-        code, reasons = judged(result, strict, float(result.errors_eV.max()))
-        status = "; ".join(reasons) or DONE
-        if report is not None:
-            report("writing", 1.0, str(folder))
-        write(result, folder, replace=may_replace, figures=not no_figures, status=status, field="--out")
-    if as_json:
-        say(result_json(result, status).rstrip("\n"))
-    elif not quiet:
-        say(summary(result, folder, status))
-    if reasons:
-        complain(f"{'; '.join(reasons)}; the results are in {folder}, marked so")
-    return code
-
-
-program.add_command(gate_curve)
-
-
-@program.command()
-@_file
-@click.option("--out", type=click.Path(path_type=Path), help="VTU file for the mesh [default: results/NAME.mesh.vtu].")
-@click.option("--replace", is_flag=True, help="Replace the .vtu file named by --out.")
-def mesh(file: Path, out: Path | None, replace: bool) -> int:
-    """Mesh a wire's section and write the mesh for ParaView.
-
-    It is the mesh on which a solve ends: fine enough for the accuracy that the wire file asks for.
-    """
-    from wiresolve.output.folder import check_file, writing
-    from wiresolve.output.vtk import write_section
-
-    problem = read_problem(file)
-    wanted = out or Path("results") / f"{file.stem}.mesh.vtu"
-    target = check_file(wanted, replace=replace or out is None, field="--out", suffix=".vtu", source=file)
-    from wiresolve.physics.section_mesh import mesh as mesh_of
-
-    with progress(True) as report:
-        made = mesh_of(problem, report)
-        heed_signals()
-        with writing(target, "--out") as fresh:
-            write_section(made.mesh, fresh)
-    curved = f"{len(made.mesh.cells):,} curved cells of degree {made.mesh.degree}, {made.unknowns:,} unknowns"
-    say(f"{curved}; {', '.join(f'{n:,} in {name}' for name, n in made.cells.items())}")
-    say("Area: " + ", ".join(f"{name} {area:.6g} nm^2" for name, area in made.areas_nm2.items() if area))
-    say(f"File: {out or target}")
-    if not made.met:
-        complain("the accuracy wanted was missed; this is the best mesh found")
-    return 0 if made.met else ACCURACY_MISSED
-
-
-@program.command()
-@_file
-def check(file: Path) -> None:
-    """Print what is understood of a wire file.
-
-    Every value with its unit; nothing is solved.
-    """
-    from wiresolve.describe.wirefile import describe
-    from wiresolve.output.tables import described
-    from wiresolve.physics import carrying
-    from wiresolve.physics.wire import Wire
-
-    problem = read_problem(file)
-    say("\n".join(described(describe(problem) + carrying.described(Wire(problem)))))
-
-
-@program.command()
-@click.argument("name", required=False)
-@click.option("--temperature", default="300 K", show_default=True, help="Lattice temperature of the values.")
-@click.option("--file", "own", type=click.Path(path_type=Path), help="Also the materials of this TOML file.")
-@click.option("--json", "as_json", is_flag=True, help="Print the materials as JSON.")
-def materials(name: str | None, temperature: str, own: Path | None, as_json: bool) -> None:
-    """List materials, or all values of one.
-
-    NAME is one of the list or an alloy as a plain formula, like Al0.3Ga0.7As. Each value comes with what the literature
-    spans, its source, and whether it was checked against it, is from memory, or differs between sources.
-    """
-    from wiresolve.describe import material_file
-    from wiresolve.describe.material_changes import resolved
-    from wiresolve.describe.materials import known, look_up, table_names, table_values, unknown
-    from wiresolve.output import material_lists
-    from wiresolve.output.tables import paragraphs
-    from wiresolve.units import parse_quantity
-
-    lattice_K = parse_quantity(temperature, "temperature", "--temperature")
-    given = material_file.read("--file", own, Path()) if own is not None else ()
-    found = {material.name: resolved(material, lattice_K) for material in given}
-    if name is None:
-        found |= {entry: look_up(entry, lattice_K) for entry in table_names() if entry not in found}
-        if as_json:
-            say(material_lists.as_json([(material, material.values) for material in found.values()]))
-            return
-        say("\n".join(material_lists.listing(list(found.values()))))
-        say(f"at {lattice_K:g} K; unsure are values from memory and values on which sources differ")
-        say("'wiresolve materials NAME' shows where each is from")
-        return
-    if name not in found and not known(name):
-        raise unknown(name, tuple(found), "Or name the file that describes it with --file" if own is None else "")
-    material = found[name] if name in found else look_up(name, lattice_K)
-    values = material.values if name in found else table_values(name, lattice_K)
-    if as_json:
-        say(material_lists.as_json([(material, values)]))
-        return
-    say("\n".join(material_lists.value_table(values)))
-    for code, text, remedy in material.notes:
-        say("\n".join(["", *paragraphs(f"warning {code}: {text}"), *paragraphs(remedy, indent="    ")]))
-
-
-@program.command()
-def doctor() -> int:
-    """Prove the installation.
-
-    Checks packages and system libraries, and solves eight wires whose energies are known in closed form.
-    """
-    sound = True
-    for line in examine():
-        sound &= line.ok
-        say(line.text)
-    say("all is well" if sound else "something is amiss, see above")
-    return 0 if sound else 1
+for command in (new, check, solve, gate_curve, report, materials, mesh, schema, doctor, completion):
+    program.add_command(command)
 
 
 def main(args: Sequence[str] | None = None) -> NoReturn:

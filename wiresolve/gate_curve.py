@@ -11,6 +11,7 @@ from wiresolve.describe.problem import Problem
 from wiresolve.errors import ConvergenceError, InputError
 from wiresolve.fem.mesh import Mesh
 from wiresolve.gate_result import GateCurve, GatePoint, GateStep, Judged, TransistorPoint, failed_point
+from wiresolve.physics.pace import rounded_time
 
 __all__ = ["GateCurve", "GatePoint", "GateStep", "Judged", "Sweep", "TransistorPoint", "checked", "gate_curve"]
 
@@ -49,11 +50,11 @@ class Sweep(Protocol):
 Solver = Callable[[Problem], Sweep]
 
 
-def solver_of(problem: Problem) -> Sweep:
-    """The sweep of finite elements."""
+def solver_of(problem: Problem, on_progress: Progress | None = None) -> Sweep:
+    """The sweep of finite elements; it tells of its meshes and of what it solves after the points."""
     from wiresolve.sweep import sweep_of
 
-    return sweep_of(problem)
+    return sweep_of(problem, on_progress)
 
 
 def checked(problem: Problem) -> Problem:
@@ -111,7 +112,7 @@ def gate_curve(
         on_progress("mesh", 0.0, "")
     # More BLAS threads only get in each other's way at these sizes.
     with threadpool_limits(limits=1, user_api="blas"):
-        sweep = (solver or solver_of)(problem)
+        sweep = solver(problem) if solver is not None else solver_of(problem, on_progress)
         _check_finished(finished, at, sweep.mesh)
         left = _TimeLeft(len(at), len(finished))
         last: GatePoint | None = None
@@ -179,12 +180,3 @@ class _TimeLeft:
             return text
         seconds = (time.perf_counter() - self._begun) / self._done * (self._to_do - self._done)
         return f"{text}, about {rounded_time(seconds)} left"
-
-
-def rounded_time(seconds: float) -> str:
-    """A time as a person would say it: to about one part in ten."""
-    for size, most, unit in ((1.0, 100.0, "s"), (60.0, 100.0, "min")):
-        if seconds < most * size:
-            value = seconds / size
-            return f"{max(1, round(value)) if value < 20 else 5 * round(value / 5)} {unit}"
-    return f"{seconds / 3600:.1f} h"

@@ -6,7 +6,7 @@ import dataclasses
 import math
 from collections.abc import Mapping
 from dataclasses import asdict, dataclass, field
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,6 +15,10 @@ from wiresolve.describe.problem import Problem
 from wiresolve.fem.mesh import Mesh
 from wiresolve.result import Warned
 from wiresolve.units import CONDUCTANCE_QUANTUM_SIEMENS
+
+if TYPE_CHECKING:
+    import pandas
+    import xarray
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -161,6 +165,25 @@ class GateCurve:
         first, last = self.points[0].gate_voltage_V, self.points[-1].gate_voltage_V
         return f"<GateCurve {title!r}: {good} of {len(self.points)} points from {first:g} V to {last:g} V>"
 
+    def _repr_html_(self) -> str:
+        from wiresolve.physics.wording import with_bar
+        from wiresolve.result_page import page, table
+
+        rows = [
+            (
+                str(step.level),
+                with_bar(step.opens_at_V, step.error_V) if math.isfinite(step.opens_at_V) else "not reached",
+                f"{step.height_G0:g}",
+                f"{step.plateau_G0:g}",
+            )
+            for step in self.steps
+        ]
+        steps = table(("level", f"opens at (V of {self.swept})", "height (G0)", "then (G0)"), rows) if rows else ""
+        foot = " ".join(filter(None, [f"{repr(self)[1:-1]}.", self.failure and f"{self.failure}."]))
+        foot += f" Input digest {self.problem.digest[:12]}."
+        picture = self.problem.section._repr_html_()
+        return page(self.problem.title, self.verdict_text, picture, steps, self.warnings, foot)
+
     @property
     def swept(self) -> str:
         """The name of the gate whose voltage changes."""
@@ -203,6 +226,19 @@ class GateCurve:
     def accuracy_met(self) -> bool:
         """Whether every bar is within the accuracy that the problem asks for."""
         return self.largest_error_eV <= self.problem.accuracy.energy_eV
+
+    def to_pandas(self) -> pandas.DataFrame:
+        """The points as a data frame, with the columns of `gate_curve.csv`; raises InputError without pandas."""
+        from wiresolve.frames import gate_curve
+
+        return gate_curve(self.to_dict())
+
+    def to_xarray(self) -> xarray.Dataset:
+        """Points, subbands, potential and density as one dataset; raises InputError without xarray."""
+        from wiresolve.frames import curve_dataset
+
+        fields = {name: [getattr(p, name) for p in self.points] for name in ("potential_V", "density_per_nm3")}
+        return curve_dataset(self.to_dict(), self.mesh.points, fields)
 
     def to_dict(self) -> dict[str, Any]:
         """Plain data (dicts, lists, strings, numbers, None), the content of `gate_curve.json`."""

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import asdict, dataclass, field
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -13,38 +13,18 @@ from wiresolve.describe.problem import Problem
 from wiresolve.fem.mesh import Mesh
 from wiresolve.physics import statistics, transport
 from wiresolve.physics.conductance import conductance_through
+from wiresolve.physics.plain_spectrum import plain
 from wiresolve.physics.sensitivity import OutlineSensitivity, Sensitivity
 from wiresolve.physics.spectrum import Spectrum
+from wiresolve.subband import Subband as Subband
+from wiresolve.subband import Subbands, table_html
+
+if TYPE_CHECKING:
+    import pandas
+    import xarray
 
 Array = NDArray[np.float64]
 SCHEMA = "wiresolve-result-1"
-
-
-@dataclass(frozen=True)
-class Subband:
-    """One orbital state of one group of valleys: an entry of the subband table.
-
-    `energy_eV` is the subband's minimum from the result's energy zero, `error_eV` the bar of its discretisation,
-    `level` the cluster of entries that are equal within their bars (from 1), `axial_mass` in m0 (None where E(k)
-    starts linearly), `shares` the probability by layer, `bound` and `wall_effect_eV` None where the outermost layer
-    is no barrier, `line_density_per_nm` at the Fermi level and the first temperature (None without a Fermi level).
-    """
-
-    index: int
-    level: int
-    valley: str
-    energy_eV: float
-    error_eV: float
-    k_min_per_nm: float
-    axial_mass: float | None
-    axial_mass_error: float | None
-    spin_degeneracy: int
-    valley_degeneracy: int
-    layer: str
-    shares: Mapping[str, float]
-    bound: bool | None
-    wall_effect_eV: float | None
-    line_density_per_nm: float | None
 
 
 @dataclass(frozen=True)
@@ -116,7 +96,8 @@ class Charge:
     that comes from the potential. `given_eV` (mesh points,) is the energy of a potential given beside it, zero where
     there is none. `passes` of states were solved until one changed the potential by less than 1e-6 V,
     `residual_V` is what the last one changed, and `gauss_error` what gates, fixed charge and carriers lack of
-    neutrality, relative to the largest of them.
+    neutrality, relative to the largest of them. `exchange_V` (mesh points,) is what exchange and correlation add to the
+    potential that electrons feel, None where they are not counted.
     """
 
     gates: tuple[GateCharge, ...]
@@ -129,6 +110,7 @@ class Charge:
     density_per_nm3: Array
     potential_error_eV: Array
     given_eV: Array
+    exchange_V: Array | None = None
 
 
 @dataclass(frozen=True)
@@ -150,6 +132,8 @@ class Result:
     (`axial_mass_of_first_valleys_m0`, `band_edge_of_first_valleys_eV`; NaN where carriers are kept out). `spectrum` is
     what `line_density`, `fermi_level` and `conductance_at` stand on: the listed subbands and what lies above them. With
     gates or charge (`charge` is not None) they hold the potential as it is: another Fermi level asks for another solve.
+    `finer_mesh` has the mesh's triangles at degree 6, for error bars of what is worked out later; None where it is not
+    known.
     """
 
     problem: Problem
@@ -176,6 +160,10 @@ class Result:
     versions: Mapping[str, str]
     timings_s: Mapping[str, float] = field(default_factory=dict)
     charge: Charge | None = None
+    finer_mesh: Mesh | None = None
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "subbands", Subbands(self.subbands))
 
     def __repr__(self) -> str:
         levels = ", ".join(f"{1e3 * s.energy_eV:.6g}" for s in self.subbands[:8])
@@ -184,6 +172,15 @@ class Result:
         widest = 1e3 * max(s.error_eV for s in self.subbands)
         title = self.problem.title or "untitled"
         return f"<Result {title!r}: subbands at {levels}{more} meV, bars up to {widest:.2g} meV; {codes}>"
+
+    def _repr_html_(self) -> str:
+        from wiresolve.result_page import page
+
+        foot = f"Energies from the {self.energy_zero_text}, ± the error bar of the discretisation. "
+        foot += f"{self.summary.unknowns:,} unknowns; input digest {self.problem.digest[:12]}."
+        table = table_html(self.subbands)
+        picture = self.problem.section._repr_html_()
+        return page(self.problem.title, self.verdict.text, picture, table, self.warnings, foot)
 
     @property
     def energies_eV(self) -> Array:
@@ -228,6 +225,21 @@ class Result:
         np.minimum.at(edge, self.mesh.cells[known], by_cell[known, None])
         return np.where(np.isfinite(edge), edge + self.charge.given_eV - self.charge.potential_V, np.nan)
 
+    def to_pandas(self) -> pandas.DataFrame:
+        """The subbands as a data frame, with the columns of `subbands.csv`; raises InputError without pandas."""
+        from wiresolve.frames import subbands
+
+        return subbands(self.to_dict())
+
+    def to_xarray(self) -> xarray.Dataset:
+        """Subbands, dispersion, curves and modes as one dataset; raises InputError without xarray."""
+        from wiresolve.frames import dataset
+
+        fields = {}
+        if self.charge is not None:
+            fields = {"potential_V": self.charge.potential_V, "density_per_nm3": self.charge.density_per_nm3}
+        return dataset(self.to_dict(), self.mesh.points, self.modes, fields)
+
     def _charge(self) -> dict[str, float | int] | None:
         charge = self.charge
         if charge is None:
@@ -263,6 +275,7 @@ class Result:
             "gates": [] if self.charge is None else [asdict(gate) for gate in self.charge.gates],
             "charge": self._charge(),
             "line_density_per_nm": self.line_density_per_nm,
+            "spectrum": plain(self.spectrum),
             "states_missed": self.states_missed,
             "accuracy_met": self.accuracy_met,
             "dispersion": {

@@ -27,6 +27,7 @@ from wiresolve.physics.electrostatics import PINNED
 from wiresolve.physics.ladder import spectrum_of
 from wiresolve.physics.listing import SPIN, Listing, listing
 from wiresolve.physics.outline_motion import outline_motion
+from wiresolve.physics.region_fields import cell_fields
 from wiresolve.physics.sensitivity import (
     NOWHERE,
     OutlineSensitivity,
@@ -82,7 +83,7 @@ def solve(problem: Problem, on_progress: Progress | None = None) -> Result:
     """
     from threadpoolctl import threadpool_limits
 
-    clock = _Clock()
+    clock, tell = _Clock(), on_progress or (lambda stage, fraction, detail: None)
     # More BLAS threads only get in each other's way at these sizes.
     with threadpool_limits(limits=1, user_api="blas"):
         wire = Wire(problem)
@@ -94,12 +95,16 @@ def solve(problem: Problem, on_progress: Progress | None = None) -> Result:
                 certified = charged.certified
             else:
                 certified = certify(wire.draw, wire.channels, wanted, accuracy, on_progress)
+        tell("along the wire", 0.92, "masses and dispersion")
         with clock("axial"):
             found = listing(wire, certified)
+        tell("above", 0.94, "states above the listed ones")
         with clock("above"):
             spectrum = spectrum_of(wire, certified, found)
+        tell("dimensions", 0.96, "how levels move with them")
         with clock("sensitivities"):
             moved = ((), NOWHERE) if charged is not None else _sensitivities(wire, certified, found)
+    tell("verdict", 0.98, "")
     with clock("measured"):
         return _assembled(wire, certified, found, spectrum, moved, clock, charged)
 
@@ -168,7 +173,7 @@ def _assembled(
         problem=problem,
         mesh=mesh,
         modes=points,
-        cell_fields=_cell_fields(wire, certified, found.valley[0]),
+        cell_fields=cell_fields(wire, mesh, found.valley[0]),
         subbands=subbands,
         spectrum=spectrum,
         summary=MeshSummary(
@@ -191,6 +196,7 @@ def _assembled(
         versions=versions(),
         timings_s=clock.seconds,
         charge=None if charged is None else _charge(wire, charged),
+        finer_mesh=certified.solved[0].enriched.space.mesh,
     )
 
 
@@ -222,6 +228,7 @@ def _charge(wire: Wire, charged: ChargedSubbands) -> Charge:
         density_per_nm3=balanced.density_at_points(),
         potential_error_eV=charged.potential_error_eV,
         given_eV=given,
+        exchange_V=balanced.exchange_V,
     )
 
 
@@ -254,20 +261,6 @@ def _subbands(
             )
         )
     return tuple(listed)
-
-
-def _cell_fields(wire: Wire, certified: Certified, valleys: str) -> dict[str, Array]:
-    """The axial mass and the band edge of the first subband's group of valleys, by cell; nan where it has none."""
-    mesh, group = certified.space.mesh, next(g for g in wire.groups if g.label == valleys)
-    mass, edge = [], []
-    for region in mesh.regions:
-        known = region.carriers and region.material in group.inverse_mass
-        mass.append(1 / group.inverse_mass[region.material][2, 2] if known else np.nan)
-        edge.append(wire.edge_eV(region.material, region.offset_eV, group) if known else np.nan)
-    return {
-        "axial_mass_of_first_valleys_m0": np.array(mass)[mesh.region],
-        "band_edge_of_first_valleys_eV": np.array(edge)[mesh.region],
-    }
 
 
 def _dispersion(found: Listing, spectrum: Spectrum, certified: Certified) -> Dispersion:

@@ -369,9 +369,9 @@ class WireSweep:
         return transistor_summary(off, on, drain, low if low < drain else drain / 2)
 
 
-def sweep_of(problem: Problem) -> WireSweep:
+def sweep_of(problem: Problem, on_progress: Progress | None = None) -> WireSweep:
     """What solves the points of a problem's sweep."""
-    return WireSweep(problem)
+    return WireSweep(problem, on_progress)
 
 
 def _beyond(fault: InputError) -> str:

@@ -6,15 +6,23 @@ import csv
 import dataclasses
 import io
 import math
-import re
 from collections.abc import Sequence
 from pathlib import Path
 
-import numpy as np
-
+import wiresolve.columns as columns
 from wiresolve.gate_result import ZERO_TEXT, GateCurve, GatePoint, TransistorPoint
 from wiresolve.output.sources import unsure
-from wiresolve.output.tables import DONE, MOST_ROWS, aligned, cell, json_text, paragraphs, significant, with_bar
+from wiresolve.output.tables import (
+    DONE,
+    MOST_ROWS,
+    aligned,
+    cell,
+    json_text,
+    paragraphs,
+    significant,
+    with_bar,
+    write_columns,
+)
 from wiresolve.output.valley_names import short_valleys
 
 MOST_FAILED = 5
@@ -31,37 +39,14 @@ def gate_curve_csv(curve: GateCurve, status: str = DONE) -> str:
 
     Lines in front that start with `#` say what it is and the digest of the input. What a point lacks is empty.
     """
-    most = max(len(p.energy_eV) for p in curve.points)
-    others = [g.name for g in curve.problem.gates if g.name != curve.swept]
-    charged = list(dict.fromkeys(name for p in curve.points for name in p.gate_charge_per_nm))
-    head = ["gate_voltage_V", *(f"voltage_of_{_word(name)}_V" for name in others)]
-    single: tuple[str, ...] = ("line_density_per_nm", "capacitance_F_per_m", "geometric_F_per_m", "quantum_F_per_m")
-    single += ("centroid_F_per_m", "gate_coupling", "conductance_G0", "conductance_S")
-    head += [*single, *(f"charge_on_{_word(name)}_per_nm" for name in charged)]
-    listed = {"energy_{}_eV": "energy_eV", "error_{}_eV": "error_eV", "level_{}": "level"}
-    listed |= {"line_density_{}_per_nm": "line_density_by_subband_per_nm", "coupling_{}": "coupling"}
-    listed |= {"valley_{}": "valley"}
-    head += [name.format(n + 1) for name in listed for n in range(most)]
-    further = list(dict.fromkeys(name for p in curve.points for name in p.more))
-    last = ("passes", "residual_V", "gauss_error", "converged", "note")
     lines = io.StringIO()
     lines.write(f"# wiresolve gate curve of {' '.join(curve.problem.title.split())}\n")
     lines.write(
         f"# energies from the {ZERO_TEXT}; {curve.temperature_K:g} K; swept gate {' '.join(curve.swept.split())}\n"
     )
     lines.write(f"# status {status}; input digest {curve.problem.digest}\n")
-    table = csv.writer(lines, lineterminator="\n")
-    table.writerow([*head, *further, *last])
-    for point in curve.points:
-        row: list[object] = [point.gate_voltage_V, *(point.voltages_V.get(name) for name in others)]
-        row += [getattr(point, name) for name in single]
-        row += [point.gate_charge_per_nm.get(name) for name in charged]
-        for name in listed.values():
-            values = list(np.asarray(getattr(point, name)).tolist())
-            row += [*values, *[None] * (most - len(values))]
-        row += [point.more.get(name) for name in further]
-        row += [getattr(point, name) for name in last[:-1]] + [" ".join(point.note.split())]
-        table.writerow([_cell(value) for value in row])
+    found = columns.gate_curve([point.to_dict() for point in curve.points], curve.swept)
+    write_columns(lines, found | {"note": [" ".join(note.split()) for note in found["note"]]})
     return lines.getvalue()
 
 
@@ -157,11 +142,6 @@ def summary(curve: GateCurve, folder: str | Path | None = None, status: str = DO
 
 def _largest(points: Sequence[GatePoint], name: str) -> float:
     return max(abs(float(getattr(p, name))) for p in points)
-
-
-def _word(name: str) -> str:
-    """A name as part of a column's head."""
-    return re.sub(r"\W+", "_", name).strip("_")
 
 
 def _cell(value: object) -> str:

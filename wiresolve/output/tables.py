@@ -10,15 +10,22 @@ import re
 import textwrap
 from collections.abc import Iterable, Mapping, Sequence
 from pathlib import Path
-from typing import Any
+from typing import Any, TextIO
 
 import numpy as np
 
+import wiresolve.columns as columns
 from wiresolve.describe.valley import ZONE_CENTRE
 from wiresolve.output.sources import from_memory
 from wiresolve.physics.sensitivity import PER_LENGTH, Sensitivity
 from wiresolve.physics.spread import grown
-from wiresolve.result import Result, Subband
+from wiresolve.physics.wording import by_temperature as by_temperature
+from wiresolve.physics.wording import significant as significant
+from wiresolve.physics.wording import with_bar as with_bar
+from wiresolve.result import Result
+from wiresolve.subband import level_energy_eV as level_energy_eV
+from wiresolve.subband import levels as levels
+from wiresolve.subband import states as states
 from wiresolve.units import KB
 
 DONE = "done"
@@ -33,51 +40,6 @@ _LEAST_meV_per_nm = 0.02
 """Dimensions that move all of these levels by less are left out there."""
 MOST_TEMPERATURES = 3
 """Temperatures that the printed tables have columns for; `result.json` has all."""
-
-
-def with_bar(value: float, bar: float) -> str:
-    """`value ± bar` with as many decimals as the bar deserves: one digit of it, or two where one is too coarse.
-
-    The bar is rounded up, and widened by what rounding moved the value, so that the printed interval holds the whole
-    of the given one; it is at most 1.5 times as wide while six decimals are enough for that.
-    """
-    if not math.isfinite(bar) or bar <= 0:
-        return f"{value:.9g}"
-    for decimals in range(min(6, max(0, -math.floor(math.log10(bar)))), 7):
-        unit = 10.0**-decimals
-        shown = round(value, decimals) + 0.0  # no minus sign before a zero
-        half = max(1, math.ceil(round((bar + abs(value - shown)) / unit, 6))) * unit
-        if half <= 1.5 * bar:
-            break
-    return f"{shown:.{decimals}f} ± {half:.{decimals}f}"
-
-
-def significant(value: float, digits: int) -> str:
-    """A number rounded to so many significant digits, trailing zeros kept, never with an exponent."""
-    if value == 0 or not math.isfinite(value):
-        return f"{value:g}"
-    # Rounded first, since that may bring a digit more in front: 9.996 is 10.0 and not 10.00.
-    rounded = float(f"{value:.{digits - 1}e}")
-    decimals = digits - 1 - math.floor(math.log10(abs(rounded)))
-    return f"{rounded:.{max(0, decimals)}f}"
-
-
-def levels(subbands: Sequence[Subband]) -> list[list[Subband]]:
-    """The entries grouped by level, in order."""
-    groups: dict[int, list[Subband]] = {}
-    for subband in subbands:
-        groups.setdefault(subband.level, []).append(subband)
-    return list(groups.values())
-
-
-def level_energy_eV(group: Sequence[Subband]) -> float:
-    """Mean energy of a level's entries."""
-    return sum(s.energy_eV for s in group) / len(group)
-
-
-def states(group: Sequence[Subband]) -> int:
-    """States at the bottom of a level, spin and valleys counted."""
-    return sum(s.spin_degeneracy * s.valley_degeneracy for s in group)
 
 
 def result_json(result: Result, status: str = DONE) -> str:
@@ -118,24 +80,6 @@ def write_json(result: Result, path: str | Path, status: str = DONE) -> None:
     Path(path).write_text(result_json(result, status), encoding="utf-8")
 
 
-COLUMNS = (
-    "index",
-    "level",
-    "valley",
-    "energy_eV",
-    "error_eV",
-    "k_min_per_nm",
-    "axial_mass",
-    "axial_mass_error",
-    "spin_degeneracy",
-    "valley_degeneracy",
-    "layer",
-    "bound",
-    "wall_effect_eV",
-    "line_density_per_nm",
-)
-
-
 def subbands_csv(result: Result, status: str = DONE) -> str:
     """The text of `subbands.csv`: a line a subband under the names that `result.json` uses, then a share a layer, then
     how its energy moves with each dimension.
@@ -143,20 +87,20 @@ def subbands_csv(result: Result, status: str = DONE) -> str:
     Lines in front that start with `#` say what it is, the energy zero and the digest of the input. What does not apply
     is empty.
     """
-    places = list(dict.fromkeys(place for s in result.subbands for place in s.shares))
     lines = io.StringIO()
     lines.write(f"# wiresolve subbands of {' '.join(result.problem.title.split())}\n")
     lines.write(f"# energies from {' '.join(result.energy_zero_text.split())}; masses in units of m0\n")
     lines.write(f"# status {status}; input digest {result.problem.digest}\n")
-    table = csv.writer(lines, lineterminator="\n")
-    moved = _by_length(result)
-    head = [*COLUMNS, *(f"share_{place.replace(' ', '_')}" for place in places)]
-    table.writerow([*head, *(f"by_{re.sub('[^A-Za-z0-9]+', '_', s.of).strip('_')}_{s.unit}" for s in moved)])
-    for number, s in enumerate(result.subbands):
-        row = [getattr(s, name) for name in COLUMNS] + [s.shares.get(place, 0.0) for place in places]
-        row += [float(by.values[number]) for by in moved]
-        table.writerow([cell(value) for value in row])
+    moved = [{"of": s.of, "unit": s.unit, "values": s.values} for s in result.sensitivities]
+    write_columns(lines, columns.subbands([vars(s) for s in result.subbands], moved))
     return lines.getvalue()
+
+
+def write_columns(lines: TextIO, found: Mapping[str, Sequence[object]]) -> None:
+    """Columns as lines of CSV, their heads first."""
+    table = csv.writer(lines, lineterminator="\n")
+    table.writerow(found)
+    table.writerows([cell(value) for value in row] for row in zip(*found.values(), strict=True))
 
 
 def cell(value: object) -> str:
@@ -379,12 +323,6 @@ def small(value: float) -> str:
         return f"{value:g}"
     unit = 10.0 ** (math.floor(math.log10(value)) - 1)
     return f"{math.ceil(value / unit - 1e-9) * unit:.2g}"
-
-
-def by_temperature(text: str) -> str:
-    """The verdict with a line of its own for each temperature, and one for what follows them."""
-    broken = re.sub(r" (?=At [-+.\de]+ K \()", "\n", text)
-    return re.sub(r" (?=Effective dimension )", "\n", broken, count=1)
 
 
 def _on_the_point(texts: Sequence[str]) -> list[str]:

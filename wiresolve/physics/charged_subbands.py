@@ -19,6 +19,7 @@ from wiresolve.physics.charged_wire import ChargedWire
 from wiresolve.physics.electrostatics import Field, at_quadrature, improved
 from wiresolve.physics.filled_states import filled_error, filled_needs
 from wiresolve.physics.first_mesh import MOST_VALUES, first_size
+from wiresolve.physics.pace import MeshPace
 from wiresolve.physics.selfconsistent import Balanced, balance
 from wiresolve.physics.solved import SPARE
 from wiresolve.physics.state_density import state_density
@@ -109,7 +110,7 @@ def certify_charged(
     worst, stalled = np.inf, 0
     with Mesher(charged.wire.inner) as mesher:
         first = first_size(mesher, channels, wanted, accuracy_eV, charged.within)
-        size, needs = first.size, first.needs
+        size, needs, pace = first.size, first.needs, MeshPace()
         factor = estimate.bar_factor(first.corners)
         corners = first.corners
         for number in range(1, _MOST_MESHES + 1):
@@ -119,6 +120,7 @@ def certify_charged(
                 if not best:
                     raise
                 break  # cells at a singular end became too small: the best mesh so far is kept, with its bars
+            tell("mesh", 0.02 + 0.08 * number, pace.begin(number, len(meshes.coarse.points)))
             if not best:
                 corners = charged.corners(meshes.coarse, meshes.field, first.corners)
             try:
@@ -132,7 +134,7 @@ def certify_charged(
                 size = _smaller(size)
                 continue
             bar, unknowns = max(j.done.bar_eV for j in judged), len(meshes.coarse.points)
-            tell("mesh", 0.1 + 0.08 * number, f"mesh {number}: {unknowns} points, widest bar {1e3 * bar:.3g} meV")
+            tell("mesh", 0.1 + 0.08 * number, f"mesh {number}: {unknowns:,} points, widest bar {1e3 * bar:.3g} meV")
             _log.debug("mesh %d: %d points, bar %.3g eV", number, unknowns, bar)
             stalled = 0 if bar < 0.7 * worst else stalled + 1
             if bar < worst:

@@ -22,6 +22,7 @@ from wiresolve.physics.channel import Channel
 from wiresolve.physics.first_mesh import MOST_VALUES, First, first_size
 from wiresolve.physics.minima import Minima, selected
 from wiresolve.physics.outer_wall import Barrier, farthest, first_distance, further, wall_effect
+from wiresolve.physics.pace import MeshPace
 from wiresolve.physics.semiclassical import phase_space
 from wiresolve.physics.solved import (
     SPARE,
@@ -304,13 +305,15 @@ def _refine(
     """Solve and re-mesh until the bars are under the accuracy, or no longer fall."""
     best: Pass | None = None
     worst, stalled, factor = np.inf, 0, estimate.bar_factor(first.corners)
-    size, needs = first.size, first.needs
+    size, needs, pace = first.size, first.needs, MeshPace()
     for number in range(1, 11):
-        done = solve_all(*mesher.mesh(size), channels, needs, wanted, factor, accuracy_eV)
+        meshes = mesher.mesh(size)
+        tell("mesh", 0.02 + 0.08 * number, pace.begin(passes + number, len(meshes[0].points)))
+        done = solve_all(*meshes, channels, needs, wanted, factor, accuracy_eV)
         if done.bar_eV <= accuracy_eV:
             done = done.thorough(accuracy_eV).finished()
         bar, needs, unknowns = done.bar_eV, done.needs, done.unknowns
-        detail = f"mesh {passes + number}: {unknowns} unknowns, widest bar {1e3 * bar:.3g} meV"
+        detail = f"mesh {passes + number}: {unknowns:,} unknowns, widest bar {1e3 * bar:.3g} meV"
         tell("mesh", 0.1 + 0.08 * number, detail)
         _log.debug("pass %d: %d unknowns, bar %.3g eV", passes + number, unknowns, bar)
         stalled = 0 if bar < 0.7 * worst else stalled + 1

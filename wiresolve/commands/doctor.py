@@ -23,6 +23,8 @@ PACKAGES = (
     "threadpoolctl",
     "rich",
 )
+OPTIONAL = {"pandas": "to_pandas()", "xarray": "to_xarray()"}
+"""Packages that only something of its own needs."""
 GMSH_LIBRARIES = "libglu1-mesa libxcursor1 libxft2 libxinerama1 libxrender1 libgomp1 libgl1 libegl1"
 """Debian packages with the system libraries that the gmsh wheel loads, and VTK where it draws."""
 INSTALL_LINE = f"as root on Debian or Ubuntu: apt-get install --yes {GMSH_LIBRARIES}"
@@ -48,10 +50,15 @@ def examine() -> Iterator[Finding]:
         except importlib.metadata.PackageNotFoundError:
             complete = False
             yield Finding(False, f"{name} is missing: pip install {name}")
+    for name, needs in OPTIONAL.items():
+        try:
+            yield Finding(True, f"{name} {importlib.metadata.version(name)}")
+        except importlib.metadata.PackageNotFoundError:
+            yield Finding(True, f"{name} is not installed: only {needs} needs it")
     gmsh = gmsh_starts()
     yield gmsh
     if complete and gmsh.ok:
-        from wiresolve.known_wires import KNOWN_WIRES, compare
+        from wiresolve.commands.known_wires import KNOWN_WIRES, compare
 
         for make in KNOWN_WIRES:
             ok, text = compare(make())

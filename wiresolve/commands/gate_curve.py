@@ -8,21 +8,38 @@ from typing import Any
 
 import click
 
+import wiresolve.commands.options as options
+from wiresolve.commands.terminal import (
+    NOT_CONVERGED,
+    complain,
+    heed_signals,
+    judged,
+    measured_points,
+    progress,
+    read_problem,
+    say,
+    say_json,
+)
 from wiresolve.errors import InputError
-from wiresolve.terminal import NOT_CONVERGED, complain, heed_signals, judged, progress, read_problem, say
 
 
-@click.command("gate-curve")
-@click.argument("file", type=click.Path(path_type=Path))
-@click.option("--out", type=click.Path(path_type=Path), help="Folder for the curve [default: results/NAME.gate-curve].")
-@click.option("--replace", is_flag=True, help="Replace an older gate curve in --out; other files there stay.")
-@click.option("--restart", is_flag=True, help="Throw away the points of an unfinished sweep instead of going on.")
-@click.option("--accuracy", metavar="ENERGY", help='Wanted error of each energy, e.g. "0.1 meV", over the file\'s.')
-@click.option("--json", "as_json", is_flag=True, help="Print gate_curve.json instead of the verdict and the steps.")
-@click.option("--quiet", is_flag=True, help="Print nothing but errors (and what --json asks for).")
-@click.option("--strict", is_flag=True, help="Exit with 2 if there is any warning.")
-@click.option("--no-figures", is_flag=True, help="Draw no figures.")
-def gate_curve(file: Path, out: Path | None, replace: bool, no_figures: bool, **options: Any) -> int:
+@click.command("gate-curve", cls=options.Command, example="wiresolve gate-curve wire.toml --accuracy '0.5 meV'")
+@options.file_argument
+@options.together(
+    options.out("Folder for the curve [default: results/NAME.gate-curve]."),
+    options.replace("Replace an older gate curve in --out; other files there stay."),
+    click.option("--restart", is_flag=True, help="Throw away the points of an unfinished sweep instead of going on."),
+    options.accuracy,
+    options.report,
+    options.vtk,
+    options.measured("gate_voltage_V"),
+    options.no_figures,
+    options.strict,
+    options.as_json("Print gate_curve.json instead of the verdict and the steps."),
+    options.quiet,
+    options.verbose,
+)
+def gate_curve(file: Path, out: Path | None, replace: bool, quiet: bool, **given: Any) -> int:
     """Solve a wire at every gate voltage of its [voltages].
 
     The folder holds input.toml, gate_curve.csv, gate_curve.json, transistor.csv (with drain voltages), gate_curve.pvd
@@ -31,18 +48,22 @@ def gate_curve(file: Path, out: Path | None, replace: bool, no_figures: bool, **
     """
     from wiresolve.gate_curve import checked
     from wiresolve.output import gate_curve_files, gate_curve_partial
-    from wiresolve.output.folder import check_target
     from wiresolve.output.gate_curve_tables import gate_curve_json, summary
     from wiresolve.output.tables import DONE
+    from wiresolve.output.target import check_target
+    from wiresolve.output.writing import write
 
-    problem = read_problem(file, options["accuracy"])
+    problem = read_problem(file, given["accuracy"])
     try:
         checked(problem)
     except InputError as fault:
         raise InputError(f"{file}: {fault.field}", fault.rule, remedy=fault.remedy) from None
     folder = Path("results") / f"{file.stem}.gate-curve" if out is None else out
     target = check_target(folder, replace=replace or out is None, field="--out", contents=gate_curve_files.CONTENTS)
-    quiet, total = options["quiet"], len(problem.voltages.points) if problem.voltages else 0
+    total = len(problem.voltages.points) if problem.voltages else 0
+    extras = {"figures": not given["no_figures"], "report": given["report"], "vtk": given["vtk"]}
+    if given["measured"] is not None:
+        extras["measured"] = measured_points(given["measured"], "gate_voltage_V")
     partial = gate_curve_partial.partial_folder(target)
     kept = partial if folder.is_absolute() else os.path.relpath(partial)
 
@@ -55,24 +76,22 @@ def gate_curve(file: Path, out: Path | None, replace: bool, no_figures: bool, **
         try:
             with progress(not quiet) as report:
                 curve = gate_curve_partial.swept(
-                    problem, points, restart=options["restart"], on_progress=report, on_start=started
+                    problem, points, restart=given["restart"], on_progress=report, on_start=started
                 )
-                code, reasons = judged(curve, options["strict"], curve.largest_error_eV)
+                code, reasons = judged(curve, given["strict"], curve.largest_error_eV)
                 if curve.failed:
                     code, reasons = NOT_CONVERGED, [curve.failure, *reasons]
                 status = "; ".join(reasons) or DONE
                 if report is not None:
                     report("writing", 1.0, str(folder))
-                gate_curve_files.write(
-                    curve, folder, replace=replace or out is None, figures=not no_figures, status=status, field="--out"
-                )
+                write(curve, folder, replace=replace or out is None, status=status, field="--out", **extras)
         except KeyboardInterrupt as fault:
             done = points.count()
             said = f"{done} of {total} points are kept in {kept}; the same command goes on from there" if done else ""
             raise KeyboardInterrupt(said) from fault
         points.discard()
-    if options["as_json"]:
-        say(gate_curve_json(curve, status).rstrip("\n"))
+    if given["as_json"]:
+        say_json(gate_curve_json(curve, status))
     elif not quiet:
         say(summary(curve, folder, status))
     if reasons:
