@@ -22,8 +22,9 @@ from matplotlib.patches import Rectangle
 from PIL import Image
 
 import wiresolve as ws
-from wiresolve.output.canvas import FAINT, INK, PAGE_MM, bare, canvas, coloured, style, thermal_colour
+from wiresolve.output.canvas import FAINT, INK, PAGE_MM, bare, canvas, coloured, thermal_colour
 from wiresolve.output.raster import edges, outline, raster
+from wiresolve.output.style import style
 from wiresolve.output.tables import level_energy_eV, levels, states, with_bar
 from wiresolve.units import CONDUCTANCE_QUANTUM_SIEMENS
 

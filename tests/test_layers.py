@@ -24,14 +24,19 @@ LAYERS: tuple[frozenset[str], ...] = tuple(
             {"fem"},
             {"bands"},
             {"physics"},
-            {"result", "gate_result", "solve", "gate_curve", "gate_verdict", "step_motion", "sweep", "loading"},
+            {
+                *("result", "subband", "result_page", "columns", "frames", "solve", "loading"),
+                *("mode_elements", "mode_groups"),
+                *("gate_result", "gate_curve", "gate_verdict", "step_motion", "sweep"),
+            },
             {"output"},
             {"survey"},
-            {"cli", "cli_gate_curve", "terminal", "doctor", "known_wires", "__main__"},
+            {"commands"},
+            {"cli", "__main__"},
         ),
     )
 )
-MAY_PRINT = {"wiresolve.cli", "wiresolve.terminal", "wiresolve.__main__"}
+MAY_PRINT = {"wiresolve.cli", "wiresolve.commands.terminal", "wiresolve.__main__"}
 # Libraries that only one module may import.
 ONLY_IMPORTER = {
     "gmsh": "wiresolve.fem.meshing",

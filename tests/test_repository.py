@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import ast
+import json
+import math
 import os
 import re
 import subprocess
@@ -14,11 +16,11 @@ import click
 import pytest
 
 import wiresolve.cli
+from wiresolve.commands.doctor import GMSH_LIBRARIES
 from wiresolve.describe import gate_tables, material_file, plain, shape_tables, wirefile
 from wiresolve.describe.problem import Carriers, Orientation, Problem
 from wiresolve.describe.section import Layer, Section
 from wiresolve.describe.shapes import Circle
-from wiresolve.doctor import GMSH_LIBRARIES
 
 REPOSITORY = Path(__file__).resolve().parents[1]
 README = (REPOSITORY / "README.md").read_text(encoding="utf-8")
@@ -181,8 +183,39 @@ def test_script_of_the_readme_runs(tmp_path: Path) -> None:
     assert (tmp_path / "results" / "from_python" / "result.json").is_file()
 
 
+def test_every_script_of_the_readme_is_run_here() -> None:
+    assert len(code_blocks("python")) == 4
+
+
+def test_matrix_elements_and_survey_of_the_readme_run(tmp_path: Path) -> None:
+    _, _, elements, survey = code_blocks("python")
+    begin = """
+import json
+
+import wiresolve as ws
+
+def wire(width_nm):
+    box = ws.Section(shape=ws.shapes.Rectangle(width_nm=width_nm, height_nm=6.0), material="GaAs")
+    cold = ws.Carriers(temperature_K=(77.0,), model="parabolic")
+    return ws.Problem("box", section=box, carriers=cold, accuracy=ws.Accuracy(subbands=3, energy_eV=1e-3))
+
+result = ws.solve(wire(10.0))
+"""
+    end = """
+print(json.dumps([float(elements.dipole_x_nm[0, 1]), float(coulomb.values[0, 0, 0, 0, 0])]))
+"""
+    script = begin + elements + survey + end
+    run = subprocess.run([sys.executable, "-W", "error", "-c", script], cwd=tmp_path, capture_output=True, text=True)
+    assert run.returncode == 0, run.stderr
+    dipole, coulomb = json.loads(run.stdout)
+    # Between the two lowest states of a wall-to-wall box: 16 / 9 pi^2 of its width (any textbook of quantum mechanics).
+    assert abs(dipole) == pytest.approx(160 / (9 * math.pi**2), rel=1e-4)
+    assert coulomb > 0
+    assert len((tmp_path / "results" / "survey.pvd").read_text(encoding="utf-8").split("DataSet timestep")) == 4
+
+
 def test_sweep_of_the_readme_runs(tmp_path: Path) -> None:
-    _, block = code_blocks("python")
+    _, block, *_ = code_blocks("python")
     *_, wrap, _ = code_blocks("toml")
     # Three points in place of nine, and coarser: it has to run, not to be good.
     short = (
