@@ -23,7 +23,7 @@ from wiresolve.physics.followed_states import RESIDUAL, Constant, Followed, foll
 from wiresolve.physics.grown_states import Grown, cell_tables
 from wiresolve.physics.pencil import Operator, build
 from wiresolve.physics.semiclassical import phase_space
-from wiresolve.physics.unlisted import axial_motion
+from wiresolve.physics.unlisted import axial_motion, followed_value
 from wiresolve.units import HBAR2_OVER_2M0
 
 MASS, ALPHA, RADIUS_NM, COUNT = 0.03, 1.8, 6.0, 8
@@ -151,3 +151,15 @@ def test_tables_of_many_subbands() -> None:
         exact = Filling(77.0, float(alpha[i])).both(by + depth[i])
         assert n[:, i] == pytest.approx(exact[0], rel=1e-6)
         assert rate[:, i] == pytest.approx(exact[1], rel=1e-4)
+
+
+def test_what_is_followed_between_states_that_mix_does_not_jump() -> None:
+    """Two values whose states turn into each other: each at the ends, halfway their mean, and no jump in between."""
+    angle = np.linspace(0, np.pi / 2, 201)
+    overlap = np.stack([np.cos(angle), np.sin(angle)], axis=1)
+    found = followed_value(np.array([[1.0, 3.0]]), overlap)
+    assert found[0] == 1 and found[-1] == pytest.approx(3, abs=1e-14) and found[100] == pytest.approx(2, abs=1e-12)
+    assert 0 < np.diff(found).max() < 0.1
+    # A small part p of the other state counts as p^2: what repels the levels goes like p, and has to stay.
+    part = np.sin(angle[2]) ** 2
+    assert found[2] - 1 == pytest.approx(2 * part**2, rel=0.01)

@@ -10,6 +10,7 @@ from wiresolve.physics.capacitance import in_F_per_m, limit_text
 from wiresolve.physics.gate_answer import channel_capacitance
 from wiresolve.physics.selfconsistent import Balanced
 from wiresolve.physics.wire import Wire
+from wiresolve.physics.wording import line_density
 
 Array = NDArray[np.float64]
 
@@ -24,8 +25,7 @@ def charge_sentence(balanced: Balanced, wire: Wire) -> str:
     total = balanced.occupied.total_per_nm
     if total < FEWEST_PER_NM:
         return "The wire is pinched off: it holds no carriers at these voltages."
-    shown = f"{total * 1e7:.3g} per cm"
-    return f"It holds {shown} ({total:.3g} per nm), {where(balanced, wire)}.{_limit(balanced, wire)}"
+    return f"It holds {line_density(total)}, {where(balanced, wire)}.{_limit(balanced, wire)}"
 
 
 def _limit(balanced: Balanced, wire: Wire) -> str:

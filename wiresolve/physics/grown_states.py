@@ -21,7 +21,7 @@ from wiresolve.fem import eigen
 from wiresolve.fem.space import Space
 from wiresolve.physics.followed_states import split_energies
 from wiresolve.physics.pencil import Operator
-from wiresolve.physics.unlisted import NEAR, from_squares
+from wiresolve.physics.unlisted import NEAR, followed_value, from_squares
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -289,9 +289,8 @@ class Grown:
         values, vectors = np.linalg.eigh((matrix + matrix.transpose(0, 2, 1)) / 2)
         vectors = lower.transpose(0, 2, 1) @ vectors
         own = np.repeat(np.arange(len(energy_eV)), len(steps))
-        seen = np.abs(np.einsum("pi,pij->pj", metric[np.arange(len(at)), own], vectors))
-        squares = values[np.arange(len(at)), seen.argmax(axis=1)].reshape(-1, len(steps))
-        return from_squares(squares, steps)
+        seen = np.einsum("pi,pij->pj", metric[np.arange(len(at)), own], vectors)
+        return from_squares(followed_value(values, seen).reshape(-1, len(steps)), steps)
 
 
 def linearised(series: _Series, count: int, guess_eV: Array) -> tuple[Array, NDArray[Any]] | None:

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from wiresolve.describe.problem import Problem
+from wiresolve.describe.problem import Problem, require_problem
 from wiresolve.fem.mesh import Mesh
 from wiresolve.physics.subbands import certify
 from wiresolve.physics.wire import Wire
@@ -37,6 +37,7 @@ def mesh(problem: Problem, on_progress: Callable[[str, float, str], None] | None
     """
     from threadpoolctl import threadpool_limits
 
+    require_problem(problem)
     wire, accuracy = Wire(problem), problem.accuracy
     with threadpool_limits(limits=1, user_api="blas"):
         done = certify(wire.draw, wire.channels, accuracy.subbands, accuracy.energy_eV, on_progress)

@@ -43,8 +43,19 @@ def axial_motion(
             weights = family.weights(at)
             metric = np.tensordot(weights, moving, 1)
             values, vectors = dense.eigh(at * product - np.tensordot(weights, still, 1), metric)
-            squares[row, column] = values[int(np.argmax(np.abs(metric[n] @ vectors)))]
+            squares[row, column] = followed_value(values, metric[n] @ vectors)
     return from_squares(squares, steps)
+
+
+def followed_value(values: Array, overlap: NDArray[Any]) -> Array:
+    """Of eigenvalues (..., m) the one whose state is most alike another one, by the overlaps with it, (...).
+
+    Where two are about as alike, because states that lie close to each other mix along the wire, it is between theirs:
+    a choice would jump, and charge and potential could not agree on it. A part p of another state counts as p^2, less
+    than what repels the levels, which goes like p.
+    """
+    weight = np.abs(overlap) ** 4
+    return np.asarray((weight * values).sum(axis=-1) / weight.sum(axis=-1))
 
 
 def from_squares(squares: Array, steps: Array) -> tuple[Array, Array]:

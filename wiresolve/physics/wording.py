@@ -21,6 +21,12 @@ def signed_meV(energy_eV: float, digits: int = 2) -> str:
     return f"{'+' if energy_eV > 0 else ''}{meV(energy_eV, digits)}"
 
 
+def line_density(per_nm: float) -> str:
+    """Carriers for each length of wire, in the unit of the trade: "2.62e6 carriers per cm (0.262 per nm)"."""
+    mantissa, exponent = f"{1e7 * per_nm:.2e}".split("e")
+    return f"{mantissa}e{int(exponent)} carriers per cm ({per_nm:.3g} per nm)"
+
+
 def with_bar(value: float, bar: float) -> str:
     """`value ± bar` with as many decimals as the bar deserves: one digit of it, or two where one is too coarse.
 
