@@ -183,17 +183,23 @@ class PlateSweep:
         return tuple(found)
 
     def steps(self, points: Sequence[GatePoint]) -> tuple[GateStep, ...]:
-        """Where each level is at the Fermi level, by interpolation between points."""
+        """Where each level is at the Fermi level: its u is known there, and V = u + e n(u)/C; the width is 3.53 kT
+        over the coupling there."""
         found, plateau = [], 0.0
-        at = [p.gate_voltage_V for p in points]
+        kelvin = self.problem.carriers.temperature_K[0]
         for level in range(1, int(self.level.max()) + 1):
             first = int(np.flatnonzero(self.level == level)[0])
             energy = [float(p.energy_eV[first]) for p in points]
             height = float((self.level == level).sum())
             plateau += height
-            opens = float(np.interp(0.0, energy[::-1], at[::-1])) if energy[-1] < 0 < energy[0] else math.nan
-            width = 3.53 * KB * self.problem.carriers.temperature_K[0] if math.isfinite(opens) else math.nan
-            found.append(GateStep(level, "zone centre", opens, 1e-4, height, plateau, width, -0.01))
+            opens, width = math.nan, math.nan
+            if energy[-1] < 0 < energy[0]:
+                u = float(self.energy_eV[first])
+                opens = u + float(subband_density(self.energy_eV - u, MASS, 2, 0.0, kelvin).sum()) / (
+                    SERIES_F_PER_M * PER_NM_V
+                )
+                width = 3.53 * KB * kelvin / self._solved(opens).gate_coupling
+            found.append(GateStep(level, "zone centre", opens, 1e-4, height, plateau, width, -0.01, int(height)))
         return tuple(found)
 
     def judged(

@@ -176,7 +176,11 @@ CASES: dict[str, tuple[str, str, tuple[str, ...]]] = {
     "carriers misspelt": (CIRCLE, f'{CIRCLE}\ncarriers = "exclude"', ("section.carriers", "'excluded'")),
     "a date": ('"10 nm"', "2001-01-01", ("section.diameter", "quotes")),
     "not TOML": ("[section]", "[section", ("is not TOML", "line")),
-    "duplicate key": (CIRCLE, f'shape = "circle"\n{CIRCLE}', ("is not TOML", "overwrite")),
+    "duplicate key": (CIRCLE, f'shape = "circle"\n{CIRCLE}', ("holds shape twice, the second time in line",)),
+    "bare accuracy in eV": ('"0.1 meV"', "1e-4", ("accuracy.energy", 'energy = "0.1 meV"')),
+    "Fermi energy": ("[accuracy]", "fermi_energy = 3\n[accuracy]", ("carriers.fermi_energy", "'fermi_level'")),
+    "square": ('"circle"', '"square"', ("section.shape", "did you mean 'rectangle'?")),
+    "ampere for Angstrom": ('"10 nm"', '"100 A"', ("section.diameter", "use Angstrom")),
 }
 
 

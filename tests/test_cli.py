@@ -464,7 +464,7 @@ def test_options_reach_what_is_written(here: Path, monkeypatch: pytest.MonkeyPat
     assert run("solve", "wire.toml", "--quiet").exit_code == 0
     plain = {"report": False, "vtk": "curved", "points": False, "matrix_elements": False, "figures": True}
     assert asked == {**plain, "axial_frames": 0, "replace": True, "status": "done", "field": "--out"}
-    words = ("--report", "--vtk", "linear", "--extrude", "0.03 um", "--axial-frames", "5", "--points")
+    words = ("--report", "--vtk", "linear", "--extrude", "0.03 um", "--axial-frames", "5", "--quadrature")
     words += ("--matrix-elements", "--measured", "points.csv", "--no-figures", "--out", "out")
     assert run("solve", "wire.toml", "--quiet", *words).exit_code == 0
     measured = asked.pop("measured")

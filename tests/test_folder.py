@@ -7,6 +7,7 @@ import json
 import os
 from pathlib import Path
 
+import numpy as np
 import pytest
 import pyvista
 
@@ -14,6 +15,7 @@ from tests.synthetic import core_shell_result
 from wiresolve.describe import wirefile
 from wiresolve.errors import InputError
 from wiresolve.output import figures, folder, tables, vtk
+from wiresolve.output.measured import Measured
 from wiresolve.output.target import check_target, writing
 from wiresolve.output.writing import write
 
@@ -207,3 +209,18 @@ def test_half_a_file_is_removed(tmp_path: Path) -> None:
     with pytest.raises(KeyboardInterrupt):
         write_half()
     assert names(tmp_path) == []
+
+
+def test_files_of_ones_own_among_what_may_be_asked_for_stay(tmp_path: Path) -> None:
+    """Measured points under the natural name, and notes in the folder of a series; what is out of date goes."""
+    target = tmp_path / "wire"
+    points = Measured("fermi_level_eV", np.array([0.1]), np.array([1.0]))
+    write(core_shell_result(1), target, figures=False, measured=points)
+    own = {"measured.csv": "raw", "along_axis/mine.txt": "a note"}
+    (target / "along_axis").mkdir()
+    for name in (*own, "along_axis/k_0001.vtu", "volume.vtu"):
+        (target / name).write_text(own.get(name, "out of date"))
+    write(core_shell_result(2), target, replace=True, figures=False)
+    assert {name: (target / name).read_text() for name in own} == own
+    assert not (target / "along_axis" / "k_0001.vtu").exists() and not (target / "volume.vtu").exists()
+    assert not (target / "inputs").exists()

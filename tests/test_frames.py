@@ -8,6 +8,7 @@ import json
 from dataclasses import replace
 from io import StringIO
 
+import matplotlib.pyplot as plt
 import numpy as np
 import pandas as pd
 import pytest
@@ -18,6 +19,7 @@ from tests.synthetic import charged_result, core_shell_result
 from wiresolve import frames
 from wiresolve.errors import InputError
 from wiresolve.gate_curve import gate_curve
+from wiresolve.gate_result import GateCurve
 from wiresolve.output.gate_curve_tables import gate_curve_csv
 from wiresolve.output.tables import cell, result_json, subbands_csv
 
@@ -54,6 +56,29 @@ def test_columns_of_numbers_are_numbers() -> None:
     }
     assert frame["bound"].dtype == "boolean"
     assert frame["bound"].isna().all()
+
+
+def test_a_dataset_labels_its_axes() -> None:
+    for data in (charged_result().to_xarray(), core_shell_result(3).to_xarray(), curve_of().to_xarray()):
+        for name in map(str, data.variables):
+            assert data[name].attrs["long_name"], name
+            ending = next((end for end in ("_eV", "_nm", "_V", "_K", "_G0", "_S") if name.endswith(end)), None)
+            assert ending is None or data[name].attrs["units"], name
+    found = core_shell_result(3).to_xarray()
+    assert found.psi_per_nm.attrs == {"long_name": "envelope function", "units": "1/nm"}
+    assert found.temperature_K.attrs == {"long_name": "temperature", "units": "K"}
+    assert found.density_of_states_per_eV_nm.attrs["units"] == "1/(eV nm)"
+    assert found.axial_mass.attrs["units"] == "m0"
+    one = found.conductance_G0.sel(temperature_K=77.0)
+    assert one.conductance_fermi_eV.dims == ("fermi_level",)
+    assert one.attrs["units"] == "2 e^2/h"
+    (line,) = one.plot(x="conductance_fermi_eV")
+    assert line.axes.get_xlabel() == "Fermi level [eV]"
+    plt.close("all")
+
+
+def curve_of() -> GateCurve:
+    return gate_curve(swept_problem(), solver=PlateSweep)
 
 
 def test_the_frame_of_a_file_is_that_of_the_result() -> None:

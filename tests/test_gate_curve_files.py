@@ -29,6 +29,7 @@ from wiresolve.cli import program
 from wiresolve.errors import InputError, MeshError
 from wiresolve.gate_curve import gate_curve
 from wiresolve.output import gate_curve_figures, gate_curve_files, gate_curve_partial
+from wiresolve.output.between_points import between_points_of
 
 ALL = ["figures", "gate_curve.csv", "gate_curve.json", "gate_curve.pvd", "input.toml", "points"]
 OUT = ("gate-curve", "wire.toml", "--out", "out", "--no-figures")
@@ -453,13 +454,15 @@ def test_figures_say_what_they_show() -> None:
     levels = gate_curve_figures.levels(curve).axes[0]
     assert levels.get_xlabel() == "Voltage of the gate “wrap” (V)"
     assert levels.get_ylabel() == "Energy from the source's Fermi level (meV)"
-    curves = [line.get_ydata() for line in levels.lines if len(line.get_ydata()) == 31]
+    curves = [line for line in levels.lines if len(line.get_ydata()) > 31]
     assert len(curves) == 6
-    assert curves[0][10] == pytest.approx(1e3 * curve.points[10].energy_eV[0])
-    assert np.isnan(curves[0][4])
+    # Lines go through the solved points; through the failed one too, which is marked.
+    for point in (curve.points[n] for n in (0, 10, 30)):
+        drawn = [np.interp(point.gate_voltage_V, *line.get_data()) for line in curves]
+        assert sorted(drawn) == pytest.approx((1e3 * point.energy_eV).tolist())
     assert "× did not converge" in levels.get_title("left")
     stairs = gate_curve_figures.staircase(curve)
-    assert stairs.axes[0].lines[0].get_ydata()[20] == curve.points[20].conductance_G0
+    assert stairs.axes[0].lines[1].get_ydata()[20] == curve.points[20].conductance_G0
     # Both scales of the staircase say the same: 77.48 microsiemens a step.
     assert stairs.axes[1].get_ylim()[1] == pytest.approx(77.48091729 * stairs.axes[0].get_ylim()[1], rel=1e-8)
     transfer = gate_curve_figures.transfer(curve)
@@ -470,6 +473,32 @@ def test_figures_say_what_they_show() -> None:
     output = gate_curve_figures.output(curve).axes[0]
     assert output.lines[0].get_xdata().tolist() == [0.0, 0.05, 0.3]
     assert output.lines[0].get_ydata()[0] == 0.0
+
+
+def test_between_solved_points_figures_draw_the_staircase() -> None:
+    """Seven points at 4.2 K, steps much narrower than the 50 mV between them, against 61 points in closed form."""
+    coarse = gate_curve(swept_problem(7, temperature_K=4.2), solver=recording([]))
+    exact = gate_curve(swept_problem(61, temperature_K=4.2), solver=recording([]))
+    at, truth = (np.array([getattr(p, name) for p in exact.points]) for name in ("gate_voltage_V", "conductance_G0"))
+    line = gate_curve_figures.staircase(coarse).axes[0].lines[0]
+    drawn = np.interp(at, *line.get_data())
+    straight = np.interp(at, [p.gate_voltage_V for p in coarse.points], [p.conductance_G0 for p in coarse.points])
+    assert np.abs(straight - truth).mean() > 5 * np.abs(drawn - truth).mean()
+    for half in (0.5, 2.0):  # the middles of the steps from 0 to 1 and from 1 to 3
+        passed = [float(np.interp(half, conductance, volts)) for volts, conductance in (line.get_data(), (at, truth))]
+        assert passed[0] == pytest.approx(passed[1], abs=2e-3)
+    for flat in (0.08, 0.15, 0.2):
+        assert np.interp(flat, *line.get_data()) == pytest.approx(np.interp(flat, at, truth), abs=1e-3)
+    # Levels meet the Fermi level where steps open: that of the first subband, and of the two of the second level.
+    lines = gate_curve_figures.levels(coarse).axes[0].lines[1:4]
+    for step, curve in ((0, lines[0]), (1, lines[1]), (1, lines[2])):
+        assert np.interp(coarse.steps[step].opens_at_V, *curve.get_data()) == pytest.approx(0.0, abs=1e-2)
+
+
+def test_two_points_of_which_one_failed_are_joined_by_nothing() -> None:
+    curve = gate_curve(swept_problem(2), solver=recording([], failing=(0,)))
+    assert between_points_of(curve) is None
+    assert np.isnan(gate_curve_figures.staircase(curve).axes[0].lines[0].get_ydata()).tolist() == [True, False]
 
 
 @pytest.mark.parametrize("name", ["levels", "staircase", "density_and_capacitance", "transfer", "output"])
@@ -493,3 +522,23 @@ def test_a_cold_sweep_of_two_points_can_be_drawn(tmp_path: Path) -> None:
     curve = gate_curve(swept_problem(2, temperature_K=0.0), solver=recording([], failing=(0,)))
     written = gate_curve_figures.save_all(curve, tmp_path)
     assert len(written) == 9
+
+
+def test_measured_points_outside_of_the_sweep_are_counted(here: Path, sweeps: list[PlateSweep]) -> None:
+    (here / "points.csv").write_text("gate_voltage_V,conductance_G0\n-2,0\n-1,1\n0.1,1\n")
+    result = run(*OUT, "--measured", "points.csv")
+    assert (result.exit_code, len(sweeps)) == (0, 1)
+    said = one_line(result)
+    assert said.startswith("wiresolve: warning: 2 of 3 measured points lie outside of the sweep, 0 V to 0.3 V; ")
+    quiet = run(*OUT, "--measured", "points.csv", "--replace", "--quiet")
+    assert (quiet.exit_code, quiet.stdout, quiet.stderr) == (0, "", "")
+
+
+def test_what_makes_a_sweep_long_is_said_before_it(
+    here: Path, sweeps: list[PlateSweep], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    growing = importlib.import_module("wiresolve.physics.growing_masses")
+    monkeypatch.setattr(growing, "cost_text", lambda wire: f"{wire.problem.title} takes long")
+    assert one_line(run(*OUT)).endswith(" takes long")
+    assert run(*OUT, "--replace", "--quiet").stderr == ""
+    assert "takes long" in " ".join(run("check", "wire.toml").stdout.split())

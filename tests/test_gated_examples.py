@@ -170,7 +170,7 @@ def test_silicon_channel_stays_below_the_ballistic_limit(channel: Any) -> None:
             point.filled_energy_eV,
             point.filled_axial_mass,
             point.filled_degeneracy,
-            point.filled_alpha_per_eV,
+            point.filled_nonparabolicity_per_eV,
             strict=True,
         )
     )

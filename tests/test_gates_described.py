@@ -332,6 +332,15 @@ def test_the_summary_adds_up_the_fixed_charge() -> None:
     assert "fixed_charge" not in dict(describe(plain))
 
 
+@pytest.mark.parametrize("text", ["1e18 cm^-3", "1e18 1/cm^3", "1e18 cm-3", "1e18 /cm3", "1e18/cm3"])
+def test_densities_as_they_are_typed(text: str) -> None:
+    assert parse_quantity(text, "density", "donors") == 1e-3
+
+
+def test_sheet_densities_as_they_are_typed() -> None:
+    assert parse_quantity("1e12 cm-2", "sheet density", "s") == parse_quantity("1e12/cm2", "sheet density", "s") == 1e-2
+
+
 def test_resistances_have_units() -> None:
     assert parse_quantity("1.5 kohm", "resistance", "r") == 1500.0
     assert next(iter(UNITS["resistance"])) == "ohm"

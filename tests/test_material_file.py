@@ -75,7 +75,7 @@ def test_valleys_of_the_wire_file() -> None:
     assert material.valley_degeneracy == 6
     assert material.valleys[0].nonparabolicity_per_eV == 0.5
     assert material.conduction_edge_eV == 0.1
-    assert all(v.source == "given in the wire file: invented" for v in material.values)
+    assert all(v.source == "given with the wire: invented" for v in material.values)
 
 
 def test_materials_of_a_file(tmp_path: Path) -> None:

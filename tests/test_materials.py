@@ -288,7 +288,7 @@ def test_given_materials() -> None:
     even = Material.given("even", electron_mass=0.05)
     assert even.electron_mass == 0.05
     assert even.conduction_edge_eV is None
-    assert even.values[0].source == "given in the wire file"
+    assert even.values[0].source == "given with the wire"
     oxide = Material.given("oxide", permittivity=3.9)
     assert oxide.inverse_mass == ()
 
@@ -406,7 +406,7 @@ def test_a_material_of_the_table_with_some_values_replaced() -> None:
     assert found.edges == table.edges
     assert found.permittivity == 14.6
     mass = next(v for v in found.values if v.quantity == "zone_centre_mass")
-    assert mass.source == "given in the wire file, replaces 0.024: our cyclotron resonance"
+    assert mass.source == "given with the wire, replaces 0.024: our cyclotron resonance"
     assert (mass.provenance, mass.checked, mass.value) == ("given", False, 0.023)
     kept = next(v for v in found.values if v.quantity == "valence_edge")
     assert (kept.name, kept.value) == ("mine", -0.59)

@@ -127,7 +127,7 @@ def solved_sweep() -> GateCurve:
 
 def drawn(axes: Any) -> Any:
     """The measured points on axes."""
-    (line,) = [line for line in axes.lines if line.get_marker() == "o" and line.get_linestyle() == "None"]
+    (line,) = [line for line in axes.lines if line.get_marker() == "o" and line.get_markerfacecolor() == "none"]
     return line
 
 
@@ -139,16 +139,36 @@ def test_points_lie_over_both_staircases(tmp_path: Path) -> None:
     assert drawn(axes).get_xdata() == pytest.approx(1e3 * at[:3])
     assert drawn(axes).get_ydata().tolist() == [1.0, 1.1, 12.0]
     assert axes.get_ylim()[1] > 12.0 and axes.get_xlim() == figures.conductance(result).axes[0].get_xlim()
-    assert [text.get_text() for text in axes.get_legend().get_texts()] == ["4.2 K", "77 K", "300 K", "wire 3"]
+    assert [text.get_text() for text in axes.get_legend().get_texts()] == [
+        "4.2 K",
+        "77 K",
+        "300 K",
+        "wire 3: 3 of 4 in view",
+    ]
     volts = Measured("gate_voltage_V", [0.05, 0.1, 0.2, 5.0], [0.1, 0.9, 1.0, 2.0], "wire 4")
     axes = gate_curve_figures.staircase(curve, volts).axes[0]
     assert drawn(axes).get_xdata().tolist() == [0.05, 0.1, 0.2]
-    assert [text.get_text() for text in axes.get_legend().get_texts()] == ["computed", "wire 4"]
+    assert [text.get_text() for text in axes.get_legend().get_texts()] == [
+        "computed",
+        "wire 4: 3 of 4 in view",
+    ]
     assert axes.get_xlim() == gate_curve_figures.staircase(curve).axes[0].get_xlim()
     assert len(figures.save_all(result, tmp_path, points)) == 3 * len(figures.drawable(result))
     assert "wire 3" in (tmp_path / "conductance.svg").read_text(encoding="utf-8")
     gate_curve_figures.save_all(curve, tmp_path, volts)
     assert "wire 4" in (tmp_path / "staircase.svg").read_text(encoding="utf-8")
+
+
+def test_the_words_about_many_points_stay_inside_the_figure() -> None:
+    x = np.linspace(-1.0, 1.0, 20 * MOST_SHOWN)
+    many = Measured("gate_voltage_V", x, np.ones_like(x), "the wire of the third cooldown")
+    figure = gate_curve_figures.staircase(solved_sweep(), many)
+    figure.canvas.draw()
+    legend, frame = figure.axes[0].get_legend(), figure.bbox
+    assert legend.get_texts()[-1].get_text().endswith("of 30,000 in view, 1 of 3 drawn")
+    box, label = legend.get_window_extent(), figure.axes[0].xaxis.label.get_window_extent()
+    assert box.x0 >= 0 and box.x1 <= frame.x1 and box.y0 >= 0
+    assert box.y1 <= label.y0 + 1
 
 
 def test_points_on_another_axis_are_refused() -> None:
@@ -164,6 +184,6 @@ def test_of_very_many_points_some_are_drawn_and_it_is_said() -> None:
     x = np.linspace(0.02, 0.05, 10 * MOST_SHOWN)
     axes = figures.conductance(result, Measured("fermi_level_eV", x, np.ones_like(x), "long")).axes[0]
     assert drawn(axes).get_xdata() == pytest.approx(1e3 * x[::10])
-    assert axes.get_legend().get_texts()[-1].get_text() == "long, 1 of 10 points"
+    assert axes.get_legend().get_texts()[-1].get_text() == f"long: {10 * MOST_SHOWN:,} in view, 1 of 10 drawn"
     far = figures.conductance(result, Measured("fermi_level_eV", [5.0], [1.0], "far")).axes[0]
-    assert far.get_legend().get_texts()[-1].get_text() == "far: none in view"
+    assert far.get_legend().get_texts()[-1].get_text() == "far: none of 1 in view"

@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import json
+import math
 import re
 import shutil
 from collections.abc import Iterator
+from dataclasses import replace
 from html.parser import HTMLParser
 from itertools import pairwise
 from pathlib import Path
@@ -21,6 +23,7 @@ from wiresolve.describe import wirefile
 from wiresolve.errors import InputError
 from wiresolve.gate_curve import gate_curve
 from wiresolve.output import report, writing
+from wiresolve.output.between_points import between
 from wiresolve.output.measured import Measured
 from wiresolve.physics import statistics
 from wiresolve.physics.fermi import occupation
@@ -287,10 +290,16 @@ def test_gate_slider_meets_the_solved_points(browser: Any, swept: Path) -> None:
         densities = computed(page, f"model.bySubband({voltage!r})")
         assert sum(densities) == pytest.approx(sum(point["line_density_by_subband_per_nm"]), rel=1e-6)
         assert computed(page, f"model.conductance({voltage!r})") == pytest.approx(point["conductance_G0"], rel=1e-6)
+    # The curve that is drawn is that of figures, by Python, and the slider's dot lies on it.
+    at, drawn = computed(page, "data.sweep.at"), computed(page, "data.sweep.conductance")
+    assert computed(page, "data.sweep.at.map(model.conductance)") == pytest.approx(drawn, rel=1e-6, abs=2e-7)
+    swept_by_python = between(found["points"], found["steps"], found["temperature_K"], None)
+    assert swept_by_python is not None
+    assert swept_by_python.conductance_G0(np.array(at)) == pytest.approx(drawn, abs=1e-7)
     # Between points all levels fall together, as the plates' do: closed within what a cubic between points leaves.
     exact = PlateSweep(swept_problem(13)).point(swept_problem(13).voltages.points[7], None)  # type: ignore[union-attr]
-    between = computed(page, f"model.at({exact.gate_voltage_V!r}).map((s) => s.lowest)")
-    assert sorted(between)[:6] == pytest.approx(np.sort(exact.energy_eV).tolist(), abs=1e-3)
+    there = computed(page, f"model.at({exact.gate_voltage_V!r}).map((s) => s.lowest)")
+    assert sorted(there)[:6] == pytest.approx(np.sort(exact.energy_eV).tolist(), abs=1e-3)
 
 
 def test_the_page_asks_for_nothing_and_fits_every_width(browser: Any, wires: dict[str, Wire], swept: Path) -> None:
@@ -388,7 +397,9 @@ def test_the_page_says_what_its_folder_says(wires: dict[str, Wire]) -> None:
     assert "wiresolve solve input.toml" in page
     assert found["input_digest"] in page
     for value in found["materials"]:
-        assert value["source"] in page
+        # What one publication says of several values stands below it once.
+        for part in value["source"].split("; ", 1):
+            assert part in page
     for warning in found["warnings"]:
         assert warning["code"] in page
         assert warning["remedy"] in page
@@ -467,9 +478,29 @@ def test_other_folders_are_refused(tmp_path: Path, wires: dict[str, Wire]) -> No
         report.html(tmp_path)
     folder = tmp_path / "cut"
     shutil.copytree(wires["parabolic"].folder, folder)
-    (folder / "result.json").write_text('{"schema": "wiresolve-result-1"', encoding="utf-8")
-    with pytest.raises(InputError, match="cannot be used"):
+    for content in ('{"schema": "wiresolve-result-1"', "[]", "null", '{"versions": null}'):
+        (folder / "result.json").write_text(content, encoding="utf-8")
+        with pytest.raises(InputError, match="cannot be used"):
+            report.html(folder)
+
+
+def test_the_input_beside_a_result_must_be_its_own(tmp_path: Path, wires: dict[str, Wire]) -> None:
+    folder = tmp_path / "changed"
+    shutil.copytree(wires["parabolic"].folder, folder)
+    written = (folder / "input.toml").read_text(encoding="utf-8")
+    (folder / "input.toml").write_text(written.replace(f'"{2 * RADIUS_NM} nm"', '"31 nm"'), encoding="utf-8")
+    assert (folder / "input.toml").read_text(encoding="utf-8") != written
+    with pytest.raises(InputError, match="is not the input of the result beside it"):
         report.html(folder)
+
+
+def test_a_fermi_level_far_away_does_not_squeeze_the_steps(tmp_path: Path, wires: dict[str, Wire]) -> None:
+    source = wires["parabolic"].result
+    carriers = replace(source.problem.carriers, fermi_level_eV=-5.0)
+    far = replace(source, problem=replace(source.problem, carriers=carriers))
+    page = report.html(writing.write(far, tmp_path / "far", figures=False))
+    low, high = json.loads(re.search(r'"fermiRange_eV":(\[[^]]*\])', page).group(1))  # type: ignore[union-attr]
+    assert source.energies_eV[0] - 0.1 < low < high < source.energies_eV[-1] + 0.1
 
 
 def test_measured_points_are_on_the_page(browser: Any, wires: dict[str, Wire], tmp_path: Path) -> None:
@@ -482,4 +513,54 @@ def test_measured_points_are_on_the_page(browser: Any, wires: dict[str, Wire], t
     circles = "[...document.querySelectorAll('#draw-staircase g[fill=none] circle')].map((c) => +c.getAttribute('cx'))"
     drawn = computed(browser, circles)
     assert len(drawn) == 2 and drawn[0] < drawn[1]
-    assert "3 measured points" in (folder / "report.html").read_text(encoding="utf-8")
+    assert "Circles: 2 of 3 measured points in view" in (folder / "report.html").read_text(encoding="utf-8")
+    said = "document.querySelector('#draw-staircase svg').getAttribute('aria-label')"
+    assert "2 of 3 measured points in view" in computed(browser, said)
+
+
+def test_shares_are_the_same_in_number_bar_and_verdict(browser: Any, wires: dict[str, Wire]) -> None:
+    page = opened(browser, wires["growing"].page)
+    tile = page.execute_script("return document.querySelector('#says-first').firstChild.textContent")
+    bar = page.execute_script(
+        "return [...document.querySelectorAll('#draw-occupation text')].map((t) => t.textContent)"
+        ".find((t) => t.endsWith('%'))"
+    )
+    assert bar.endswith(f", {tile}")
+    share = computed(page, "model.bySubband(data.wire.start.fermi_eV, data.wire.start.kelvin)[0]")
+    share /= computed(page, "model.lineDensity(data.wire.start.fermi_eV, data.wire.start.kelvin)")
+    assert float(tile.removesuffix(" %")) == pytest.approx(100 * share - 0.05, abs=0.05 + 1e-9)
+    found = json.loads((wires["growing"].folder / "result.json").read_text(encoding="utf-8"))
+    contrast = found["verdict"]["steps"][-1]["levels"][0]["contrast"]
+    words = f"{math.floor(1000 * contrast) / 10:.1f} %"
+    assert f"contrast {words}" in found["verdict"]["text"] or contrast > 0.999
+    assert f", {words}<" in wires["growing"].page.read_text(encoding="utf-8")
+
+
+def test_levels_of_a_gate_curve_are_those_of_its_file(browser: Any, swept: Path) -> None:
+    page = opened(browser, swept / report.REPORT)
+    found = json.loads((swept / "gate_curve.json").read_text(encoding="utf-8"))
+    listed = sorted({level for point in found["points"] for level in point["level"]})
+    rows = page.execute_script(
+        "return [...document.querySelectorAll('#numbers-occupation tbody th')].map((t) => +t.textContent)"
+    )
+    assert rows == listed
+    # Each level is numbered once, however many subbands it has.
+    numbers = page.execute_script(
+        "return [...document.querySelectorAll('#draw-gate-levels svg > g[text-anchor=start] text')]"
+        ".map((t) => t.textContent)"
+    )
+    assert sorted(int(n) for n in numbers if n.isdigit()) == listed
+
+
+def test_no_text_of_a_figure_is_cut(browser: Any, wires: dict[str, Wire], swept: Path) -> None:
+    cut = """return [...document.querySelectorAll('.canvas svg')].flatMap((svg) => {
+        const frame = svg.getBoundingClientRect();
+        return [...svg.querySelectorAll('text')].filter((text) => {
+            const box = text.getBoundingClientRect();
+            return box.width > 0 && (box.left < frame.left - 1 || box.right > frame.right + 1
+                || box.top < frame.top - 1 || box.bottom > frame.bottom + 1);
+        }).map((text) => svg.parentNode.id + ': ' + text.textContent);
+    });"""
+    for path in (wires["parabolic"].page, wires["tables"].page, swept / report.REPORT):
+        for width in (380, 1300):
+            assert opened(browser, path, width).execute_script(cut) == []

@@ -185,7 +185,8 @@ def test_the_summary_tells_each_step_and_what_is_from_memory() -> None:
     warm = result.verdict.steps[1]["levels"]
     assert len(rows) == 2 + len(warm)
     for row, step in zip(rows[2:], warm, strict=True):
-        assert row.endswith(f"{step['kind']} {math.floor(100 * step['contrast'])} %")
+        # The contrast is cut to a tenth, as the verdict's.
+        assert row.endswith(f"{step['kind']} {math.floor(1000 * step['contrast']) / 10:.1f} %")
         assert row.split()[0] == str(step["level"])
     assert [float(row.split()[5]) for row in rows[2:]] == [1, 3, 5, 6]
     # The gap and the valence edge of GaAs stand there from memory; so do its X and L valleys, which have no subband.

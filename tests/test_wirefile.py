@@ -209,7 +209,7 @@ def test_a_wire_files_own_material_takes_the_place_of_the_tables() -> None:
     text = wirefile.dump(Problem("own", Section(Circle(10), "GaAs"), COLD))
     own = wirefile.parse(text + "[materials.GaAs]\nelectron_mass = 0.07\n")
     assert own.resolved_materials()["GaAs"].electron_mass == pytest.approx(0.07)
-    assert "given in the wire file" in own.resolved_materials()["GaAs"].values[0].source
+    assert "given with the wire" in own.resolved_materials()["GaAs"].values[0].source
 
 
 def test_describe_tells_everything_with_units() -> None:
@@ -222,7 +222,7 @@ def test_describe_tells_everything_with_units() -> None:
     assert "around it" in rows["section.outside"]
     assert rows["orientation.axis"] == "1 1 1"
     assert rows["potential.field"] == "0.01 V/nm and 0.01 V/nm"
-    assert "(given in the wire file" in rows["materials.wall.electron_mass"]
+    assert "(given with the wire" in rows["materials.wall.electron_mass"]
     core = dict(wirefile.describe(wirefile.parse(wirefile.dump(Problem("a", Section(Circle(10), "GaAs"), COLD)))))
     assert "78.5398 nm^2" in core["section.core.area"]
     assert "on the common scale" in core["energy_zero"]
@@ -318,6 +318,8 @@ def test_equal_problems_have_equal_digests() -> None:
         ("0.1 µm", "length", 100.0),
         ("5 Angstrom", "length", 0.5),
         ("5 angstrom", "length", 0.5),
+        ("5 \u00c5", "length", 0.5),
+        ("5 \u212b", "length", 0.5),
         ("1e-9 m", "length", 1.0),
         ("-3. nm", "length", -3.0),
         (".5 nm", "length", 0.5),

@@ -95,7 +95,7 @@ def __getattr__(name: str) -> Any:
 
 
 def __dir__() -> list[str]:
-    return sorted({*globals(), *_HOMES})
+    return sorted({*_HOMES, *(name for name in globals() if name.startswith("__") and name.endswith("__"))})
 
 
 class _Package(ModuleType):

@@ -5,6 +5,7 @@ from __future__ import annotations
 import importlib
 import re
 from collections.abc import Mapping, Sequence
+from types import MappingProxyType
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -19,6 +20,28 @@ if TYPE_CHECKING:
 
 Array = NDArray[np.float64]
 Plain = Mapping[str, Any]
+_UNITS: Mapping[str, str] = MappingProxyType(
+    {
+        **{"per_eV_nm": "1/(eV nm)", "V_per_K": "V/K", "W_per_K": "W/K", "F_per_m": "F/m", "per_nm3": "1/nm^3"},
+        **{"per_nm2": "1/nm^2", "per_nm": "1/nm", "meV": "meV", "eV": "eV", "nm": "nm", "V": "V", "K": "K", "S": "S"},
+        "G0": "2 e^2/h",
+    }
+)
+"""Endings of names and the units that they stand for, the longest first."""
+_LABELS: Mapping[str, tuple[str, str]] = MappingProxyType(
+    {
+        "axial_mass": ("axial mass", "m0"),
+        "axial_mass_error": ("axial mass error", "m0"),
+        "gate_coupling": ("first level's fall for each volt on the gate", "eV/V"),
+        "coupling": ("level's fall for each volt on the gate", "eV/V"),
+        "empty_coupling": ("first level's fall for each volt without carriers", "eV/V"),
+        "psi_per_nm": ("envelope function", "1/nm"),
+        "k_per_nm": ("wave number along the wire", "1/nm"),
+        "conductance_fermi_eV": ("Fermi level", "eV"),
+        "density_fermi_eV": ("Fermi level", "eV"),
+    }
+)
+"""Words and units of names that do not tell them, or not in full."""
 
 
 def subbands(data: Plain) -> pandas.DataFrame:
@@ -76,7 +99,8 @@ def dataset(data: Plain, points: Array, modes: Array, fields: Mapping[str, Array
 
     Dimensions: `subband` (from 1), `k_per_nm` (of the dispersion), `bin` (of the density of states), `temperature_K`
     and `fermi_level` (of the curves; each temperature has Fermi levels of its own, and NaN beyond them), `node` (of
-    the mesh).
+    the mesh). All have a `long_name` and `units`, which plots write on their axes; the Fermi levels of a curve are its
+    coordinate: `conductance_G0.sel(temperature_K=77.0).plot(x="conductance_fermi_eV")`.
 
     Parameters
     ----------
@@ -120,7 +144,7 @@ def dataset(data: Plain, points: Array, modes: Array, fields: Mapping[str, Array
     variables["psi_per_nm"] = (("node", "subband"), modes)
     variables |= {name: ("node", values) for name, values in fields.items()}
     made: xarray.Dataset = xr.Dataset(variables, coordinates, _about(data))
-    return made
+    return _labelled(made.set_coords(["conductance_fermi_eV", "density_fermi_eV"]))
 
 
 def curve_dataset(data: Plain, points: Array, fields: Mapping[str, Sequence[Array]]) -> xarray.Dataset:
@@ -164,7 +188,23 @@ def curve_dataset(data: Plain, points: Array, fields: Mapping[str, Sequence[Arra
     }
     about = _about(data) | {"swept_gate": data["swept_gate"], "temperature_K": data["temperature_K"]}
     made: xarray.Dataset = xr.Dataset(variables, coordinates, about)
+    return _labelled(made)
+
+
+def _labelled(made: xarray.Dataset) -> xarray.Dataset:
+    """The same with `long_name` and `units` on all that has a name with its unit: plots label their axes by them."""
+    for name in made.variables:
+        long_name, unit = label(str(name))
+        made[name].attrs |= {"long_name": long_name} | ({"units": unit} if unit else {})
     return made
+
+
+def label(name: str) -> tuple[str, str]:
+    """Words and unit of a name such as "conductance_fermi_eV"; the unit is empty where there is none."""
+    if name in _LABELS:
+        return _LABELS[name]
+    ending = next((end for end in _UNITS if name.endswith(f"_{end}")), "")
+    return name.removesuffix(f"_{ending}").replace("_", " "), _UNITS.get(ending, "")
 
 
 def _padded(values: Sequence[float | None], length: int) -> Array:

@@ -7,7 +7,7 @@ from collections.abc import Callable, Mapping, Sequence
 from types import MappingProxyType
 from typing import Protocol
 
-from wiresolve.describe.problem import Problem
+from wiresolve.describe.problem import Problem, require_problem
 from wiresolve.errors import ConvergenceError, InputError
 from wiresolve.fem.mesh import Mesh
 from wiresolve.gate_result import GateCurve, GatePoint, GateStep, Judged, TransistorPoint, failed_point
@@ -65,6 +65,7 @@ def checked(problem: Problem) -> Problem:
     InputError
         It has none.
     """
+    require_problem(problem)
     if not problem.gates:
         remedy = 'write [[gates]] with name, touches and lineup_voltage, and [voltages] with gate = "NAME"'
         raise InputError("gates", "are missing: there is no gate to sweep", remedy=remedy)

@@ -72,7 +72,7 @@ class GatePoint:
     more: Mapping[str, float] = field(default_factory=dict)
     filled_energy_eV: Array = field(default_factory=lambda: np.zeros(0))
     filled_axial_mass: Array = field(default_factory=lambda: np.zeros(0))
-    filled_alpha_per_eV: Array = field(default_factory=lambda: np.zeros(0))
+    filled_nonparabolicity_per_eV: Array = field(default_factory=lambda: np.zeros(0))
     filled_degeneracy: Array = field(default_factory=lambda: np.zeros(0))
 
     @property
@@ -117,9 +117,10 @@ class GateStep:
     """A step of the conductance against gate voltage.
 
     It opens at `opens_at_V`, where the level meets the source's Fermi level, with the error bar `error_V`; NaN where
-    the sweep does not reach it. It lifts the conductance by `height_G0` to `plateau_G0`, over `width_V` (full width at
-    half height of its slope). `moves_V_per_nm` is how far it moves for each nm by which the section grows (None: not
-    known).
+    the sweep does not reach it. It lifts the conductance by `height_G0` to `plateau_G0`, both as measured: transmission
+    and contacts are in them. It is `width_V` wide (there its level passes from 1.76 kT above the Fermi level to as far
+    below it), and so many `subbands` open in it together. `moves_V_per_nm` is how far it moves for each nm by which the
+    section grows (None: not known).
     """
 
     level: int
@@ -130,6 +131,7 @@ class GateStep:
     plateau_G0: float
     width_V: float
     moves_V_per_nm: float | None = None
+    subbands: int = 1
 
 
 @dataclass(frozen=True)

@@ -14,11 +14,11 @@ from wiresolve.describe.problem import Problem
 from wiresolve.gate_result import GatePoint, GateStep
 from wiresolve.physics.capacitance import limit_text
 from wiresolve.physics.conductance import in_series
-from wiresolve.physics.gate_steps import THERMAL_WIDTH_KT, gate_steps
+from wiresolve.physics.gate_steps import THERMAL_WIDTH_KT, gate_steps, step_width_eV
 from wiresolve.physics.transistor_summary import TransistorSummary
 from wiresolve.physics.transmission import transmission_of
+from wiresolve.physics.wording import line_density, with_bar
 from wiresolve.step_motion import Motion
-from wiresolve.units import KB
 
 Array = NDArray[np.float64]
 
@@ -69,7 +69,8 @@ def steps_of(problem: Problem, points: Sequence[GatePoint]) -> tuple[OpenStep, .
     before = len(np.unique(rows[0].level[open_before]))
     through = transmission_of(problem.transport).part(np.arange(energy.shape[1]))
     resistance = 0.0 if problem.transport is None else problem.transport.contact_resistance_ohm
-    plateau, members = float((rows[0].degeneracy * through)[open_before].sum()) / 2, list[int]()
+    modes, members = float((rows[0].degeneracy * through)[open_before].sum()) / 2, list[int]()
+    below_G0 = float(in_series(modes, resistance))
     for place, n in enumerate(order):
         members.append(int(n))
         following = order[place + 1] if place + 1 < len(order) else None
@@ -77,29 +78,28 @@ def steps_of(problem: Problem, points: Sequence[GatePoint]) -> tuple[OpenStep, .
             continue
         if not math.isfinite(found.voltage_V[n]):
             break
-        height = float((degeneracy * through)[members].sum()) / 2
-        plateau += height
-        first = members[0]
+        modes += float((degeneracy * through)[members].sum()) / 2
+        plateau_G0, first = float(in_series(modes, resistance)), members[0]
         step = GateStep(
             level=before + len(steps) + 1,
             valley=valley[first],
             opens_at_V=float(np.mean(found.voltage_V[members])),
             error_V=float(np.max(found.error_V[members])),
-            height_G0=height,
-            plateau_G0=float(in_series(plateau, resistance)),
-            width_V=_width_eV(problem) / float(found.coupling[first]),
+            height_G0=plateau_G0 - below_G0,
+            plateau_G0=plateau_G0,
+            width_V=width_eV(problem) / float(found.coupling[first]),
+            subbands=len(members),
         )
         bar = float(found.error_V[first] * found.coupling[first])
         steps.append(OpenStep(step, min(members), float(found.coupling[first]), bar))
-        members = []
+        members, below_G0 = [], plateau_G0
     return tuple(steps)
 
 
-def _width_eV(problem: Problem) -> float:
-    """Full width at half height of dG/dE: 3.53 kT, and 0.561 hbar omega of a saddle, their squares added."""
-    thermal = THERMAL_WIDTH_KT * KB * problem.carriers.temperature_K[0]
+def width_eV(problem: Problem) -> float:
+    """How wide a step is in energy (`gate_steps.step_width_eV`)."""
     curvature = None if problem.transport is None else problem.transport.saddle_curvature_eV
-    return float(np.hypot(thermal, 2 * np.arccosh(np.sqrt(2)) / np.pi * (curvature or 0.0)))
+    return step_width_eV(problem.carriers.temperature_K[0], curvature)
 
 
 def _together(voltage: Array, error: Array, one: int, other: int) -> bool:
@@ -124,7 +124,8 @@ def warnings_of(points: Sequence[GatePoint], steps: Sequence[OpenStep]) -> list[
     if widths and 0 < min(widths) < apart:
         count = math.ceil((last.gate_voltage_V - rows[0].gate_voltage_V) / min(widths)) + 1
         text = f"points of the sweep are up to {apart:.3g} V apart, and the narrowest step is {min(widths):.2g} V wide:"
-        text += " figures and columns show no staircase (the steps' own voltages are solved for)"
+        text += " the columns of gate_curve.csv show no staircase; figures and report draw it from levels interpolated"
+        text += " between the points and the openings, which are solved for"
         notes.append(("sweep-coarse", text, f"sweep a shorter way, or in count = {count} points"))
     return notes
 
@@ -162,7 +163,7 @@ def sentences(
             f"{1e9 * last.quantum_F_per_m:.3g} nF/m by the density of states; a volt on the gate moves the first level"
             f" by {last.gate_coupling:.3g} eV."
         )
-        said.append(f"It holds {last.line_density_per_nm * 1e7:.3g} carriers per cm there, {where}.")
+        said.append(f"It holds {line_density(last.line_density_per_nm)} there, {where}.")
     if run is not None and drain_V is not None:
         said.append(_as_transistor(run, drain_V, rows))
     said.append(_rests_on(problem))
@@ -177,14 +178,14 @@ def _opening(problem: Problem, rows: Sequence[GatePoint], steps: Sequence[OpenSt
         state = "open" if first.energy_eV[0] < 0 else "closed"
         return f"Design estimate: no listed subband opens {span}; the first is {state} where the sweep begins."
     some = [s.step for s in steps[:_STEPS]]
-    opened = _listed([f"{s.opens_at_V:.4g} V" for s in some])
+    opened = _listed([f"{with_bar(s.opens_at_V, s.error_V)} V" for s in some])
     text = f"Design estimate: {span}, {_counted(len(some), 'step')} open at {opened}"
     if len(steps) > len(some):
         least = "at least " if (rows[-1].filled_energy_eV < 0).sum() > (rows[-1].energy_eV < 0).sum() else ""
         text = f"Design estimate: {span}, {least}{len(steps)} steps open, the first {len(some)} at {opened}"
     heights = _listed([f"{s.height_G0:.3g}" for s in some])
     text += f", of {heights} G0"
-    width = _width_eV(problem)
+    width = width_eV(problem)
     if width > 0:
         each = "" if len(some) == 1 else "the first "
         text += f", {each}{1e3 * some[0].width_V:.3g} mV wide at {kelvin:g} K ({1e3 * width:.3g} meV over the coupling)"

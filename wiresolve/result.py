@@ -206,9 +206,13 @@ class Result:
         """
         return statistics.fermi_level(self.spectrum, line_density_per_nm, temperature_K)
 
-    def conductance_at(self, fermi_eV: ArrayLike, temperature_K: float) -> Array:
-        """Conductance in units of G0 = 2 e^2/h at Fermi levels in eV: ballistic unless told otherwise."""
-        return conductance_through(self.spectrum, fermi_eV, temperature_K, self.problem.transport)
+    def conductance_at(self, fermi_eV: ArrayLike, temperature_K: float) -> Any:
+        """Conductance in units of G0 = 2 e^2/h at Fermi levels in eV: ballistic unless told otherwise.
+
+        A float at one level, else an array of their shape.
+        """
+        found = conductance_through(self.spectrum, fermi_eV, temperature_K, self.problem.transport)
+        return found if found.ndim else float(found)
 
     @property
     def potential_energy_eV(self) -> Array | None:

@@ -16,7 +16,7 @@ from math import log, pi
 import numpy as np
 from numpy.typing import NDArray
 
-from wiresolve.describe.problem import Problem
+from wiresolve.describe.problem import Problem, require_problem
 from wiresolve.fem.outline import outline_edges
 from wiresolve.physics import carrying, remarks, spread, statistics, verdict
 from wiresolve.physics.charge_sentence import charge_sentence
@@ -60,6 +60,8 @@ Progress = Callable[[str, float, str], None]
 
 _NEAR_STEP = np.array([-8.0, -5.0, -3.0, -2.0, -1.0, 0.0, 1.0, 2.0, 3.0, 5.0, 8.0])
 """Places around a step, in kT, at which curves have points."""
+_CLOSED_KT = 3.0
+"""A first level so far above the Fermi level conducts 1/20 of its step."""
 
 
 def solve(problem: Problem, on_progress: Progress | None = None) -> Result:
@@ -83,6 +85,7 @@ def solve(problem: Problem, on_progress: Progress | None = None) -> Result:
     """
     from threadpoolctl import threadpool_limits
 
+    require_problem(problem)
     clock, tell = _Clock(), on_progress or (lambda stage, fraction, detail: None)
     # More BLAS threads only get in each other's way at these sizes.
     with threadpool_limits(limits=1, user_api="blas"):
@@ -162,6 +165,7 @@ def _assembled(
     if charged is not None:
         held = " at these voltages, in the potential that they and the charge make"
         held = held if problem.gates else " in the potential that its charge makes"
+        held = _closed(float(found.energy_eV[0]), KB * temperatures[0]) + held
     judged = verdict.judge(spectrum, temperatures, fermi, (text for text in said if text), held)
     zero_text, zero_value = problem.energy_zero()
     points = np.zeros((len(space.mesh.points), certified.wanted), dtype=found.states.dtype)
@@ -198,6 +202,14 @@ def _assembled(
         charge=None if charged is None else _charge(wire, charged),
         finer_mesh=certified.solved[0].enriched.space.mesh,
     )
+
+
+def _closed(first_eV: float, thermal_eV: float) -> str:
+    """Said first of a wire whose first level lies well above the Fermi level: as it stands it is no channel."""
+    if first_eV <= _CLOSED_KT * thermal_eV:
+        return ""
+    far = f", {first_eV / thermal_eV:.3g} kT" if thermal_eV > 0 else ""
+    return f" that is closed (its first level lies {1e3 * first_eV:.3g} meV{far} above the Fermi level)"
 
 
 def _rounding(problem: Problem) -> str:

@@ -14,7 +14,7 @@ from wiresolve.describe.problem import Problem
 from wiresolve.errors import ConvergenceError, InputError
 from wiresolve.fem.mesh import Mesh
 from wiresolve.gate_result import GatePoint, GateStep, Judged, TransistorPoint
-from wiresolve.gate_verdict import OpenStep, measures_of, sentences, steps_of, warnings_of
+from wiresolve.gate_verdict import OpenStep, measures_of, sentences, steps_of, warnings_of, width_eV
 from wiresolve.physics import conductance, remarks
 from wiresolve.physics.capacitance import in_F_per_m, parts, per_V_nm
 from wiresolve.physics.charge_sentence import where
@@ -45,6 +45,8 @@ MIDDLE = 0.5
 _MOST_SOLVED = 12
 """Steps whose voltage is solved for, not interpolated."""
 _CLOSE_eV = 1e-6
+_EVEN = 0.01
+"""How closely the ends of a step are found, of half its width."""
 _EMPTY = 1e-9
 """Below this part of the geometric capacitance an answer says nothing of the channel's capacitance."""
 
@@ -208,7 +210,7 @@ class WireSweep:
             },
             filled_energy_eV=energy,
             filled_axial_mass=occupied.axial_mass[order],
-            filled_alpha_per_eV=occupied.alpha_per_eV[order],
+            filled_nonparabolicity_per_eV=occupied.alpha_per_eV[order],
             filled_degeneracy=degeneracy,
         )
 
@@ -251,7 +253,19 @@ class WireSweep:
             found = opening(energy_at, one.step.opens_at_V, one.coupling, close, low, high)
         except ConvergenceError:
             return one
-        return one.at(found.voltage_V, max(found.coupling, 1e-12), found.rest_eV)
+        coupling = max(found.coupling, 1e-12)
+        half = width_eV(self.problem) / 2
+        if half > 0:
+            # Where the level fills, its coupling falls, up to twenty times within the step: what counts is the mean.
+            reach, at = 2 * half / coupling, found.voltage_V
+            try:
+                before = None if self._last is None else self._last[1]
+                first = opening(lambda v: energy_at(v) - half, at - reach / 2, coupling, _EVEN * half, high_V=at)
+                last = opening(lambda v: energy_at(v) + half, at + reach / 2, coupling, _EVEN * half, low_V=at)
+                coupling = 2 * half / (last.voltage_V - first.voltage_V)
+            except ConvergenceError:
+                pass
+        return one.at(found.voltage_V, coupling, found.rest_eV)
 
     def _held(self, voltage: float) -> Array:
         """The held potentials at a voltage of the swept gate."""
@@ -294,7 +308,12 @@ class WireSweep:
 
     def device(self, point: GatePoint) -> Transistor:
         """The channel as a transistor whose gate voltage counts from a point's."""
-        rows = Rows(point.filled_energy_eV, point.filled_axial_mass, point.filled_degeneracy, point.filled_alpha_per_eV)
+        rows = Rows(
+            point.filled_energy_eV,
+            point.filled_axial_mass,
+            point.filled_degeneracy,
+            point.filled_nonparabolicity_per_eV,
+        )
         # Half-way the source holds as much as the drain, and of gate and charge what is left.
         empty = point.more["empty_coupling"]
         rest = 1 - 2 * self.drain_coupling

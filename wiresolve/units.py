@@ -30,17 +30,27 @@ FARAD_PER_M: float = _codata.e * 1e9
 
 
 def _inverse(lengths: Mapping[str, str], power: int) -> dict[str, str]:
-    """Spellings "cm^-3" and "1/cm^3" with their factors, from those of the lengths in nm."""
+    """Spellings "cm^-3", "1/cm^3", "cm-3" and "/cm3" with their factors, from those of the lengths in nm."""
     found = {}
     for name, factor in lengths.items():
         value = str(1 / Decimal(factor) ** power)
         found[f"{name}^-{power}"] = value
         found[f"1/{name}" if power == 1 else f"1/{name}^{power}"] = value
+        # As they are typed every day.
+        found[f"{name}-{power}"] = found[f"/{name}{power if power > 1 else ''}"] = value
     return found
 
 
-_LENGTHS = {"nm": "1", "pm": "1e-3", "Angstrom": "0.1", "angstrom": "0.1", "um": "1e3", "\u00b5m": "1e3"}
-_LENGTHS |= {"\u03bcm": "1e3", "mm": "1e6", "cm": "1e7", "m": "1e9"}
+_LENGTHS = {
+    "nm": "1",
+    "pm": "1e-3",
+    "Angstrom": "0.1",
+    "angstrom": "0.1",
+    "\u00c5": "0.1",
+    "um": "1e3",
+    "\u00b5m": "1e3",
+}
+_LENGTHS |= {"\u212b": "0.1", "\u03bcm": "1e3", "mm": "1e6", "cm": "1e7", "m": "1e9"}
 _INVERSE_FROM = {name: _LENGTHS[name] for name in ("nm", "um", "cm", "m")}
 
 UNITS: Mapping[str, Mapping[str, str]] = MappingProxyType(
@@ -67,6 +77,8 @@ _SAMPLES = {
 }  # fmt: skip
 _USUAL = {"accuracy.energy": "0.1 meV", "--accuracy": "0.1 meV", "harmonic.x": "5 meV", "harmonic.y": "5 meV"}
 """Samples for fields whose usual unit is not that of their dimension."""
+LEAST_meV = 1e-2
+"""A bare number below it is no energy in meV that anybody asks for."""
 _QUANTITY = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d{1,4})?)\s*(1/.*|[^\d\s].*)?", re.ASCII)
 _COMMA = re.compile(r"([+-]?\d+),(\d+(?:[eE][+-]?\d{1,4})?)\s*([^\d\s,.].*)?", re.ASCII)
 
@@ -82,7 +94,9 @@ def parse_quantity(text: object, dimension: str, field: str) -> float:
     usual_unit = sample.split()[1]
     spelled, a = _spelled(field, sample), "an" if dimension[0] in "aeiou" else "a"
     if isinstance(text, int | float) and not isinstance(text, bool):
-        wanted = _spelled(field, f"{text!r} {usual_unit}" if abs(text) < 1e30 else sample)
+        small = usual_unit == "meV" and 0 < abs(text) < LEAST_meV  # eV are meant
+        wanted = f"{1e3 * text:g} meV" if small else f"{text!r} {usual_unit}" if abs(text) < 1e30 else sample
+        wanted = _spelled(field, wanted)
         raise InputError(field, "a number needs its unit, as a text in quotes", text, wanted)
     if not isinstance(text, str):
         raise InputError(field, f"must be {a} {dimension} in quotes", text, spelled)
@@ -104,7 +118,8 @@ def parse_quantity(text: object, dimension: str, field: str) -> float:
         if other is not None:
             raise InputError(field, f"must be {a} {dimension}, but '{unit}' is a unit of {other}", text, spelled)
         names = [name for name in units if name != "angstrom"]
-        near = difflib.get_close_matches(unit[:20], names, n=2, cutoff=0.4)
+        meant = "Angstrom" if unit == "A" and dimension == "length" else unit[:20]
+        near = difflib.get_close_matches(meant, names, n=1 if meant in names else 2, cutoff=0.4)
         known = " or ".join(near) if near else ", ".join(name for name in names if name.isascii())
         raise InputError(field, f"'{unit[:20]}' is no known unit of {dimension}", text, f"use {known}; {spelled}")
     value = float(Decimal(number) * Decimal(units[unit]))

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import os
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import click
 
@@ -21,6 +21,9 @@ from wiresolve.commands.terminal import (
     say_json,
 )
 from wiresolve.errors import InputError
+
+if TYPE_CHECKING:
+    from wiresolve.describe.problem import Problem
 
 
 @click.command("gate-curve", cls=options.Command, example="wiresolve gate-curve wire.toml --accuracy '0.5 meV'")
@@ -49,6 +52,7 @@ def gate_curve(file: Path, out: Path | None, replace: bool, quiet: bool, **given
     from wiresolve.gate_curve import checked
     from wiresolve.output import gate_curve_files, gate_curve_partial
     from wiresolve.output.gate_curve_tables import gate_curve_json, summary
+    from wiresolve.output.measured_outside import missed_by_sweep
     from wiresolve.output.tables import DONE
     from wiresolve.output.target import check_target
     from wiresolve.output.writing import write
@@ -64,6 +68,7 @@ def gate_curve(file: Path, out: Path | None, replace: bool, quiet: bool, **given
     extras = {"figures": not given["no_figures"], "report": given["report"], "vtk": given["vtk"]}
     if given["measured"] is not None:
         extras["measured"] = measured_points(given["measured"], "gate_voltage_V")
+    _tell_cost(problem, quiet)
     partial = gate_curve_partial.partial_folder(target)
     kept = partial if folder.is_absolute() else os.path.relpath(partial)
 
@@ -94,6 +99,17 @@ def gate_curve(file: Path, out: Path | None, replace: bool, quiet: bool, **given
         say_json(gate_curve_json(curve, status))
     elif not quiet:
         say(summary(curve, folder, status))
+    if "measured" in extras and not quiet and (said := missed_by_sweep(curve, extras["measured"])):
+        complain(said, "warning: ")
     if reasons:
         complain(f"{'; '.join(reasons)}; the results are in {folder}, marked so")
     return code
+
+
+def _tell_cost(problem: Problem, quiet: bool) -> None:
+    """Say before a long sweep what makes it long."""
+    from wiresolve.physics.growing_masses import cost_text
+    from wiresolve.physics.wire import Wire
+
+    if not quiet and (said := cost_text(Wire(problem))):
+        complain(said, "")

@@ -25,6 +25,7 @@ def check(file: Path, as_json: bool, quiet: bool) -> None:
     from wiresolve.describe.wirefile import describe
     from wiresolve.output.tables import described, json_text
     from wiresolve.physics import carrying
+    from wiresolve.physics.growing_masses import cost_text
     from wiresolve.physics.wire import Wire
 
     problem = read_problem(file)
@@ -32,7 +33,9 @@ def check(file: Path, as_json: bool, quiet: bool) -> None:
     if as_json:
         say_json(json_text(problem.plain()))
     elif not quiet:
-        say("\n".join(described(describe(problem) + carrying.described(wire))))
+        cost = cost_text(wire)
+        rows = describe(problem) + carrying.described(wire) + ([("time", cost)] if cost else [])
+        say("\n".join(described(rows)))
 
 
 @click.command(cls=options.Command, example="wiresolve mesh geometries/hexagon.toml --out hexagon.vtu")

@@ -31,9 +31,9 @@ class Words(click.Choice[str]):
 
     def get_invalid_choice_message(self, value: object, ctx: click.Context | None) -> str:
         """What is said of another word."""
-        from wiresolve.describe.checks import nearest
+        from wiresolve.describe.checks import SHAPE_WORDS, nearest
 
-        hint = nearest(value, self.choices)
+        hint = nearest(value, self.choices, meant=SHAPE_WORDS)
         return super().get_invalid_choice_message(value, ctx).rstrip(".") + (f"; {hint}" if hint else "")
 
 

@@ -35,7 +35,7 @@ from wiresolve.commands.terminal import (
         metavar="COUNT",
         help="Also a series for ParaView of the modes at so many wave numbers along the wire.",
     ),
-    click.option("--points", is_flag=True, help="Also modes.npz: modes at quadrature points with weights."),
+    click.option("--quadrature", is_flag=True, help="Also modes.npz: modes at quadrature points with weights."),
     click.option("--matrix-elements", is_flag=True, help="Also matrix_elements.csv: overlaps, dipoles and the like."),
     options.measured("fermi_level_meV"),
     options.no_figures,
@@ -52,6 +52,7 @@ def solve(file: Path, out: Path | None, replace: bool, quiet: bool, **given: Any
     overwritten unless --replace is given.
     """
     from wiresolve.output.folder import SOLVED
+    from wiresolve.output.measured_outside import missed_by_curves
     from wiresolve.output.tables import DONE, result_json, summary
     from wiresolve.output.target import check_target
     from wiresolve.output.writing import write
@@ -75,6 +76,8 @@ def solve(file: Path, out: Path | None, replace: bool, quiet: bool, **given: Any
         say_json(result_json(result, status))
     elif not quiet:
         say(summary(result, folder, status))
+    if "measured" in extras and not quiet and (said := missed_by_curves(result, extras["measured"])):
+        complain(said, "warning: ")
     if reasons:
         complain(f"{'; '.join(reasons)}; the results are in {folder}, marked so")
     return code
@@ -82,7 +85,7 @@ def solve(file: Path, out: Path | None, replace: bool, quiet: bool, **given: Any
 
 def _extras(given: dict[str, Any]) -> dict[str, Any]:
     """What is written beside the tables, under the names that `write` has for it."""
-    found = {name: given[name] for name in ("report", "vtk", "points", "matrix_elements")}
+    found = {name: given[name] for name in ("report", "vtk", "quadrature", "matrix_elements")}
     found |= {"figures": not given["no_figures"], "axial_frames": given["axial_frames"] or 0}
     if given["extrude"] is not None:
         from wiresolve.describe.checks import in_range

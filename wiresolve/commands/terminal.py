@@ -16,6 +16,7 @@ from typing import TYPE_CHECKING, NoReturn
 
 import click
 
+from wiresolve.commands.plain_lines import PlainLines, watched
 from wiresolve.errors import InputError
 
 if TYPE_CHECKING:
@@ -96,13 +97,19 @@ def heed_signals() -> None:
 def progress(shown: bool) -> Iterator[Callable[[str, float, str], None] | None]:
     """A callback that draws a bar on stderr where that is a terminal, or writes to the log that `--verbose` asks for.
 
-    None where there is nobody to tell.
+    Elsewhere it writes a plain line of long work now and then; None where nobody wants to be told.
     """
     if _log.isEnabledFor(logging.INFO):
         yield _logged
         return
-    if not (shown and sys.stderr.isatty()):
+    if not shown:
         yield None
+        return
+    if not sys.stderr.isatty():
+        pace = Pace(time.monotonic)
+        lines = PlainLines(time.monotonic, lambda line: complain(line, ""))
+        with watched(lines):
+            yield lambda stage, fraction, detail: lines.report(stage, _told(detail, pace.left(stage, fraction)))
         return
     from rich.console import Console
     from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
@@ -115,11 +122,15 @@ def progress(shown: bool) -> Iterator[Callable[[str, float, str], None] | None]:
         task, pace = bar.add_task("mesh", total=1.0, detail=""), Pace(time.monotonic)
 
         def report(stage: str, fraction: float, detail: str) -> None:
-            told = ", ".join(part for part in (detail, pace.left(stage, fraction)) if part)
             # A full bar would stop its clock.
+            told = _told(detail, pace.left(stage, fraction))
             bar.update(task, description=stage, completed=min(fraction, 0.999), detail=told)
 
         yield report
+
+
+def _told(detail: str, left: str) -> str:
+    return ", ".join(part for part in (detail, left) if part)
 
 
 def _logged(stage: str, fraction: float, detail: str) -> None:

@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import difflib
 import math
-from collections.abc import Iterable
+import re
+from collections.abc import Iterable, Mapping
 from numbers import Integral, Real
+from types import MappingProxyType
 
 from wiresolve.errors import InputError
 
@@ -15,6 +17,14 @@ THINNEST_nm = 0.05
 """Layers and corner radii below this are refused."""
 ALIKE, SHORTEST_START = 0.7, 4
 """How alike a misspelt word must be to one that is proposed (1: equal), or how many of its first letters must stand."""
+NOTHING: Mapping[str, str] = MappingProxyType({})
+SHAPE_WORDS: Mapping[str, str] = MappingProxyType(
+    dict.fromkeys(("square", "box", "fin", "sheet", "ridge", "rectangular"), "rectangle")
+    | dict.fromkeys(("round", "disk", "disc", "circular", "cylinder"), "circle")
+    | dict.fromkeys(("oval", "elliptic", "elliptical"), "ellipse")
+    | {"hexagonal": "hexagon", "triangular": "triangle", "trapezoidal": "trapezoid", "gate-all-around": "wrap-gate"}
+)
+"""Other words for shapes."""
 
 
 def finite(field: str, value: object, remedy: str = "") -> float:
@@ -32,6 +42,9 @@ def finite(field: str, value: object, remedy: str = "") -> float:
 
 def in_range(field: str, value: object, low: float, high: float, unit: str = "", remedy: str = "") -> float:
     """`value` as a float within [low, high]; InputError that tells the range otherwise."""
+    if unit in _SUFFIXES and isinstance(value, str):
+        # Wire files give quantities as texts, which are numbers by now: this is an argument in Python.
+        field, remedy = _argument(field, value, unit, remedy)
     number = finite(field, value, remedy)
     if not low <= number <= high:
         space = f" {unit}" if unit else ""
@@ -39,6 +52,21 @@ def in_range(field: str, value: object, low: float, high: float, unit: str = "",
         shown = f"{number:g}{space}" if unit else number
         raise InputError(field, rule, shown, remedy)
     return number
+
+
+_SUFFIXES = ("nm", "eV", "K", "V", "deg", "ohm")
+"""Units of quantities, which wire files give as texts: other numbers stand alone there."""
+
+
+def _argument(field: str, value: str, unit: str, remedy: str) -> tuple[str, str]:
+    """The name of an argument, with its unit as a suffix, and what to write for a text such as "16 nm"."""
+    if not field.isidentifier():
+        return field, remedy
+    name = f"{field}_{unit}"
+    number = re.match(r"\s*([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)\s*(\S*)\s*$", value, re.ASCII)
+    if number is None or number[2] not in ("", unit):
+        return name, remedy or f"write a number of {unit}, e.g. {name} = {10.0 if unit == 'nm' else 1.0}"
+    return name, f"write {name} = {float(number[1])}"
 
 
 def optional(field: str, value: object, low: float, high: float, unit: str = "") -> float | None:
@@ -75,23 +103,28 @@ def text(field: str, value: object, longest: int = 200) -> str:
     return value
 
 
-def choice(field: str, value: object, allowed: Iterable[str]) -> str:
-    """One of the allowed words; InputError that proposes the nearest otherwise."""
+def choice(field: str, value: object, allowed: Iterable[str], meant: Mapping[str, str] = NOTHING) -> str:
+    """One of the allowed words; InputError that proposes the nearest otherwise (see `nearest`)."""
     words = tuple(allowed)
     if not isinstance(value, str) or value not in words:
-        raise InputError(field, "must be one of " + ", ".join(f'"{w}"' for w in words), value, nearest(value, words))
+        raise InputError(
+            field, "must be one of " + ", ".join(f'"{w}"' for w in words), value, nearest(value, words, meant=meant)
+        )
     return value
 
 
-def nearest(given: object, allowed: Iterable[str], count: int = 3) -> str:
+def nearest(given: object, allowed: Iterable[str], count: int = 3, meant: Mapping[str, str] = NOTHING) -> str:
     """A remedy that names the allowed words nearest to the given one, or an empty text.
 
-    Near are words that the given one begins ("fermi" of "fermi_level"), and words that differ in few letters.
+    Near are words that the given one begins ("fermi" of "fermi_level"), and words that differ in few letters. `meant`
+    holds other words, in small letters, for allowed ones ("square" for "rectangle").
     """
     words = list(allowed)
     if not isinstance(given, str) or not words:
         return ""
     by_lower, start = {w.lower(): w for w in words}, given[:80].lower()
+    if (other := meant.get(start.strip())) in words:
+        return did_you_mean([str(other)])
     begun = [w for w in by_lower if len(start) >= SHORTEST_START and w.startswith(start)]
     close = begun[:count] or difflib.get_close_matches(start, by_lower, n=count, cutoff=ALIKE)
     return did_you_mean([by_lower[c] for c in close])

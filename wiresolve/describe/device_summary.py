@@ -9,7 +9,7 @@ from wiresolve.describe.doping import PARTIAL, Doping
 from wiresolve.describe.gates import Gate, Slab, Surroundings, Touch
 from wiresolve.describe.problem import Problem
 from wiresolve.describe.section import ADMITTED
-from wiresolve.describe.setting import Boundary, Setting, setting
+from wiresolve.describe.setting import REACH, Boundary, Setting, setting
 from wiresolve.units import format_quantity
 
 PER_CM3, PER_CM2 = 1e21, 1e14
@@ -91,8 +91,8 @@ def _surroundings(given: Surroundings, drawn: Setting, problem: Problem) -> Rows
     found.append(("surroundings.beside", str(given.beside)))
     if drawn.box is not None:
         (x0, y0), (x1, y1) = drawn.box
-        size = f"{_nm(x1 - x0)} wide, {_nm(y1 - y0)} high"
-        found.append(("surroundings.size", f"{size}, far enough to be endless"))
+        width, height = (format_quantity(v, "length", "um", 3) for v in (x1 - x0, y1 - y0))
+        found.append(("surroundings.size", f"endless (cut off at {width} by {height}, {REACH:g} times what is inside)"))
     return found
 
 

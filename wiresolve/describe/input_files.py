@@ -51,7 +51,8 @@ def read(where: str, path: str | Path, folder: str | Path | None = None, largest
         given = Path(path)
         full = given if folder is None else Path(folder) / given
         if not full.exists():
-            raise InputError(where, "there is no such file", shown, "paths are relative to the wire file")
+            from_file = "" if folder is None or given.is_absolute() else "; paths are relative to the wire file"
+            raise InputError(where, "there is no such file", shown, f"looked for {full.absolute()}{from_file}")
         if not full.is_file():
             raise InputError(where, "is no file", shown)
         size = full.stat().st_size

@@ -42,7 +42,8 @@ GIVEN_SCALE = "wire file"
 VACUUM_LEVEL = "vacuum level"
 """Name of the scale on which an edge lies the electron affinity below zero."""
 WIRE_FILE = "the wire file"
-GIVEN = f"given in {WIRE_FILE}"
+GIVEN = "given with the wire"
+"""The source of a value that the wire file gives, or Python in its place."""
 CRYSTALS = ("zincblende", "diamond", "wurtzite", "amorphous")
 
 LIMITS: dict[str, tuple[float, float, str]] = {
@@ -237,7 +238,7 @@ class Material:
         numbers["conduction_edge"], found = None if edge is None else edge + lowest, in_order(found)
         rows = [row for valley in found for row in valley_rows(valley, alone=valleys is None)]
         rows += [(key, value, LIMITS[key][2]) for key, value in numbers.items() if value is not None]
-        cited = f"given in {given_in}: {source}" if source else f"given in {given_in}"
+        cited = given_text(given_in) + (f": {source}" if source else "")
         return cls(
             name=name,
             valleys=found,
@@ -312,6 +313,11 @@ class Material:
                 changes[key] = checks.in_range(key, value, *LIMITS[key])
         _check_texts(source, given_in)
         return cls(name, source=source, given_in=given_in, extends=base, changes=tuple(changes.items()))
+
+
+def given_text(given_in: str) -> str:
+    """Where a value was given, in words."""
+    return GIVEN if given_in == WIRE_FILE else f"given in {given_in}"
 
 
 def _check_texts(source: str, given_in: str) -> None:

@@ -15,6 +15,7 @@ from wiresolve.describe.material import (
     Material,
     MaterialValue,
     Valley,
+    given_text,
     in_order,
 )
 from wiresolve.describe.materials import VALLEY_PARTS, known, look_up
@@ -49,7 +50,7 @@ def _told_apart(material: Material) -> Material:
     """A user's material whose given values say so where it has the name of one of the table."""
     with contextlib.suppress(InputError):  # what looks like an alloy whose fractions are wrong
         if known(material.name):
-            plain = f"given in {material.given_in}"
+            plain = given_text(material.given_in)
             told = f"{plain}, in place of the table's {material.name}"
             own = (v.provenance == "given" and v.source.startswith(plain) for v in material.values)
             values = zip(material.values, own, strict=True)
@@ -140,7 +141,7 @@ class _Changed:
         old = {v.quantity: v for v in made.values}
         new: dict[str, MaterialValue] = {}
         for quantity, value, unit in rows:
-            source = f"given in {self.own.given_in}"
+            source = given_text(self.own.given_in)
             if quantity in old:
                 source += f", replaces {old[quantity].value:.6g}"
             source += f": {self.own.source}" if self.own.source else ""

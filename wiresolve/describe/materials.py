@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from functools import lru_cache
+from types import MappingProxyType
 
 from wiresolve.describe import checks, material_table
 from wiresolve.describe.material import (
@@ -128,10 +129,22 @@ def known(name: str) -> bool:
     return name in (*table_names(), *material_table.alloys()) or alloy_fraction(name) is not None
 
 
+_MEANT: Mapping[str, str] = MappingProxyType(
+    {
+        **{"silicon": "Si", "germanium": "Ge", "gallium arsenide": "GaAs", "aluminium arsenide": "AlAs"},
+        **{"indium arsenide": "InAs", "indium phosphide": "InP", "indium antimonide": "InSb"},
+        **{"gallium antimonide": "GaSb", "aluminium antimonide": "AlSb", "gallium nitride": "GaN"},
+        **{"silicon dioxide": "SiO2", "silicon oxide": "SiO2", "silica": "SiO2", "oxide": "SiO2"},
+        **{"alumina": "Al2O3", "aluminium oxide": "Al2O3", "hafnia": "HfO2", "hafnium oxide": "HfO2"},
+    }
+)
+"""English names of materials."""
+
+
 def unknown(name: str, others: Sequence[str], otherwise: str = "Or describe it under [materials.NAME]") -> InputError:
     """The error for a material that neither the table nor `others` (the user's own) has."""
     words = tuple(dict.fromkeys((*others, *table_names())))
-    remedy = checks.nearest(name, words) or "known are " + ", ".join(words[:16]) + "."
+    remedy = checks.nearest(name, words, meant=_MEANT) or "known are " + ", ".join(words[:16]) + "."
     return InputError("material", "is not a known material", name, f"{remedy} {otherwise}")
 
 

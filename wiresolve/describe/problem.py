@@ -427,3 +427,9 @@ def _fresh(names: Any, known: dict[str, str]) -> list[tuple[int, str]]:
         if name not in known:
             first.setdefault(name, k)
     return [(k, name) for name, k in first.items()]
+
+
+def require_problem(given: object) -> None:
+    """InputError where something else was given in place of a problem: the path of its file, above all."""
+    if not isinstance(given, Problem):
+        raise InputError("problem", "must be a Problem", given, "wiresolve.load(path) reads one from a wire file")

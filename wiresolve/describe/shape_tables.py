@@ -83,7 +83,7 @@ def shape(table: Table, others: tuple[str, ...], files: Files) -> Shape:
         table.only(("shape", *others, *sorted(every)))
     table.required("shape", '"circle"')
     if not isinstance(kind, str) or kind not in SHAPES:
-        checks.choice(table.at("shape"), kind, (*SHAPES, "outline", "mesh"))
+        checks.choice(table.at("shape"), kind, (*SHAPES, "outline", "mesh"), checks.SHAPE_WORDS)
     assert isinstance(kind, str)
     own, allowed = LENGTH_KEYS[kind], keys_of(kind, others)
     if "corner_radius" in table and "corner_radius" not in allowed:

@@ -23,6 +23,10 @@ SLIPS: Mapping[str, tuple[tuple[str, ...], ...]] = {
     "temp": (("temperature",), ("lattice_temperature",)),
     "mass": (("electron_mass",),),
     "states": (("subbands",),),
+    "fermi_energy": (("fermi_level",),),
+    "chemical_potential": (("fermi_level",),),
+    "doping": (("donors", "acceptors"),),
+    "effective_mass": (("electron_mass",),),
 }
 """Keys that are written by mistake, and what may be meant: the first row of keys that the table all allows."""
 TWICE = {("radius", "diameter"), ("side", "across_corners")}

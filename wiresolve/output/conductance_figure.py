@@ -36,6 +36,11 @@ def _fermi_window(result: Result) -> tuple[float, float]:
     return max(low, bottom - 0.15 * (top - bottom)), min(high, top + 0.05 * (top - bottom))
 
 
+def shown_meV(result: Result) -> tuple[float, float]:
+    """The lowest and the highest Fermi level of the figure, in meV."""
+    return with_fermi(result, *_fermi_window(result))
+
+
 @styled
 def conductance(result: Result, measured: Measured | None = None) -> Figure:
     """Ballistic conductance against the Fermi level at each temperature, in G0 and in microsiemens.
@@ -54,7 +59,7 @@ def conductance(result: Result, measured: Measured | None = None) -> Figure:
     kept = result.charge is not None
     figure, rect = canvas(COLUMN_MM, 69.5 if kept else 66)
     axes = rect(12, 11, COLUMN_MM - 28, 66 - 17)
-    top, window = 1.0, with_fermi(result, *_fermi_window(result))
+    top, window = 1.0, shown_meV(result)
     warm = [t for t in result.problem.carriers.temperature_K if t > 0]
     for curve in result.conductance:
         kelvin = curve.temperature_K

@@ -25,7 +25,7 @@ class Extras:
     vtk : cells of the files for ParaView, "curved" (of fourth order) or "linear".
     extrude_nm : a volume of this length along the wire, None for none.
     axial_frames : modes at so many wave numbers along the wire, 0 for none.
-    points : `modes.npz`, the modes at quadrature points with weights.
+    quadrature : `modes.npz`, the modes at quadrature points with weights.
     matrix_elements : `matrix_elements.csv`.
     measured : points laid over the staircase.
 
@@ -40,7 +40,7 @@ class Extras:
     vtk: str = "curved"
     extrude_nm: float | None = None
     axial_frames: int = 0
-    points: bool = False
+    quadrature: bool = False
     matrix_elements: bool = False
     measured: Measured | None = None
 

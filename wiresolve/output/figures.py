@@ -52,6 +52,10 @@ FIGURES: MappingProxyType[str, Callable[[Result], Figure]] = MappingProxyType(
 )
 
 
+def __dir__() -> list[str]:
+    return list(__all__)
+
+
 def drawable(result: Result) -> Sequence[str]:
     """Names of the figures that the result has data for."""
     missing = set() if len(result.outline_sensitivity.segments) else {"sensitivity"}

@@ -8,10 +8,10 @@ from wiresolve.describe import wirefile
 from wiresolve.describe.problem import Problem
 from wiresolve.output import tables, vtk
 from wiresolve.output.extras import Extras
-from wiresolve.output.target import FIGURES, INPUT, INPUTS, MEASURED, Contents, check_target, filling
+from wiresolve.output.target import FIGURES, INPUT, INPUTS, MEASURED, REPORT, Contents, check_target, filling
 from wiresolve.result import Result
 
-RESULT, SUBBANDS, MODES, REPORT = "result.json", "subbands.csv", "modes.vtu", "report.html"
+RESULT, SUBBANDS, MODES = "result.json", "subbands.csv", "modes.vtu"
 VOLUME, ALONG_AXIS, POINTS, ELEMENTS = "volume.vtu", "along_axis", "modes.npz", "matrix_elements.csv"
 DRAWN = ("section", "modes", "levels", "density_of_states", "dispersion", "conductance", "sensitivity", "charge")
 """Names of the figures, known here without loading what draws them."""
@@ -20,9 +20,10 @@ SOLVED = Contents(
     RESULT,
     (
         *(INPUT, INPUTS, RESULT, SUBBANDS, MODES, FIGURES, REPORT),
-        *(VOLUME, ALONG_AXIS, f"{ALONG_AXIS}.pvd", POINTS, ELEMENTS, MEASURED),
+        *(VOLUME, ALONG_AXIS, f"{ALONG_AXIS}.pvd", POINTS, ELEMENTS),
     ),
     DRAWN,
+    (ALONG_AXIS,),
 )
 
 
@@ -78,6 +79,7 @@ def write_measured(extras: Extras, fresh: Path) -> None:
     if extras.measured is not None:
         from wiresolve.output.measured import write
 
+        (fresh / MEASURED).parent.mkdir(exist_ok=True)
         write(extras.measured, fresh / MEASURED)
 
 
@@ -95,7 +97,7 @@ def _write_fields(result: Result, fresh: Path, extras: Extras) -> None:
 
 def _write_elements(result: Result, fresh: Path, extras: Extras) -> None:
     """What others compute on."""
-    if extras.points:
+    if extras.quadrature:
         from wiresolve.output.quadrature import write_points
 
         write_points(result, fresh / POINTS)

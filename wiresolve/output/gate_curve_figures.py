@@ -15,6 +15,7 @@ from matplotlib.lines import Line2D
 from matplotlib.ticker import LogLocator, MaxNLocator, NullLocator
 
 from wiresolve.gate_result import Array, GateCurve
+from wiresolve.output.between_points import between_points_of
 from wiresolve.output.canvas import (
     COLUMN_MM,
     CYCLE,
@@ -115,13 +116,24 @@ def _opened(curve: GateCurve) -> list[float]:
     return [s.opens_at_V for s in curve.steps if math.isfinite(s.opens_at_V)]
 
 
+def _lines(curve: GateCurve) -> tuple[Array, list[tuple[int, str]], Array]:
+    """Voltages (v,), level and valleys of each line, and energies in meV (v, lines)."""
+    swept = between_points_of(curve)
+    if swept is None:
+        return _voltages(curve), _lines_of_levels(curve), 1e3 * _by_subband(curve, "energy_eV")
+    valleys = list(dict.fromkeys(name for p in curve.converged for name in p.valley))
+    at = swept.places_V()
+    return at, [(line["level"], valleys[line["group"]]) for line in swept.lines], 1e3 * swept.lines_eV(at)
+
+
 @styled
 def levels(curve: GateCurve) -> Figure:
     """Subband minima against gate voltage, from the source's Fermi level, with the band of one kT around it.
 
+    Between the solved points lines are curved as `between_points` says, straight where it cannot say.
     Where several groups of valleys are listed each has a line style.
     """
-    named, energy, voltages = _lines_of_levels(curve), 1e3 * _by_subband(curve, "energy_eV"), _voltages(curve)
+    voltages, (at, named, energy) = _voltages(curve), _lines(curve)
     dashes = dashes_of([valley for _, valley in named])
     below = 12 + (4.0 * math.ceil(len(dashes) / 2) + 1 if len(dashes) > 1 else 0)
     figure, rect = canvas(COLUMN_MM, below + 69 + _room(curve))
@@ -131,11 +143,11 @@ def levels(curve: GateCurve) -> Figure:
     axes.axhline(0.0, color=INK, lw=0.7, ls=(0, (4, 2)), zorder=1)
     for (level, valley), line in zip(named, energy.T, strict=True):
         colour, dash = line_style(level - 1)
-        axes.plot(voltages, line, color=colour, ls=dash if len(dashes) < 2 else dashes[valley], lw=1.0, zorder=2)
+        axes.plot(at, line, color=colour, ls=dash if len(dashes) < 2 else dashes[valley], lw=1.0, zorder=2)
     low, high = min(float(np.nanmin(energy)), -thermal), max(float(np.nanmax(energy)), thermal)
     axes.set_ylim(low - 0.04 * (high - low), high + 0.04 * (high - low))
     _across(axes, curve)
-    ends = int(np.argmax(np.where(np.isfinite(energy).any(axis=1), voltages, -np.inf)))
+    ends = int(np.argmax(np.where(np.isfinite(energy).any(axis=1), at, -np.inf)))
     last = {level: float(e) for (level, _), e in zip(named, energy[ends], strict=True) if math.isfinite(e)}
     order = sorted(last, key=lambda n: last[n])[:MOST_LABELS]
     label_lines(axes, 1.0, [last[n] for n in order], [str(n) for n in order], 3.2)
@@ -153,7 +165,8 @@ def levels(curve: GateCurve) -> Figure:
 def staircase(curve: GateCurve, measured: Measured | None = None) -> Figure:
     """Conductance against gate voltage in G0 and in microsiemens, the voltages at which steps open marked.
 
-    Measured points are laid over it where they are given (`output.measured`).
+    Between the solved points, which are dots, the line follows from levels (`between_points`); straight where these are
+    not known. Measured points are laid over it where they are given (`output.measured`).
 
     Raises
     ------
@@ -162,15 +175,24 @@ def staircase(curve: GateCurve, measured: Measured | None = None) -> Figure:
     """
     if measured is not None:
         measured.require(GATE_VOLTAGE)
-    figure, rect = canvas(COLUMN_MM, 68 + _room(curve))
-    axes = rect(13, 12, COLUMN_MM - 29, 68 - 20)
+    below = 12 if measured is None else 20.5
+    figure, rect = canvas(COLUMN_MM, 56 + below + _room(curve))
+    axes = rect(13, below, COLUMN_MM - 29, 48)
     voltages, conductance = _voltages(curve), _column(curve, "conductance_G0")
-    axes.plot(voltages, conductance, "-o", color=CYCLE[0], lw=1.2, ms=1.8, label="computed")
-    axes.set_xlim(float(voltages.min()), float(voltages.max()))
     highest = float(np.nanmax(conductance))
+    if (swept := between_points_of(curve)) is None:
+        axes.plot(voltages, conductance, "-o", color=CYCLE[0], lw=1.2, ms=1.8, label="computed")
+    else:
+        at = swept.places_V()
+        line = swept.conductance_G0(at)
+        axes.plot(at, line, color=CYCLE[0], lw=1.2, label="computed")
+        axes.plot(voltages, conductance, "o", color=CYCLE[0], ms=1.8)
+        highest = max(highest, float(line.max()))
+    axes.set_xlim(float(voltages.min()), float(voltages.max()))
     if measured is not None:
         highest = max(highest, lay_over(axes, measured))
-        axes.legend(loc="upper left", handlelength=1.4, borderpad=0.2)
+        # Below the axes: points may lie anywhere within.
+        axes.legend(loc="upper center", bbox_to_anchor=(0.5, -9.5 / 48), handlelength=1.4, borderpad=0.2)
     top = max(1.0, 1.06 * highest)
     axes.set_ylim(0, top)
     axes.set_yticks(np.arange(0, math.floor(top) + 1, max(1, math.ceil(top / 12))))
@@ -183,7 +205,7 @@ def staircase(curve: GateCurve, measured: Measured | None = None) -> Figure:
     other.spines["right"].set_visible(True)
     other.set_ylim(0, top * 1e6 * CONDUCTANCE_QUANTUM_SIEMENS)
     other.set_ylabel("Conductance (µS)")
-    word = "; steps open where marked" if _opened(curve) else ""
+    word = ("" if swept is None else "; dots are solved") + ("; steps open where marked" if _opened(curve) else "")
     _title(axes, curve, f"At {curve.temperature_K:g} K{word}", 7)
     return figure
 
@@ -314,7 +336,7 @@ def output(curve: GateCurve) -> Figure:
     axes.set_ylim(low - (0.05 * (high - low) if low < 0 else 0), high + 0.05 * (high - low) or 1.0)
     ends = {place: float(current[place, -1]) for place in some if math.isfinite(current[place, -1])}
     order = sorted(ends, key=lambda n: ends[n])
-    label_lines(axes, 1.0, [ends[n] for n in order], [f"{gates[n]:.3g} V" for n in order], 3.2)
+    label_lines(axes, 1.0, [ends[n] for n in order], [f"{gates[n]:.4g} V" for n in order], 3.2)
     axes.set_xlim(float(drains.min()), float(drains.max()))
     axes.xaxis.set_major_locator(MaxNLocator(6, steps=[1, 2, 2.5, 5, 10]))
     axes.set_xlabel("Drain voltage (V)")
@@ -333,6 +355,10 @@ FIGURES: MappingProxyType[str, Callable[[GateCurve], Figure]] = MappingProxyType
         "output": output,
     }
 )
+
+
+def __dir__() -> list[str]:
+    return [*FIGURES, "FIGURES", "drawable", "save_all"]
 
 
 def drawable(curve: GateCurve) -> Sequence[str]:

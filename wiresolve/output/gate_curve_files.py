@@ -7,9 +7,9 @@ from pathlib import Path
 from wiresolve.gate_result import GateCurve
 from wiresolve.output import gate_curve_tables, series, tables, vtk
 from wiresolve.output.extras import Extras
-from wiresolve.output.folder import REPORT, write_input, write_measured
+from wiresolve.output.folder import write_input, write_measured
 from wiresolve.output.point_fields import PointFields
-from wiresolve.output.target import FIGURES, INPUT, INPUTS, MEASURED, Contents, check_target, filling
+from wiresolve.output.target import FIGURES, INPUT, INPUTS, REPORT, Contents, check_target, filling
 
 CURVE, SERIES, POINTS = "gate_curve.json", "gate_curve.pvd", "points"
 DRAWN = ("levels", "staircase", "density_and_capacitance", "transfer", "output")
@@ -17,8 +17,9 @@ DRAWN = ("levels", "staircase", "density_and_capacitance", "transfer", "output")
 CONTENTS = Contents(
     "gate curve",
     CURVE,
-    (INPUT, INPUTS, CURVE, "gate_curve.csv", "transistor.csv", SERIES, POINTS, FIGURES, REPORT, MEASURED),
+    (INPUT, INPUTS, CURVE, "gate_curve.csv", "transistor.csv", SERIES, POINTS, FIGURES, REPORT),
     DRAWN,
+    (POINTS,),
 )
 
 

@@ -128,9 +128,12 @@ def summary(curve: GateCurve, folder: str | Path | None = None, status: str = DO
         lines += ["", *paragraphs(f"warning {warning.code}: {warning.text}")]
         lines += paragraphs(warning.remedy, indent="    ")
     if remembered := unsure(curve.problem, curve.mesh, valleys, curve.warnings):
-        lines += ["", *paragraphs(f"Values from memory, not checked against a text: {remembered}.")]
+        lines += [
+            "",
+            *paragraphs(f"Values from memory, not checked against a text, of those that matter here: {remembered}."),
+        ]
     if differing := unsure(curve.problem, curve.mesh, valleys, curve.warnings, "conflict"):
-        lines += ["", *paragraphs(f"Values on which sources differ: {differing}.")]
+        lines += ["", *paragraphs(f"Values on which sources differ, of those that matter here: {differing}.")]
     if curve.not_modelled:
         lines += ["", *paragraphs(f"Not modelled: {'; '.join(curve.not_modelled)}.")]
     if status != DONE:

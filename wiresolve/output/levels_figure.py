@@ -45,13 +45,15 @@ def levels(result: Result) -> Figure:
     groups = tables.levels(result.subbands)
     energies = 1e3 * np.array([tables.level_energy_eV(g) for g in groups])
     bars = 1e3 * np.array([max(s.error_eV for s in g) for g in groups])
+    said = [tables.with_bar(e, b) for e, b in zip(energies, bars, strict=True)]
+    bars = np.array([tables.printed_bar(words) for words in said])
     warm = [t for t in result.problem.carriers.temperature_K if t > 0]
     thermal = [1e3 * KB * t for t in warm]
     high = min(128.0, max(56.0, 4.6 * min(len(groups), MOST_LABELS)))
     dashes = dashes_of([s.valley for s in result.subbands])
     # Names of valleys are long.
     across = 6 if len(dashes) < 2 else 4
-    below = 16.0 + 4.0 * math.ceil((len(warm) + 2 + (len(dashes) if len(dashes) > 1 else 0)) / across)
+    below = 16.0 + 4.0 * math.ceil((len(warm) + 3 + (len(dashes) if len(dashes) > 1 else 0)) / across)
     figure, rect = canvas(PAGE_MM, high + below + 8)
     margin = 0.07 * (np.ptp(energies) or max(abs(energies[0]), 1.0))
     span = (energies.min() - margin, energies.max() + margin)
@@ -67,7 +69,7 @@ def levels(result: Result) -> Figure:
     ladder.set_ylim(*span)
     room = _thermal_bars(ladder, float(energies[0]), thermal, warm)
     ladder.set_xlim(-room, 2.25)
-    texts = [f"{tables.with_bar(e, b)}  (×{tables.states(g)})" for e, b, g in zip(energies, bars, groups, strict=True)]
+    texts = [f"{words}  (×{tables.states(g)})" for words, g in zip(said, groups, strict=True)]
     label_lines(ladder, (1.03 + room) / (2.25 + room), energies[:MOST_LABELS].tolist(), texts[:MOST_LABELS], 3.9)
     ladder.set_xlim(-room, 2.25)
     ladder.set_xticks([])
@@ -83,6 +85,8 @@ def levels(result: Result) -> Figure:
     signs += [Line2D([], [], color=INK, marker="|", ls="", ms=6, mew=1.2, label="error bar")]
     for number, temperature in enumerate(warm):
         signs.append(Line2D([], [], color=thermal_colour(number), lw=2, label=f"kT at {temperature:g} K"))
+    if any(len(g) > 1 for g in groups):
+        signs.append(Line2D([], [], color=CYCLE[5], lw=1.6, label="several subbands"))
     if len(dashes) > 1:
         signs += [Line2D([], [], color=INK, ls=dash, lw=1.4, label=short_valleys(v)) for v, dash in dashes.items()]
     length = 1.3 if len(dashes) < 2 else 2.6

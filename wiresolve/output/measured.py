@@ -177,7 +177,8 @@ def _column(head: Sequence[str], names: Sequence[str], file: str) -> int:
         raise InputError("measured", "has several columns for one quantity", given, "keep one of them")
     near = next((hint for name in head if (hint := checks.nearest(name, names))), "")
     rule = f"has no column {', '.join(names[:-1])} or {names[-1]} in its first line"
-    raise InputError("measured", rule, ", ".join(head) or file, near)
+    remedy = near or f"rename the columns in the first line, e.g. {names[0]}"
+    raise InputError("measured", rule, ", ".join(head) or file, remedy)
 
 
 def _row(text: str, mark: str, places: tuple[int, int], number: int) -> tuple[float, float]:

@@ -19,15 +19,17 @@ MOST_SHOWN = 1500
 def lay_over(axes: Axes, measured: Measured, unit: float = 1.0) -> float:
     """Draw the points that lie within the axes' range, `x` times `unit`; returns the highest of them, 0 where none is.
 
-    The label of what is drawn says where the points come from, and which part of them is shown.
+    The label of what is drawn says where the points come from, and how many of them are in view and drawn.
     """
     low, high = axes.get_xlim()
     x = unit * measured.x
     seen = np.flatnonzero((x >= low) & (x <= high))
     every = max(1, -(-len(seen) // MOST_SHOWN))
     shown = seen[::every]
-    label = shortened(measured.source, 22) + (f", 1 of {every} points" if every > 1 else "")
-    label = label if len(seen) else f"{label}: none in view"
+    among = f"{len(seen):,} of {len(x):,}" if len(seen) < len(x) else f"{len(x):,}"
+    label = shortened(measured.source, 22)
+    label += f": {among} in view" if len(seen) else f": none of {len(x):,} in view"
+    label += f", 1 of {every} drawn" if every > 1 else ""
     axes.plot(
         x[shown], measured.conductance_G0[shown], "o", ms=2.0, mfc="none", mec=INK, mew=0.45, label=label, zorder=1.9
     )

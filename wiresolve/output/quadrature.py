@@ -41,7 +41,7 @@ def points(result: Result) -> dict[str, NDArray[Any]]:
     modes = np.zeros((len(weights), n), dtype=result.modes.dtype)
     slopes = np.zeros((len(weights), 2, n), dtype=result.modes.dtype)
     carried, potential = np.ones(n), np.zeros(len(weights))
-    cells, rule = np.arange(len(space.cells)), len(weights) // len(space.cells)
+    rule = len(weights) // len(space.cells)
     for number, (rows, _, own) in enumerate(listed_modes(result)):
         for several in own.chunks():
             rows_here = (several[:, None] * rule + np.arange(rule)).ravel()
@@ -58,7 +58,6 @@ def points(result: Result) -> dict[str, NDArray[Any]]:
     region = result.mesh.region[space.cells]
     of_region = np.array([materials.index(r.material) for r in regions])
     edge, alpha, inverse_mass = _tables(result, labels)
-    assert len(cells) == len(region)
     return {
         "points_nm": places,
         "weights_nm2": weights,

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from importlib import metadata
 from pathlib import Path
 
 from wiresolve.errors import InputError
@@ -10,10 +11,8 @@ from wiresolve.loading import load
 from wiresolve.output import measured, report_gate, report_wire
 from wiresolve.output.report_blocks import Folder, pictures_in
 from wiresolve.output.report_page import render
-from wiresolve.output.target import INPUT, MEASURED
+from wiresolve.output.target import INPUT, MEASURED, REPORT
 
-REPORT = "report.html"
-"""The name of the file in the folder that it reports."""
 _KINDS = {"result.json": report_wire.page, "gate_curve.json": report_gate.page}
 
 
@@ -43,12 +42,26 @@ def html(folder: str | Path) -> str:
             pictures=pictures_in(path),
             measured=measured.read(path / MEASURED) if (path / MEASURED).is_file() else None,
         )
+        _check_pair(read, path)
         return render(_KINDS[name](read))
-    except (OSError, ValueError, KeyError, TypeError, IndexError) as fault:
+    except (OSError, ValueError, KeyError, TypeError, IndexError, AttributeError) as fault:
         if isinstance(fault, InputError):
             raise
         rule = f"cannot be used: {type(fault).__name__} {fault}"
         raise InputError(f"folder.{name}", rule, str(path), "solve the wire again with this version") from fault
+
+
+def _check_pair(folder: Folder, path: Path) -> None:
+    """InputError where the wire file beside a result is another one: the page would tell of two wires at once."""
+    found = folder.found
+    try:
+        same_version = found["versions"]["wiresolve"] == metadata.version("wiresolve")
+    except metadata.PackageNotFoundError:
+        same_version = False
+    # Another version may name the same input otherwise.
+    if same_version and found["input_digest"] != folder.problem.digest:
+        rule = "is not the input of the result beside it: its digest is another one"
+        raise InputError(f"folder.{INPUT}", rule, str(path), "solve the changed file, or put the old one back")
 
 
 def write_report(folder: str | Path, path: str | Path | None = None) -> Path:

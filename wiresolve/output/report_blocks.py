@@ -41,20 +41,28 @@ class Folder:
         """A figure of the folder as HTML; nothing where it was not drawn."""
         return picture(self.pictures[name], words) if name in self.pictures else ""
 
-    def measured_points(self) -> list[tuple[float, float]]:
-        """The measured points as (x, G0) pairs, at most `MOST_MEASURED` of them."""
+    def measured_points(self, low: float, high: float) -> list[tuple[float, float]]:
+        """The measured points in view, from `low` to `high`, as (x, G0) pairs; at most `MOST_MEASURED` of them."""
         if self.measured is None:
             return []
         x, conductance = self.measured.x.tolist(), self.measured.conductance_G0.tolist()
-        return [(x[n], conductance[n]) for n in thinned(len(x), MOST_MEASURED)]
+        seen = self._in_view(low, high)
+        return [(x[seen[n]], conductance[seen[n]]) for n in thinned(len(seen), MOST_MEASURED)]
 
-    def measured_words(self) -> str:
+    def measured_words(self, low: float, high: float) -> str:
         """What a caption says of them; nothing where there are none."""
         if self.measured is None:
             return ""
-        count = len(self.measured.x)
-        part = f", of which {MOST_MEASURED:,} are drawn" if count > MOST_MEASURED else ""
-        return f" Circles: {count:,} measured points{part}, as they are, contacts included."
+        count, seen = len(self.measured.x), len(self._in_view(low, high))
+        if not seen:
+            return f"None of {count:,} measured points is in view."
+        part = f", of which {MOST_MEASURED:,} are drawn" if seen > MOST_MEASURED else ""
+        among = f"{seen:,}" if seen == count else f"{seen:,} of {count:,}"
+        return f"Circles: {among} measured points in view{part}, as they are, contacts included."
+
+    def _in_view(self, low: float, high: float) -> list[int]:
+        assert self.measured is not None
+        return [n for n, x in enumerate(self.measured.x.tolist()) if low <= x <= high]
 
 
 def pictures_in(folder: Path) -> dict[str, bytes]:
@@ -92,7 +100,7 @@ def modes(folder: Folder, listed_count: int) -> list[Part]:
         return []
     note = "Each on its own scale: the two colours are the two signs, and where it vanishes the section is plain."
     caption = f"<figcaption>{text(note)}</figcaption>"
-    return [Part("modes", "Modes", f'<figure class="plate">{shown}{caption}</figure>')]
+    return [Part("modes", "Modes", f'<figure class="plate" tabindex="0">{shown}{caption}</figure>')]
 
 
 def closing(folder: Folder, accuracy: str, command: str) -> list[Part]:
@@ -108,10 +116,10 @@ def closing(folder: Folder, accuracy: str, command: str) -> list[Part]:
 
 def materials(values: Sequence[Plain]) -> str:
     """A table for each material, its sources numbered below all."""
-    sources = list(dict.fromkeys(v["source"] for v in values))
+    told, numbers = _sources(list(dict.fromkeys(str(v["source"]) for v in values)))
     body = ""
     for name in dict.fromkeys(v["name"] for v in values):
-        rows = [_value_row(v, sources) for v in values if v["name"] == name]
+        rows = [_value_row(v, numbers) for v in values if v["name"] == name]
         unsure = sum(v["provenance"] in ("memory", "conflict") for v in values if v["name"] == name)
         note = f", {unsure} of them from memory or told differently by sources" if unsure else ""
         heads = ("quantity", "value", "unit", "literature", "at", "standing", "source")
@@ -120,11 +128,34 @@ def materials(values: Sequence[Plain]) -> str:
             f"{name}: {len(rows)} value{'' if len(rows) == 1 else 's'}{note}",
             table(name, heads, rows, left=(0, 2, 3, 5, 6)),
         )
-    items = "".join(f"<li>{text(source)}</li>" for source in sources)
-    return f'{body}<h3>Sources</h3><ol class="sources">{items}</ol>' if values else paragraph("None of a table.")
+    return f'{body}<h3>Sources</h3><ol class="sources">{told}</ol>' if values else paragraph("None of a table.")
 
 
-def _value_row(value: Plain, sources: Sequence[str]) -> list[str]:
+def _sources(sources: Sequence[str]) -> tuple[str, dict[str, str]]:
+    """Items of the list, what one publication says of several values below it by letters; and the number of each."""
+    publications: dict[str, list[str]] = {}
+    for source in sources:
+        publications.setdefault(source.partition("; ")[0], []).append(source)
+    items, numbers = "", {}
+    for place, (publication, own) in enumerate(publications.items(), 1):
+        if len(own) == 1:
+            numbers[own[0]] = str(place)
+            items += f"<li>{text(own[0])}</li>"
+            continue
+        remarks = sorted(own, key=len)
+        numbers |= {source: f"{place}{_letters(n)}" for n, source in enumerate(remarks)}
+        below = (text(source.partition("; ")[2] or "the value as it stands there") for source in remarks)
+        lines = "".join(f"<li>{words}</li>" for words in below)
+        items += f'<li>{text(publication)}<ol type="a">{lines}</ol></li>'
+    return items, numbers
+
+
+def _letters(number: int) -> str:
+    """a to z, then aa, ab, ..., as browsers count."""
+    return (_letters(number // 26 - 1) if number >= 26 else "") + chr(ord("a") + number % 26)
+
+
+def _value_row(value: Plain, numbers: Mapping[str, str]) -> list[str]:
     low, high, kelvin = value["low"], value["high"], value["temperature_K"]
     between = "" if low is None or high is None or low == high else f"{low:.6g} to {high:.6g}"
     return [
@@ -134,7 +165,7 @@ def _value_row(value: Plain, sources: Sequence[str]) -> list[str]:
         between,
         "" if kelvin is None else f"{kelvin:g} K",
         _STANDING.get(value["provenance"], str(value["provenance"])),
-        f"[{sources.index(value['source']) + 1}]",
+        f"[{numbers[str(value['source'])]}]",
     ]
 
 
@@ -170,7 +201,7 @@ def repeated(folder: Folder, command: str) -> str:
     files = [path for path, _ in folder.problem.files]
     beside = f" with the folder {INPUTS} of the result beside it" if files else ""
     wirefile = text(folder.written.strip())
-    digest = f"The result is the same where its digest is {folder.found['input_digest']}."
+    digest = f"Input digest: {folder.found['input_digest']}. A result of the same input shows the same."
     return (
         paragraph(f"Save this as input.toml{beside}, then type:")
         + f'<pre class="line"><code>{text(command)}</code></pre>'
@@ -242,6 +273,16 @@ def small_energy(value_eV: float) -> str:
     """A small energy to two digits, rounded up, in the unit that needs no power of ten."""
     unit, name = next(((u, n) for u, n in ((1e-3, "meV"), (1e-6, "µeV")) if value_eV >= u / 1000), (1e-9, "neV"))
     return f"{tables.small(value_eV / unit)} {name}"
+
+
+def short(value: float, bar: float, unit: str) -> tuple[str, str]:
+    """A value to its bar, but to no more than four digits or hundredths, and the bar for the line below."""
+    whole, plus, half = tables.with_bar(value, bar).partition(" ± ")
+    if not plus:
+        return f"{tables.significant(value, 4)} {unit}", ""
+    size = math.floor(math.log10(abs(value))) if value else 0
+    decimals = min(len(whole.partition(".")[2]), max(2, 3 - size))
+    return f"{value:.{decimals}f} {unit}", f"± {half} {unit}, "
 
 
 def thinned(count: int, most: int) -> list[int]:

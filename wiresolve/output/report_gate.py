@@ -2,14 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+import math
+import re
+from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from wiresolve.describe.problem import Problem
 from wiresolve.output import report_blocks as blocks
 from wiresolve.output import tables
+from wiresolve.output.between_points import Between, between
 from wiresolve.output.report_blocks import Folder, Plain, number, thinned
 from wiresolve.output.report_page import Page, Part, dial, figure, readings, table, tiles
 from wiresolve.output.report_wire_data import CONSTANTS
@@ -18,8 +22,22 @@ from wiresolve.physics.transmission import transmission_of
 from wiresolve.units import KB
 
 Array = NDArray[np.float64]
-_SAME_EV = 1e-6
-"""Filled states this close to the listed ones are these."""
+_MOTION = re.compile(r"step_(\d+)_moves_with_(.+)_V_per_nm")
+_MEASURES = {
+    "threshold_by_first_level_V": ("Threshold: the first level meets the Fermi level", "V", 1.0),
+    "threshold_by_extrapolation_V": ("Threshold: line density extrapolated to none", "V", 1.0),
+    "geometric_F_per_m": ("Geometric capacitance", "nF/m", 1e9),
+    "on_current_A": ("Current when on", "A", 1.0),
+    "off_current_A": ("Current when off", "A", 1.0),
+    "transconductance_S": ("Transconductance when on", "µS", 1e6),
+    "subthreshold_slope_mV_per_decade": ("Gate voltage for each decade of current, when off", "mV", 1.0),
+    "barrier_lowering_mV_per_V": ("Lowering of the off-current's gate voltage for each volt on the drain", "mV", 1.0),
+    "drain_coupling": ("Lowering of the barrier for each volt on the drain", "eV", 1.0),
+    "scale_length_nm": ("Length over which the drain's field falls off along the wire", "nm", 1.0),
+    "injection_velocity_m_per_s": ("Injection velocity when on", "km/s", 1e-3),
+    "ballistic_part": ("Current when on over that with every carrier transmitted", "", 1.0),
+}
+"""Words, unit and scale of the numbers of a whole sweep, by their names in `gate_curve.json`."""
 _BINS = 240
 _ROWS = 41
 
@@ -28,33 +46,33 @@ def page(folder: Folder) -> Page:
     """The page of a gate curve's folder."""
     found = folder.found
     good = sorted((p for p in found["points"] if p["converged"]), key=lambda p: p["gate_voltage_V"])
-    rows = _with_openings(_rows(good), good, found) if len(good) > 1 else []
+    swept = between(good, found["steps"], found["temperature_K"], folder.problem.transport)
     curves = "Gate curve"
     parts = [
         blocks.verdict(folder, found["verdict"]["text"], tiles(_tiles(found))),
         blocks.section(folder),
-        Part("levels", "Levels against gate voltage", _levels(folder, good, bool(rows))),
-        Part("measured", "What is measured", _measured(folder, good, bool(rows))),
+        Part("levels", "Levels against gate voltage", _levels(folder, good, swept is not None)),
+        Part("measured", "What is measured", _measured(folder, good, swept is not None)),
         Part("gate-curve", curves, _curves(folder, good)),
     ]
-    if any(s["moves_V_per_nm"] is not None for s in found["steps"]):
-        parts.append(Part("sensitivities", "Sensitivities", _moved(found)))
+    if motions := _motions(found):
+        parts.append(Part("sensitivities", "Sensitivities", _moved(motions, folder.problem)))
     largest = max((max(p["error_eV"], default=0.0) for p in good), default=0.0)
     command = "wiresolve gate-curve input.toml --out repeated"
     parts += blocks.closing(folder, blocks.accuracy(folder, largest, _mesh_rows(found, good)), command)
     facts = blocks.facts(folder, (f"{len(found['points'])} points", f"{found['temperature_K']:g} K"))
-    return Page(str(found["title"]), "Gate curve report", facts, tuple(parts), _data(folder, good, rows))
+    return Page(str(found["title"]), "Gate curve report", facts, tuple(parts), _data(folder, good, swept))
 
 
 def _tiles(found: Plain) -> list[tuple[str, str, str]]:
     rows = []
     for step in [s for s in found["steps"] if s["opens_at_V"] is not None][:3]:
-        at = tables.with_bar(step["opens_at_V"], step["error_V"] or 0.0)
+        at, bar = blocks.short(step["opens_at_V"], step["error_V"] or 0.0, "V")
         wide = "" if step["width_V"] is None else f", {tables.significant(1e3 * step['width_V'], 3)} mV wide"
-        rows.append((f"Step {step['level']} opens at", f"{at} V", f"to {step['plateau_G0']:.4g} G0{wide}"))
+        rows.append((f"Step {step['level']} opens at", at, f"{bar}to {step['plateau_G0']:.4g} G0{wide}"))
     measures = found["measures"]
     if (on := measures.get("on_current_A")) is not None:
-        rows.append(("Current when on", f"{number(1e6 * on)} µA", f"off {number(measures.get('off_current_A'), 2)} A"))
+        rows.append(("Current when on", _ampere(on, 4), f"off {_ampere(measures.get('off_current_A'), 3)}"))
     if (swing := measures.get("subthreshold_slope_mV_per_decade")) is not None:
         rows.append(("Below threshold", f"{swing:.3g} mV", "for each decade of current"))
     failed = sum(not p["converged"] for p in found["points"])
@@ -65,7 +83,8 @@ def _tiles(found: Plain) -> list[tuple[str, str, str]]:
 
 def _levels(folder: Folder, good: Sequence[Plain], drawn: bool) -> str:
     kelvin, shown = folder.found["temperature_K"], folder.shown("levels", "Levels against gate voltage")
-    caption = f"Levels numbered, from the source's Fermi level (dashed), with kT at {kelvin:g} K on both sides of it."
+    caption = "Levels numbered, interpolated between the solved points, from the source's Fermi level (dashed), with"
+    caption += f" kT at {kelvin:g} K on both sides of it."
     most = max((len(p["energy_eV"]) for p in good), default=0)
     heads = ["gate voltage (V)", *(f"subband {n + 1} (meV)" for n in range(most))]
     rows = []
@@ -98,9 +117,9 @@ def _measured(folder: Folder, good: Sequence[Plain], drawn: bool) -> str:
     through = blocks.through(folder.problem) or "Ballistic, with a transmission of 1."
     caption = (
         f"Conductance at {found['temperature_K']:g} K: dots are solved points, the line follows from levels"
-        f" interpolated between them, marks where steps open. {through}{folder.measured_words()}"
+        f" interpolated between them, marks where steps open. {through} {folder.measured_words(*_ends(found))}"
     )
-    body = controls + figure("gate-staircase", caption, numbers, shown)
+    body = controls + figure("gate-staircase", caption.strip(), numbers, shown)
     body += figure("states", "Density of states at this voltage, from interpolated levels; strong where occupied.")
     body += blocks.occupation("Carriers in each level at this voltage, and their share of all.")
     return body + _steps(found)
@@ -139,23 +158,60 @@ def _curves(folder: Folder, good: Sequence[Plain]) -> str:
         body += figure("transfer", "Current against gate voltage, a line for each drain voltage.")
         if len({t["drain_voltage_V"] for t in found["transistor"]}) > 1:
             body += figure("output", "Current against drain voltage, a line for each gate voltage.")
-    measures = [[name, number(value)] for name, value in sorted(found["measures"].items()) if value is not None]
-    if measures:
-        body += table("Numbers of the whole sweep", ("name in gate_curve.json", "value"), measures)
+    measures = [(name, value) for name, value in sorted(found["measures"].items()) if value is not None]
+    rows = [_measure(name, value) for name, value in measures if not _MOTION.fullmatch(name)]
+    if rows:
+        body += table("Numbers of the whole sweep", ("quantity", "value", "unit"), rows, left=(0, 2))
     return body
+
+
+def _measure(name: str, value: float) -> list[str]:
+    """Words, value and unit of a number of the whole sweep; one without words here is told by its name."""
+    words, unit, scale = _MEASURES.get(name, (name.replace("_", " "), "", 1.0))
+    shown, _, unit = (_ampere(value, 4) if unit == "A" else f"{number(scale * value)} {unit}").partition(" ")
+    return [words, shown, unit]
+
+
+def _ampere(value: float | None, digits: int) -> str:
+    """A current with the prefix that fits its size; nothing for none."""
+    if value is None or not math.isfinite(value):
+        return ""
+    sizes = ((1e-3, "mA"), (1e-6, "µA"), (1e-9, "nA"), (1e-12, "pA"), (1e-15, "fA"))
+    size, unit = next(((s, u) for s, u in sizes if abs(value) >= s), (1e-15, "fA"))
+    return f"{number(value / size, digits)} {unit}"
 
 
 def _nano(value: float | None) -> str:
     return number(None if value is None else 1e9 * value)
 
 
-def _moved(found: Plain) -> str:
+def _motions(found: Plain) -> list[tuple[str, dict[int, float]]]:
+    """How far steps move with each dimension, in V for each nm, by the step's number."""
+    motions: dict[str, dict[int, float]] = {}
+    for name, value in sorted(found["measures"].items()):
+        if (of := _MOTION.fullmatch(name)) and value is not None:
+            motions.setdefault(of[2], {})[int(of[1])] = value
+    if not motions:
+        told = {s["level"]: s["moves_V_per_nm"] for s in found["steps"] if s["moves_V_per_nm"] is not None}
+        motions = {"the section": told} if told else {}
+    return list(motions.items())
+
+
+def _named(of: str, problem: Problem) -> str:
+    """A dimension in words: "across flats", "insulator thickness of the gate back"."""
+    if gate := re.fullmatch(r"gates\[(\d+)\]\.(.+)", of):
+        return f"{gate[2].replace('.', ' ').replace('_', ' ')} of the gate {problem.gates[int(gate[1]) - 1].name}"
+    return of.removeprefix("section.").replace("_", " ")
+
+
+def _moved(motions: Sequence[tuple[str, dict[int, float]]], problem: Problem) -> str:
+    count = max(max(own) for _, own in motions)
+    heads = ["dimension", *(f"step {n}" for n in range(1, count + 1))]
     rows = [
-        [str(s["level"]), f"{1e3 * s['moves_V_per_nm']:+.3g}"]
-        for s in found["steps"]
-        if s["moves_V_per_nm"] is not None
+        [_named(of, problem), *(f"{1e3 * own[n]:+.3g}" if n in own else "" for n in range(1, count + 1))]
+        for of, own in motions
     ]
-    return table("How far each step moves for each nanometre by which the section grows", ("step", "mV"), rows)
+    return table("How far steps move, in mV, for each nanometre by which a dimension grows", heads, rows)
 
 
 def _mesh_rows(found: Plain, good: Sequence[Plain]) -> list[tuple[str, str]]:
@@ -170,117 +226,19 @@ def _mesh_rows(found: Plain, good: Sequence[Plain]) -> list[tuple[str, str]]:
     return [*rows, ("Energy zero", str(found["energy_zero"]["text"]))]
 
 
-def _rows(good: Sequence[Plain]) -> list[dict[str, Any]]:
-    """Subbands at every solved voltage, ascending: the listed ones, and filled ones beyond.
-
-    Where the listed ones hold all carriers each is followed within its group of valleys, else by its place in energy.
-    What a point does not tell of a row comes from the nearest point that does.
-    """
-    inside = all(
-        len(p["filled_energy_eV"]) <= len(p["energy_eV"])
-        and np.allclose(p["filled_energy_eV"], p["energy_eV"][: len(p["filled_energy_eV"])], rtol=0, atol=_SAME_EV)
-        for p in good
-    )
-    names: dict[tuple[str, int], None] = {}
-    each = []
-    for point in good:
-        held = _by_name(point, inside)
-        names |= dict.fromkeys(held)
-        each.append(held)
-    valleys = list(dict.fromkeys(v for p in good for v in p["valley"]))
-    rows = []
-    for name in names:
-        columns = {
-            key: _filled([held.get(name, {}).get(key) for held in each])
-            for key in ("energy", "mass", "alpha", "degeneracy", "coupling", "level")
-        }
-        listed = sum(name in held and held[name]["listed"] for held in each)
-        rows.append(
-            {
-                **{key: columns[key].tolist() for key in ("energy", "mass", "alpha", "degeneracy", "coupling")},
-                "density": [held.get(name, {}).get("density", 0.0) for held in each],
-                "level": int(columns["level"][-1]),
-                "listed": listed == len(good),
-                "group": valleys.index(name[0]) if name[0] in valleys else 0,
-            }
-        )
-    return sorted(rows, key=lambda row: float(row["energy"][-1]))
-
-
-def _with_openings(given: Sequence[Plain], good: Sequence[Plain], found: Plain) -> list[dict[str, Any]]:
-    """The same with the voltages at which steps open, which are solved for, as further nodes of the energies."""
-    at = [p["gate_voltage_V"] for p in good]
-    opened = [{"at": s["opens_at_V"], "left": s["height_G0"]} for s in found["steps"] if s["opens_at_V"] is not None]
-    rows = [{**row, **{key: list(row[key]) for key in ("energy", "coupling")}, "nodes": list(at)} for row in given]
-    crossing = []
-    for row in rows:
-        energy = np.array(row["energy"])
-        passed = np.flatnonzero((energy[:-1] > 0) & (energy[1:] <= 0))
-        if len(passed):
-            n = int(passed[0])
-            part = energy[n] / (energy[n] - energy[n + 1])
-            crossing.append((n, part, row))
-    crossing.sort(key=lambda entry: (entry[0], entry[1]))
-    # A step is of one subband or, by its height, of several that open together.
-    for n, _, row in crossing:
-        near = [s for s in opened if at[n] < s["at"] < at[n + 1] and s["left"] > 0]
-        if not near:
-            continue
-        step = near[0]
-        step["left"] -= row["degeneracy"][n + 1] / 2
-        slope = (row["energy"][n] - row["energy"][n + 1]) / (at[n + 1] - at[n])
-        for key, value in (("nodes", step["at"]), ("energy", 0.0), ("coupling", slope)):
-            row[key].insert(n + 1, value)
-    return rows
-
-
-def _by_name(point: Plain, inside: bool) -> dict[tuple[str, int], dict[str, Any]]:
-    """The rows of a point by group of valleys and place in it, or by place in all."""
-    seen: dict[str, int] = {}
-    held: dict[tuple[str, int], dict[str, Any]] = {}
-    filled = len(point["filled_energy_eV"])
-    for n in range(max(len(point["energy_eV"]), filled)):
-        listed = n < len(point["energy_eV"])
-        valley = point["valley"][n] if inside else ""
-        name = (valley, seen.get(valley, 0))
-        seen[valley] = name[1] + 1
-        known = n < filled
-        mass = point["axial_mass"][n] if listed else None
-        held[name] = {
-            "energy": point["filled_energy_eV"][n] if known else point["energy_eV"][n],
-            "mass": point["filled_axial_mass"][n] if known else mass,
-            "alpha": point["filled_alpha_per_eV"][n] if known else None,
-            "degeneracy": point["filled_degeneracy"][n] if known else point["degeneracy"][n],
-            "coupling": point["coupling"][n] if listed else point["gate_coupling"],
-            "level": point["level"][n] if listed else n + 1,
-            "density": point["line_density_by_subband_per_nm"][n] if listed else 0.0,
-            "listed": listed,
-        }
-    return held
-
-
-def _filled(values: Sequence[float | None]) -> Array:
-    """A column with what is missing taken from the nearest place that has it; 0 where none has."""
-    column = np.array([np.nan if v is None else v for v in values], dtype=float)
-    known = np.flatnonzero(np.isfinite(column))
-    if not len(known):
-        return np.zeros(len(column))
-    place = np.arange(len(column))
-    return np.asarray(column[known[np.argmin(np.abs(place[:, None] - known), axis=1)]])
-
-
-def _data(folder: Folder, good: Sequence[Plain], rows: Sequence[Mapping[str, Any]]) -> dict[str, Any]:
-    found, problem = folder.found, folder.problem
+def _data(folder: Folder, good: Sequence[Plain], swept: Between | None) -> dict[str, Any]:
+    found = folder.found
     keys = ("gate_voltage_V", "conductance_G0", "line_density_per_nm", "capacitance_F_per_m", "geometric_F_per_m")
     points = [{key: p[key] for key in (*keys, "quantum_F_per_m", "centroid_F_per_m")} for p in good]
+    lines = () if swept is None else swept.lines
     density = [
-        {"level": level, "density": np.sum([row["density"] for row in rows if row["level"] == level], axis=0).tolist()}
-        for level in sorted({row["level"] for row in rows})
+        {"level": level, "density": np.sum([row["density"] for row in lines if row["level"] == level], axis=0).tolist()}
+        for level in sorted({row["level"] for row in lines})
     ]
-    voltages = [p["gate_voltage_V"] for p in good]
     data: dict[str, Any] = {
         "constants": CONSTANTS,
-        "measured": folder.measured_points(),
+        "measured": folder.measured_points(*_ends(found)),
+        "measuredWords": folder.measured_words(*_ends(found)),
         "curve": {
             "voltages": [p["gate_voltage_V"] for p in found["points"]],
             "points": points,
@@ -295,22 +253,44 @@ def _data(folder: Folder, good: Sequence[Plain], rows: Sequence[Mapping[str, Any
             "axis": f"Voltage of the gate {found['swept_gate']} (V)",
         },
     }
-    if rows:
-        through = transmission_of(problem.transport)
-        count = max(len(rows), 1)
-        data["sweep"] = {
-            "voltages": voltages,
-            "rows": list(rows),
-            "kelvin": found["temperature_K"],
-            "through": {
-                "parts": through.part(np.arange(count)).tolist(),
-                "width": float(through.width_eV),
-                "resistance": 0.0 if problem.transport is None else problem.transport.contact_resistance_ohm,
-            },
-            "bins": {"edges": _edges(rows, found["temperature_K"]).tolist()},
-            "start_V": _start(found, voltages),
-        }
+    if swept is not None:
+        data["sweep"] = _sweep(swept, found)
     return data
+
+
+def _sweep(swept: Between, found: Plain) -> dict[str, Any]:
+    """What the slider goes over: the rows, and the levels and the staircase between the solved points."""
+    at, through = swept.places_V(), transmission_of(swept.transport)
+    curves = zip(swept.lines, (1e3 * swept.lines_eV(at)).T, strict=True)
+    return {
+        "voltages": swept.voltages_V.tolist(),
+        "rows": [{key: value for key, value in row.items() if key != "listed_at"} for row in swept.rows],
+        "at": at.tolist(),
+        "lines": [
+            {"level": line["level"], "group": line["group"], "meV": [_rounded(e) for e in energy.tolist()]}
+            for line, energy in curves
+        ],
+        "conductance": [_rounded(g) for g in swept.conductance_G0(at).tolist()],
+        "kelvin": swept.temperature_K,
+        "through": {
+            "parts": through.part(np.arange(len(swept.rows))).tolist(),
+            "width": float(through.width_eV),
+            "resistance": 0.0 if swept.transport is None else swept.transport.contact_resistance_ohm,
+        },
+        "bins": {"edges": _edges(swept).tolist()},
+        "start_V": _start(found, swept.voltages_V.tolist()),
+    }
+
+
+def _rounded(value: float) -> float | None:
+    """To the digits that can be seen; None, a gap, for NaN."""
+    return round(value, 7) if math.isfinite(value) else None
+
+
+def _ends(found: Plain) -> tuple[float, float]:
+    """The first and the last voltage of the sweep."""
+    voltages = [float(p["gate_voltage_V"]) for p in found["points"]]
+    return min(voltages), max(voltages)
 
 
 def _start(found: Plain, voltages: Sequence[float]) -> float:
@@ -320,10 +300,10 @@ def _start(found: Plain, voltages: Sequence[float]) -> float:
     return float(f"{min(max(middle, voltages[0]), voltages[-1]):.4g}")
 
 
-def _edges(rows: Sequence[Mapping[str, Any]], kelvin: float) -> Array:
+def _edges(swept: Between) -> Array:
     """Energies from below the lowest level of the sweep to above the Fermi level."""
-    lowest = min(min(row["energy"]) for row in rows)
-    highest = max(max(row["energy"]) for row in rows if row["listed"])
-    thermal = KB * kelvin
+    lowest = min(min(row["energy"]) for row in swept.rows)
+    highest = max(max(line["energy"]) for line in swept.lines)
+    thermal = KB * swept.temperature_K
     top = min(highest, max(12 * thermal, 0.4 * abs(lowest), 0.01))
     return np.linspace(lowest - 0.03 * (top - lowest), max(top, 6 * thermal), _BINS + 1)

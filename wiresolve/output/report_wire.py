@@ -65,8 +65,8 @@ def page(folder: Folder) -> Page:
 
 def _tiles(found: Plain, problem: Problem, groups: Sequence[Sequence[Plain]]) -> list[tuple[str, str, str]]:
     first, warm = groups[0], [t for t in problem.carriers.temperature_K if t > 0]
-    lowest = tables.with_bar(1e3 * mean_eV(first), 1e3 * bar_eV(first))
-    rows = [("First level", f"{lowest} meV", f"from the {found['energy_zero']['text']}")]
+    lowest, bar = blocks.short(1e3 * mean_eV(first), 1e3 * bar_eV(first), "meV")
+    rows = [("First level", lowest, f"{bar}from the {found['energy_zero']['text']}")]
     if len(groups) > 1:
         spacing = mean_eV(groups[1]) - mean_eV(first)
         ratio = " and ".join(f"{tables.significant(spacing / (KB * t), 3)} kT at {t:g} K" for t in warm[:2])
@@ -165,9 +165,8 @@ def _measured(folder: Folder, spectrum: Spectrum | None) -> str:
     if spectrum is None:
         return "".join(pictures) + numbers + stairs + _steps(found)
     filled = "Density of states: exact averages over bins, marks where it is infinite; the strong part is occupied."
-    thin = (
-        f"Conductance at this temperature, thin at T = 0, marks where levels open. {through}{folder.measured_words()}"
-    )
+    words = folder.measured_words(*fermi_range(folder, spectrum))
+    thin = f"Conductance at this temperature, thin at T = 0, marks where levels open. {through} {words}".strip()
     if problem.charged:
         thin += " The potential is kept as it is: a gate moves the levels too, and its curve is another one."
     body += figure("states", filled, numbers, pictures[0])
@@ -206,7 +205,7 @@ def _steps(found: Plain) -> str:
         row += [f"{first['height_G0']:g}", f"{first['plateau_G0']:g}"]
         for step in (s["levels"][n] for s in steps):
             contrast = step["contrast"]
-            row.append("" if step["kind"] is None else f"{step['kind']}, {math.floor(100 * contrast)} %")
+            row.append("" if step["kind"] is None else f"{step['kind']}, {tables.percent(contrast)}")
         limit = first["plateau_up_to_K"]
         rows.append([*row, "" if limit is None else f"{_cut(limit)} K"])
     words = "Steps of the ballistic conductance, and the contrast of the flat part after each"
@@ -233,7 +232,7 @@ def _sensitivities(found: Plain) -> list[dict[str, Any]]:
 
 def _moved(folder: Folder, moved: Sequence[Mapping[str, Any]], groups: Sequence[Sequence[Plain]]) -> str:
     heads = ["dimension", *(f"level {g[0]['level']}" for g in groups[:MOST_LEVELS])]
-    rows = [[r["of"], *(_range(low, high) for low, high in r["values"])] for r in moved]
+    rows = [[r["of"], *(tables.motion(low, high) for low, high in r["values"])] for r in moved]
     numbers = table("Motion of each level in meV for each nm of a dimension", heads, rows)
     caption = "How far the first levels, numbered, move for each nanometre of a dimension; a split level is a line."
     drawn = figure("sensitivities", caption)
@@ -241,7 +240,7 @@ def _moved(folder: Folder, moved: Sequence[Mapping[str, Any]], groups: Sequence[
     plate = ""
     if mapped:
         note = "Which part of the outline matters: motion of the first levels as each part moves outwards."
-        plate = f'<figure class="plate">{mapped}<figcaption>{note}</figcaption></figure>'
+        plate = f'<figure class="plate" tabindex="0">{mapped}<figcaption>{note}</figcaption></figure>'
     others = [s for s in folder.found["sensitivities"] if s["unit"] != PER_LENGTH]
     more = [
         [s["of"], s["unit"].replace("_", " "), number(s["values"][0], 3), number(_second(s, groups), 3)] for s in others
@@ -252,11 +251,6 @@ def _moved(folder: Folder, moved: Sequence[Mapping[str, Any]], groups: Sequence[
 
 def _second(one: Plain, groups: Sequence[Sequence[Plain]]) -> float | None:
     return float(one["values"][groups[1][0]["index"] - 1]) if len(groups) > 1 else None
-
-
-def _range(low: float, high: float) -> str:
-    one, other = (f"{v:+.3f}" if abs(v) < 10 else f"{v:+.1f}" for v in (low, high))
-    return one if abs(high - low) <= 0.01 * max(abs(low), abs(high)) else f"{one} to {other}"
 
 
 def _mesh_rows(found: Plain) -> list[tuple[str, str]]:

@@ -53,11 +53,13 @@ def plateaus(found: Plain, problem: Problem) -> list[tuple[str, float]]:
 
 
 def fermi_range(folder: Folder, spectrum: Spectrum) -> tuple[float, float]:
-    """From below the first level to beyond the last listed one, and to the Fermi level of the file."""
+    """From below the first level to beyond the last listed one, and to the Fermi level of the file if it is not far."""
     coldest = folder.found["conductance"][0]["fermi_eV"]
     low, high = float(coldest[0]), float(coldest[-1])
     given = folder.problem.fermi_level_eV
-    return (low, high) if given is None else (min(low, given), max(high, given))
+    if given is None or not 2 * low - high <= given <= 2 * high - low:
+        return low, high
+    return min(low, given), max(high, given)
 
 
 def script_data(
@@ -74,7 +76,7 @@ def script_data(
             {
                 "level": group[0]["level"],
                 "energy_eV": energy,
-                "bar_eV": bar,
+                "bar_eV": 1e-3 * tables.printed_bar(short),
                 "entries": len(group),
                 "group": valleys.index(group[0]["valley"]),
                 "text": words,
@@ -84,7 +86,8 @@ def script_data(
     warm = [{"kelvin": t} for t in problem.carriers.temperature_K if t > 0][:4]
     data: dict[str, Any] = {
         "constants": CONSTANTS,
-        "measured": folder.measured_points(),
+        "measured": [] if spectrum is None else folder.measured_points(*fermi_range(folder, spectrum)),
+        "measuredWords": "" if spectrum is None else folder.measured_words(*fermi_range(folder, spectrum)),
         "energyAxis": "Energy from the Fermi level (meV)" if problem.charged else "Energy (meV)",
         "ladder": {
             "levels": ladder,

@@ -334,7 +334,7 @@ POINT = {
     "more": _by_name("Further numbers, with units as suffixes", {"type": ["number", "null"]}),
     "filled_energy_eV": _numbers("Minima of all states that hold carriers"),
     "filled_axial_mass": _numbers("Their masses along the wire, in m0", _FAILED),
-    "filled_alpha_per_eV": _numbers("Their nonparabolicities", _FAILED),
+    "filled_nonparabolicity_per_eV": _numbers("Their nonparabolicities", _FAILED),
     "filled_degeneracy": _numbers("Their degeneracies"),
 }
 
@@ -363,9 +363,18 @@ def gate_curve() -> Part:
                 "valley": _text("Its valleys"),
                 "opens_at_V": _number("Where it opens", "where the sweep does not reach it"),
                 "error_V": _number("Bar of that", "where the sweep does not reach it"),
-                "height_G0": _number("By how much it lifts the conductance, in 2 e^2/h", "where it is not reached"),
-                "plateau_G0": _number("The conductance above it, in 2 e^2/h", "where it is not reached"),
-                "width_V": _number("Full width at half height of its slope", "where it is not reached"),
+                "height_G0": _number(
+                    "By how much it lifts the conductance, transmission and contacts in it, in 2 e^2/h",
+                    "where it is not reached",
+                ),
+                "plateau_G0": _number(
+                    "The conductance above it, transmission and contacts in it, in 2 e^2/h", "where it is not reached"
+                ),
+                "subbands": _whole("How many listed subbands open in it together"),
+                "width_V": _number(
+                    "Range in which its level passes from 1.76 kT above the Fermi level to as far below",
+                    "where it is not reached",
+                ),
                 "moves_V_per_nm": _number("How far it moves for each nm of the section", "where that is not known"),
             },
         ),

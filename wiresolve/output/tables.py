@@ -241,7 +241,7 @@ def step_table(result: Result) -> list[str]:
         row += [f"{first['height_G0']:g}", f"{first['plateau_G0']:g}"]
         for entry in entries:
             step = entry["levels"][number]
-            row.append(step["kind"] + ("" if step["contrast"] is None else f" {math.floor(100 * step['contrast'])} %"))
+            row.append(step["kind"] + ("" if step["contrast"] is None else f" {percent(step['contrast'])}"))
         rows.append(row)
     lines = aligned(rows, left=range(4, 4 + len(temperatures)))
     more = _left_out([entry["temperature_K"] for entry in result.verdict.steps])
@@ -272,7 +272,7 @@ def sensitivity_table(result: Result) -> list[str]:
     rows = [["meV for each nm of", *(f"level {n + 1}" for n in shown)]]
     for n in kept:
         ends = [1e3 * found[n].values[level == number][[0, -1]] for number in shown]
-        rows.append([_named(found[n].of), *(_range(float(a), float(b)) for a, b in ends)])
+        rows.append([_named(found[n].of), *(motion(float(a), float(b)) for a, b in ends)])
     lines = aligned(rows, left={0})
     hidden = len(found) - len(kept)
     return [*lines, f"and {hidden} more, see result.json"] if hidden else lines
@@ -288,8 +288,18 @@ def _named(of: str) -> str:
     return grown(of) if of.startswith("growth of ") else of.removeprefix("section.")
 
 
-def _range(low: float, high: float) -> str:
-    """One value, or both ends of values that differ in the digits shown."""
+def percent(share: float) -> str:
+    """A tenth of a percent, cut as in the verdict: 94.96 % must not read as 95 %."""
+    return f"{math.floor(1000 * share * (1 + 1e-12)) / 10:.1f} %"
+
+
+def printed_bar(text: str) -> float:
+    """The bar in a text of `with_bar`, which is never narrower than the bar itself; 0 where there is none."""
+    return float(text.partition(" ± ")[2] or 0)
+
+
+def motion(low: float, high: float) -> str:
+    """A motion in meV for each nm: one value, or both ends of values that differ in the digits shown."""
     one, other = (f"{value:+.3f}" if abs(value) < 1 else f"{significant(value, 4):>}" for value in (low, high))
     one, other = (text if text[0] in "+-" else f"+{text}" for text in (one, other))
     return one if abs(high - low) <= 0.01 * max(abs(low), abs(high)) else f"{one} to {other}"
@@ -359,9 +369,12 @@ def summary(result: Result, folder: str | Path | None = None, status: str = DONE
         lines += ["", *paragraphs(f"warning {warning.code}: {warning.text}")]
         lines += paragraphs(warning.remedy, indent="    ")
     if remembered := from_memory(result):
-        lines += ["", *paragraphs(f"Values from memory, not checked against a text: {remembered}.")]
+        lines += [
+            "",
+            *paragraphs(f"Values from memory, not checked against a text, of those that matter here: {remembered}."),
+        ]
     if differing := from_memory(result, "conflict"):
-        lines += ["", *paragraphs(f"Values on which sources differ: {differing}.")]
+        lines += ["", *paragraphs(f"Values on which sources differ, of those that matter here: {differing}.")]
     if result.not_modelled:
         lines += ["", *paragraphs(f"Not modelled: {'; '.join(result.not_modelled)}.")]
     if status != DONE:

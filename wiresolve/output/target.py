@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import errno
 import os
+import re
 import secrets
 import shutil
 from collections.abc import Iterator
@@ -14,20 +15,27 @@ from pathlib import Path
 from wiresolve.describe import input_files
 from wiresolve.errors import InputError
 
-INPUT, FIGURES, INPUTS, MEASURED = "input.toml", "figures", input_files.FOLDER, "measured.csv"
-"""What every kind of result folder holds."""
+INPUT, FIGURES, INPUTS = "input.toml", "figures", input_files.FOLDER
+MEASURED = f"{INPUTS}/measured_points.csv"
+REPORT = "report.html"
+"""What kinds of result folders hold alike."""
 PICTURES = ("png", "svg", "pdf")
 """The kinds of file that each figure is saved as."""
+_FRAME = re.compile(r"[a-z]+_\d+\.vtu")
 
 
 @dataclass(frozen=True)
 class Contents:
-    """What a kind of result folder holds of its own: `marker`, by which it is known, `entries` and figures' names."""
+    """What a kind of result folder holds of its own.
+
+    `marker`, by which it is known, `entries`, the names of figures, and of folders with the frames of a series.
+    """
 
     name: str
     marker: str
     entries: tuple[str, ...]
     drawn: tuple[str, ...]
+    series: tuple[str, ...] = ()
 
 
 @contextmanager
@@ -194,15 +202,20 @@ def _put_in_place(fresh: Path, target: Path, contents: Contents) -> None:
 def _own_entries(folder: Path, fresh: Path, contents: Contents) -> list[Path]:
     """Relative paths of what lies in a result folder and is none of what this program writes there.
 
-    Copies of input files are known by their names only: those that `fresh` does not bring along stay.
+    Copies of input files are known by their names only: those that `fresh` does not bring along stay, but for measured
+    points, which would be laid over a curve that they do not belong to.
     """
     own = [Path(p.name) for p in folder.iterdir() if p.name not in contents.entries]
     copies = folder / INPUTS
     if copies.is_dir() and not copies.is_symlink():
-        own += [Path(INPUTS, p.name) for p in copies.iterdir() if not (fresh / INPUTS / p.name).exists()]
+        brought = {Path(MEASURED).name, *(p.name for p in (fresh / INPUTS).glob("*"))}
+        own += [Path(INPUTS, p.name) for p in copies.iterdir() if p.name not in brought]
     drawn, pictures = {f"{name}.{kind}" for name in contents.drawn for kind in PICTURES}, folder / FIGURES
     if pictures.is_dir() and not pictures.is_symlink():
         own += [Path(FIGURES, p.name) for p in pictures.iterdir() if p.name not in drawn]
+    for name in contents.series:
+        if (folder / name).is_dir() and not (folder / name).is_symlink():
+            own += [Path(name, p.name) for p in (folder / name).iterdir() if not _FRAME.fullmatch(p.name)]
     return own
 
 

@@ -16,7 +16,7 @@ from wiresolve.result import Result
 if TYPE_CHECKING:
     from wiresolve.output.measured import Measured
 
-_OF_RESULTS = ("extrude_nm", "axial_frames", "points", "matrix_elements")
+_OF_RESULTS = ("extrude_nm", "axial_frames", "quadrature", "matrix_elements")
 
 
 def write(
@@ -29,7 +29,7 @@ def write(
     vtk: str = "curved",
     extrude_nm: float | None = None,
     axial_frames: int = 0,
-    points: bool = False,
+    quadrature: bool = False,
     matrix_elements: bool = False,
     measured: Measured | None = None,
     status: str = DONE,
@@ -47,7 +47,7 @@ def write(
     vtk : "curved" cells of fourth order in files for ParaView, or "linear" ones for programs that know no others.
     extrude_nm : a length in nm for `volume.vtu`, the wire with its modes as waves along it; of a result only.
     axial_frames : so many wave numbers along the wire for `along_axis.pvd`, 0 for none; of a result only.
-    points : whether to write `modes.npz`, the modes at quadrature points with weights; of a result only.
+    quadrature : whether to write `modes.npz`, the modes at quadrature points with weights; of a result only.
     matrix_elements : whether to write `matrix_elements.csv`; of a result only.
     measured : a measured conductance (`wiresolve.output.measured.read`) to lay over the staircase.
     status : a mark ("done" where nothing is held against it), kept in the files.
@@ -63,7 +63,7 @@ def write(
         The target exists (and is not to be or cannot be replaced), cannot be written, or the disk is full; an option
         is none, or is not for a gate curve.
     """
-    extras = Extras(figures, report, vtk, extrude_nm, axial_frames, points, matrix_elements, measured)
+    extras = Extras(figures, report, vtk, extrude_nm, axial_frames, quadrature, matrix_elements, measured)
     if isinstance(found, GateCurve):
         for name in _OF_RESULTS:
             if getattr(extras, name):

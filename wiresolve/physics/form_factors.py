@@ -57,9 +57,8 @@ class Pairs:
             one, two = np.triu_indices(size)
             number = np.empty((size, size), dtype=np.int64)
             number[one, two] = number[two, one] = np.arange(len(one))
-        space, norm = modes.space, modes.norm
+        space = modes.space
         own = replace(modes, states=modes.states[:, picked], energy_eV=modes.energy_eV[picked])
-        own.__dict__["norm"] = norm[picked]
         load = np.zeros((len(space.nodes), len(one)), dtype=modes.states.dtype)
         values = space.tabulated[1][2]
         for cells in own.chunks():

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import log, sqrt
+from math import acosh, hypot, log, pi, sqrt
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -16,7 +16,14 @@ Array = NDArray[np.float64]
 
 THERMAL_WIDTH_KT = 4 * log(1 + sqrt(2))
 """Full width at half maximum of -df/dE in kT: 3.53."""
+_SADDLE_WIDTH = 2 * acosh(sqrt(2)) / pi
+"""Full width at half maximum of dT/dE of a saddle in hbar omega: 0.561."""
 _HALVINGS = 60
+
+
+def step_width_eV(temperature_K: float, saddle_curvature_eV: float | None = None) -> float:
+    """Full width at half height of one step's dG/dE: 3.53 kT, and 0.561 hbar omega of a saddle, their squares added."""
+    return hypot(THERMAL_WIDTH_KT * KB * temperature_K, _SADDLE_WIDTH * (saddle_curvature_eV or 0.0))
 
 
 @dataclass(frozen=True, eq=False)

@@ -54,7 +54,8 @@ def cost_text(wire: Wire) -> str:
     alpha, label = max((growth_per_eV(wire, group), group.label) for group in wire.groups)
     return (
         f"masses grow with energy (by {alpha:.3g}/eV in {label}) and many states hold carriers: each of the"
-        f' {len(voltages.points)} points takes several times longer than with model = "parabolic" under [carriers],'
+        f" {len(voltages.points)} points takes ten times as long, or more, as with"
+        ' model = "parabolic" under [carriers],'
         f" which raises a level at E above the band edge by about {alpha:.3g}/eV x E^2"
         f" ({1e3 * alpha * SAMPLE_eV**2:.2g} meV at {1e3 * SAMPLE_eV:g} meV)"
     )

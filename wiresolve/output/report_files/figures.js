@@ -55,13 +55,15 @@ function withCursor(svg, at, says, holds = () => true) {
   return { svg, says, move, holds };
 }
 const LEFT = 60,
-  RIGHT = 66;
+  RIGHT = 52,
+  BOTTOM = 46;
 const plot = (width, options) =>
   Plot.plot({
     width,
     marginLeft: LEFT,
-    marginBottom: 40,
+    marginBottom: BOTTOM,
     ...options,
+    x: { labelOffset: BOTTOM - 6, ...options.x }, // letters reach below their line
     style: { background: "none", color: "currentColor", fontFamily: "inherit", fontSize: "12px" },
   });
 const frame = { stroke: "var(--rule)" };
@@ -95,11 +97,11 @@ function drawLadder(width) {
   const room = 0.06 * (high - low || Math.max(1, ...rulers.map((r) => r.size)));
   const end = Math.max(high, shown.length < 2 ? low + Math.max(0, ...rulers.map((r) => r.size)) : high) + room;
   const y = d3.scaleLinear([low - room, end], [bottom, top]);
-  const left = narrow ? 50 : LEFT,
+  const left = narrow ? 56 : LEFT,
     pitch = narrow ? 22 : 30,
     from = left + 14 + pitch * rulers.length,
     longest = d3.max(shown, (l) => (narrow ? l.short : l.text).length);
-  const to = Math.max(from + 40, Math.min(from + 0.32 * width, width - 24 - 6.9 * longest));
+  const to = Math.max(from + 40, Math.min(from + 0.32 * width, width - 26 - 7.7 * longest));
   const svg = d3.create("svg").attr("viewBox", `0 0 ${width} ${height}`).attr("width", width).attr("height", height);
   const text = (x, at, words, anchor = "start") =>
     svg.append("text").attr("x", x).attr("y", at).attr("dy", "0.32em").attr("text-anchor", anchor).text(words);
@@ -115,7 +117,7 @@ function drawLadder(width) {
   }
   svg
     .append("text")
-    .attr("transform", `translate(13,${(top + bottom) / 2}) rotate(-90)`)
+    .attr("transform", `translate(11,${(top + bottom) / 2}) rotate(-90)`)
     .attr("text-anchor", "middle")
     .text(data.energyAxis);
   rulers.forEach((ruler, n) => {
@@ -208,7 +210,7 @@ function drawAgainstThermal(width) {
   const near = (a, b) => Math.abs(Math.log(a / b) / Math.log(domain[1] / domain[0])) * width < 60;
   const row = rulers.map((r, n) => d3.sum(rulers.slice(0, n), (o) => near(o.value, r.value)) % 3);
   const above = 8 + 15 * (1 + Math.max(0, ...row)),
-    height = Math.max(120, 16 * shown.length) + above + 40;
+    height = Math.max(120, 16 * shown.length) + above + BOTTOM;
   const decade = (x) => Math.abs(Math.log10(x) - Math.round(Math.log10(x))) < 1e-9;
   const svg = plot(width, {
     height,
@@ -270,7 +272,7 @@ function drawDispersion(width) {
     [low, high] = d3.extent(values);
   const room = 0.03 * (high - low),
     domain = [low - room, high + room];
-  const y = d3.scaleLinear(domain, [height - 40, 20]);
+  const y = d3.scaleLinear(domain, [height - BOTTOM, 20]);
   const ends = d3
     .rollups(
       lines,
@@ -282,7 +284,7 @@ function drawDispersion(width) {
     ends.map((e) => y(e.at[1])),
     13,
     20,
-    height - 40,
+    height - BOTTOM,
   );
   const svg = plot(width, {
     height,
@@ -374,11 +376,10 @@ function conductanceAxes(top) {
       d3.ticks(0, top * unit, 6).map((g) => g / unit),
       {
         anchor: "right",
-        label: "µS",
-        labelArrow: "none",
-        labelAnchor: "center",
+        label: null,
         tickFormat: (g) => String(+(g * unit).toPrecision(4)),
       },
     ),
+    Plot.text(["µS"], { frameAnchor: "top-right", textAnchor: "start", lineAnchor: "bottom", dx: 9, dy: -7 }),
   ];
 }

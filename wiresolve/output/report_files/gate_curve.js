@@ -19,18 +19,26 @@ const failedMarks = () =>
   });
 
 function drawGateLevels(width) {
-  const { rows, voltages, kelvin } = data.sweep,
+  const { lines, at, voltages, kelvin } = data.sweep,
     thermal = meV(kB * kelvin),
     height = Math.min(440, Math.max(300, 0.5 * width));
-  const fine = d3.range(241).map((n) => voltages[0] + ((voltages[voltages.length - 1] - voltages[0]) * n) / 240);
-  now.fineStates ??= fine.map((v) => model.at(v));
-  const shown = rows.map((r, n) => n).filter((n) => rows[n].listed);
-  const values = shown.flatMap((n) => rows[n].energy.map(meV)),
-    [low, high] = d3.extent([...values, -thermal, thermal]);
+  const [low, high] = d3.extent([...lines.flatMap((l) => l.meV), -thermal, thermal]);
   const room = 0.04 * (high - low),
-    y = d3.scaleLinear([low - room, high + room], [height - 40, 20]);
-  const ends = shown.map((n) => meV(rows[n].energy.at(-1))),
-    places = apart(ends.map(y), 13, 20, height - 40);
+    y = d3.scaleLinear([low - room, high + room], [height - BOTTOM, 20]);
+  // One number for a level, however many subbands it has.
+  const ends = d3
+    .rollups(
+      lines.filter((l) => l.meV.at(-1) !== null),
+      (own) => d3.mean(own, (l) => l.meV.at(-1)),
+      (l) => l.level,
+    )
+    .map(([level, end]) => ({ level, end }));
+  const places = apart(
+    ends.map((e) => y(e.end)),
+    13,
+    20,
+    height - BOTTOM,
+  );
   const svg = plot(width, {
     height,
     marginRight: 34,
@@ -52,37 +60,34 @@ function drawGateLevels(width) {
         fillOpacity: 0.18,
       }),
       Plot.ruleY([0], { stroke: "currentColor", strokeDasharray: "5 3" }),
-      ...shown.map((n) =>
+      ...lines.map((l) =>
         Plot.line(
-          fine.map((v, i) => [v, meV(now.fineStates[i][n].lowest)]),
-          {
-            stroke: colour(rows[n].level - 1),
-            strokeDasharray: dashes[rows[n].group % dashes.length],
-            strokeWidth: 1.6,
-          },
+          at.map((v, i) => [v, l.meV[i]]),
+          { stroke: colour(l.level - 1), strokeDasharray: dashes[l.group % dashes.length], strokeWidth: 1.6 },
         ),
       ),
       Plot.text(
-        shown.map((n, i) => [voltages[voltages.length - 1], y.invert(places[i]), rows[n].level]),
+        ends.map((e, i) => [voltages[voltages.length - 1], y.invert(places[i]), e.level]),
         { x: "0", y: "1", text: (p) => String(p[2]), dx: 6, textAnchor: "start" },
       ),
       failedMarks(),
     ],
   });
-  const says = `Energies of ${shown.length} subbands against gate voltage; those below zero, the Fermi level, conduct.`;
+  const says = `Energies of ${lines.length} subbands against gate voltage; those below zero, the Fermi level, conduct.`;
   return withCursor(svg, atVoltage, says);
 }
 
 function drawGateStaircase(width) {
   const { points, steps } = data.curve,
-    { voltages } = data.sweep,
+    { voltages, at, conductance } = data.sweep,
+    [first, last] = d3.extent(data.curve.voltages),
     top =
       1.08 *
       Math.max(
         1,
         d3.max(points, (p) => p.conductance_G0),
-        d3.max(now.between, (p) => p[1]),
-        measuredTop(voltages[0], voltages[voltages.length - 1]),
+        d3.max(conductance),
+        measuredTop(first, last),
       );
   const svg = plot(width, {
     height: 320,
@@ -95,8 +100,8 @@ function drawGateStaircase(width) {
         steps.filter((s) => s !== null && s >= voltages[0] && s <= voltages[voltages.length - 1]),
         { x: Plot.identity, frameAnchor: "top", symbol: "triangle2", fill: "currentColor", r: 3.5, dy: -6 },
       ),
-      Plot.line(now.between, { stroke: "var(--accent)", strokeWidth: 2 }),
-      measuredMarks(voltages[0], voltages[voltages.length - 1]),
+      Plot.line(d3.zip(at, conductance), { stroke: "var(--accent)", strokeWidth: 2 }),
+      measuredMarks(first, last),
       Plot.dot(points, { x: "gate_voltage_V", y: "conductance_G0", r: 3, fill: "var(--accent)" }),
       failedMarks(),
       Plot.ruleY([0], frame),
@@ -104,19 +109,14 @@ function drawGateStaircase(width) {
   });
   const says = () =>
     `Conductance against gate voltage; ${digits(now.G)} G0 at ${digits(now.voltage)} V.` +
-    " Dots are solved points, the line goes between them.";
+    ` Dots are solved points, the line goes between them.${measuredSays()}`;
   return withCursor(svg, () => [now.voltage, now.G], says);
 }
 
 function settleGate() {
   const { voltage } = now,
-    { voltages, rows } = data.sweep,
+    { rows } = data.sweep,
     { edges } = data.sweep.bins;
-  const [first, last] = [voltages[0], voltages[voltages.length - 1]];
-  now.between ??= d3
-    .range(401)
-    .map((n) => first + ((last - first) * n) / 400)
-    .map((v) => [v, model.conductance(v)]);
   now.G = model.conductance(voltage);
   now.densities = model.bySubband(voltage);
   now.density = d3.sum(now.densities);
@@ -126,7 +126,7 @@ function settleGate() {
     now.densities,
     rows.map((r) => r.level),
     now.density,
-  ).sort((a, b) => a.level - b.level);
+  );
   const open = d3.sum(model.at(voltage), (s) => s.lowest < 0);
   say("says-conductance", `${digits(now.G)} G0`, siemens(now.G));
   say("says-density", `${digits(now.density)} per nm`, `${digits(1e7 * now.density, 3)} per cm`);
@@ -164,7 +164,7 @@ function drawColumns(width, columns, y, height = 280) {
             })),
           y.type === "log",
           y.domain,
-          height - 40,
+          height - BOTTOM,
         ),
         { x: "x", y: "at", text: "name", dx: 6, textAnchor: "start" },
       ),
@@ -259,9 +259,9 @@ function drawCurrents(width, across) {
           })),
           gate,
           domain,
-          260,
+          300 - BOTTOM,
         ),
-        { x: "x", y: "at", text: (s) => `${digits(s.value, 2)} V`, dx: 5, textAnchor: "start" },
+        { x: "x", y: "at", text: (s) => minus(`${+s.value.toPrecision(4)} V`), dx: 5, textAnchor: "start" },
       ),
     ],
   });

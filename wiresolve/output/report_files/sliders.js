@@ -47,7 +47,7 @@ function drawOccupation(width, rows) {
       d3.max(shown, (r) => r.density),
     );
   const svg = plot(width, {
-    height: 62 + 21 * shown.length,
+    height: 68 + 21 * shown.length,
     marginRight: 150,
     x: {
       domain: [0, most > 1e-12 ? most : 1],
@@ -65,7 +65,7 @@ function drawOccupation(width, rows) {
         text: (r) =>
           r.share < 5e-7 || r.density < 1e-15
             ? "none"
-            : `${digits(r.density, 3)}, ${r.share < 5e-4 ? "below 0.1" : fixed(100 * r.share, 1)} %`,
+            : `${digits(r.density, 3)}, ${r.share < 1e-3 ? "below 0.1" : percent(r.share)} %`,
         dx: 5,
         textAnchor: "start",
       }),
@@ -75,19 +75,23 @@ function drawOccupation(width, rows) {
   return {
     svg,
     says: shown
-      .map((r) => `level ${r.level}: ${digits(r.density, 3)} per nm, ${fixed(100 * r.share, 1)} percent`)
+      .map((r) => `level ${r.level}: ${digits(r.density, 3)} per nm, ${percent(r.share)} percent`)
       .join("; "),
   };
 }
 
+/* Listed levels only, in order; a row without one (`null`) is beyond them. */
 const byLevel = (densities, levels, total) =>
   d3
     .rollups(
-      d3.range(levels.length),
+      d3.range(levels.length).filter((n) => levels[n] !== null),
       (own) => d3.sum(own, (n) => densities[n]),
       (n) => levels[n],
     )
-    .map(([level, density]) => ({ level, density, share: total > 0 ? density / total : 0 }));
+    .map(([level, density]) => ({ level, density, share: total > 0 ? density / total : 0 }))
+    .sort((a, b) => a.level - b.level);
+/* A tenth of a percent, cut as in the verdict: 94.96 % must not read as 95 %. */
+const percent = (share, digits = 1) => fixed(Math.floor(share * 10 ** (2 + digits) * (1 + 1e-12)) / 10 ** digits, digits);
 
 /* The table of the figure, for readers who want numbers. */
 function fillOccupation(rows) {
@@ -99,7 +103,7 @@ function fillOccupation(rows) {
       head.scope = "row";
       head.textContent = row.level;
       line.append(head);
-      for (const text of [digits(row.density), fixed(100 * row.share, 2)]) line.insertCell().textContent = text;
+      for (const text of [digits(row.density), percent(row.share, 2)]) line.insertCell().textContent = text;
       return line;
     }),
   );
@@ -137,7 +141,7 @@ function settle() {
   say("says-density", `${digits(now.density)} per nm`, `${digits(1e7 * now.density, 3)} per cm`);
   say(
     "says-first",
-    `${fixed(Math.floor(1000 * first + 1e-9) / 10, 1)} %`,
+    `${percent(first)} %`,
     first >= 0.95 ? "single-subband (95 % or more)" : "several levels carry",
   );
   say(
@@ -145,7 +149,7 @@ function settle() {
     `${digits(meV(kB * kelvin), 3)} meV`,
     `width of the step 3.53 kT = ${digits(3.5255 * meV(kB * kelvin), 3)} meV`,
   );
-  const words = `At ${kelvin} K and a Fermi level of ${+meV(fermi_eV).toPrecision(5)} meV: conductance ${digits(now.G)} G0, ${digits(now.density)} carriers per nm, ${fixed(100 * first, 1)} % in the first level.`;
+  const words = `At ${kelvin} K and a Fermi level of ${+meV(fermi_eV).toPrecision(5)} meV: conductance ${digits(now.G)} G0, ${digits(now.density)} carriers per nm, ${percent(first)} % in the first level.`;
   announce(words);
   const beyond = $("says-beyond");
   if (beyond) beyond.hidden = kelvin <= wire.hottest_K;
@@ -154,6 +158,7 @@ function settle() {
 /* Measured points between two ends of an axis whose unit is `unit` of the points'. */
 const measuredWithin = (low, high, unit) =>
   data.measured.map(([x, G]) => [unit * x, G]).filter(([x]) => x >= low && x <= high);
+const measuredSays = () => (data.measuredWords ? ` ${data.measuredWords}` : "");
 const measuredTop = (low, high, unit = 1) => d3.max(measuredWithin(low, high, unit), (p) => p[1]) ?? 0;
 const measuredMarks = (low, high, unit = 1) =>
   Plot.dot(measuredWithin(low, high, unit), {
@@ -197,7 +202,7 @@ function drawStaircase(width) {
   });
   const says = () =>
     `Conductance against the Fermi level at ${kelvin} K; ${digits(now.G)} G0 at ${digits(meV(now.fermi_eV), 5)} meV.` +
-    " A thin line shows T = 0.";
+    ` A thin line shows T = 0.${measuredSays()}`;
   return withCursor(
     svg,
     () => [meV(now.fermi_eV), now.G],
