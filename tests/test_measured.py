@@ -63,7 +63,7 @@ def test_columns_and_units(
         ("gate_voltage_V,conductance_G0\n1,2\n1\n", "line 3 is no row"),
         ("gate_voltage_V,conductance_G0\n# x\n1,two\n", "line 3 is no row"),
         ("gate_voltage_V,conductance_G0\n1,nan\n", "line 2 is no row"),
-        ("gate_voltage_V,conductance_G0\n1,inf\n", "must be finite"),
+        ("gate_voltage_V,conductance_G0\n1,inf\n", "line 2 holds a number that is not finite"),
         ("gate_voltage_V,resistance_ohm\n1,5\n2,0\n", "line 3 holds a resistance that is not positive"),
     ],
 )
@@ -187,3 +187,10 @@ def test_of_very_many_points_some_are_drawn_and_it_is_said() -> None:
     assert axes.get_legend().get_texts()[-1].get_text() == f"long: {10 * MOST_SHOWN:,} in view, 1 of 10 drawn"
     far = figures.conductance(result, Measured("fermi_level_eV", [5.0], [1.0], "far")).axes[0]
     assert far.get_legend().get_texts()[-1].get_text() == "far: none of 1 in view"
+
+
+@pytest.mark.parametrize("row", ["inf,1", "1,inf", "1e400,2"])
+def test_numbers_without_end_are_told_by_their_line(tmp_path: Path, row: str) -> None:
+    (tmp_path / "points.csv").write_text(f"fermi_level_meV,conductance_G0\n10,0.5\n{row}\n", encoding="utf-8")
+    with pytest.raises(InputError, match="line 3 holds a number that is not finite"):
+        measured.read(tmp_path / "points.csv")

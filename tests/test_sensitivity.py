@@ -371,3 +371,12 @@ def test_outline_of_a_tube_knows_rim_and_hole() -> None:
     np.testing.assert_allclose(radius[~edges.rim], 4.0, rtol=1e-4)
     outward = np.einsum("enx,enx->en", edges.normals, mesh.points[edges.nodes]) / radius
     np.testing.assert_allclose(outward, np.where(edges.rim, 1.0, -1.0)[:, None] * np.ones(5), atol=1e-3)
+
+
+def test_a_growth_that_tears_a_corner_is_not_told() -> None:
+    """A core of which a patch takes the right half: its outline ends at walls, which stay while it grows."""
+    half = Patch(shape=Rectangle(5.0, 6.0), material="barrier", center_nm=(2.5, 0.0))
+    _, torn = solved(Section(Rectangle(10.0, 6.0), "well", patches=(half,)), 1, 1e-3)
+    _, whole = solved(Section(Rectangle(10.0, 6.0), "well", layers=(Layer(2.0, "barrier"),)), 1, 1e-3)
+    assert "growth of rim" in torn and "growth of core" not in torn
+    assert {"growth of rim", "growth of core"} <= set(whole)

@@ -26,6 +26,8 @@ from wiresolve.result import Result
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
+MOST_VALUES = 50_000_000
+"""Form factors that one call gives: with their bars they take 0.8 GB."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -249,7 +251,7 @@ def form_factors(result: Result, q_per_nm: ArrayLike, indices: Sequence[int] | N
     Raises
     ------
     InputError
-        A q is 0 or not finite, or there is no such mode.
+        A q is 0 or not finite, there is no such mode, or more than `MOST_VALUES` numbers are asked for.
     """
     q = np.atleast_1d(np.abs(np.asarray(q_per_nm, dtype=float)))
     if q.ndim != 1 or not (np.isfinite(q).all() and (q > 0).all()):
@@ -257,6 +259,9 @@ def form_factors(result: Result, q_per_nm: ArrayLike, indices: Sequence[int] | N
     picked = _picked(result, indices)
     level = _level(result)[picked]
     size = len(picked)
+    if len(q) * size**4 > MOST_VALUES:
+        rule = f"{size} modes and {len(q)} wave numbers are {len(q) * size**4:,} numbers, more than {MOST_VALUES:,}"
+        raise InputError("indices", rule, remedy="name fewer modes, e.g. indices=[0, 1, 2]")
     values: Any = np.full((len(q), *(size,) * 4), np.nan)
     errors = np.full(values.shape, np.nan)
     groups = [(g, np.flatnonzero(np.isin(g.rows, picked))) for g in mode_groups(result)]

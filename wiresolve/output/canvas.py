@@ -187,17 +187,16 @@ def mark_fermi(axes: Axes, result: Result, along: str) -> None:
     low, high = axes.get_xlim() if along == "x" else axes.get_ylim()
     part = (level - low) / (high - low)
     style: dict[str, Any] = {"textcoords": "offset points", "xycoords": "axes fraction", "fontsize": 6}
+    style["bbox"] = {"fc": "white", "ec": "none", "alpha": 0.85, "pad": 0.6}
     if not 0 <= part <= 1:
-        # Curves are drawn over it, since it says nothing about them.
         arrow, right = {"x": "←→", "y": "↓↑"}[along][int(part > 1)], along == "x" and part > 1
         at = (1.0 if right else 0.0, 1.0 if along == "y" and part > 1 else 0.0)
         shift, sides = (
             (-2 if right else 2, -2 if at[1] else 2),
             ("right" if right else "left", "top" if at[1] else "bottom"),
         )
-        axes.annotate(f"Fermi level {level:.4g} meV {arrow}", at, shift, ha=sides[0], va=sides[1], zorder=1.5, **style)
+        axes.annotate(f"Fermi level {level:.4g} meV {arrow}", at, shift, ha=sides[0], va=sides[1], zorder=4, **style)
         return
-    style["bbox"] = {"fc": "white", "ec": "none", "alpha": 0.85, "pad": 0.6}
     line: dict[str, Any] = {"color": INK, "lw": 0.6, "ls": (0, (4, 2)), "zorder": 1.5}
     if along == "x":
         axes.axvline(level, **line)

@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from math import floor, log10
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from matplotlib.colors import LinearSegmentedColormap, Normalize
 from matplotlib.figure import Figure
-from matplotlib.ticker import MaxNLocator
+from matplotlib.ticker import MaxNLocator, ScalarFormatter
 
 from wiresolve.output.canvas import ENDS, INK, PAGE_MM, canvas, extent_of, goes_on, trace
 from wiresolve.output.raster import Raster, edges, near, outlines, raster
@@ -20,6 +21,8 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
 _PIXELS = 260
+_FLAT_meV = 0.1
+_RAISED = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 _TO_1e18_PER_CM3 = 1e3
 """From 1/nm^3."""
 _DEEP, _DENSE = (*ENDS[:2], "#f3e9d2"), ("#ffffff", ENDS[1], ENDS[0])
@@ -64,10 +67,13 @@ def charge(result: Result) -> Figure:
     edge = pixels.by_cell(result.cell_fields["band_edge_of_first_valleys_eV"])
     energy = 1e3 * (edge + pixels.image(given.given_eV - given.potential_V))
     density = np.where(np.isfinite(edge), _TO_1e18_PER_CM3 * pixels.image(given.density_per_nm3), np.nan)
+    power = _power(float(np.nanmax(density)))
+    density /= 10.0 ** (power - 18)
     valleys = result.subbands[0].valley
+    unit = f"10{str(power).translate(_RAISED)} cm⁻³"
     shown = (
-        _Panel("Potential energy of electrons", "meV from the Fermi level", energy, *_ends(energy), _DEEP),
-        _Panel("Density of carriers", "10¹⁸ cm⁻³", density, 0.0, _ends(density)[1], _DENSE),
+        _Panel("Potential energy of electrons", "meV from the Fermi level", energy, *_ends(energy, _FLAT_meV), _DEEP),
+        _Panel("Density of carriers", unit, density, 0.0, _ends(density)[1], _DENSE),
     )
     named = f" of the {short_valleys(valleys)} valleys" if len(members(valleys)[1]) else ""
     notes = [f"Potential energy is the band edge{named} less the potential"]
@@ -91,9 +97,18 @@ def charge(result: Result) -> Figure:
     return figure
 
 
-def _ends(image: Any) -> tuple[float, float]:
-    """Where the colours begin and end."""
+def _power(most_1e18: float) -> int:
+    """The power of ten that densities are shown in: 18, or where that is far from them the largest one's."""
+    if not most_1e18 > 0 or 0.01 <= most_1e18 <= 1000:
+        return 18
+    return 18 + floor(log10(most_1e18))
+
+
+def _ends(image: Any, least: float = 0.0) -> tuple[float, float]:
+    """Where the colours begin and end, at least so far apart: what is flat is drawn in one colour."""
     low, high = float(np.nanmin(image)), float(np.nanmax(image))
+    if high - low < least:
+        low, high = (low + high - least) / 2, (low + high + least) / 2
     return (low, high) if high > low else (low, low + 1.0)
 
 
@@ -140,5 +155,6 @@ def _bar(figure: Figure, axes: Axes, panel: _Panel) -> None:
     )
     bar.outline.set_linewidth(0.5)
     bar.locator = MaxNLocator(5)
+    bar.formatter = ScalarFormatter(useOffset=False)
     bar.update_ticks()
     bar.set_label(panel.label, fontsize=7)

@@ -12,6 +12,7 @@ if TYPE_CHECKING:
 
 CELLS = ("curved", "linear")
 """Kinds of cells in files for ParaView."""
+MOST_FRAMES = 1000
 
 
 @dataclass(frozen=True)
@@ -32,7 +33,7 @@ class Extras:
     Raises
     ------
     InputError
-        A kind of cells that there is not, a length that is not positive, a single frame.
+        A kind of cells that there is not, a length that is not positive, a single frame or too many.
     """
 
     figures: bool = True
@@ -49,8 +50,9 @@ class Extras:
             raise InputError("vtk", f"must be one of {', '.join(CELLS)}", self.vtk)
         if self.extrude_nm is not None and not 0 < self.extrude_nm < float("inf"):
             raise InputError("extrude", "must be a positive length", self.extrude_nm, 'give one like "30 nm"')
-        if self.axial_frames < 0 or self.axial_frames == 1:
-            raise InputError("axial_frames", "must be 2 or more", self.axial_frames, "give 11, or 0 for none")
+        if self.axial_frames != 0 and not 2 <= self.axial_frames <= MOST_FRAMES:
+            rule = f"must lie between 2 and {MOST_FRAMES}"
+            raise InputError("axial_frames", rule, self.axial_frames, "give 11, or 0 for none")
 
     @property
     def linear(self) -> bool:

@@ -8,7 +8,7 @@ from wiresolve.describe import wirefile
 from wiresolve.describe.problem import Problem
 from wiresolve.output import tables, vtk
 from wiresolve.output.extras import Extras
-from wiresolve.output.target import FIGURES, INPUT, INPUTS, MEASURED, REPORT, Contents, check_target, filling
+from wiresolve.output.target import FIGURES, INPUT, INPUTS, MEASURED, REPORT, Contents, check_target, filling, writing
 from wiresolve.result import Result
 
 RESULT, SUBBANDS, MODES = "result.json", "subbands.csv", "modes.vtu"
@@ -59,11 +59,17 @@ def write(
 
             (fresh / FIGURES).mkdir()
             save_all(result, fresh / FIGURES, measured=extras.measured)
-        if extras.report:
-            from wiresolve.output.report import write_report
-
-            write_report(fresh, fresh / REPORT)
+    if extras.report:
+        add_report(target, field)
     return target
+
+
+def add_report(target: Path, field: str) -> None:
+    """Write the page of a folder that is in its place: should it fail, the result is there."""
+    from wiresolve.output.report import write_report
+
+    with writing(target / REPORT, field) as fresh:
+        write_report(target, fresh)
 
 
 def write_input(problem: Problem, fresh: Path) -> None:

@@ -7,7 +7,7 @@ from pathlib import Path
 from wiresolve.gate_result import GateCurve
 from wiresolve.output import gate_curve_tables, series, tables, vtk
 from wiresolve.output.extras import Extras
-from wiresolve.output.folder import write_input, write_measured
+from wiresolve.output.folder import add_report, write_input, write_measured
 from wiresolve.output.point_fields import PointFields
 from wiresolve.output.target import FIGURES, INPUT, INPUTS, REPORT, Contents, check_target, filling
 
@@ -49,10 +49,8 @@ def write(
 
             (fresh / FIGURES).mkdir()
             save_all(curve, fresh / FIGURES, measured=extras.measured)
-        if extras.report:
-            from wiresolve.output.report import write_report
-
-            write_report(fresh, fresh / REPORT)
+    if extras.report:
+        add_report(target, field)
     return target
 
 

@@ -140,6 +140,13 @@ def read(path: str | Path) -> Measured:
         raise InputError("measured", f"has more than {MOST_POINTS:,} points", remedy="export fewer points")
     x, values = np.array(rows, dtype=float).T
     quantity, unit = _AXES[head[across]]
+    # A wire that is pinched off has a resistance without end; nothing else may.
+    endless = ~np.isfinite(x) | ((head[along] in _CONDUCTANCES) & ~np.isfinite(values))
+    if endless.any():
+        place, text = lines[1 + int(np.argmax(endless))]
+        raise InputError(
+            "measured", f"line {place} holds a number that is not finite", text.strip()[:40], "leave it out"
+        )
     if head[along] in _CONDUCTANCES:
         conductance = values * _CONDUCTANCES[head[along]]
     else:

@@ -59,7 +59,8 @@ def page(folder: Folder) -> Page:
     parts += blocks.closing(folder, blocks.accuracy(folder, largest, _mesh_rows(found)), command)
     kelvins = ", ".join(f"{t:g} K" for t in problem.carriers.temperature_K)
     gates = (f"gate {gate['name']} at {gate['voltage_V']:g} V" for gate in found["gates"])
-    facts = blocks.facts(folder, (f"{len(found['subbands'])} subbands", kelvins, *gates))
+    count = len(found["subbands"])
+    facts = blocks.facts(folder, (f"{count} subband{'' if count == 1 else 's'}", kelvins, *gates))
     return Page(str(found["title"]), "Wire report", facts, tuple(parts), script_data(folder, spectrum, groups, moved))
 
 

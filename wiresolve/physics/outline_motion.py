@@ -19,6 +19,7 @@ from wiresolve.describe.dimensions import Dimension, dimensions
 from wiresolve.describe.section import Piece, Section
 from wiresolve.errors import InputError
 from wiresolve.fem.outline import OutlineEdges
+from wiresolve.physics.corner_motion import corner_velocities
 
 Array = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -66,7 +67,10 @@ class OutlineMotion:
 
 
 def outline_motion(section: Section, edges: OutlineEdges) -> OutlineMotion:
-    """How the outlines of a section's mesh move with each of its dimensions."""
+    """How the outlines of a section's mesh move with each of its dimensions, and as pieces grow.
+
+    Growths that would tear a corner are left out: `matrix_elements` has them, with wider bars.
+    """
     pieces = section.pieces()
     places = _places(pieces, edges)
     fields, unmoved = {}, []
@@ -76,8 +80,11 @@ def outline_motion(section: Section, edges: OutlineEdges) -> OutlineMotion:
             unmoved.append(dimension.path)
         else:
             fields[dimension.path] = moved
-    for name, moving in _growths(pieces, places, edges):
-        fields[name] = moving[:, None, None] * edges.normals
+    grown = dict(_growths(pieces, places, edges))
+    for (name, moving), torn in zip(grown.items(), corner_velocities(edges, grown)[1], strict=True):
+        # Where an outline ends at another one that stays, no smooth motion is its growth.
+        if not torn:
+            fields[name] = moving[:, None, None] * edges.normals
     velocity = _joined(edges, np.array(list(fields.values())).reshape(len(fields), *edges.nodes.shape, 2))
     outward = np.where(places.piece < 0, 0.0, places.ahead)
     return OutlineMotion(edges, tuple(fields), velocity, outward, tuple(unmoved))

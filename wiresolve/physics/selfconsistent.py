@@ -177,9 +177,14 @@ def balance(
     if before is not None or guess is not None:
         try:
             return _balanced(stage, held_V, before, guess, on_pass)
-        except ConvergenceError as fault:
+        except (ConvergenceError, np.linalg.LinAlgError) as fault:
             _log.debug("from the start given: %s; trying another one", fault)
-    return _balanced(stage, held_V, None, None, on_pass)
+    try:
+        return _balanced(stage, held_V, None, None, on_pass)
+    except np.linalg.LinAlgError as fault:
+        raise ConvergenceError(
+            f"the states in this potential could not be found ({fault}); a lower voltage can"
+        ) from fault
 
 
 def _balanced(
