@@ -44,7 +44,8 @@ def value_table(values: Sequence[MaterialValue]) -> list[str]:
         rows.append([v.quantity, f"{v.value:.6g}", v.unit, spread, at, v.standing, number])
     lines = [*aligned(rows, left={0, 2, 3, 5}), ""]
     for valid in dict.fromkeys(v.valid for v in values if v.valid):
-        lines += paragraphs(f"For {valid}: {', '.join(v.quantity for v in values if v.valid == valid)}.")
+        head = f"{valid[:1].upper()}{valid[1:]}" if valid.startswith("given") else f"For {valid}"
+        lines += paragraphs(f"{head}: {', '.join(v.quantity for v in values if v.valid == valid)}.")
     lines += [""] if any(v.valid for v in values) else []
     for k, source in enumerate(sources, 1):
         lines += paragraphs(f"[{k}] {source}")

@@ -10,6 +10,7 @@ from dataclasses import dataclass
 from functools import cache
 from html import escape
 from importlib import resources
+from math import ceil, floor, log10
 from typing import Any
 
 _FILES = "wiresolve.output"
@@ -101,12 +102,14 @@ def dial(name: str, label: str, unit: str, low: float, high: float, presets: Seq
     buttons = "".join(
         f'<button type="button" data-{text(name)}="{value!r}">{text(words)}</button>' for words, value in presets
     )
-    span = high - low
+    # Rounded outwards: a browser shows the ends where a number lies beyond them.
+    step = 10.0 ** (floor(log10(high - low)) - 4) if high > low else 1.0
+    ends = f'min="{floor(low / step) * step:.10g}" max="{ceil(high / step) * step:.10g}"'
     return (
         f'<div class="dial"><label for="{name}-slider">{text(label)}</label>'
         f'<input type="range" id="{name}-slider" min="0" max="1000" step="1">'
-        f'<span class="exact"><input type="number" id="{name}-number" min="{low - 1e-9 * span!r}"'
-        f' max="{high + 1e-9 * span!r}" step="any" aria-label="{text(label)}, {text(unit)}">'
+        f'<span class="exact"><input type="number" id="{name}-number" {ends} step="any"'
+        f' aria-label="{text(label)}, {text(unit)}">'
         f' <span aria-hidden="true">{text(unit)}</span></span>'
         f'<div class="presets">{buttons}</div></div>'
     )
