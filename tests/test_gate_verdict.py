@@ -215,7 +215,7 @@ def test_one_step_is_said() -> None:
     text = said([step(1, 0.125)], (Motion("section.diameter", 30.0, (-0.012,)),))
     assert "one step open" in text
     assert "at 0.1250 ± 0.0001 V, of 1 G0" in text
-    assert "The first step moves with half a nanometre more of section.diameter by -6 mV." in text
+    assert "The first step moves with half a nanometre more of diameter by -6 mV." in text
     assert "25 mV wide at 77 K" in text
 
 
@@ -226,7 +226,7 @@ def test_five_steps_are_said_by_the_first_three() -> None:
         "5 steps open, the first 3 at 0.1000 ± 0.0001 V, 0.2000 ± 0.0001 V and 0.3000 ± 0.0001 V, of 1, 2 and 1 G0"
         in text
     )
-    assert "The first 3 steps move with a tenth of a nanometre more of gates[1].insulator.thickness by" in text
+    assert "The first 3 steps move with a tenth of a nanometre more of the insulator's thickness by" in text
     assert "+1, +2 and +3 mV" in text
 
 

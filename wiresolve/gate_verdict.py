@@ -15,6 +15,7 @@ from wiresolve.gate_result import GatePoint, GateStep
 from wiresolve.physics.capacitance import limit_text
 from wiresolve.physics.conductance import in_series
 from wiresolve.physics.gate_steps import THERMAL_WIDTH_KT, gate_steps, step_width_eV
+from wiresolve.physics.spread import in_words
 from wiresolve.physics.transistor_summary import TransistorSummary
 from wiresolve.physics.transmission import transmission_of
 from wiresolve.physics.wording import line_density, with_bar
@@ -214,7 +215,7 @@ def _moved(steps: Sequence[OpenStep], motions: Sequence[Motion]) -> str:
         small = HALF_nm if motion.value_nm >= 5 else 0.1
         size = "half a nanometre" if small == HALF_nm else "a tenth of a nanometre"
         by = _listed([f"{1e3 * small * v:+.2g}" for v in motion.per_nm_V])
-        rows.append(f"{size} more of {motion.of} by {by} mV")
+        rows.append(f"{size} more of {in_words(motion.of)} by {by} mV")
     count = len(motions[0].per_nm_V)
     what = "The first step moves" if count == 1 else f"The first {count} steps move"
     return f"{what} with {'; with '.join(rows)}."

@@ -68,7 +68,7 @@ def sentence(
     parts = []
     for number, (of, first, spacing) in enumerate(rows[:_MOST]):
         amount = "half a nanometre" if _step(given, of) == 0.5 else "a tenth of a nanometre"
-        words = f"{amount} of {_name(of)} moves the first level by about {_meV(first)}"
+        words = f"{amount} of {in_words(of)} moves the first level by about {_meV(first)}"
         if spacing is not None:
             words += f" and the first spacing by about {_meV(spacing)}"
         parts.append(words if number == 0 else words.replace(" moves the first level", ""))
@@ -78,7 +78,7 @@ def sentence(
     beside = ""
     if temperature_K > 0:
         beside = f", {'more' if like > temperature_K else 'less'} than the {temperature_K:.3g} K of the carriers"
-    spread = f"such a spread of {_name(blurs)} (standard deviation) blurs the first step as {like:.2g} K would{beside}"
+    spread = f"such a spread of {in_words(blurs)} (standard deviation) blurs the first step as {like:.2g} K would{beside}"
     large = max(abs(moved) for _, moved, _ in rows[:_MOST])
     linear = ""
     if first_eV is not None and large > _LINEAR * abs(first_eV):
@@ -108,8 +108,10 @@ def grown(of: str) -> str:
     return of if re.fullmatch(r"rim|core|outside|(layer|patch|group) \d+", piece) else f"growth of group {piece}"
 
 
-def _name(of: str) -> str:
-    """A path in words: "diameter", "thickness of layer 1", "width of patch 2"."""
+def in_words(of: str) -> str:
+    """A path in words: "diameter", "thickness of layer 1", "width of patch 2", "the insulator's thickness"."""
+    if of.startswith("gates["):
+        return "the insulator's thickness"
     if of.startswith("growth of "):
         return "outward " + grown(of)
     *parents, key = of.removeprefix("section.").split(".")
