@@ -78,7 +78,8 @@ def sentence(
     beside = ""
     if temperature_K > 0:
         beside = f", {'more' if like > temperature_K else 'less'} than the {temperature_K:.3g} K of the carriers"
-    spread = f"such a spread of {in_words(blurs)} (standard deviation) blurs the first step as {like:.2g} K would{beside}"
+    spread = f"such a spread of {in_words(blurs)} (standard deviation)"
+    spread += f" blurs the first step as {like:.2g} K would{beside}"
     large = max(abs(moved) for _, moved, _ in rows[:_MOST])
     linear = ""
     if first_eV is not None and large > _LINEAR * abs(first_eV):
