@@ -462,14 +462,14 @@ def test_options_reach_what_is_written(here: Path, monkeypatch: pytest.MonkeyPat
     known = set(inspect.signature(writing.write).parameters)
     monkeypatch.setattr(writing, "write", lambda result, folder, **options: asked.update(options))
     assert run("solve", "wire.toml", "--quiet").exit_code == 0
-    plain = {"report": False, "vtk": "curved", "points": False, "matrix_elements": False, "figures": True}
+    plain = {"report": False, "vtk": "curved", "quadrature": False, "matrix_elements": False, "figures": True}
     assert asked == {**plain, "axial_frames": 0, "replace": True, "status": "done", "field": "--out"}
     words = ("--report", "--vtk", "linear", "--extrude", "0.03 um", "--axial-frames", "5", "--quadrature")
     words += ("--matrix-elements", "--measured", "points.csv", "--no-figures", "--out", "out")
     assert run("solve", "wire.toml", "--quiet", *words).exit_code == 0
     measured = asked.pop("measured")
     assert measured.x.tolist() == pytest.approx([0.010, 0.030])
-    fuller = {"report": True, "vtk": "linear", "points": True, "matrix_elements": True, "figures": False}
+    fuller = {"report": True, "vtk": "linear", "quadrature": True, "matrix_elements": True, "figures": False}
     fuller |= {"axial_frames": 5, "replace": False, "status": "done", "field": "--out"}
     assert asked.pop("extrude_nm") == pytest.approx(30.0)
     assert asked == fuller

@@ -235,7 +235,7 @@ def test_smallest_feature_is_the_thinnest_part() -> None:
         (lambda: Circle(1e9), "diameter", "between 0.1 nm and 10000 nm"),
         (lambda: Circle(1e-6), "diameter", "between 0.1 nm and 10000 nm"),
         (lambda: Circle(math.nan), "diameter", "finite"),
-        (lambda: Circle("10"), "diameter", "must be a number"),
+        (lambda: Circle("10"), "diameter_nm", "must be a number"),
         (lambda: Circle(True), "diameter", "must be a number"),
         (lambda: Ellipse(10, -1), "height", "must be positive"),
         (lambda: Ellipse(9000, 1), "width", "1000 times as long as wide"),

@@ -31,7 +31,7 @@ from wiresolve.commands.terminal import (
     click.option("--extrude", metavar="LENGTH", help='Also a volume for ParaView, the wire so long: "30 nm".'),
     click.option(
         "--axial-frames",
-        type=click.IntRange(min=2),
+        type=click.IntRange(min=2, max=1000),
         metavar="COUNT",
         help="Also a series for ParaView of the modes at so many wave numbers along the wire.",
     ),
