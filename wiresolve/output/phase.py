@@ -31,10 +31,11 @@ class Phase:
     mesh: Mesh
 
     @cached_property
-    def _edges(self) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    def _edges(self) -> tuple[NDArray[np.int32], NDArray[np.int32]]:
         corners = self.mesh.cells[:, flat_cells(self.mesh.degree)].reshape(-1, 3)
         ends = np.sort(corners[:, [[0, 1], [1, 2], [2, 0]]].reshape(-1, 2), axis=1)
-        found = np.unique(ends, axis=0)
+        # Graphs of older SciPy take no longer numbers.
+        found = np.unique(ends, axis=0).astype(np.int32)
         return found[:, 0], found[:, 1]
 
     def of(self, psi: NDArray[Any]) -> Array:
