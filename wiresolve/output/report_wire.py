@@ -20,16 +20,15 @@ from wiresolve.output.report_wire_data import (
     bar_eV,
     fermi_range,
     levels_of,
-    mean_eV,
     plateaus,
     script_data,
-    states_in,
 )
 from wiresolve.output.valley_names import short_valleys
 from wiresolve.physics.plain_spectrum import spectrum_of_plain
 from wiresolve.physics.sensitivity import PER_LENGTH
 from wiresolve.physics.spectrum import Spectrum
 from wiresolve.physics.spread import grown
+from wiresolve.subband import Subband, level_energy_eV, states
 from wiresolve.units import KB
 
 _MOST_DIMENSIONS = 10
@@ -64,16 +63,16 @@ def page(folder: Folder) -> Page:
     return Page(str(found["title"]), "Wire report", facts, tuple(parts), script_data(folder, spectrum, groups, moved))
 
 
-def _tiles(found: Plain, problem: Problem, groups: Sequence[Sequence[Plain]]) -> list[tuple[str, str, str]]:
+def _tiles(found: Plain, problem: Problem, groups: Sequence[Sequence[Subband]]) -> list[tuple[str, str, str]]:
     first, warm = groups[0], [t for t in problem.carriers.temperature_K if t > 0]
-    lowest, bar = blocks.short(1e3 * mean_eV(first), 1e3 * bar_eV(first), "meV")
+    lowest, bar = blocks.short(1e3 * level_energy_eV(first), 1e3 * bar_eV(first), "meV")
     rows = [("First level", lowest, f"{bar}from the {found['energy_zero']['text']}")]
     if len(groups) > 1:
-        spacing = mean_eV(groups[1]) - mean_eV(first)
+        spacing = level_energy_eV(groups[1]) - level_energy_eV(first)
         ratio = " and ".join(f"{tables.significant(spacing / (KB * t), 3)} kT at {t:g} K" for t in warm[:2])
         rows.append(("To the next level", f"{tables.significant(1e3 * spacing, 4)} meV", ratio))
-    mass = first[0]["axial_mass"]
-    carried = f"{short_valleys(first[0]['valley'])}, {states_in(first)} states with spin"
+    mass = first[0].axial_mass
+    carried = f"{short_valleys(first[0].valley)}, {states(first)} states with spin"
     rows.append(("Axial mass", "none" if mass is None else f"{mass:.4f} m0", carried))
     steps = found["verdict"]["steps"]
     if steps and steps[0]["levels"]:
@@ -97,7 +96,7 @@ def _cut(value: float) -> str:
     return f"{math.floor(value / unit * (1 + 1e-12)) * unit:.3g}"
 
 
-def _ladder(folder: Folder, groups: Sequence[Sequence[Plain]]) -> str:
+def _ladder(folder: Folder, groups: Sequence[Sequence[Subband]]) -> str:
     found, warm = folder.found, [t for t in folder.problem.carriers.temperature_K if t > 0]
     shown = folder.shown("levels", "Levels with their bars, and spacings against kT")
     body = figure("ladder", "Levels to scale, beside rulers of one kT; each level ± its error bar.", fallback=shown)
@@ -105,7 +104,7 @@ def _ladder(folder: Folder, groups: Sequence[Sequence[Plain]]) -> str:
     return body + figure("thermal", caption) + _subband_table(found, groups, warm)
 
 
-def _subband_table(found: Plain, groups: Sequence[Sequence[Plain]], warm: Sequence[float]) -> str:
+def _subband_table(found: Plain, groups: Sequence[Sequence[Subband]], warm: Sequence[float]) -> str:
     subbands = found["subbands"]
     bound, density = (any(s[key] is not None for s in subbands) for key in ("bound", "line_density_per_nm"))
     heads = ["subband", "level", "energy ± bar (meV)", "to the next level (meV)"]
@@ -116,18 +115,18 @@ def _subband_table(found: Plain, groups: Sequence[Sequence[Plain]], warm: Sequen
     heads += ["valleys"] * named + ["layer"] * layers + ["bound"] * bound + ["line density (1/nm)"] * density
     rows = []
     for n, group in enumerate(groups):
-        spacing = mean_eV(groups[n + 1]) - mean_eV(group) if n + 1 < len(groups) else None
+        spacing = level_energy_eV(groups[n + 1]) - level_energy_eV(group) if n + 1 < len(groups) else None
         for s in group:
             gap = spacing if s is group[-1] else None
-            mass = s["axial_mass"]
-            row = [str(s["index"]), str(s["level"]), tables.with_bar(1e3 * s["energy_eV"], 1e3 * s["error_eV"])]
+            mass = s.axial_mass
+            row = [str(s.index), str(s.level), tables.with_bar(1e3 * s.energy_eV, 1e3 * s.error_eV)]
             row.append("" if gap is None else tables.significant(1e3 * gap, 4))
             row += ["" if gap is None else tables.significant(gap / (KB * t), 3) for t in warm[:3]]
             row.append("none" if mass is None else f"{mass:.4f}")
-            row += [f"{s['spin_degeneracy']} × {s['valley_degeneracy']}", *[short_valleys(s["valley"])] * named]
-            row += [f"{s['layer']} ({100 * s['shares'][s['layer']]:.0f} %)"] * layers
-            row += [{True: "yes", False: "no", None: ""}[s["bound"]]] * bound
-            row += [number(s["line_density_per_nm"])] * density
+            row += [f"{s.spin_degeneracy} × {s.valley_degeneracy}", *[short_valleys(s.valley)] * named]
+            row += [f"{s.layer} ({100 * s.shares[s.layer]:.0f} %)"] * layers
+            row += [{True: "yes", False: "no", None: ""}[s.bound]] * bound
+            row += [number(s.line_density_per_nm)] * density
             rows.append(row)
     left = (0, *(heads.index(head) for head in ("valleys", "layer") if head in heads))
     return table(f"Subbands, energies from the {found['energy_zero']['text']}", heads, rows, left=left)
@@ -151,9 +150,9 @@ def _dispersion(folder: Folder) -> str:
 
 def _measured(folder: Folder, spectrum: Spectrum | None) -> str:
     found, problem = folder.found, folder.problem
-    states, curve = found["density_of_states"], found["conductance"][-1]
-    middles = [(a + b) / 2 for a, b in zip(states["edges_eV"][:-1], states["edges_eV"][1:], strict=True)]
-    of_states = [[f"{1e3 * e:.4f}", number(1e-3 * v)] for e, v in zip(middles, states["per_eV_nm"], strict=True)]
+    binned, curve = found["density_of_states"], found["conductance"][-1]
+    middles = [(a + b) / 2 for a, b in zip(binned["edges_eV"][:-1], binned["edges_eV"][1:], strict=True)]
+    of_states = [[f"{1e3 * e:.4f}", number(1e-3 * v)] for e, v in zip(middles, binned["per_eV_nm"], strict=True)]
     numbers = table("Density of states, averages over bins", ("energy (meV)", "1/(meV nm)"), of_states, left=())
     places = thinned(len(curve["fermi_eV"]), _ROWS)
     rows = [[f"{1e3 * curve['fermi_eV'][n]:.4f}", f"{curve['G_over_G0'][n]:.5f}"] for n in places]
@@ -231,8 +230,8 @@ def _sensitivities(found: Plain) -> list[dict[str, Any]]:
     return found_rows
 
 
-def _moved(folder: Folder, moved: Sequence[Mapping[str, Any]], groups: Sequence[Sequence[Plain]]) -> str:
-    heads = ["dimension", *(f"level {g[0]['level']}" for g in groups[:MOST_LEVELS])]
+def _moved(folder: Folder, moved: Sequence[Mapping[str, Any]], groups: Sequence[Sequence[Subband]]) -> str:
+    heads = ["dimension", *(f"level {g[0].level}" for g in groups[:MOST_LEVELS])]
     rows = [[r["of"], *(tables.motion(low, high) for low, high in r["values"])] for r in moved]
     numbers = table("Motion of each level in meV for each nm of a dimension", heads, rows)
     caption = "How far the first levels, numbered, move for each nanometre of a dimension; a split level is a line."
@@ -250,8 +249,8 @@ def _moved(folder: Folder, moved: Sequence[Mapping[str, Any]], groups: Sequence[
     return drawn + numbers + plate + (folded("Masses, edges and other values of materials", of_values) if more else "")
 
 
-def _second(one: Plain, groups: Sequence[Sequence[Plain]]) -> float | None:
-    return float(one["values"][groups[1][0]["index"] - 1]) if len(groups) > 1 else None
+def _second(one: Plain, groups: Sequence[Sequence[Subband]]) -> float | None:
+    return float(one["values"][groups[1][0].index - 1]) if len(groups) > 1 else None
 
 
 def _mesh_rows(found: Plain) -> list[tuple[str, str]]:

@@ -16,6 +16,7 @@ from wiresolve.output.valley_names import short_valleys
 from wiresolve.physics.conductance import openings
 from wiresolve.physics.spectrum import Spectrum
 from wiresolve.physics.transmission import transmission_of
+from wiresolve.subband import Subband, level_energy_eV, levels, states
 from wiresolve.units import HBAR2_OVER_2M0, KB, RESISTANCE_QUANTUM_OHM
 
 CONSTANTS = {"kB": KB, "c": HBAR2_OVER_2M0, "resistanceQuantum": RESISTANCE_QUANTUM_OHM}
@@ -25,30 +26,21 @@ MOST_LEVELS = 5
 """Levels whose motions are drawn."""
 
 
-def levels_of(found: Plain) -> list[list[Plain]]:
-    groups: dict[int, list[Plain]] = {}
-    for subband in found["subbands"]:
-        groups.setdefault(subband["level"], []).append(subband)
-    return list(groups.values())
+def levels_of(found: Plain) -> list[list[Subband]]:
+    """The subbands of a folder's JSON file, by level."""
+    return levels([Subband(**s) for s in found["subbands"]])
 
 
-def mean_eV(group: Sequence[Plain]) -> float:
-    return float(sum(s["energy_eV"] for s in group) / len(group))
-
-
-def bar_eV(group: Sequence[Plain]) -> float:
-    return float(max(s["error_eV"] for s in group))
-
-
-def states_in(group: Sequence[Plain]) -> int:
-    return int(sum(s["spin_degeneracy"] * s["valley_degeneracy"] for s in group))
+def bar_eV(group: Sequence[Subband]) -> float:
+    """The bar of a level: the widest of its entries'."""
+    return max(s.error_eV for s in group)
 
 
 def plateaus(found: Plain, problem: Problem) -> list[tuple[str, float]]:
     """Fermi levels worth a button: that of the file, and the middles of the first plateaus."""
-    levels = [mean_eV(group) for group in levels_of(found)]
+    energies = [level_energy_eV(group) for group in levels_of(found)]
     rows = [] if problem.fermi_level_eV is None else [("of the file", problem.fermi_level_eV)]
-    middles = [(f"above level {n + 1}", (a + b) / 2) for n, (a, b) in enumerate(pairwise(levels))]
+    middles = [(f"above level {n + 1}", (a + b) / 2) for n, (a, b) in enumerate(pairwise(energies))]
     return rows + middles[:3]
 
 
@@ -63,22 +55,24 @@ def fermi_range(folder: Folder, spectrum: Spectrum) -> tuple[float, float]:
 
 
 def script_data(
-    folder: Folder, spectrum: Spectrum | None, groups: Sequence[Sequence[Plain]], moved: Sequence[Mapping[str, Any]]
+    folder: Folder, spectrum: Spectrum | None, groups: Sequence[Sequence[Subband]], moved: Sequence[Mapping[str, Any]]
 ) -> dict[str, Any]:
     found, problem = folder.found, folder.problem
     valleys = list(dict.fromkeys(s["valley"] for s in found["subbands"]))
     ladder = []
     for group in groups:
-        energy, bar, states = mean_eV(group), bar_eV(group), states_in(group)
+        energy, bar = level_energy_eV(group), bar_eV(group)
         short = tables.with_bar(1e3 * energy, 1e3 * bar)
-        words = f"{short} meV, {states} states" + (f", {short_valleys(group[0]['valley'])}" if len(valleys) > 1 else "")
+        words = f"{short} meV, {states(group)} states" + (
+            f", {short_valleys(group[0].valley)}" if len(valleys) > 1 else ""
+        )
         ladder.append(
             {
-                "level": group[0]["level"],
+                "level": group[0].level,
                 "energy_eV": energy,
                 "bar_eV": 1e-3 * tables.printed_bar(short),
                 "entries": len(group),
-                "group": valleys.index(group[0]["valley"]),
+                "group": valleys.index(group[0].valley),
                 "text": words,
                 "short": short,
             }
@@ -102,7 +96,7 @@ def script_data(
         },
     }
     if moved:
-        data["sensitivities"] = {"rows": moved, "levels": [g[0]["level"] for g in groups[:MOST_LEVELS]]}
+        data["sensitivities"] = {"rows": moved, "levels": [g[0].level for g in groups[:MOST_LEVELS]]}
     if spectrum is not None:
         data["wire"] = _wire(folder, spectrum)
     return data
@@ -117,7 +111,7 @@ def _wire(folder: Folder, spectrum: Spectrum) -> dict[str, Any]:
     # Changes of slope: the count goes on in its last line.
     slopes = np.zeros(0) if tail is None else np.diff(tail.states_per_nm) / np.diff(tail.energy_eV)
     changes = np.diff(slopes, prepend=0.0) if len(slopes) else slopes
-    states = found["density_of_states"]
+    binned = found["density_of_states"]
     flat = plateaus(found, problem)
     low, high = fermi_range(folder, spectrum)
     start = 0.0 if problem.charged else flat[0][1] if flat else (low + high) / 2
@@ -137,8 +131,8 @@ def _wire(folder: Folder, spectrum: Spectrum) -> dict[str, Any]:
             "resistance": 0.0 if problem.transport is None else problem.transport.contact_resistance_ohm,
         },
         "tail": {"energy": [] if tail is None else tail.energy_eV[:-1].tolist(), "change": changes.tolist()},
-        "bins": {"edges": states["edges_eV"], "values": states["per_eV_nm"]},
-        "singular_eV": states["singular_at_eV"],
+        "bins": {"edges": binned["edges_eV"], "values": binned["per_eV_nm"]},
+        "singular_eV": binned["singular_at_eV"],
         "fermiRange_eV": [low, high],
         "kelvinRange": [COLDEST_K, max(WARM_K, *problem.carriers.temperature_K)],
         "hottest_K": max(problem.carriers.temperature_K),
