@@ -1,10 +1,11 @@
-"""How parts of a section look in every picture: colours in order of appearance.
+"""How parts of a section look in every picture: colours in order of appearance, round scale bars.
 
 The colours are the eight of M. Okabe and K. Ito (Color Universal Design, 2008), which colour-blind readers tell apart.
 """
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 
 CYCLE = ("#0072B2", "#E69F00", "#009E73", "#CC79A7", "#56B4E9", "#D55E00", "#F0E442", "#000000")
@@ -31,3 +32,9 @@ def fill(place: int, carriers: bool) -> tuple[float, float, float]:
     strength, code = (_FILLED if carriers else _KEPT_OUT), CYCLE[place % len(CYCLE)]
     red, green, blue = (1 - strength * (1 - int(code[k : k + 2], 16) / 255) for k in (1, 3, 5))
     return red, green, blue
+
+
+def round_length(about: float) -> float:
+    """The largest of 1, 2, 5 times a power of ten that is not above `about`: of a scale bar."""
+    power = 10.0 ** math.floor(math.log10(about))
+    return max(m * power for m in (1, 2, 5) if m * power <= about)

@@ -10,7 +10,7 @@ from typing import Protocol
 
 import numpy as np
 
-from wiresolve.describe.appearance import INK, fill, order_of_appearance
+from wiresolve.describe.appearance import INK, fill, order_of_appearance, round_length
 from wiresolve.describe.curves import Arc, Array, EllipseArc, Line, Loop, Parabolas, Segment
 
 _SIDE, _EDGE, _ROW = 240.0, 8.0, 19.0
@@ -106,8 +106,7 @@ def _key(
     legend: Sequence[tuple[str, str, bool]], colours: dict[str, str], size: float, scale: float, below: float
 ) -> tuple[list[str], float]:
     """The scale bar and the rows of the legend, and how far to the right they reach."""
-    power = 10.0 ** math.floor(math.log10(0.4 * size))
-    length = max(m * power for m in (1, 2, 5) if m * power <= 0.4 * size)
+    length = round_length(0.4 * size)
     style = 'fill="currentColor" font-family="sans-serif" font-size="12"'
     y = below + _ROW / 2
     end = _EDGE + scale * length

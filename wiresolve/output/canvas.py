@@ -103,12 +103,6 @@ def extent_of(points: Any) -> tuple[float, float, float, float]:
     return float(left - edge), float(right + edge), float(bottom - edge), float(top + edge)
 
 
-def round_length(about: float) -> float:
-    """The largest of 1, 2, 5 times a power of ten that is not above `about`."""
-    power = 10.0 ** math.floor(math.log10(about))
-    return max(m * power for m in (1, 2, 5) if m * power <= about)
-
-
 def shortened(text: str, most: int) -> str:
     """One line of text; dollar signs would start a formula."""
     line = " ".join(text.split()).replace("$", r"\$")

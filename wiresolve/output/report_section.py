@@ -8,6 +8,7 @@ from collections.abc import Iterable, Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from wiresolve.describe.appearance import round_length
 from wiresolve.describe.curves import Line, Loop, Parabolas, Segment, Spline
 from wiresolve.describe.problem import Problem
 from wiresolve.describe.section import GAP, VOID, Piece
@@ -39,7 +40,7 @@ def drawing(problem: Problem) -> str:
     if problem.surroundings is not None:
         shapes.append(f'<rect class="beside" width="{scale * wide:.1f}" height="{scale * high:.1f}"/>')
     for piece in painted:
-        if piece.name in ("beside",):
+        if piece.name == "beside":
             continue
         path = _path([piece.loop, *(piece.holes or ())], left, top, scale)
         hidden = piece.name == GAP or piece.material == VOID
@@ -50,7 +51,7 @@ def drawing(problem: Problem) -> str:
             f'<path class="metal" d="{_open(metal.segments, left, top, scale)}"><title>gate {text(metal.name)}</title>'
             "</path>"
         )
-    bar = _round(0.3 * wide)
+    bar = round_length(0.3 * wide)
     y = scale * high + 20
     ruler = (
         f'<path class="ruler" d="M1,{y - 5:.1f}V{y + 5:.1f}M1,{y:.1f}H{1 + scale * bar:.1f}m0,-5v10"/>'
@@ -166,9 +167,3 @@ def _open(segments: Iterable[Segment], left: float, top: float, scale: float) ->
         found.append("L" + " ".join(shown[1:]))
         last = points[-1]
     return "".join(found)
-
-
-def _round(length: float) -> float:
-    """The largest of 1, 2, 5, 10, ... nm that is no longer."""
-    decade = 10.0 ** math.floor(math.log10(length))
-    return next(step * decade for step in (5, 2, 1) if step * decade <= length * (1 + 1e-9))

@@ -10,7 +10,7 @@ from matplotlib.figure import Figure
 from matplotlib.patches import PathPatch, Rectangle
 from matplotlib.path import Path as Outline
 
-from wiresolve.describe.appearance import fill
+from wiresolve.describe.appearance import fill, round_length
 from wiresolve.output.canvas import (
     COLUMN_MM,
     INK,
@@ -19,7 +19,6 @@ from wiresolve.output.canvas import (
     extent_of,
     goes_on,
     order_of_appearance,
-    round_length,
     shortened,
     trace,
 )
