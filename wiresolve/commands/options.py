@@ -9,6 +9,7 @@ from typing import Any, TypeVar
 import click
 
 from wiresolve.commands.terminal import log_to_stderr
+from wiresolve.output.extras import CELLS
 
 _Function = TypeVar("_Function", bound=Callable[..., Any])
 _PATH = click.Path(path_type=Path)
@@ -82,8 +83,8 @@ no_figures = click.option("--no-figures", is_flag=True, help="Draw no figures.")
 report = click.option("--report", is_flag=True, help="Also write report.html, one file with everything to read.")
 vtk = click.option(
     "--vtk",
-    type=Words(("curved", "linear")),
-    default="curved",
+    type=Words(CELLS),
+    default=CELLS[0],
     show_default=True,
     help="Cells of the files for ParaView: curved ones of fourth order, or flat ones that any program reads.",
 )

@@ -18,6 +18,7 @@ from wiresolve.commands.terminal import (
     say,
     say_json,
 )
+from wiresolve.output.extras import MOST_FRAMES
 
 
 @click.command(cls=options.Command, example="wiresolve solve wire.toml --out results/first --report")
@@ -31,7 +32,7 @@ from wiresolve.commands.terminal import (
     click.option("--extrude", metavar="LENGTH", help='Also a volume for ParaView, the wire so long: "30 nm".'),
     click.option(
         "--axial-frames",
-        type=click.IntRange(min=2, max=1000),
+        type=click.IntRange(min=2, max=MOST_FRAMES),
         metavar="COUNT",
         help="Also a series for ParaView of the modes at so many wave numbers along the wire.",
     ),
