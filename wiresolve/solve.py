@@ -28,6 +28,7 @@ from wiresolve.physics.ladder import spectrum_of
 from wiresolve.physics.listing import SPIN, Listing, listing
 from wiresolve.physics.outline_motion import outline_motion
 from wiresolve.physics.region_fields import cell_fields
+from wiresolve.physics.rounded import NEAR_STEP_KT
 from wiresolve.physics.sensitivity import (
     NOWHERE,
     OutlineSensitivity,
@@ -58,8 +59,6 @@ from wiresolve.units import KB
 Array = NDArray[np.float64]
 Progress = Callable[[str, float, str], None]
 
-_NEAR_STEP = np.array([-8.0, -5.0, -3.0, -2.0, -1.0, 0.0, 1.0, 2.0, 3.0, 5.0, 8.0])
-"""Places around a step, in kT, at which curves have points."""
 _CLOSED_KT = 3.0
 """A first level so far above the Fermi level conducts 1/20 of its step."""
 
@@ -299,7 +298,7 @@ def _curves(
         margin = max(0.1 * (top - bottom), 6 * thermal, 1e-3)
         even = np.linspace(bottom - margin, max(_end(spectrum), bottom + margin), 301)
         # Steps that are narrower than the even points are apart get points of their own.
-        near = (listed[:, None] + max(thermal, 1e-9) * _NEAR_STEP).ravel()
+        near = (listed[:, None] + max(thermal, 1e-9) * np.array(NEAR_STEP_KT)).ravel()
         fermi = np.unique(np.concatenate([even, near[near <= even[-1]]]))
         curves.append(ThermalCurve(temperature, fermi, np.asarray(quantity(spectrum, fermi, temperature))))
     return tuple(curves)

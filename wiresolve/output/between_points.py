@@ -19,7 +19,7 @@ from wiresolve.describe.operation import Transport
 from wiresolve.gate_result import GateCurve
 from wiresolve.physics.conductance import in_series
 from wiresolve.physics.gate_steps import step_width_eV
-from wiresolve.physics.rounded import step
+from wiresolve.physics.rounded import NEAR_STEP_KT, step
 from wiresolve.physics.transmission import transmission_of
 from wiresolve.units import KB
 
@@ -29,8 +29,6 @@ _SAME_EV = 1e-6
 """Filled states this close to the listed ones are these."""
 _EVEN = 401
 """Even places of the curves; what is steeper than these has places of its own."""
-_NEAR = (-8.0, -5.0, -3.0, -2.0, -1.0, 0.0, 1.0, 2.0, 3.0, 5.0, 8.0)
-"""Places around an opening, in kT."""
 _SHARP_EV = 1e-9
 """How far beside an opening a step without width is drawn."""
 
@@ -89,7 +87,7 @@ class Between:
             for n in np.flatnonzero((energy[:-1] > 0) & (energy[1:] <= 0)):
                 opened = brentq(lambda v, row=row: float(_energy(row, np.array([v]))[0]), even[n], even[n + 1])
                 slope = (energy[n] - energy[n + 1]) / (even[n + 1] - even[n])
-                found.append(opened + np.array(_NEAR) * width / slope)
+                found.append(opened + np.array(NEAR_STEP_KT) * width / slope)
         places = np.unique(np.concatenate(found))
         return places[(places >= low) & (places <= high)]
 

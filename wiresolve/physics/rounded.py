@@ -18,6 +18,9 @@ from wiresolve.physics.fermi import fermi_integral
 
 Array = NDArray[np.float64]
 
+NEAR_STEP_KT = (-8.0, -5.0, -3.0, -2.0, -1.0, 0.0, 1.0, 2.0, 3.0, 5.0, 8.0)
+"""Places around a step, in kT, at which curves need points of their own."""
+
 SPACING = 0.45
 """Of the nodes: exp(-2 pi^2/0.45) is 9e-20."""
 _TAIL = 42.0
