@@ -159,8 +159,9 @@ def swept(tmp_path_factory: pytest.TempPathFactory) -> Path:
 @pytest.fixture(scope="module")
 def browser(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Any]:
     """Chromium without a screen."""
-    webdriver = pytest.importorskip("selenium.webdriver", reason="selenium drives the browser")
-    service = pytest.importorskip("selenium.webdriver.chrome.service")
+    from selenium import webdriver
+    from selenium.webdriver.chrome import service
+
     program = next(filter(None, map(shutil.which, ("chromium", "chromium-browser", "google-chrome"))), None)
     driver = shutil.which("chromedriver")
     if program is None or driver is None:

@@ -17,8 +17,8 @@ Array = NDArray[np.float64]
 _STEP = 0.125
 """Spacing of a table in kT: cubic Hermite pieces then hold six digits of the density."""
 _THERMAL = 40.0
-"""Beyond this many kT above the Fermi level the occupation is below rounding; so are its rounding's powers beyond the
-sixth where the bottom lies as far below it."""
+"""Beyond this many kT above the Fermi level the occupation is below rounding; as far below it, so is what Sommerfeld's
+expansion leaves after its sixth term."""
 _CLASSES = (-np.inf, 1.0, 10.0, _THERMAL)
 """Depths in kT between which one spacing of the quadrature serves all."""
 _DIGITS = 33.0
